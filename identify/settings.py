@@ -41,13 +41,18 @@ class CleaningSettings:
     """Drop m/z 17, 18, 28, 32, 40 and 44 where they look like residual gas."""
     drop_bleed: bool = True
     """Subtract siloxane bleed, only when its pattern is there."""
-    noise_fraction: float = 0.001
-    """Peaks below this fraction of the base peak are noise even when the spectrum shows no noise floor of its own."""
-    minimum_peaks: int = 1
+    drop_noise: bool = True
+    """Drop peaks below the noise floor that the spectrum itself shows."""
+    noise_fraction: float = 0.0005
+    """Peaks below this fraction of the base peak are noise even when the spectrum shows no floor of its own."""
 
     def __post_init__(self) -> None:
         if not 0.0 <= self.noise_fraction < 1.0:
             raise UsageError("noise_fraction", found=str(self.noise_fraction), expected="a number in [0, 1)")
+
+
+REFERENCE_CLEANING = CleaningSettings(drop_air_and_water=False, drop_bleed=False, drop_noise=False, noise_fraction=0.0)
+"""How library entries are cleaned: what the source published is kept, only unusable peaks go."""
 
 
 @dataclass(frozen=True, slots=True)
