@@ -1,0 +1,437 @@
+"""Molecular formulas: reading, arithmetic, masses, rings plus double bonds.
+
+Text from files is hostile: length, nesting, counts and total mass are bounded, and every refusal names the character.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from functools import lru_cache
+from typing import Final
+
+from identify.chem.elements import ELECTRON_MASS, MASS, MASS_NUMBER, NUCLIDES, element_of
+from identify.errors import FormulaError, quote
+
+MAX_TEXT: Final = 400
+"""Longest formula text read, in characters."""
+MAX_DEPTH: Final = 8
+"""Deepest nesting of parentheses and brackets."""
+MAX_COUNT: Final = 10_000
+"""Largest count or multiplier."""
+MAX_NOMINAL_MASS: Final = 10_000
+"""Heaviest formula accepted, in Da: far above any electron-ionization spectrum, and it bounds all later work."""
+MAX_CHARGE: Final = 20
+
+_ALIASES: Final = {"D": "[2H]", "T": "[3H]"}
+_HALF_VALENCE: Final = {
+    **dict.fromkeys(("H", "F", "Cl", "Br", "I", "Li", "Na", "K", "Rb", "Cs"), -0.5),
+    **dict.fromkeys(("N", "P", "As", "Sb", "Bi", "B", "Al", "Ga", "In"), 0.5),
+    **dict.fromkeys(("C", "Si", "Ge", "Sn", "Pb"), 1.0),
+}
+"""Contribution of one atom to rings plus double bonds: (valence − 2)/2; divalent and other elements add nothing."""
+
+
+def _hill_key(symbol: str, has_carbon: bool) -> tuple[int, str, int]:
+    element = element_of(symbol)
+    first = {"C": 0, "H": 1}.get(element, 2) if has_carbon else 2
+    return first, element, MASS_NUMBER[symbol] if symbol.startswith("[") else 0
+
+
+@dataclass(frozen=True, slots=True)
+class Formula:
+    """A composition with charge; equal formulas are equal objects whatever text they came from.
+
+    Parameters
+    ----------
+    counts : tuple of (str, int)
+        Element symbols or nuclides (`[13C]`, `[2H]`) with their numbers of atoms (≥ 1), in Hill order: carbon, hydrogen,
+        then alphabetical (all alphabetical without carbon); a nuclide follows its element. `from_counts` sorts.
+    charge : int
+        Number of elementary charges.
+
+    Raises
+    ------
+    FormulaError
+        For an unknown element, a count < 1, a wrong order, or a mass above `MAX_NOMINAL_MASS`.
+
+    Examples
+    --------
+    >>> caffeine = Formula((("C", 8), ("H", 10), ("N", 4), ("O", 2)))
+    >>> caffeine.hill, caffeine.nominal_mass, round(caffeine.monoisotopic_mass, 4)
+    ('C8H10N4O2', 194, 194.0804)
+    """
+
+    counts: tuple[tuple[str, int], ...]
+    charge: int = 0
+
+    def __post_init__(self) -> None:
+        for symbol, count in self.counts:
+            if symbol not in MASS:
+                raise FormulaError("formula", found=f"element {quote(symbol)}", expected="a known element or nuclide")
+            if count < 1:
+                raise FormulaError("formula", found=f"{count} {symbol}", expected="at least one atom")
+        symbols = [symbol for symbol, _ in self.counts]
+        has_carbon = any(element_of(symbol) == "C" for symbol in symbols)
+        if len(set(symbols)) != len(symbols) or symbols != sorted(symbols, key=lambda s: _hill_key(s, has_carbon)):
+            raise FormulaError("formula", found=f"elements {' '.join(symbols)}", expected="each once, in Hill order")
+        if self.nominal_mass > MAX_NOMINAL_MASS:
+            raise FormulaError("formula", found=f"{self.nominal_mass} Da", expected=f"at most {MAX_NOMINAL_MASS} Da")
+
+    @staticmethod
+    def from_counts(counts: Mapping[str, int] | Iterable[tuple[str, int]], charge: int = 0) -> Formula:
+        """Formula of atoms in any order; repeated symbols add up, zeros vanish.
+
+        Parameters
+        ----------
+        counts : mapping or iterable of (str, int)
+            Symbols (`D` and `T` accepted) and numbers of atoms ≥ 0.
+        charge : int
+
+        Returns
+        -------
+        Formula
+
+        Raises
+        ------
+        FormulaError
+            For an unknown element or a negative sum.
+
+        Examples
+        --------
+        >>> Formula.from_counts({"Cl": 1, "H": 5, "C": 6}).hill
+        'C6H5Cl'
+        """
+        total: dict[str, int] = {}
+        for symbol, count in counts.items() if isinstance(counts, Mapping) else counts:
+            symbol = _ALIASES.get(symbol, symbol)
+            total[symbol] = total.get(symbol, 0) + count
+        for symbol, count in total.items():
+            if symbol not in MASS:
+                raise FormulaError("formula", found=f"element {quote(symbol)}", expected="a known element or nuclide")
+            if count < 0:
+                raise FormulaError("formula", found=f"{count} {symbol}", expected="no negative number of atoms")
+        present = [symbol for symbol, count in total.items() if count]
+        has_carbon = any(element_of(symbol) == "C" for symbol in present)
+        present.sort(key=lambda symbol: _hill_key(symbol, has_carbon))
+        return Formula(tuple((symbol, total[symbol]) for symbol in present), charge)
+
+    @property
+    def hill(self) -> str:
+        """Text in Hill order that `parse_formula` reads back: `C7H7+`, `C6H5[2H]`, `C2H4^2+`."""
+        text = "".join(symbol + (str(count) if count > 1 else "") for symbol, count in self.counts)
+        if not self.charge:
+            return text
+        sign = "+" if self.charge > 0 else "-"
+        return text + (sign if abs(self.charge) == 1 else f"^{abs(self.charge)}{sign}")
+
+    def __str__(self) -> str:
+        return self.hill
+
+    @property
+    def nominal_mass(self) -> int:
+        """Sum of mass numbers: the most abundant isotope of each element, labelled atoms their own."""
+        return sum(MASS_NUMBER[symbol] * count for symbol, count in self.counts)
+
+    @property
+    def monoisotopic_mass(self) -> float:
+        """Mass in Da of the same isotopes as `nominal_mass`; missing or extra electrons of the charge accounted for."""
+        return sum(MASS[symbol] * count for symbol, count in self.counts) - self.charge * ELECTRON_MASS
+
+    @property
+    def n_atoms(self) -> int:
+        """Number of atoms."""
+        return sum(count for _, count in self.counts)
+
+    @property
+    def is_labelled(self) -> bool:
+        """Whether any atom is a stated nuclide."""
+        return any(symbol.startswith("[") for symbol, _ in self.counts)
+
+    @property
+    def unlabelled(self) -> Formula:
+        """The same atoms with natural isotopes: `C6H5[2H]` → `C6H6`."""
+        if not self.is_labelled:
+            return self
+        return Formula.from_counts([(element_of(symbol), count) for symbol, count in self.counts], self.charge)
+
+    def count(self, symbol: str) -> int:
+        """Number of atoms written with exactly this symbol (`C` does not count `[13C]`; `D` = `[2H]`)."""
+        symbol = _ALIASES.get(symbol, symbol)
+        return next((count for other, count in self.counts if other == symbol), 0)
+
+    def contains(self, other: Formula) -> bool:
+        """Whether `other` has no more atoms of any symbol than this formula; charge is not looked at."""
+        mine = dict(self.counts)
+        return all(mine.get(symbol, 0) >= count for symbol, count in other.counts)
+
+    def __add__(self, other: Formula) -> Formula:
+        return Formula.from_counts(self.counts + other.counts, self.charge + other.charge)
+
+    def __sub__(self, other: Formula) -> Formula:
+        """Difference; `FormulaError` if `other` has more of any atom."""
+        negated = tuple((symbol, -count) for symbol, count in other.counts)
+        try:
+            return Formula.from_counts(self.counts + negated, self.charge - other.charge)
+        except FormulaError:
+            raise FormulaError(
+                "difference of formulas", found=f"{self.hill} − {other.hill}", expected="a subformula to subtract"
+            ) from None
+
+
+@lru_cache(maxsize=8192)
+def _parse_cached(text: str) -> Formula:
+    return _Reader(text).read()
+
+
+def parse_formula(text: str, *, where: str = "") -> Formula:
+    """Formula of a text as records and people write it.
+
+    Understood: any element order; parentheses and brackets, nested, with multipliers; isotopes as `[13C]`, `[13C6]`, `D`,
+    `T`; components joined by `.` or `·` with a leading number (`CuSO4.5H2O`); charge at the end of a component (`+`, `-`,
+    `++`, `+2`, `^2-`, and `2+` after a bracket); a trailing radical sign; blanks anywhere (`C 8 H 8 O`); subscript digits.
+
+    Parameters
+    ----------
+    text : str
+        At most `MAX_TEXT` characters.
+    where : str
+        File and line, for the message.
+
+    Returns
+    -------
+    Formula
+
+    Raises
+    ------
+    FormulaError
+        With the position (counted from 1) of the first character that cannot be read.
+
+    Examples
+    --------
+    >>> parse_formula("CuSO4.5H2O").hill, parse_formula("C6D6").nominal_mass
+    ('CuH10O9S', 84)
+    >>> parse_formula("C8Hx")
+    Traceback (most recent call last):
+    identify.errors.FormulaError: formula: found 'x' at character 4 of 'C8Hx', expected an element symbol.
+    """
+    try:
+        return _parse_cached(text)
+    except FormulaError as error:
+        if not where:
+            raise
+        raise FormulaError(
+            error.what, where=where, found=error.found, expected=error.expected, hint=error.hint
+        ) from None
+
+
+def rings_plus_double_bonds(formula: Formula) -> float:
+    """Rings plus double bonds of a composition; half-integer for an even-electron ion.
+
+    Parameters
+    ----------
+    formula : Formula
+        Nuclides count as their element. Charge is not looked at: C7H5O gives 5.5 with or without it.
+
+    Returns
+    -------
+    float
+
+    Notes
+    -----
+    ``1 + Σ n·(valence − 2)/2`` with valence 1 for H, halogens and alkali metals, 3 for N, P, As, Sb, Bi, B, Al, Ga, In, 4
+    for C, Si, Ge, Sn, Pb; all other elements count as divalent (for transition metals the result means little). Same as
+    ``C + Si − (H + X)/2 + (N + P)/2 + 1`` (Bright & Chen, J. Chem. Educ. 1983, 60, 557).
+
+    Examples
+    --------
+    >>> rings_plus_double_bonds(parse_formula("C8H8O")), rings_plus_double_bonds(parse_formula("C3H9Si+"))
+    (5.0, 0.5)
+    """
+    return 1.0 + sum(_HALF_VALENCE.get(element_of(symbol), 0.0) * count for symbol, count in formula.counts)
+
+
+def nitrogen_rule_holds(nominal_mass: int, n_nitrogen: int) -> bool:
+    """Whether a molecular mass has the parity its number of nitrogens asks for.
+
+    Parameters
+    ----------
+    nominal_mass : int
+        Mass of the unlabelled molecule or odd-electron ion.
+    n_nitrogen : int
+
+    Returns
+    -------
+    bool
+        Odd mass with an odd number of nitrogens, even mass with an even one.
+
+    Examples
+    --------
+    >>> nitrogen_rule_holds(121, 1), nitrogen_rule_holds(77, 0)
+    (True, False)
+    """
+    return (nominal_mass - n_nitrogen) % 2 == 0
+
+
+_PLAIN: Final = {
+    **{ord(char): str(value) for value, char in enumerate("₀₁₂₃₄₅₆₇₈₉")},
+    **{ord(char): str(value) for value, char in enumerate("⁰¹²³⁴⁵⁶⁷⁸⁹")},
+    **dict.fromkeys(map(ord, "⁻−–"), "-"),
+    **dict.fromkeys(map(ord, "·•⋅∙"), "."),
+    **dict.fromkeys(map(ord, "\t\r\n\u00a0"), " "),
+    ord("⁺"): "+",
+}
+"""One plain character for each typographic one, so that positions in the message stay right."""
+
+_Counts = dict[str, int]
+
+
+class _Reader:
+    """Recursive-descent reader over one text; `at` is the next character."""
+
+    def __init__(self, text: str) -> None:
+        self.original = text
+        self.text = text.translate(_PLAIN)
+        self.at = 0
+
+    def fail(self, expected: str, *, at: int | None = None, hint: str = "") -> FormulaError:
+        at = self.at if at is None else at
+        shown = quote(self.original)
+        if at < len(self.original):
+            found = f"{quote(self.original[at])} at character {at + 1} of {shown}"
+        else:
+            found = f"the end of {shown}"
+        return FormulaError("formula", found=found, expected=expected, hint=hint)
+
+    def peek(self) -> str:
+        while self.at < len(self.text) and self.text[self.at] == " ":
+            self.at += 1
+        return self.text[self.at] if self.at < len(self.text) else ""
+
+    def read(self) -> Formula:
+        """The whole text: components joined by dots."""
+        if len(self.text) > MAX_TEXT:
+            raise FormulaError("formula", found=f"{len(self.text)} characters", expected=f"at most {MAX_TEXT}")
+        counts, charge = self.component(1)
+        while self.peek():
+            if self.text[self.at] != ".":
+                raise self.fail("an element symbol")
+            self.at += 1
+            multiplier = self.digits() if self.peek().isdigit() else 1
+            more, more_charge = self.component(multiplier)
+            for symbol, count in more.items():
+                counts[symbol] = counts.get(symbol, 0) + count
+            charge += more_charge
+        if abs(charge) > MAX_CHARGE:
+            raise FormulaError("formula", found=f"charge {charge}", expected=f"at most {MAX_CHARGE} charges")
+        return Formula.from_counts(counts, charge)
+
+    def component(self, multiplier: int) -> tuple[_Counts, int]:
+        """Units up to a dot or the end, with their charge."""
+        counts = self.units(0)
+        charge = self.charge()
+        return {symbol: count * multiplier for symbol, count in counts.items()}, charge * multiplier
+
+    def units(self, depth: int) -> _Counts:
+        """A run of elements, isotopes and groups; at least one."""
+        if depth > MAX_DEPTH:
+            raise self.fail(f"at most {MAX_DEPTH} nested brackets")
+        total: _Counts = {}
+        while True:
+            char = self.peek()
+            if char in ("(", "[") and char:
+                unit = self.group(char, depth)
+            elif "A" <= char <= "Z":
+                unit = self.element()
+            elif total:
+                return total
+            else:
+                hint = "Isotopes are written [13C]." if char.isdigit() else ""
+                raise self.fail("an element symbol", hint=hint)
+            for symbol, count in unit.items():
+                total[symbol] = total.get(symbol, 0) + count
+
+    def element(self) -> _Counts:
+        start = self.at
+        for length in (2, 1):
+            symbol = self.text[start : start + length]
+            if symbol in MASS or symbol in _ALIASES:
+                self.at += len(symbol)
+                return {_ALIASES.get(symbol, symbol): self.count()}
+        raise self.fail("an element symbol")
+
+    def group(self, opening: str, depth: int) -> _Counts:
+        start = self.at
+        self.at += 1
+        is_isotope = opening == "[" and self.peek().isdigit()
+        inner = self.isotope() if is_isotope else self.units(depth + 1)
+        closing = ")" if opening == "(" else "]"
+        if self.peek() != closing:
+            expected = f"'{closing}' for the '{opening}' at character {start + 1}"
+            raise self.fail(expected if not self.peek() else f"an element symbol or {expected}")
+        self.at += 1
+        is_ion = opening == "[" and not is_isotope and depth == 0
+        multiplier = 1 if is_ion and self.charge_with_digits_first() else self.count()
+        return {symbol: count * multiplier for symbol, count in inner.items()}
+
+    def isotope(self) -> _Counts:
+        start = self.at
+        number = self.digits()
+        letters = self.peek() + self.text[self.at + 1 : self.at + 2]
+        for length in (2, 1):
+            nuclide = f"[{number}{letters[:length]}]"
+            if nuclide in NUCLIDES:
+                self.at += length
+                return {nuclide: self.count()}
+        raise self.fail("an isotope such as 13C", at=start)
+
+    def count(self) -> int:
+        """The count after a unit, 1 if none is written."""
+        if not self.peek().isdigit():
+            return 1
+        start = self.at
+        value = self.digits()
+        if value < 1:
+            raise self.fail("a count of at least 1", at=start)
+        return value
+
+    def digits(self) -> int:
+        start = self.at
+        while self.at < len(self.text) and "0" <= self.text[self.at] <= "9":
+            self.at += 1
+        digits = self.text[start : self.at]
+        if not digits:  # a digit of another script
+            raise self.fail("a count in the digits 0 to 9")
+        if len(digits) > 5 or int(digits) > MAX_COUNT:
+            raise self.fail(f"a count of at most {MAX_COUNT}", at=start)
+        return int(digits)
+
+    def charge_with_digits_first(self) -> bool:
+        rest = self.text[self.at :].lstrip(" ")
+        return rest[:1].isdigit() and rest.lstrip("0123456789")[:1] in ("+", "-") and bool(rest.lstrip("0123456789"))
+
+    def charge(self) -> int:
+        """Charge and radical sign at the end of a component; 0 if there is none."""
+        self.skip_radical()
+        caret = self.peek() == "^"
+        if caret:
+            self.at += 1
+        value = self.digits() if (caret or self.charge_with_digits_first()) and self.peek().isdigit() else 0
+        sign = self.peek()
+        if sign not in ("+", "-") or not sign:
+            if caret or value:
+                raise self.fail("the sign of a charge")
+            return 0
+        n_signs = 0
+        while self.peek() == sign:
+            self.at += 1
+            n_signs += 1
+        if not value and n_signs == 1 and self.peek().isdigit():
+            value = self.digits()
+        self.skip_radical()
+        magnitude = value if value and n_signs == 1 else n_signs
+        return magnitude if sign == "+" else -magnitude
+
+    def skip_radical(self) -> None:
+        if self.peek() in ("*", ".") and self.text[self.at + 1 :].strip(" ")[:1] in ("", "+", "-"):
+            self.at += 1
