@@ -1,0 +1,338 @@
+"""Results as JSON: the stable contract ``ionwitness.result/1``, described by ``identify/schemas/result-1.json``.
+
+The other writers and the pages read the same `Report`; this file fixes names, order and rounding of what leaves the program.
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterable, Mapping, Sequence
+from functools import cache
+from importlib import resources
+from pathlib import Path
+from typing import Any
+
+from identify.records import (
+    Candidate,
+    Claim,
+    CleaningStep,
+    EvidenceItem,
+    Explanation,
+    FollowUp,
+    Identification,
+    LibraryState,
+    MolecularIonEstimate,
+    Rejection,
+    Report,
+)
+from identify.writers.files import write_atomically
+
+SCHEMA_NAME = "ionwitness.result/1"
+SCHEMA_FILE = "result-1.json"
+DECIMALS = 6
+"""Decimals of scores, probabilities, log-odds and m/z: far below what any of them means, so no information is lost."""
+SIGNIFICANT_DIGITS = 6
+"""Digits of intensities, which come in any unit."""
+
+
+def load_schema() -> dict[str, Any]:
+    """JSON Schema (draft 2020-12) of the result, as a dict.
+
+    Returns
+    -------
+    dict
+
+    Examples
+    --------
+    >>> load_schema()["properties"]["schema"]["const"]
+    'ionwitness.result/1'
+    """
+    text = resources.files("identify").joinpath("schemas", SCHEMA_FILE).read_text(encoding="utf-8")
+    schema: dict[str, Any] = json.loads(text)
+    return schema
+
+
+def report_to_dict(report: Report) -> dict[str, Any]:
+    """Plain dict of a report in the order and with the names of the result contract.
+
+    Parameters
+    ----------
+    report : Report
+
+    Returns
+    -------
+    dict
+        JSON values only (str, int, float, bool, None, list, dict); valid against `load_schema`.
+
+    Notes
+    -----
+    ``library`` is the first library searched and ``libraries`` all of them. Scores, probabilities and log-odds carry
+    `DECIMALS` decimals; parts of an explanation are rounded together so that the printed parts add up to the printed
+    value (`round_explanation`). Same report, same dict: nothing here reads a clock, a locale or the environment.
+    """
+    libraries = [_library(state) for state in report.libraries]
+    return {
+        "schema": SCHEMA_NAME,
+        "program": {"name": report.program, "version": report.version},
+        "settings": _plain(report.settings),
+        "library": libraries[0] if libraries else None,
+        "libraries": libraries,
+        "queries": [_identification(item) for item in report.identifications],
+        "rejected": [_rejection(item) for item in report.rejected],
+    }
+
+
+def report_to_json(report: Report) -> str:
+    """JSON text of a report, one query a line, ending with a newline.
+
+    Parameters
+    ----------
+    report : Report
+
+    Returns
+    -------
+    str
+        Strict JSON (no NaN or Infinity), in UTF-8 characters; lone surrogates from broken input are written as escapes.
+
+    Raises
+    ------
+    ValueError
+        If a number is not finite: a bug upstream that must not reach a file.
+    """
+    lines = []
+    for name, value in report_to_dict(report).items():
+        if name in ("queries", "rejected") and value:
+            rows = ",\n    ".join(_dumps(row) for row in value)
+            lines.append(f"  {_dumps(name)}: [\n    {rows}\n  ]")
+        else:
+            lines.append(f"  {_dumps(name)}: {_dumps(value)}")
+    return "{\n" + ",\n".join(lines) + "\n}\n"
+
+
+def write_json(path: Path, report: Report) -> None:
+    """Nothing comes out; afterwards `path` holds the report as JSON, whole or not at all.
+
+    Parameters
+    ----------
+    path : Path
+    report : Report
+
+    Raises
+    ------
+    UsageError
+        If the file cannot be written.
+    ValueError
+        If a number in the report is not finite (a bug).
+    """
+    # A lone surrogate cannot be UTF-8; its backslash form is the JSON escape of the same character.
+    write_atomically(path, report_to_json(report).encode("utf-8", "backslashreplace"))
+
+
+def round_explanation(explanation: Explanation, decimals: int = DECIMALS) -> Explanation:
+    """The same tree with every value rounded to `decimals`, so that rounded parts still add up to rounded values.
+
+    Parameters
+    ----------
+    explanation : Explanation
+    decimals : int
+        Decimals kept, 0–12.
+
+    Returns
+    -------
+    Explanation
+
+    Notes
+    -----
+    Top down: the root is rounded as usual; below it, each value is rounded down and the missing units of the last digit go to the
+    parts with the largest remainders (largest-remainder apportionment). No part moves by more than one unit of the last digit.
+
+    Examples
+    --------
+    >>> third = [Explanation(name, 1 / 3) for name in "abc"]
+    >>> tree = round_explanation(Explanation("all", 1.0, parts=tuple(third)), decimals=1)
+    >>> [part.value for part in tree.parts]
+    [0.4, 0.3, 0.3]
+    """
+    return _apportion(explanation, round(explanation.value * 10**decimals), decimals)
+
+
+def _apportion(explanation: Explanation, units: int, decimals: int) -> Explanation:
+    if not explanation.parts:
+        return Explanation(explanation.label, units / 10**decimals, explanation.detail)
+    scaled = [part.value * 10**decimals for part in explanation.parts]
+    floors = [int(value // 1) for value in scaled]
+    by_remainder = sorted(range(len(scaled)), key=lambda place: (floors[place] - scaled[place], place))
+    missing = units - sum(floors)
+    shares = list(floors)
+    for step in range(missing):
+        shares[by_remainder[step % len(by_remainder)]] += 1
+    parts = tuple(_apportion(part, share, decimals) for part, share in zip(explanation.parts, shares, strict=True))
+    return Explanation(explanation.label, units / 10**decimals, explanation.detail, parts)
+
+
+def _identification(found: Identification) -> dict[str, Any]:
+    record, spectrum = found.query.record, found.query.spectrum
+    return {
+        "id": found.query.id,
+        "source": str(record.source),
+        "name": record.identity.name or record.title,
+        "retention_time_s": _optional(record.retention.time_s),
+        "retention_index": _optional(record.retention.index),
+        "lowest_mz": spectrum.lowest_mz,
+        "peaks": _pairs(zip(spectrum.nominal.mz.tolist(), spectrum.nominal.relative.tolist(), strict=True)),
+        "cleaning": [_cleaning(step) for step in spectrum.steps],
+        "molecular_ion": _molecular_ion(found.molecular_ion),
+        "in_library_probability": _number(found.in_library_probability),
+        "claim": _claim(found.claim),
+        "hits": [_hit(candidate) for candidate in found.candidates],
+        "follow_up": [_follow_up(plan) for plan in found.follow_up],
+        "notes": list(found.notes),
+    }
+
+
+def _cleaning(step: CleaningStep) -> dict[str, Any]:
+    return {
+        "step": step.step,
+        "reason": step.reason,
+        "peaks_before": step.peaks_before,
+        "peaks_after": step.peaks_after,
+        "removed": _pairs(step.removed),
+    }
+
+
+def _molecular_ion(found: MolecularIonEstimate) -> dict[str, Any]:
+    return {
+        "estimates": [
+            {"nominal_mass": row.nominal_mass, "probability": _number(row.probability), "basis": list(row.basis)}
+            for row in found.estimates
+        ],
+        "not_observed_probability": _number(found.not_observed_probability),
+        "agreement": found.agreement,
+    }
+
+
+def _claim(claim: Claim) -> dict[str, Any]:
+    return {
+        "level": claim.level.value,
+        "statement": claim.statement,
+        "probability": _number(claim.probability),
+        "members": list(claim.members),
+        "levels": {
+            "compound": _number(claim.compound_probability),
+            "isomer group": _number(claim.group_probability),
+            "class": _number(claim.class_probability),
+        },
+        "unlisted_isomers": claim.unlisted_isomers,
+        "msi_2007": claim.msi_2007,
+        "schymanski_2014": claim.schymanski_2014,
+    }
+
+
+def _hit(candidate: Candidate) -> dict[str, Any]:
+    entry, identity = candidate.entry, candidate.entry.identity
+    return {
+        "rank": candidate.rank,
+        "name": identity.name,
+        "formula": identity.formula,
+        "measured_as": entry.measured_as or None,
+        "formula_as_measured": entry.formula_as_measured or None,
+        "inchikey": identity.inchikey,
+        "smiles": identity.smiles,
+        "accession": entry.accession,
+        "licence": entry.licence,
+        "authors": entry.authors,
+        "status": entry.status.value,
+        "library": candidate.library,
+        "cosine": _number(candidate.cosine),
+        "reverse": _number(candidate.reverse),
+        "matched_peaks": candidate.aligned.n_matched,
+        "compared_from_mz": candidate.aligned.lowest_mz,
+        "entries_of_compound": candidate.n_entries,
+        "probability": _number(candidate.probability),
+        "evidence": [_evidence(item) for item in candidate.evidence],
+        "explanation": _explanation(round_explanation(candidate.explanation)),
+        "notes": list(candidate.notes),
+    }
+
+
+def _evidence(item: EvidenceItem) -> dict[str, Any]:
+    return {
+        "kind": item.kind,
+        "verdict": item.verdict.value,
+        "reason": item.reason,
+        "observed": item.observed,
+        "expected": item.expected,
+        "uncertainty": item.uncertainty,
+        "log_odds": _number(item.log_odds),
+        "source": item.source,
+    }
+
+
+def _explanation(tree: Explanation) -> dict[str, Any]:
+    return {
+        "label": tree.label,
+        "value": tree.value,
+        "detail": tree.detail,
+        "parts": [_explanation(part) for part in tree.parts],
+    }
+
+
+def _follow_up(plan: FollowUp) -> dict[str, Any]:
+    return {
+        "action": plan.action,
+        "reason": plan.reason,
+        "candidates": list(plan.candidates),
+        "decides": plan.decides,
+        "priority": _number(plan.priority),
+    }
+
+
+def _library(state: LibraryState) -> dict[str, Any]:
+    return {
+        "path": state.path,
+        "fingerprint": state.fingerprint,
+        "entries": state.entries,
+        "compounds": state.compounds,
+    }
+
+
+def _rejection(item: Rejection) -> dict[str, Any]:
+    return {
+        "source": item.source,
+        "line": item.line,
+        "reason": item.reason,
+        "found": item.found,
+        "expected": item.expected,
+        "hint": item.hint,
+    }
+
+
+def _number(value: float) -> float:
+    # Adding 0.0 turns -0.0 into 0.0, so that equal results are equal text.
+    return round(float(value), DECIMALS) + 0.0
+
+
+def _optional(value: float | None) -> float | None:
+    return None if value is None else _number(value)
+
+
+def _pairs(pairs: Iterable[tuple[float, float]]) -> list[list[float]]:
+    return [[_number(mz), float(f"{intensity:.{SIGNIFICANT_DIGITS}g}")] for mz, intensity in pairs]
+
+
+def _plain(value: Any) -> Any:
+    """Settings as JSON values: mappings and sequences unfolded, in their own order."""
+    if isinstance(value, Mapping):
+        return {str(name): _plain(item) for name, item in value.items()}
+    if isinstance(value, Sequence) and not isinstance(value, str):
+        return [_plain(item) for item in value]
+    return value
+
+
+@cache
+def _encoder() -> json.JSONEncoder:
+    return json.JSONEncoder(ensure_ascii=False, allow_nan=False, separators=(", ", ": "))
+
+
+def _dumps(value: Any) -> str:
+    return _encoder().encode(value)
