@@ -140,8 +140,8 @@ def find_derivative(text: str) -> Derivative | None:
     Returns
     -------
     Derivative or None
-        `n` and `x` mean an unknown number; a group without a number counts once; "0 TMS" is no derivative; two different
-        numbers of the same group make it unknown.
+        `n` and `x` mean an unknown number; a group without a number counts once; "0 TMS" is no derivative; of
+        "2 TMS; n TMS" the number counts, and two different numbers of the same group make it unknown.
 
     Notes
     -----
@@ -159,7 +159,8 @@ def find_derivative(text: str) -> Derivative | None:
     found: dict[str, set[int | None]] = {}
     for group, number in _statements(text[:2000]):
         found.setdefault(group, set()).add(number)
-    numbers = {group: next(iter(values)) if len(values) == 1 else None for group, values in found.items()}
+    stated = {group: values - {None} for group, values in found.items()}
+    numbers = {group: next(iter(values)) if len(values) == 1 else None for group, values in stated.items()}
     groups = tuple((group, numbers[group]) for group in GROUPS if group in numbers and numbers[group] != 0)
     return Derivative(groups) if groups else None
 
@@ -190,10 +191,12 @@ def _read_field(field: str, *, need_number: bool) -> list[tuple[str, int | None]
         match = _TOKEN.match(field, at)
         if match is None:
             return []
-        numbered_only = match["group"].lower() in _NUMBERED
-        if match["number"] is None and (need_number or numbered_only):
+        number = match["number"]
+        if match["group"].lower() in _NUMBERED and (number is None or not number.isdigit()):  # "diethyl ether"
             return []
-        found.append((match["group"], match["number"] or "1"))
+        if number is None and need_number:
+            return []
+        found.append((match["group"], number or "1"))
         at = match.end()
         gap = _BETWEEN.match(field, at)
         if at < len(field) and gap is None and not field[at].isdigit():
