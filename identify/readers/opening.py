@@ -1,0 +1,97 @@
+"""The one way in: a path or pasted text → spectrum records, the reader chosen by content."""
+
+from __future__ import annotations
+
+import io
+from collections.abc import Callable, Iterable, Iterator
+from dataclasses import replace
+from pathlib import Path
+from typing import BinaryIO, cast
+
+from identify.errors import FormatError, InputError
+from identify.readers.containers import OpenFile, open_files
+from identify.readers.fault_reports import OnReject, rejection_of
+from identify.readers.massbank import parse_massbank
+from identify.readers.recognize import FORMATS, recognize_format
+from identify.readers.text_lines import ASSUMED_ENCODING, LineDecoder, PeekedStream
+from identify.records import SpectrumRecord
+
+TextReader = Callable[[Iterable[str], str, OnReject], Iterator[SpectrumRecord]]
+TEXT_READERS: dict[str, TextReader] = {"massbank": parse_massbank}
+"""Readers of text formats by the names `recognize_format` gives: lines, path, on_reject → records."""
+
+
+def read_spectra(path: Path, on_reject: OnReject) -> Iterator[SpectrumRecord]:
+    """Spectrum records behind a path, one at a time, in file order.
+
+    Parameters
+    ----------
+    path : Path
+        A file in any format `recognize_format` knows, a folder of such files (with subfolders, sorted), or a zip, tar,
+        tar.gz archive or gzipped file, read as a stream.
+    on_reject : callable
+        Takes a `Rejection` for each record that breaks its format and, in a folder or archive, for each file that is
+        not readable as a whole; reading goes on.
+
+    Yields
+    ------
+    SpectrumRecord
+        Peaks as they stand in the file, uncleaned; `source.path` is ``archive::member`` inside an archive.
+
+    Raises
+    ------
+    InputError
+        If there is nothing to read at `path`.
+    FormatError
+        If a single file is empty, binary, of no known format or damaged, or an archive is damaged (the records before
+        the damage have been yielded by then). Raised on iteration, not on the call.
+
+    Notes
+    -----
+    Memory is bounded by one record; see `identify.readers.limits`.
+    """
+    for file in open_files(path, on_reject):
+        if not file.is_member:
+            yield from _read_file(file, on_reject)
+            continue
+        try:
+            yield from _read_file(file, on_reject)
+        except InputError as error:
+            on_reject(rejection_of(error, file.path))
+
+
+def read_pasted(text: str, name: str, on_reject: OnReject) -> Iterator[SpectrumRecord]:
+    """Spectrum records in a text that somebody pasted, in any of the text formats.
+
+    Parameters
+    ----------
+    text : str
+        Such as ``43:100 58:22, 15 30``, two columns, or a whole record.
+    name : str
+        Stands for the file in provenance and messages.
+    on_reject : callable
+        As for `read_spectra`.
+
+    Yields
+    ------
+    SpectrumRecord
+
+    Raises
+    ------
+    FormatError
+        If the text as a whole is empty or of no known format.
+    """
+    stream = cast(BinaryIO, io.BytesIO(text.encode("utf-8", "replace")))
+    yield from _read_file(OpenFile(name, stream, is_member=False), on_reject)
+
+
+def _read_file(file: OpenFile, on_reject: OnReject) -> Iterator[SpectrumRecord]:
+    stream = PeekedStream(file.stream)
+    name = recognize_format(stream.head, file.path)
+    lines = LineDecoder(stream, file.path)
+    if name not in TEXT_READERS:
+        raise FormatError("unknown format", where=file.path, found="text of no known kind", expected=FORMATS)
+    for record in TEXT_READERS[name](lines, file.path, on_reject):
+        if lines.is_assumed:
+            record = replace(record, extra={**record.extra, "encoding": ASSUMED_ENCODING})
+        yield record

@@ -1,0 +1,91 @@
+"""What is this file? Decided by its first bytes, never by its name."""
+
+from __future__ import annotations
+
+import re
+
+from identify.errors import FormatError, quote
+from identify.readers.text_lines import find_byte_order_mark, is_binary
+
+_BINARY_KINDS = (
+    (b"CDF\x01", "a netCDF file"),
+    (b"CDF\x02", "a netCDF file"),
+    (b"\x89HDF", "an HDF5 file"),
+    (b"%PDF", "a PDF document"),
+    (b"\x89PNG", "an image"),
+    (b"\xff\xd8\xff", "an image"),
+    (b"SQLite format 3\x00", "an SQLite file, perhaps a library"),
+    (b"PK\x03\x04", "an archive inside an archive"),
+    (b"\x1f\x8b", "an archive inside an archive"),
+    (b"\xd0\xcf\x11\xe0", "an office document"),
+)
+_MSP_LINE = re.compile(r"\s*(?:name|synon?|num\s*peaks|formula|mw|db#|comments?|cas(?:no|#)?)\s*:", re.IGNORECASE)
+_MSP_COUNT = re.compile(r"^\s*num\s*peaks\s*:", re.IGNORECASE | re.MULTILINE)
+FORMATS = "MassBank record, JCAMP-DX, name/value text (.msp), mzSpecLib text, mzML, MGF or a table of m/z and intensity"
+
+
+def recognize_format(head: bytes, path: str) -> str:
+    """Name of the format that the first bytes of a file belong to.
+
+    Parameters
+    ----------
+    head : bytes
+        First bytes of the file (up to `HEAD_BYTES`).
+    path : str
+        File, for messages.
+
+    Returns
+    -------
+    str
+        ``massbank``, ``jcamp``, ``msp``, ``mzspeclib``, ``mzml``, ``mgf`` or ``table``. ``table`` only means "text that
+        may be one": its reader decides.
+
+    Raises
+    ------
+    FormatError
+        For an empty file, a binary file, and text of another known kind (JSON, HTML, other XML).
+
+    Examples
+    --------
+    >>> recognize_format(b"##TITLE= x", "a.txt"), recognize_format(b"43 100", "a.txt")
+    ('jcamp', 'table')
+    """
+    for magic, kind in _BINARY_KINDS:
+        if head.startswith(magic):
+            hint = "Read a run with the command for runs." if "netCDF" in kind else ""
+            raise FormatError("unknown format", where=path, found=kind, expected=FORMATS, hint=hint)
+    if is_binary(head):
+        raise FormatError("unknown format", where=path, found="binary data", expected=FORMATS)
+    encoding, mark_length = find_byte_order_mark(head)
+    text = head[mark_length:].decode(encoding or "utf-8", "replace")
+    start = text.lstrip()
+    if not start:
+        raise FormatError("unknown format", where=path, found="no text", expected=FORMATS, hint="The file is empty.")
+    return _recognize_text(start, path)
+
+
+def _recognize_text(text: str, path: str) -> str:
+    first = text.partition("\n")[0].partition("\r")[0].strip()
+    if first.startswith("ACCESSION:"):
+        return "massbank"
+    if first == "<mzSpecLib>":
+        return "mzspeclib"
+    if text.startswith("<"):
+        if re.search(r"<(?:indexedmzML|mzML)\b", text):
+            return "mzml"
+        raise FormatError(
+            "file", where=path, found=quote(first), expected=FORMATS, hint="This is markup of another kind."
+        )
+    if first.startswith(("{", "[")):
+        raise FormatError("unknown format", where=path, found=quote(first), expected=FORMATS, hint="JSON is not read.")
+    lines = [line.strip() for line in re.split(r"\r\n|\r|\n", text)]
+    content = [line for line in lines if line and not line.startswith("$$")]
+    if content and content[0].startswith("##") and "=" in content[0]:
+        return "jcamp"
+    if "BEGIN IONS" in lines:
+        return "mgf"
+    if _MSP_LINE.match(first) and (_MSP_COUNT.search(text) or first.lower().startswith("name")):
+        return "msp"
+    if _MSP_COUNT.search(text):
+        return "msp"
+    return "table"
