@@ -24,12 +24,12 @@ MAX_NOMINAL_MASS: Final = 10_000
 MAX_CHARGE: Final = 20
 
 _ALIASES: Final = {"D": "[2H]", "T": "[3H]"}
-_HALF_VALENCE: Final = {
-    **dict.fromkeys(("H", "F", "Cl", "Br", "I", "Li", "Na", "K", "Rb", "Cs"), -0.5),
-    **dict.fromkeys(("N", "P", "As", "Sb", "Bi", "B", "Al", "Ga", "In"), 0.5),
-    **dict.fromkeys(("C", "Si", "Ge", "Sn", "Pb"), 1.0),
+_UNSATURATION: Final = {
+    **dict.fromkeys(("H", "F", "Cl", "Br", "I", "Li", "Na", "K", "Rb", "Cs"), -1),
+    **dict.fromkeys(("N", "P", "As", "Sb", "Bi", "B", "Al", "Ga", "In"), 1),
+    **dict.fromkeys(("C", "Si", "Ge", "Sn", "Pb"), 2),
 }
-"""Contribution of one atom to rings plus double bonds: (valence − 2)/2; divalent and other elements add nothing."""
+"""Valence − 2 of one atom; divalent and all other elements have 0."""
 
 
 def _hill_key(symbol: str, has_carbon: bool) -> tuple[int, str, int]:
@@ -225,6 +225,27 @@ def parse_formula(text: str, *, where: str = "") -> Formula:
         ) from None
 
 
+def doubled_unsaturation(symbol: str) -> int:
+    """Twice what one atom adds to rings plus double bonds: its valence − 2.
+
+    Parameters
+    ----------
+    symbol : str
+        Element or nuclide known to the isotope table.
+
+    Returns
+    -------
+    int
+        −1 for hydrogen, halogens and alkali metals, 1 for the nitrogen and boron groups, 2 for the carbon group, else 0.
+
+    Examples
+    --------
+    >>> doubled_unsaturation("[13C]"), doubled_unsaturation("Cl")
+    (2, -1)
+    """
+    return _UNSATURATION.get(element_of(symbol), 0)
+
+
 def rings_plus_double_bonds(formula: Formula) -> float:
     """Rings plus double bonds of a composition; half-integer for an even-electron ion.
 
@@ -248,7 +269,7 @@ def rings_plus_double_bonds(formula: Formula) -> float:
     >>> rings_plus_double_bonds(parse_formula("C8H8O")), rings_plus_double_bonds(parse_formula("C3H9Si+"))
     (5.0, 0.5)
     """
-    return 1.0 + sum(_HALF_VALENCE.get(element_of(symbol), 0.0) * count for symbol, count in formula.counts)
+    return 1.0 + 0.5 * sum(doubled_unsaturation(symbol) * count for symbol, count in formula.counts)
 
 
 def nitrogen_rule_holds(nominal_mass: int, n_nitrogen: int) -> bool:

@@ -124,39 +124,44 @@ def isotope_pattern(formula: Formula) -> IsotopePattern:
     return IsotopePattern(nominal, nominal + offset, read_only(ratios[: last + 1]))
 
 
+def _log_fraction(symbol: str, numbers: tuple[int, ...]) -> float:
+    """Log of the multinomial probability of one isotopologue of an element, isotopes by rising mass number."""
+    terms = (n * log(iso.fraction) - lgamma(n + 1) for n, iso in zip(numbers, NATURAL_ISOTOPES[symbol], strict=True))
+    return lgamma(sum(numbers) + 1) + sum(terms)
+
+
 @lru_cache(maxsize=2048)
-def _fine_element(symbol: str, count: int, min_fraction: float) -> tuple[tuple[float, float], ...]:
-    """``(mass, fraction)`` of every isotopologue of one element that has at least `min_fraction`.
+def _summit(symbol: str, count: int) -> tuple[tuple[int, ...], float]:
+    """The most abundant isotopologue of `count` atoms and the log of its fraction."""
+    principal = MASS_NUMBER[symbol]
+    summit = tuple(count if isotope.mass_number == principal else 0 for isotope in NATURAL_ISOTOPES[symbol])
+    level = _log_fraction(symbol, summit)
+    while True:
+        higher_level, higher = max((_log_fraction(symbol, move), move) for move in _moves(summit))
+        if higher_level <= level:
+            return summit, level
+        summit, level = higher, higher_level
+
+
+def _fine_element(symbol: str, count: int, log_threshold: float) -> FloatArray:
+    """Rows of mass and fraction, one for every isotopologue of one element whose log fraction reaches the threshold.
 
     A multinomial distribution has one summit, and what lies above any level hangs together by moves of a single atom from
-    one isotope to another; so climb to the summit and flood from there.
+    one isotope to another; so flood from the summit.
     """
-    isotopes = NATURAL_ISOTOPES.get(symbol)
-    if isotopes is None or len(isotopes) == 1:
-        return ((MASS[symbol] * count, 1.0),)
-    logs = [log(isotope.fraction) for isotope in isotopes]
-    threshold = log(min_fraction)
-
-    def log_fraction(numbers: tuple[int, ...]) -> float:
-        return lgamma(count + 1) + sum(n * x - lgamma(n + 1) for n, x in zip(numbers, logs, strict=True))
-
-    summit = tuple(count if isotope.mass_number == MASS_NUMBER[symbol] else 0 for isotope in isotopes)
-    while True:
-        higher = max(_moves(summit), key=log_fraction)
-        if log_fraction(higher) <= log_fraction(summit):
-            break
-        summit = higher
+    isotopes = NATURAL_ISOTOPES[symbol]
+    summit, _ = _summit(symbol, count)
     seen, to_visit = {summit}, [summit]
     found: list[tuple[float, float]] = []
     while to_visit:
         numbers = to_visit.pop()
-        level = log_fraction(numbers)
-        if level >= threshold:
+        level = _log_fraction(symbol, numbers)
+        if level >= log_threshold:
             found.append((sum(n * iso.mass for n, iso in zip(numbers, isotopes, strict=True)), exp(level)))
             fresh = [move for move in _moves(numbers) if move not in seen]
             seen.update(fresh)
             to_visit.extend(fresh)
-    return tuple(sorted(found))
+    return np.array(found, dtype=np.float64).reshape(-1, 2)
 
 
 def _moves(numbers: tuple[int, ...]) -> list[tuple[int, ...]]:
@@ -203,11 +208,16 @@ def fine_isotope_pattern(formula: Formula, min_fraction: float = 1e-4) -> tuple[
         raise UsageError(
             "smallest isotopologue fraction", found=f"{min_fraction}", expected=f"a value from {MIN_FRACTION} to 1"
         )
-    masses, fractions = np.zeros(1), np.ones(1)
-    for symbol, count in formula.counts:
-        part = np.array(_fine_element(symbol, count, min_fraction)).reshape(-1, 2)
+    mixed = [(symbol, count) for symbol, count in formula.counts if len(NATURAL_ISOTOPES.get(symbol, ())) > 1]
+    pure_mass = sum(MASS[symbol] * count for symbol, count in formula.counts if (symbol, count) not in mixed)
+    masses, fractions = np.array([pure_mass]), np.ones(1)
+    limit = log(min_fraction) - 1e-9
+    summits = [_summit(symbol, count)[1] for symbol, count in mixed]
+    for position, (symbol, count) in enumerate(mixed):
+        # no isotopologue of this element counts unless it reaches the limit beside the best of all the others
+        part = _fine_element(symbol, count, limit - (sum(summits) - summits[position]))
         fractions = np.outer(fractions, part[:, 1]).ravel()
-        kept = fractions >= min_fraction
+        kept = fractions >= exp(limit - sum(summits[position + 1 :]))
         masses, fractions = np.add.outer(masses, part[:, 0]).ravel()[kept], fractions[kept]
     order = np.argsort(masses, kind="stable")
     return read_only(masses[order] - formula.charge * ELECTRON_MASS), read_only(fractions[order])
