@@ -1,0 +1,154 @@
+"""The formula as such against the query: can it exist, does its nitrogen show, and can its pieces give the ions seen?"""
+
+from __future__ import annotations
+
+from identify.evidence.facts import FormulaFacts, QueryFacts
+from identify.evidence.finding import Finding, not_assessed
+from identify.records import Verdict
+
+FORMULA_RULES = "nitrogen rule and rings"
+EXPLAINED = "intensity explained"
+
+RULES_SOURCE = (
+    "Nitrogen rule; rings plus double bonds after Bright & Chen, J. Chem. Educ. 1983, 60, 557; "
+    "weighed on open EI records"
+)
+EXPLAINED_SOURCE = (
+    "Subformulas of the formula as measured at nominal mass (own enumeration); weighed on open EI records"
+)
+
+
+def check_formula_rules(facts: QueryFacts, formula: FormulaFacts | None) -> Finding:
+    """Whether the formula can be a molecule, and whether fragment parity fits its number of nitrogens.
+
+    Parameters
+    ----------
+    facts : QueryFacts
+    formula : FormulaFacts or None
+
+    Returns
+    -------
+    Finding
+
+    Notes
+    -----
+    Without nitrogen, even-electron fragments of an even-mass molecule have odd m/z; one nitrogen turns that round. The share of
+    intensity at even m/z (13C of the peak below taken away, upper half of the mass range, M itself left out) is what is weighed.
+    """
+    if formula is None:
+        return not_assessed(FORMULA_RULES, "The entry has no formula.")
+    if formula.saturation < 0 or formula.saturation != int(formula.saturation):
+        return Finding(
+            FORMULA_RULES,
+            Verdict.CONFLICTS,
+            f"Rings plus double bonds of {formula.saturation:g} are impossible for a molecule: check the entry's formula.",
+            cell="impossible",
+            observed=f"{formula.saturation:g}",
+            expected="a whole number ≥ 0",
+            source=RULES_SOURCE,
+        )
+    share = _even_share(facts, formula.nominal_mass)
+    if share is None:
+        return not_assessed(FORMULA_RULES, "Too little intensity below M to judge the parity of fragments.")
+    size = "few" if share < 0.2 else "some" if share < 0.45 else "many"
+    nitrogen = "no N" if formula.nitrogens == 0 else "odd N" if formula.nitrogens % 2 else "even N"
+    if (nitrogen, size) in (("no N", "few"), ("odd N", "many"), ("even N", "some")):
+        verdict, reason = Verdict.AGREES, f"The parity of the fragments is usual for {_count(formula.nitrogens)}."
+    elif (nitrogen, size) == ("no N", "many"):
+        verdict, reason = (
+            Verdict.CONFLICTS,
+            "Fragments at even m/z dominate, which suggests nitrogen; the formula has none.",
+        )
+    else:
+        verdict, reason = (
+            Verdict.INCONCLUSIVE,
+            f"The parity of the fragments says little about {_count(formula.nitrogens)}.",
+        )
+    return Finding(
+        FORMULA_RULES,
+        verdict,
+        reason,
+        cell=f"{nitrogen}, {size} even",
+        observed=f"{100 * share:.0f} % of the fragment intensity at even m/z",
+        expected=f"{_count(formula.nitrogens)}, rings plus double bonds {formula.saturation:g}",
+        source=RULES_SOURCE,
+    )
+
+
+def _count(nitrogens: int) -> str:
+    return "a molecule without nitrogen" if nitrogens == 0 else f"a molecule with {nitrogens} N"
+
+
+def _even_share(facts: QueryFacts, mass: int) -> float | None:
+    even = odd = 0.0
+    previous = 0.0
+    for mz in range(40, min(mass - 3, len(facts.dense))):
+        value = facts.dense[mz]
+        left = value - previous * mz * 0.00085
+        previous = value
+        if left > 0:
+            if mz % 2:
+                odd += left
+            else:
+                even += left
+    total = even + odd
+    return even / total if total >= 20.0 else None
+
+
+def check_explained(facts: QueryFacts, formula: FormulaFacts | None) -> Finding:
+    """Share of the query's intensity whose m/z a subformula of the candidate can have.
+
+    Parameters
+    ----------
+    facts : QueryFacts
+    formula : FormulaFacts or None
+
+    Returns
+    -------
+    Finding
+        The strongest ions that no subformula reaches are listed. Ions above M are left to their own check.
+    """
+    if formula is None:
+        return not_assessed(EXPLAINED, "The entry has no formula to take apart.")
+    mass = formula.nominal_mass
+    total = missed = 0.0
+    unexplained: list[tuple[float, int]] = []
+    dense, reachable = facts.dense, formula.reachable
+    for mz in range(1, min(mass + 1, len(dense))):
+        value = dense[mz]
+        if value <= 0.0:
+            continue
+        total += value
+        if not reachable[mz]:
+            left = value - 1.3 * (formula.ratio(1) * dense[mz - 1] + formula.ratio(2) * dense[mz - 2 if mz > 1 else 0])
+            if left > 0:
+                missed += left
+                unexplained.append((left, mz))
+    if total < 20.0:
+        return not_assessed(EXPLAINED, "Almost nothing of the query lies at or below M.")
+    share = 100.0 * missed / total
+    size = next(
+        word
+        for limit, word in ((0.05, "none"), (0.5, "trace"), (2.0, "little"), (6.0, "some"), (200.0, "much"))
+        if share < limit
+    )
+    unexplained.sort(reverse=True)
+    listed = ", ".join(str(mz) for _, mz in unexplained[:6])
+    if size in ("none", "trace"):
+        verdict, reason = Verdict.AGREES, "Pieces of this formula can give practically all ions of the query."
+    elif size in ("some", "much"):
+        verdict, reason = Verdict.CONFLICTS, f"No piece of this formula has the mass of m/z {listed}."
+    else:
+        verdict, reason = (
+            Verdict.INCONCLUSIVE,
+            f"A small part of the intensity (m/z {listed}) is not reachable; background explains it.",
+        )
+    return Finding(
+        EXPLAINED,
+        verdict,
+        reason,
+        cell=size,
+        observed=f"{100 - share:.1f} % of the intensity reachable" + (f"; not: m/z {listed}" if listed else ""),
+        expected="all but background",
+        source=EXPLAINED_SOURCE,
+    )

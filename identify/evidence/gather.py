@@ -1,0 +1,57 @@
+"""All evidence on one candidate: run every check, weigh every finding."""
+
+from __future__ import annotations
+
+from identify.evidence.composition import check_explained, check_formula_rules
+from identify.evidence.facts import QueryFacts, build_query_facts, entry_formula
+from identify.evidence.finding import Finding, weigh
+from identify.evidence.high_mass import check_ions_above, check_losses, check_molecular_ion
+from identify.evidence.isotopes import check_carbon_count, check_isotope_pattern
+from identify.evidence.retention_check import check_retention
+from identify.records import AlignedPeaks, Entry, EvidenceItem, Query
+from identify.settings import Settings
+
+BACKGROUND = frozenset({73, 147, 207, 221, 267, 281, 295, 341, 355, 429, 149, 18, 28, 32, 40, 44})
+"""Siloxane bleed, phthalate plasticiser, residual air and water (`standards.md` 6)."""
+
+
+def gather_evidence(
+    query: Query, entry: Entry, aligned: AlignedPeaks, settings: Settings, facts: QueryFacts | None = None
+) -> tuple[EvidenceItem, ...]:
+    """All evidence on one candidate that does not come from the fragment match.
+
+    Parameters
+    ----------
+    query : Query
+    entry : Entry
+        Best entry of the candidate.
+    aligned : AlignedPeaks
+        Query and entry on one axis.
+    settings : Settings
+    facts : QueryFacts, optional
+        `build_query_facts(query)`; pass it when many candidates of one query are checked.
+
+    Returns
+    -------
+    tuple of EvidenceItem
+        One per check, always in the same order.
+    """
+    return tuple(weigh(finding) for finding in examine(query, entry, aligned, settings, facts))
+
+
+def examine(
+    query: Query, entry: Entry, aligned: AlignedPeaks, settings: Settings, facts: QueryFacts | None = None
+) -> tuple[Finding, ...]:
+    """Findings of all checks, before they are weighed (see `gather_evidence`)."""
+    facts = facts or build_query_facts(query)
+    formula, _ = entry_formula(entry, facts)
+    return (
+        check_molecular_ion(facts, formula, entry),
+        check_isotope_pattern(facts, formula),
+        check_carbon_count(facts, formula),
+        check_losses(facts, formula, entry),
+        check_ions_above(facts, formula, entry, BACKGROUND),
+        check_formula_rules(facts, formula),
+        check_explained(facts, formula),
+        check_retention(query, entry),
+    )
