@@ -268,7 +268,9 @@ def _read_tar(path: str, stream: BoundedStream, on_reject: OnReject) -> Iterator
 
 
 def _member_name(archive: str, member: str) -> str:
-    shown = "".join(letter if letter.isprintable() else "?" for letter in member[:300])
+    shown = member[:300]
+    if not shown.isprintable():
+        shown = "".join(letter if letter.isprintable() else "?" for letter in shown)
     return f"{archive}::{shown}"
 
 

@@ -81,7 +81,7 @@ def _split_records(lines: Iterable[str]) -> Iterator[tuple[list[str], int, bool]
     block: list[str] = []
     first_line = 1
     for line_number, line in enumerate(lines, 1):
-        if line[:2] == "  " and block and len(block) < MAX_RECORD_LINES:
+        if line[:2] == "  " and 0 < len(block) < MAX_RECORD_LINES:
             block.append(line)
         elif line.rstrip() == END:
             if block:
@@ -166,8 +166,8 @@ def _split_fields(block: list[str], first_line: int, path: str) -> _Fields:
         raise fault("record start", path, first_line, found=quote(block[0]), expected="'ACCESSION: '")
     fields = _Fields()
     key = ""
-    position = 0
-    while position < len(block):
+    position, n_lines = 0, len(block)
+    while position < n_lines:
         line, line_number = block[position], first_line + position
         position += 1
         if line.startswith("  ") and key:
@@ -183,7 +183,7 @@ def _split_fields(block: list[str], first_line: int, path: str) -> _Fields:
             raise fault("tag given twice", path, line_number, found=quote(tag), expected=f"one {tag}")
         if tag in ("PK$PEAK", "PK$ANNOTATION"):
             start = position
-            while position < len(block) and block[position].startswith("  "):
+            while position < n_lines and block[position][:2] == "  ":
                 position += 1
             fields.rows[tag] = block[start:position], line_number + 1
             key = tag

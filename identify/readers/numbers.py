@@ -6,7 +6,8 @@ Python's own ``float`` also takes ``1_000``, ``nan``, ``infinity`` and digits of
 from __future__ import annotations
 
 import re
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
+from itertools import chain
 
 import numpy as np
 
@@ -89,21 +90,44 @@ def parse_columns(rows: Sequence[Sequence[str]], lines: Sequence[int], path: str
     for row, line in zip(rows, lines, strict=True):
         if len(row) != width:
             raise FormatError("peak row", where=f"{path}:{line}", found=quote(" ".join(row)), expected=expected)
+    tokens = list(chain.from_iterable(rows))
+    return parse_tokens(tokens, lambda position: lines[position // width], path).reshape(len(rows), width)
+
+
+def parse_tokens(tokens: Sequence[str], line_of: Callable[[int], int], path: str) -> FloatArray:
+    """Numbers that `tokens` spell.
+
+    Parameters
+    ----------
+    tokens : sequence of str
+        ``n`` tokens without blanks.
+    line_of : callable
+        Line number of the token at a position.
+    path : str
+        File, for messages.
+
+    Returns
+    -------
+    ndarray of shape (n,)
+
+    Raises
+    ------
+    FormatError
+        Naming the line of the first token that is not a finite decimal number.
+    """
     try:
-        values = np.array([[float(token) for token in row] for row in rows], dtype=np.float64).reshape(len(rows), width)
+        values = np.array(list(map(float, tokens)), dtype=np.float64)
     except ValueError:
-        raise _locate_fault(rows, lines, path) from None
-    text = "".join(["".join(row) for row in rows])
+        raise _locate_fault(tokens, line_of, path) from None
+    text = "".join(tokens)
     if not np.isfinite(values).all() or "_" in text or not text.isascii():
-        raise _locate_fault(rows, lines, path)
+        raise _locate_fault(tokens, line_of, path)
     return values
 
 
-def _locate_fault(rows: Sequence[Sequence[str]], lines: Sequence[int], path: str) -> FormatError:
-    for row, line in zip(rows, lines, strict=True):
-        for token in row:
-            if parse_number(token) is None:
-                return FormatError(
-                    "number in a peak row", where=f"{path}:{line}", found=quote(token), expected="a finite number"
-                )
+def _locate_fault(tokens: Sequence[str], line_of: Callable[[int], int], path: str) -> FormatError:
+    for position, token in enumerate(tokens):
+        if parse_number(token) is None:
+            where = f"{path}:{line_of(position)}"
+            return FormatError("number in a peak row", where=where, found=quote(token), expected="a finite number")
     raise AssertionError("every token is a number after all")

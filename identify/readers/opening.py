@@ -12,12 +12,15 @@ from identify.errors import FormatError, InputError
 from identify.readers.containers import OpenFile, open_files
 from identify.readers.fault_reports import OnReject, rejection_of
 from identify.readers.massbank import parse_massbank
+from identify.readers.msp import parse_msp
+from identify.readers.profile import looks_like_profile
 from identify.readers.recognize import FORMATS, recognize_format
+from identify.readers.table import parse_table
 from identify.readers.text_lines import ASSUMED_ENCODING, LineDecoder, PeekedStream
 from identify.records import SpectrumRecord
 
 TextReader = Callable[[Iterable[str], str, OnReject], Iterator[SpectrumRecord]]
-TEXT_READERS: dict[str, TextReader] = {"massbank": parse_massbank}
+TEXT_READERS: dict[str, TextReader] = {"massbank": parse_massbank, "msp": parse_msp, "table": parse_table}
 """Readers of text formats by the names `recognize_format` gives: lines, path, on_reject → records."""
 
 
@@ -94,4 +97,6 @@ def _read_file(file: OpenFile, on_reject: OnReject) -> Iterator[SpectrumRecord]:
     for record in TEXT_READERS[name](lines, file.path, on_reject):
         if lines.is_assumed:
             record = replace(record, extra={**record.extra, "encoding": ASSUMED_ENCODING})
+        if not record.is_profile and looks_like_profile(record.mz, record.intensity):
+            record = replace(record, is_profile=True)
         yield record

@@ -19,8 +19,7 @@ _BINARY_KINDS = (
     (b"\x1f\x8b", "an archive inside an archive"),
     (b"\xd0\xcf\x11\xe0", "an office document"),
 )
-_MSP_LINE = re.compile(r"\s*(?:name|synon?|num\s*peaks|formula|mw|db#|comments?|cas(?:no|#)?)\s*:", re.IGNORECASE)
-_MSP_COUNT = re.compile(r"^\s*num\s*peaks\s*:", re.IGNORECASE | re.MULTILINE)
+_MSP_COUNT = re.compile(r"(?:^|[\r\n])[ \t]*num(?:ber[ _]of)?[ _]*peaks?[ \t]*:", re.IGNORECASE)
 FORMATS = "MassBank record, JCAMP-DX, name/value text (.msp), mzSpecLib text, mzML, MGF or a table of m/z and intensity"
 
 
@@ -84,8 +83,4 @@ def _recognize_text(text: str, path: str) -> str:
         return "jcamp"
     if "BEGIN IONS" in lines:
         return "mgf"
-    if _MSP_LINE.match(first) and (_MSP_COUNT.search(text) or first.lower().startswith("name")):
-        return "msp"
-    if _MSP_COUNT.search(text):
-        return "msp"
-    return "table"
+    return "msp" if _MSP_COUNT.search(text) else "table"

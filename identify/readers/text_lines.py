@@ -132,11 +132,8 @@ class LineDecoder:
                 raise self._too_long(line_number + data.count(b"\n", 0, end))
             lines = self._decode(data[:end]).split("\n")
             last_line = lines.pop()
-            for line in lines:
-                if len(line) > MAX_LINE_BYTES:
-                    raise self._too_long(line_number)
-                yield line
-                line_number += 1
+            yield from lines
+            line_number += len(lines)
             if is_last:
                 if last_line:
                     yield last_line

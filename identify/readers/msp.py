@@ -1,0 +1,145 @@
+"""The plain-text name/value-and-peaks exchange format (.msp) → spectrum records.
+
+There is no written standard; open collections share one shape: ``Name: value`` lines, ``Num Peaks: n``, then n pairs.
+Tolerant about spelling and separators, strict about the count and the numbers.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterable, Iterator
+from functools import partial
+
+import numpy as np
+
+from identify.errors import InputError, quote
+from identify.readers.fault_reports import OnReject, fault, rejection_of
+from identify.readers.limits import MAX_PEAKS, MAX_RECORD_LINES
+from identify.readers.named_fields import NamedFields, bare_name, record_from_fields
+from identify.readers.numbers import parse_tokens, too_many_peaks
+from identify.records import FloatArray, Source, SpectrumRecord
+
+_PAIR = re.compile(r"\s*([A-Za-z$][^:]{0,60}?)\s*:\s*(.*)")
+_COUNT_NAMES = frozenset({"numpeaks", "numpeak", "numberofpeaks", "npeaks"})
+_SEPARATORS = re.compile(r"[\s,;:()\[\]{}]+")
+_ANNOTATION = re.compile(r'"[^"]*"')
+_Line = tuple[int, str]
+
+
+def parse_msp(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterator[SpectrumRecord]:
+    """Spectrum records of a text in the name/value-and-peaks format.
+
+    Parameters
+    ----------
+    lines : iterable of str
+        Lines without their ends.
+    path : str
+        File, for provenance and messages.
+    on_reject : callable
+        Takes the `Rejection` of each record with a fault.
+
+    Yields
+    ------
+    SpectrumRecord
+        `source.line` is the first line of the record. Pairs inside ``Comments`` (``"SMILES=CCO"``) fill fields that have
+        no line of their own. A retention time without a unit is not used: minutes and seconds are both common.
+
+    Notes
+    -----
+    A record ends at a blank line behind its peaks, or where a name follows the peaks. Peaks are pairs of numbers separated
+    by blanks, commas, semicolons, colons or brackets; text in double quotes is an annotation and is left out.
+    """
+    for number, block in enumerate(_split_records(lines), 1):
+        first_line = block[0][0]
+        try:
+            yield _parse_record(block, path, number)
+        except InputError as error:
+            on_reject(rejection_of(error, path, first_line))
+
+
+def _split_records(lines: Iterable[str]) -> Iterator[list[_Line]]:
+    block: list[_Line] = []
+    in_peaks = False
+    n_lines = 0
+    for line_number, line in enumerate(lines, 1):
+        if not line or line.isspace():
+            if in_peaks and block:
+                yield block
+                block, in_peaks, n_lines = [], False, 0
+            continue
+        match = _PAIR.match(line)
+        if match is not None:
+            name = bare_name(match.group(1))
+            starts = name == "name" and any(_is_name(text) for _, text in block)
+            if block and ((in_peaks and name not in _COUNT_NAMES) or starts):
+                yield block
+                block, in_peaks, n_lines = [], False, 0
+            in_peaks = in_peaks or name in _COUNT_NAMES
+        n_lines += 1
+        if n_lines <= MAX_RECORD_LINES:
+            block.append((line_number, line))
+    if block:
+        yield block
+
+
+def _is_name(line: str) -> bool:
+    return line.lstrip()[:5].lower() in ("name:", "name ")
+
+
+def _parse_record(block: list[_Line], path: str, number: int) -> SpectrumRecord:
+    pairs: list[tuple[str, str]] = []
+    count_line, stated, rest = 0, "", 0
+    for position, (line_number, line) in enumerate(block):
+        match = _PAIR.match(line)
+        if match is None:
+            expected = "'Name: value' or 'Num Peaks: n'"
+            raise fault("record line", path, line_number, found=quote(line), expected=expected)
+        name, value = match.groups()
+        if bare_name(name) in _COUNT_NAMES:
+            count_line, stated, rest = line_number, value.strip(), position + 1
+            break
+        pairs.append((name.rstrip("#"), value))
+    if not count_line:
+        raise fault("record without a peak count", path, block[0][0], found="none", expected="'Num Peaks: n'")
+    mz, intensity = _parse_peaks(block[rest:], stated, count_line, path)
+    return record_from_fields(NamedFields(pairs), Source(path, block[0][0], number), mz, intensity)
+
+
+def _parse_peaks(rows: list[_Line], stated: str, count_line: int, path: str) -> tuple[FloatArray, FloatArray]:
+    # Some exporters put the first peaks behind the count, on its line.
+    count_text, _, behind = stated.partition(" ")
+    if not (count_text.isascii() and count_text.isdigit() and len(count_text) < 10):
+        raise fault("peak count", path, count_line, found=quote(stated), expected="a whole number")
+    n_stated = int(count_text)
+    if n_stated > MAX_PEAKS:
+        raise too_many_peaks(path, count_line)
+    if behind.strip():
+        rows = [(count_line, behind), *rows]
+    tokens: list[str] = []
+    lines: list[int] = []
+    for line_number, row in rows:
+        found = [token for token in _SEPARATORS.split(_ANNOTATION.sub(" ", row)) if token]
+        if len(found) % 2:
+            parse_tokens(found, partial(_same_line, line_number), path)
+            raise fault("peak row", path, line_number, found=quote(row.strip()), expected="pairs of m/z and intensity")
+        tokens += found
+        lines += [line_number] * len(found)
+        if len(tokens) > 2 * MAX_PEAKS:
+            raise too_many_peaks(path, line_number)
+    values = parse_tokens(tokens, lines.__getitem__, path)
+    if values.size != 2 * n_stated:
+        raise fault(
+            "peak count",
+            path,
+            count_line,
+            found=f"{values.size // 2} peaks",
+            expected=f"{n_stated} peaks",
+            hint="Peaks are missing, or a decimal comma splits numbers.",
+        )
+    if not n_stated:
+        raise fault("no peaks", path, count_line, found="0 peaks", expected="at least one")
+    return np.ascontiguousarray(values[0::2]), np.ascontiguousarray(values[1::2])
+
+
+def _same_line(line_number: int, _position: int) -> int:
+    return line_number
