@@ -11,6 +11,7 @@ from typing import BinaryIO, cast
 from identify.errors import FormatError, InputError
 from identify.readers.containers import OpenFile, open_files
 from identify.readers.fault_reports import OnReject, rejection_of
+from identify.readers.jcamp import parse_jcamp
 from identify.readers.massbank import parse_massbank
 from identify.readers.msp import parse_msp
 from identify.readers.profile import looks_like_profile
@@ -20,7 +21,12 @@ from identify.readers.text_lines import ASSUMED_ENCODING, LineDecoder, PeekedStr
 from identify.records import SpectrumRecord
 
 TextReader = Callable[[Iterable[str], str, OnReject], Iterator[SpectrumRecord]]
-TEXT_READERS: dict[str, TextReader] = {"massbank": parse_massbank, "msp": parse_msp, "table": parse_table}
+TEXT_READERS: dict[str, TextReader] = {
+    "massbank": parse_massbank,
+    "jcamp": parse_jcamp,
+    "msp": parse_msp,
+    "table": parse_table,
+}
 """Readers of text formats by the names `recognize_format` gives: lines, path, on_reject → records."""
 
 
