@@ -8,8 +8,10 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import replace
 
 from identify.readers.limits import MAX_FIELD_CHARS
+from identify.readers.numbers import parse_number
 from identify.readers.statements import (
     ionization_of_instrument_type,
     read_energy,
@@ -36,6 +38,8 @@ SPELLINGS: Mapping[str, tuple[str, ...]] = {
     "energy": ("ionizationenergy", "electronenergy", "ionisationenergy", "energyev"),
     "inlet": ("inlet", "inlettype"),
     "ms level": ("mslevel", "spectrumtype", "mstype"),
+    "lowest mz": ("lowestmz", "scanwindowlowerlimit"),
+    "highest mz": ("highestmz", "scanwindowupperlimit"),
     "scan range": ("scanrange", "massrange", "scanrangemz", "massrangemz"),
     "retention time": ("retentiontime", "rt", "rettime"),
     "retention time in seconds": ("rtinseconds", "retentiontimes", "retentiontimeins", "scanstarttimes"),
@@ -44,18 +48,21 @@ SPELLINGS: Mapping[str, tuple[str, ...]] = {
     "linear index": ("linearri", "linearretentionindex", "linearindex"),
     "lee index": ("leeindex", "leerti", "leeretentionindex", "leeri"),
     "retention index": ("retentionindex", "ri", "rindex", "retindex"),
+    "column phase": ("columnphase",),
     "column": ("column", "columnname", "gccolumn"),
     "derivative": ("derivative", "derivativetype", "derivatization", "derivatizationtype"),
     "licence": ("licence", "license"),
     "authors": ("authors", "author", "contributor"),
     "splash": ("splash",),
+    "profile": ("profile", "isprofile"),
     "comments": ("comments", "comment"),
 }
 """Field → names it goes by, in lower case without blanks and punctuation, preferred ones first."""
 
 _FIELD_OF = {name: field for field, names in SPELLINGS.items() for name in names}
 _INDEX_KINDS = (("kovats", "kovats index"), ("linear", "linear index"), ("lee", "lee index"), ("", "retention index"))
-_NOTHING = frozenset({"", "N/A", "NA", "n/a", "-", "None", "unknown"})
+_PHASES = frozenset({"non-polar", "semi-polar", "polar"})
+_NOTHING = frozenset({"", "N/A", "NA", "n/a", "-"})
 _QUOTED_PAIR = re.compile(r'"([A-Za-z][^"=]{0,60})=([^"]*)"')
 _BARE_PAIR = re.compile(r'(?<![\w"])([A-Za-z][\w.-]{0,60})=([^\s"]+)')
 
@@ -181,6 +188,9 @@ def record_from_fields(
         column=fields.take("column"),
         default_unit=default_time_unit,
     )
+    phase = fields.take("column phase").lower()
+    if phase in _PHASES:
+        retention = replace(retention, phase=phase)
     names = fields.take_all("name")
     title = fields.take("title")
     other_names = [name.strip() for text in fields.take_all("synonym") for name in text.split("\n")]
@@ -208,7 +218,7 @@ def record_from_fields(
         authors=fields.take("authors"),
         splash=fields.take("splash"),
         comments=(*comments, *stated_comments),
-        is_profile=is_profile,
+        is_profile=is_profile or fields.take("profile").lower() in ("yes", "true", "profile"),
         extra=fields.rest() | energy_note | retention_notes,
     )
 
@@ -228,6 +238,8 @@ def _take_acquisition(fields: NamedFields, energy_ev: float | None) -> Acquisiti
     if level and match is None:
         fields.add("MS type", level)
     lowest, highest = read_mass_range(fields.take("scan range"))
+    lowest = _positive(fields.take("lowest mz")) or lowest
+    highest = _positive(fields.take("highest mz")) or highest
     polarity = fields.take("polarity")
     mode, mode_sign = read_ionization(polarity)
     if mode.upper() in ("EI", "CI") and not code:
@@ -243,6 +255,11 @@ def _take_acquisition(fields: NamedFields, energy_ev: float | None) -> Acquisiti
         lowest_mz=lowest,
         highest_mz=highest,
     )
+
+
+def _positive(text: str) -> float | None:
+    value = parse_number(text)
+    return value if value is not None and value > 0 else None
 
 
 def _polarity(text: str) -> str:

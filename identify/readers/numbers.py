@@ -50,11 +50,11 @@ def find_number(text: str) -> float | None:
     return None if match is None else parse_number(match.group())
 
 
-def too_many_peaks(path: str, line: int) -> FormatError:
+def too_many_peaks(path: str, line: int | None = None) -> FormatError:
     """The error for a spectrum beyond `MAX_PEAKS`, the same from every reader."""
     return FormatError(
         "too many peaks",
-        where=f"{path}:{line}",
+        where=path if line is None else f"{path}:{line}",
         found=f"more than {MAX_PEAKS}",
         expected=f"at most {MAX_PEAKS} peaks in one spectrum",
         hint="Profile data must be centroided before a search.",

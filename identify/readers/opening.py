@@ -8,14 +8,16 @@ from dataclasses import replace
 from pathlib import Path
 from typing import BinaryIO, cast
 
-from identify.errors import FormatError, InputError
+from identify.errors import InputError
 from identify.readers.containers import OpenFile, open_files
 from identify.readers.fault_reports import OnReject, rejection_of
+from identify.readers.foreign_formats import parse_mgf, read_mzml
 from identify.readers.jcamp import parse_jcamp
 from identify.readers.massbank import parse_massbank
 from identify.readers.msp import parse_msp
+from identify.readers.mzspeclib import parse_mzspeclib
 from identify.readers.profile import looks_like_profile
-from identify.readers.recognize import FORMATS, recognize_format
+from identify.readers.recognize import recognize_format
 from identify.readers.table import parse_table
 from identify.readers.text_lines import ASSUMED_ENCODING, LineDecoder, PeekedStream
 from identify.records import SpectrumRecord
@@ -25,6 +27,8 @@ TEXT_READERS: dict[str, TextReader] = {
     "massbank": parse_massbank,
     "jcamp": parse_jcamp,
     "msp": parse_msp,
+    "mzspeclib": parse_mzspeclib,
+    "mgf": parse_mgf,
     "table": parse_table,
 }
 """Readers of text formats by the names `recognize_format` gives: lines, path, on_reject → records."""
@@ -98,9 +102,9 @@ def _read_file(file: OpenFile, on_reject: OnReject) -> Iterator[SpectrumRecord]:
     stream = PeekedStream(file.stream)
     name = recognize_format(stream.head, file.path)
     lines = LineDecoder(stream, file.path)
-    if name not in TEXT_READERS:
-        raise FormatError("unknown format", where=file.path, found="text of no known kind", expected=FORMATS)
-    for record in TEXT_READERS[name](lines, file.path, on_reject):
+    reader = TEXT_READERS.get(name)
+    records = read_mzml(stream, file.path, on_reject) if reader is None else reader(lines, file.path, on_reject)
+    for record in records:
         if lines.is_assumed:
             record = replace(record, extra={**record.extra, "encoding": ASSUMED_ENCODING})
         if not record.is_profile and looks_like_profile(record.mz, record.intensity):

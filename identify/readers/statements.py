@@ -18,6 +18,31 @@ IONIZATIONS = frozenset(
 )
 """Ionization codes of the instrument types in the open record format, and the usual abbreviations beside them."""
 
+IONIZATION_TERMS = {
+    "electron ionization": "EI",
+    "chemical ionization": "CI",
+    "field ionization": "FI",
+    "field desorption": "FD",
+    "electrospray ionization": "ESI",
+    "microelectrospray": "ESI",
+    "nanoelectrospray": "ESI",
+    "atmospheric pressure ionization": "API",
+    "atmospheric pressure chemical ionization": "APCI",
+    "atmospheric pressure photoionization": "APPI",
+    "fast atom bombardment ionization": "FAB",
+    "matrix-assisted laser desorption ionization": "MALDI",
+    "atmospheric pressure matrix-assisted laser desorption ionization": "MALDI",
+    "desorption electrospray ionization": "DESI",
+    "laser desorption ionization": "LDI",
+    "secondary ionization": "SIMS",
+    "photoionization": "PI",
+    "multiphoton ionization": "MPI",
+    "resonance enhanced multiphoton ionization": "REMPI",
+    "thermal ionization": "TI",
+    "inductively coupled plasma": "ICP",
+}
+"""Names of the ionization types in the controlled vocabulary of mass spectrometry (psi-ms) → code."""
+
 _EI_WORDS = re.compile(r"\b(?:EI\b|electron[ -]?(?:impact|ioni[sz]ation))|^EI[+-]?$", re.IGNORECASE)
 _CI_WORDS = re.compile(r"\b(?:[PN]?CI\b|chemical[ -]?ioni[sz]ation)|^[PN]?CI[+-]?$", re.IGNORECASE)
 _RANGE = re.compile(r"(?<![\d.])(\d+(?:\.\d+)?)\s*(?:-|–|to|\.\.|,)\s*(\d+(?:\.\d+)?)(?![\d.])")
@@ -148,7 +173,7 @@ def read_time_s(text: str, *, default_unit: str = "") -> float | None:
     value, unit = parse_number(match.group(1)), match.group(2).lower() or default_unit
     if value is None or value < 0 or unit not in _SECONDS:
         return None
-    return round(value * _SECONDS[unit], 9)
+    return value if _SECONDS[unit] == 1.0 else round(value * _SECONDS[unit], 9)
 
 
 def read_retention(
@@ -186,6 +211,8 @@ def read_retention(
     for kind, words in indices:
         if not words:
             continue
+        if words.endswith(" (linear)"):
+            kind, words = "linear", words.removesuffix(" (linear)")
         value = parse_number(words)
         reason = _doubt_index(value, stated)
         if not reason:
