@@ -96,7 +96,7 @@ def _compositions(
                 expected="a composition of an electron-ionization spectrum",
             )
     shape = tuple(count + 1 for _, count in others)
-    counts = np.indices(shape, dtype=np.int16).reshape(len(others), -1).T
+    counts = np.indices(shape, dtype=np.int16).reshape(len(others), size).T
     masses = np.asarray(counts @ np.array([MASS[symbol] for symbol, _ in others]), dtype=np.float64)
     values = np.asarray(counts @ np.array([doubled_unsaturation(symbol) for symbol, _ in others]), dtype=np.int32)
     return tuple(symbol for symbol, _ in others), counts, masses, values
