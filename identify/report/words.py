@@ -1,0 +1,274 @@
+"""Numbers and foreign text as a reader meets them, the same on the terminal, on the page and on paper."""
+
+from __future__ import annotations
+
+import unicodedata
+from collections.abc import Sequence
+from pathlib import PurePath
+
+from identify.records import ClaimLevel, EvidenceItem, Verdict
+
+MAX_TEXT = 300
+NONE = "–"
+"""Shown where a source states nothing."""
+
+VERDICT_MARKS = {
+    Verdict.AGREES: "✓",
+    Verdict.CONFLICTS: "✗",
+    Verdict.INCONCLUSIVE: "≈",
+    Verdict.NOT_ASSESSED: "○",
+}
+PLAIN_MARKS = {
+    Verdict.AGREES: "y",
+    Verdict.CONFLICTS: "x",
+    Verdict.INCONCLUSIVE: "?",
+    Verdict.NOT_ASSESSED: "o",
+}
+"""For terminals whose encoding lacks the marks."""
+
+LEVEL_MEANINGS = {
+    ClaimLevel.CONFIRMED: "An authentic standard, measured here by the same method, agrees. Only a person sets this level.",
+    ClaimLevel.SUPPORTED: "The library match and at least one independent kind of evidence agree; none conflicts.",
+    ClaimLevel.TENTATIVE: "The library match alone.",
+    ClaimLevel.ISOMER_GROUP: "One of several isomers that these data cannot tell apart; those in the library are named, those "
+    "without an entry counted.",
+    ClaimLevel.CLASS: "A substructure or compound class only.",
+    ClaimLevel.NO_CLAIM: "Nothing in the library can be defended as an answer.",
+}
+
+CAUTIONS = (
+    "A name found by comparing spectra is tentative. It is no confirmation: that takes an authentic standard measured by the "
+    "same method.",
+    "Isomers can give the same spectrum, and an isomer without an entry cannot be named.",
+    "Probabilities hold for spectra like those they were calibrated on; mixtures, background and unusual instruments weaken "
+    "them.",
+    "Local codes, accredited methods and licensed practice govern how a result may be used; this report does not replace them.",
+)
+
+
+def probability_text(probability: float) -> str:
+    """A probability as whole percent, never 0 % or 100 %.
+
+    Parameters
+    ----------
+    probability : float
+        In [0, 1].
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> probability_text(0.874), probability_text(0.9999), probability_text(0.0)
+    ('87 %', '> 99 %', '< 1 %')
+    """
+    if probability > 0.99:
+        return "> 99 %"
+    if probability < 0.01:
+        return "< 1 %"
+    return f"{100.0 * probability:.0f} %"
+
+
+def score_text(score: float) -> str:
+    """A score in [0, 1] with three decimals; 1.000 only where the score is 1.
+
+    Parameters
+    ----------
+    score : float
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> score_text(0.98149), score_text(0.99996), score_text(1.0)
+    ('0.981', '0.999', '1.000')
+    """
+    return "1.000" if score >= 1.0 - 1e-9 else f"{min(score, 0.999):.3f}"
+
+
+def signed_text(value: float) -> str:
+    """A log-odds value with its sign and two decimals; a true minus sign, and no signed zero.
+
+    Parameters
+    ----------
+    value : float
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> signed_text(1.234), signed_text(-0.5), signed_text(-0.001)
+    ('+1.23', '−0.50', '0.00')
+    """
+    text = f"{value:+.2f}"
+    return "0.00" if text in ("+0.00", "-0.00") else text.replace("-", "−")
+
+
+def minutes_text(time_s: float | None) -> str:
+    """A retention time in minutes.
+
+    Parameters
+    ----------
+    time_s : float or None
+        Seconds.
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> minutes_text(399.0), minutes_text(None)
+    ('6.65 min', '–')
+    """
+    return NONE if time_s is None else f"{time_s / 60.0:.2f} min"
+
+
+def mz_text(mz: float) -> str:
+    """An m/z: an integer as such, an accurate one with four decimals.
+
+    Parameters
+    ----------
+    mz : float
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> mz_text(120.0), mz_text(120.05751)
+    ('120', '120.0575')
+    """
+    return f"{mz:.0f}" if float(mz).is_integer() else f"{mz:.4f}"
+
+
+def relative_text(percent: float) -> str:
+    """An intensity relative to the base peak, in percent, two digits where it is small.
+
+    Parameters
+    ----------
+    percent : float
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> relative_text(85.2), relative_text(2.71), relative_text(0.04)
+    ('85 %', '2.7 %', '0.04 %')
+    """
+    decimals = 0 if percent >= 9.95 else 1 if percent >= 0.95 else 2
+    return f"{percent:.{decimals}f} %"
+
+
+def visible_text(text: object, limit: int = MAX_TEXT) -> str:
+    """One line of text in which nothing is hidden: controls and direction overrides are spelled out, length is bounded.
+
+    Parameters
+    ----------
+    text : object
+        Text from a file, possibly hostile.
+    limit : int
+        Longest text shown; what is longer ends with an ellipsis.
+
+    Returns
+    -------
+    str
+
+    Notes
+    -----
+    Names come from files that others wrote. An escape sequence could repaint a terminal, a direction override could turn a name
+    around, a lone surrogate could stop the report from being written.
+
+    Examples
+    --------
+    >>> visible_text("tolu\\x1b[31mene\\n")
+    'tolu⟨1B⟩[31mene'
+    """
+    whole = " ".join(str(text)[: 4 * limit].split())
+    shown = "".join(_visible(character) for character in whole)
+    return shown if len(shown) <= limit else shown[: limit - 1] + "…"
+
+
+def _visible(character: str) -> str:
+    # Cc controls, Cf invisible formatting, Cs lone surrogates, Co private use, Cn unassigned.
+    hidden = unicodedata.category(character) in ("Cc", "Cf", "Cs", "Co", "Cn")
+    return f"⟨{ord(character):02X}⟩" if hidden else character
+
+
+def compound_name(name: str, accession: str) -> str:
+    """Name of a compound for display; where the source gives none, the accession says which entry is meant.
+
+    Parameters
+    ----------
+    name, accession : str
+
+    Returns
+    -------
+    str
+    """
+    return visible_text(name) or f"unnamed ({visible_text(accession) or 'no accession'})"
+
+
+def source_text(path: str, line: int | None) -> str:
+    """File name and line of a source; the folder is left out.
+
+    Parameters
+    ----------
+    path : str
+    line : int or None
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> source_text("/data/run 3/unknowns.jdx", 12)
+    'unknowns.jdx, line 12'
+    """
+    name = visible_text(PurePath(path).name or path)
+    return name if line is None else f"{name}, line {line}"
+
+
+def count_verdicts(evidence: Sequence[EvidenceItem]) -> tuple[tuple[Verdict, int], ...]:
+    """How often each verdict was given, all four in their fixed order.
+
+    Parameters
+    ----------
+    evidence : sequence of EvidenceItem
+
+    Returns
+    -------
+    tuple of (Verdict, int)
+    """
+    given = [item.verdict for item in evidence]
+    return tuple((verdict, given.count(verdict)) for verdict in Verdict)
+
+
+def counted(number: int, singular: str, plural: str = "") -> str:
+    """A number with its noun.
+
+    Parameters
+    ----------
+    number : int
+    singular, plural : str
+        The plural defaults to the singular and an s.
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> counted(1, "entry", "entries"), counted(12084, "entry", "entries")
+    ('1 entry', '12,084 entries')
+    """
+    return f"{number:,} {singular if number == 1 else plural or singular + 's'}"
