@@ -1,0 +1,42 @@
+"""``ionwitness demo``: the starter library and an invented case, from nothing to the report."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+
+import click
+
+from identify.cli.search import FILE, deliver, progress_bar
+
+
+@click.command()
+@click.option(
+    "--out", "folder", type=FILE, default=Path("ionwitness-demo"), show_default=True, help="Folder for what is made."
+)
+@click.option("--browser/--no-browser", default=None, help="Open the report in a browser (default: on a terminal).")
+def demo(folder: Path, browser: bool | None) -> int:
+    """Play an invented case with the starter library: build, search, report.
+
+    The starter library holds principal ions from memory, rounded, for demonstration; it is not reference data.
+    """
+    from importlib.resources import as_file
+
+    from identify.cli.library import current_user, now
+    from identify.library.shipped import find_shipped
+    from identify.library.starter import build_starter
+    from identify.pipeline import search_files
+    from identify.settings import Settings
+
+    folder.mkdir(parents=True, exist_ok=True)
+    library = folder / "starter.ionlib"
+    built = build_starter(library, current_user(), now(), replace=True)
+    click.echo(f"Starter library: {built.n_accepted} entries of {built.n_compounds} compounds, in {library}")
+    with as_file(find_shipped("demo")) as case, progress_bar("Identifying") as progress:
+        unknowns = sorted(path for path in (case / "unknowns").iterdir() if path.is_file())
+        report = search_files(unknowns, [library], Settings(), progress)
+    html = folder / "report.html"
+    code = deliver(report, folder / "result.json", folder / "result.csv", html)
+    if browser or (browser is None and sys.stdout.isatty()):
+        click.launch(html.resolve().as_uri())
+    return code

@@ -1,0 +1,245 @@
+"""The whole job, wired once: files in, `Report` out.
+
+::
+
+    open_libraries → read → per query: clean → search every index → fetch entries → shortlist (one draft per compound)
+        → evidence → rank (probability, claim, follow-up) → Identification → Report
+
+Commands, the run reader and the workbench call these functions; nothing else wires the rooms together.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Iterator, Sequence
+from contextlib import ExitStack, contextmanager
+from dataclasses import dataclass
+from pathlib import Path
+
+from identify import __version__
+from identify.errors import IonwitnessError, SpectrumError, UsageError
+from identify.evidence.facts import build_query_facts
+from identify.evidence.gather import gather_evidence
+from identify.evidence.molecular_ion import estimate_molecular_ion
+from identify.index import SearchIndex, search_index
+from identify.library.cache import load_index
+from identify.library.store import Library, open_library
+from identify.ranking.grouping import Match
+from identify.ranking.rank import rank
+from identify.ranking.shortlist import shortlist
+from identify.readers import read_pasted, read_spectra
+from identify.records import Identification, LibraryState, Query, Rejection, Report, SpectrumRecord
+from identify.settings import Settings
+from identify.spectra.cleaning import clean_spectrum
+
+Progress = Callable[[int, str], None]
+"""Called with the number of queries done and the name of the one in hand."""
+
+
+@dataclass(frozen=True, slots=True)
+class SearchableLibrary:
+    """A library open for reading, its index, and its state when it was opened."""
+
+    library: Library
+    index: SearchIndex
+    state: LibraryState
+
+
+@contextmanager
+def open_libraries(paths: Sequence[Path], settings: Settings) -> Iterator[tuple[SearchableLibrary, ...]]:
+    """Libraries with their search indexes, closed on leaving the block.
+
+    Parameters
+    ----------
+    paths : sequence of Path
+        At least one library file.
+    settings : Settings
+        The weighting decides which index is loaded.
+
+    Yields
+    ------
+    tuple of SearchableLibrary
+
+    Raises
+    ------
+    UsageError
+        Without any path, or with the same library twice.
+    LibraryError
+        If one of them cannot be opened.
+    """
+    if not paths:
+        raise UsageError("--library", found="none", expected="at least one library file")
+    if len({path.resolve() for path in paths}) < len(paths):
+        raise UsageError("--library", found="the same library twice", expected="each library once")
+    with ExitStack() as stack:
+        opened = []
+        for path in paths:
+            library = stack.enter_context(open_library(path))
+            opened.append(SearchableLibrary(library, load_index(library, settings.weighting), library.state()))
+        yield tuple(opened)
+
+
+def identify_query(query: Query, libraries: Sequence[SearchableLibrary], settings: Settings) -> Identification:
+    """Everything the libraries and the query's own evidence say about one cleaned query.
+
+    Parameters
+    ----------
+    query : Query
+    libraries : sequence of SearchableLibrary
+    settings : Settings
+
+    Returns
+    -------
+    Identification
+        At most `settings.top` candidates, best first; none when no entry shares a peak.
+    """
+    matches: list[Match] = []
+    for searchable in libraries:
+        hits = search_index(searchable.index, query.spectrum, settings.search_depth)
+        entries = searchable.library.get_entries([hit.entry_id for hit in hits])
+        matches += [Match(hit, entry, searchable.state.path) for hit, entry in zip(hits, entries, strict=True)]
+    drafts = shortlist(query.spectrum, matches, settings)
+    molecular_ion = estimate_molecular_ion(query.spectrum, [(draft.entry, draft.cosine) for draft in drafts])
+    facts = build_query_facts(query)
+    evidence = [gather_evidence(query, draft.entry, draft.aligned, settings, facts) for draft in drafts]
+    ranking = rank(query, drafts, evidence, molecular_ion, settings)
+    return Identification(
+        query=query,
+        molecular_ion=molecular_ion,
+        in_library_probability=ranking.in_library_probability,
+        claim=ranking.claim,
+        candidates=ranking.candidates[: settings.top],
+        follow_up=ranking.follow_up,
+    )
+
+
+def make_query(record: SpectrumRecord, number: int, settings: Settings) -> Query:
+    """Query number `number`, cleaned.
+
+    Parameters
+    ----------
+    record : SpectrumRecord
+    number : int
+        Running number from 1; becomes the id ``q<number>``.
+    settings : Settings
+
+    Returns
+    -------
+    Query
+
+    Raises
+    ------
+    SpectrumError
+        If no usable peak is left, or the data are not a centroided peak list.
+    """
+    return Query(f"q{number}", record, clean_spectrum(record, settings.cleaning))
+
+
+def identify_records(
+    records: Iterable[SpectrumRecord],
+    libraries: Sequence[SearchableLibrary],
+    settings: Settings,
+    rejected: list[Rejection],
+    progress: Progress | None = None,
+) -> Iterator[Identification]:
+    """Identifications one by one; a spectrum that cannot be used is added to `rejected` and the rest goes on.
+
+    Parameters
+    ----------
+    records : iterable of SpectrumRecord
+    libraries : sequence of SearchableLibrary
+    settings : Settings
+    rejected : list of Rejection
+        Grows by what is left out.
+    progress : callable, optional
+
+    Yields
+    ------
+    Identification
+    """
+    for number, record in enumerate(records, start=1):
+        if progress:
+            progress(number - 1, record.title or record.identity.name)
+        try:
+            query = make_query(record, number, settings)
+        except SpectrumError as error:
+            rejected.append(_rejection(error, record))
+            continue
+        yield identify_query(query, libraries, settings)
+
+
+def _rejection(error: SpectrumError, record: SpectrumRecord) -> Rejection:
+    source = record.source
+    return Rejection(source.path, source.line, "unusable spectrum", error.found, error.expected, error.hint)
+
+
+def search_files(
+    paths: Sequence[Path], library_paths: Sequence[Path], settings: Settings, progress: Progress | None = None
+) -> Report:
+    """Report on every spectrum in the files.
+
+    Parameters
+    ----------
+    paths : sequence of Path
+        Spectrum files of any readable format, folders or archives.
+    library_paths : sequence of Path
+    settings : Settings
+    progress : callable, optional
+
+    Returns
+    -------
+    Report
+        With what was rejected; a file that cannot be read at all is a rejection, not an error.
+
+    Raises
+    ------
+    LibraryError, UsageError
+        See `open_libraries`.
+    """
+    rejected: list[Rejection] = []
+    return _report(_read_all(paths, rejected), library_paths, settings, rejected, progress)
+
+
+def search_pasted(text: str, library_paths: Sequence[Path], settings: Settings, name: str = "pasted text") -> Report:
+    """Report on peaks pasted as text.
+
+    Parameters
+    ----------
+    text : str
+        Any text format the readers know, or bare m/z–intensity pairs.
+    library_paths : sequence of Path
+    settings : Settings
+    name : str
+        Stands for the file name in the report.
+
+    Returns
+    -------
+    Report
+
+    Raises
+    ------
+    LibraryError, UsageError
+        See `open_libraries`.
+    """
+    rejected: list[Rejection] = []
+    return _report(read_pasted(text, name, rejected.append), library_paths, settings, rejected, None)
+
+
+def _report(
+    records: Iterable[SpectrumRecord],
+    library_paths: Sequence[Path],
+    settings: Settings,
+    rejected: list[Rejection],
+    progress: Progress | None,
+) -> Report:
+    with open_libraries(library_paths, settings) as libraries:
+        found = tuple(identify_records(records, libraries, settings, rejected, progress))
+        states = tuple(searchable.state for searchable in libraries)
+    return Report("ionwitness", __version__, settings.as_dict(), states, found, tuple(rejected))
+
+
+def _read_all(paths: Sequence[Path], rejected: list[Rejection]) -> Iterator[SpectrumRecord]:
+    for path in paths:
+        try:
+            yield from read_spectra(path, rejected.append)
+        except IonwitnessError as error:
+            rejected.append(Rejection(str(path), None, error.what, error.found, error.expected, error.hint))
