@@ -110,6 +110,7 @@ PATTERNS: Final[tuple[tuple[str, str], ...]] = (
     ("brominated", "[#6]Br"),
     ("iodinated", "[#6]I"),
     # other elements
+    ("organosilicon", "[#14]"),
     ("boron compound", "[#5]"),
     ("phosphorus compound", "[#15]"),
     ("organometallic", "[Ge,Sn,Pb,Hg,As,Se,Te,Sb,Bi,Fe,Co,Ni,Cu,Zn,Cr,Mo,Mn,Pt,Pd,Al,Be,V,Ti]"),

@@ -360,15 +360,29 @@ def _hydrocarbon_classes(mol: Mol) -> tuple[str, ...]:
         names.append("cycloalkane")
     if len(aromatic) == 1 and n_rings == 1 and len(atoms) > 6 and not (has_double or has_triple):
         names.append("alkylbenzene")
-    shared = [
-        bond for bond in bonds if sum(bond.GetBeginAtomIdx() in r and bond.GetEndAtomIdx() in r for r in aromatic) > 1
-    ]
-    if shared:
+    if _largest_fused_aromatic(mol) > 1:
         names.append("polycyclic aromatic hydrocarbon")
     if _is_terpenoid(mol):
         names.append("terpene")
     names += ["alkene"] * has_double + ["alkyne"] * has_triple + ["aromatic hydrocarbon"] * bool(aromatic)
     return (*names, "hydrocarbon")
+
+
+def _largest_fused_aromatic(mol: Mol) -> int:
+    """Most aromatic rings in one fused ring system; fluorene has 2, biphenyl 1."""
+    systems: list[tuple[set[int], int]] = []
+    rings = mol.GetRingInfo()
+    for atoms, bonds in zip(rings.AtomRings(), rings.BondRings(), strict=True):
+        is_aromatic = all(mol.GetAtomWithIdx(index).GetIsAromatic() for index in atoms)
+        merged, count = set(bonds), int(is_aromatic)
+        apart = []
+        for other, other_count in systems:
+            if merged & other:
+                merged, count = merged | other, count + other_count
+            else:
+                apart.append((other, other_count))
+        systems = [*apart, (merged, count)]
+    return max((count for _, count in systems), default=0)
 
 
 def _fills(mol: Mol, name: str, pattern: Mol) -> bool:
