@@ -19,7 +19,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from identify.errors import SpectrumError
+from identify.errors import InputError, SpectrumError
 
 FloatArray = NDArray[np.float64]
 EMPTY: Mapping[str, str] = MappingProxyType({})
@@ -55,6 +55,12 @@ class Rejection:
     found: str
     expected: str
     hint: str = ""
+
+    @property
+    def message(self) -> str:
+        """The whole sentence, in the form that all errors share."""
+        where = str(Source(self.source, self.line)) if self.source else ""
+        return InputError(self.reason, where=where, found=self.found, expected=self.expected, hint=self.hint).message
 
 
 @dataclass(frozen=True, slots=True, eq=False)

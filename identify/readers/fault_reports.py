@@ -15,6 +15,17 @@ def fault(what: str, path: str, line: int, *, found: str = "", expected: str = "
     return FormatError(what, where=f"{path}:{line}", found=found, expected=expected, hint=hint)
 
 
+def counted(number: int, noun: str) -> str:
+    """`number` with its noun, in the plural where there is not exactly one.
+
+    Examples
+    --------
+    >>> counted(1, "peak"), counted(0, "peak")
+    ('1 peak', '0 peaks')
+    """
+    return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
+
+
 def rejection_of(error: InputError, path: str, line: int | None = None) -> Rejection:
     """Rejection that says what `error` says.
 

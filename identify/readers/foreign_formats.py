@@ -24,7 +24,7 @@ from identify.readers.fault_reports import OnReject, fault, rejection_of
 from identify.readers.limits import CHUNK_BYTES, MAX_FILE_BYTES, MAX_PEAKS, MAX_RECORD_LINES
 from identify.readers.named_fields import NamedFields, record_from_fields
 from identify.readers.numbers import parse_columns, too_many_peaks
-from identify.readers.statements import IONIZATION_TERMS
+from identify.readers.statements import IONIZATION_TERMS, read_ionization
 from identify.readers.text_lines import PeekedStream
 from identify.records import FloatArray, Rejection, Source, SpectrumRecord, read_only
 
@@ -211,16 +211,36 @@ class _NoVocabulary:
 
 
 def _iterate_mzml(spool: IO[bytes], path: str, on_reject: OnReject) -> Iterator[SpectrumRecord]:
-    first_pass = _plain_mzml(spool).iterfind("instrumentConfiguration")
-    configurations = {str(item.get("id")): item for item in _without_warnings(first_pass)}
+    sources = _read_ion_sources(spool)
     spool.seek(0)
     for number, item in enumerate(_without_warnings(_plain_mzml(spool)), 1):
         source = Source(path, None, number)
         try:
-            yield _build_mzml_record(item, configurations, source)
+            yield _build_mzml_record(item, sources, source)
         except InputError as error:
-            what = f"{error.what}" if error.what in (NOT_EI, NOT_MS1) else f"{error.what} of spectrum {number}"
-            on_reject(Rejection(path, None, what, error.found, error.expected, error.hint))
+            on_reject(
+                Rejection(path, None, error.what, f"{error.found} in spectrum {number}", error.expected, error.hint)
+            )
+
+
+def _read_ion_sources(spool: IO[bytes]) -> dict[str, list[str]]:
+    """Names of the terms under each instrument configuration; that of the run's default also under ``""``."""
+    from lxml.etree import iterparse
+
+    groups: dict[str, list[str]] = {}
+    found: dict[str, list[str]] = {}
+    for event, element in iterparse(spool, events=("start", "end"), huge_tree=False, resolve_entities=False):
+        kind = str(element.tag).rpartition("}")[2]
+        if event == "start" and kind == "run":
+            default = element.get("defaultInstrumentConfigurationRef", "")
+            found[""] = found.get(default, [])
+            break
+        if event == "end" and kind in ("referenceableParamGroup", "instrumentConfiguration"):
+            names = [str(item.get("name", "")) for item in element.iter("{*}cvParam", "{*}userParam")]
+            for reference in element.iter("{*}referenceableParamGroupRef"):
+                names += groups.get(str(reference.get("ref")), [])
+            (groups if kind == "referenceableParamGroup" else found)[str(element.get("id"))] = names
+    return found
 
 
 def _without_warnings(items: Iterable[dict[str, Any]]) -> Iterator[dict[str, Any]]:
@@ -235,16 +255,15 @@ def _without_warnings(items: Iterable[dict[str, Any]]) -> Iterator[dict[str, Any
         yield item
 
 
-def _build_mzml_record(item: dict[str, Any], configurations: Mapping[str, Any], source: Source) -> SpectrumRecord:
+def _build_mzml_record(item: dict[str, Any], sources: Mapping[str, list[str]], source: Source) -> SpectrumRecord:
     where = source.path
     level = item.pop("ms level", None)
     if level is not None and int(level) != 1:
         raise FormatError(NOT_MS1, where=where, found=f"MS level {level}", expected="MS1")
     scan = (item.pop("scanList", {}).get("scan") or [{}])[0]
-    configuration = configurations.get(str(scan.get("instrumentConfigurationRef", "")))
-    if configuration is None and len(configurations) == 1:
-        configuration = next(iter(configurations.values()))
-    ionization = _find_ionization(configuration or {})
+    terms = sources.get(str(scan.get("instrumentConfigurationRef", "")), sources.get("", []))
+    ionization = next((IONIZATION_TERMS[name] for name in terms if name in IONIZATION_TERMS), "")
+    ionization = ionization or read_ionization(str(item.get("ionization", "")))[0]
     if ionization not in ("", "EI"):
         raise FormatError(NOT_EI, where=where, found=quote(ionization), expected="EI")
     packing = [name for name in item if "compression" in name]
@@ -256,15 +275,11 @@ def _build_mzml_record(item: dict[str, Any], configurations: Mapping[str, Any], 
         raise FormatError("peak list", where=where, found=found, expected="as many")
     if not mz.size:
         raise FormatError("no peaks", where=where, found="0 peaks", expected="at least one")
-    pairs = _pairs_of_mzml(item, scan, configuration or {})
-    pairs.append(("ionization", ionization))
-    fields = NamedFields(pairs)
+    fields = NamedFields([("ionization", ionization), *_pairs_of_mzml(item, scan)])
     return record_from_fields(fields, source, mz, intensity, is_profile="profile spectrum" in item)
 
 
-def _pairs_of_mzml(
-    item: dict[str, Any], scan: Mapping[str, Any], configuration: Mapping[str, Any]
-) -> list[tuple[str, str]]:
+def _pairs_of_mzml(item: dict[str, Any], scan: Mapping[str, Any]) -> list[tuple[str, str]]:
     pairs = [("ms level", "1")]
     time = scan.get("scan start time")
     unit = str(getattr(time, "unit_info", "") or "")
@@ -281,17 +296,7 @@ def _pairs_of_mzml(
         for text in value if isinstance(value, list) else [value]:
             if name not in _STRUCTURE and isinstance(text, str | int | float) and str(text):
                 pairs += [(_MZML_NAMES.get(name, name), part) for part in str(text).split("\n")]
-    instrument = [name for name, value in configuration.items() if value == "" and name != "instrument model"]
-    return pairs + [("instrument", name) for name in instrument[:1]]
-
-
-def _find_ionization(configuration: Mapping[str, Any]) -> str:
-    components = configuration.get("componentList") or {}
-    for component in components.get("source") or ():
-        for name in component:
-            if name in IONIZATION_TERMS:
-                return IONIZATION_TERMS[name]
-    return ""
+    return pairs
 
 
 def _unpack_array(item: dict[str, Any], name: str, where: str) -> FloatArray:

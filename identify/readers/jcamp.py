@@ -12,7 +12,7 @@ from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field
 
 from identify.errors import InputError, quote
-from identify.readers.fault_reports import OnReject, fault, rejection_of
+from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
 from identify.readers.jcamp_data import Axis, DataSection, Points, parse_data
 from identify.readers.limits import MAX_RECORD_LINES
 from identify.readers.named_fields import NamedFields, cut_field, record_from_fields
@@ -52,6 +52,7 @@ _SHAPE_LABELS = frozenset(
     }
     | {*_DATA_LABELS}
 )
+_NO_LABEL = "?"
 _FREE_LICENCE = re.compile(r"public domain|\bCC0\b|\bCC[ -]BY", re.IGNORECASE)
 
 
@@ -135,10 +136,7 @@ def _split_labels(lines: Iterable[str], path: str, on_reject: OnReject) -> Itera
             yield from comments
             comments = []
             name, equals, value = stripped[2:].partition("=")
-            if not equals:
-                error = fault("label", path, line_number, found=quote(stripped), expected="'##LABEL= value'")
-                on_reject(rejection_of(error, path))
-            label = re.sub(r"[\s\-/_]", "", name).upper()
+            label = re.sub(r"[\s\-/_]", "", name).upper() if equals else _NO_LABEL
             current = _Label(label, name.strip(), [value.strip()], line_number)
         elif current is not None and len(current.lines) <= MAX_RECORD_LINES and (stripped or not mark):
             current.lines.append(stripped)
@@ -224,7 +222,7 @@ class _Reader:
         stated = find_number(block.text("BLOCKS"))
         # Some programs count the outer block, some do not.
         if stated is not None and block.n_inner not in (stated, stated - 1):
-            found = f"{block.n_inner} blocks inside"
+            found = f"{counted(block.n_inner, 'block')} inside"
             raise fault("block count", self._path, block.line, found=found, expected=f"{stated:g} as BLOCKS says")
 
     def _take_page(self, block: _Block, label: _Label | None) -> Iterator[SpectrumRecord]:
@@ -269,6 +267,9 @@ def _add_label(block: _Block, label: _Label, path: str) -> None:
         block.error = block.error or fault(
             "label given twice", path, label.line, found=quote(f"##{label.name}="), expected="one in a block"
         )
+    if label.label == _NO_LABEL:
+        found = quote(f"##{label.name}")
+        block.error = block.error or fault("label", path, label.line, found=found, expected="'##LABEL= value'")
     if not label.label:
         block.comments.append(cut_field(label.value))
         return

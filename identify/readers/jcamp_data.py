@@ -15,7 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from identify.errors import FormatError, quote
-from identify.readers.fault_reports import fault
+from identify.readers.fault_reports import counted, fault
 from identify.readers.limits import MAX_PEAKS
 from identify.readers.numbers import parse_number, parse_tokens, too_many_peaks
 from identify.records import FloatArray, read_only
@@ -92,7 +92,7 @@ def parse_data(section: DataSection, axis: Axis, path: str) -> Points:
         raise fault("data form", path, section.first_line, found=quote(section.form.strip()), expected=expected)
     x, y, step = _parse_steps(section, axis, path) if is_stepped else (*_parse_pairs(section, path), 1.0)
     if axis.n_points is not None and x.size != axis.n_points:
-        found, expected = f"{x.size} points", f"{axis.n_points} points as NPOINTS says"
+        found, expected = counted(x.size, "point"), f"{axis.n_points} as NPOINTS says"
         raise fault("peak count", path, section.first_line, found=found, expected=expected)
     if not x.size:
         raise fault("no peaks", path, section.first_line, found="0 points", expected="at least one")

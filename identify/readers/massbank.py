@@ -13,7 +13,7 @@ from collections.abc import Iterable, Iterator
 import numpy as np
 
 from identify.errors import InputError, quote
-from identify.readers.fault_reports import OnReject, fault, rejection_of
+from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
 from identify.readers.limits import MAX_FIELD_CHARS, MAX_RECORD_LINES
 from identify.readers.numbers import parse_columns
 from identify.readers.statements import (
@@ -216,9 +216,7 @@ def _parse_peaks(fields: _Fields, path: str) -> tuple[FloatArray, FloatArray]:
     table = parse_columns(tokens, range(first_line, first_line + len(rows)), path, expected)
     if len(rows) != int(count_text):
         hint = "Peaks are missing or were added by hand."
-        raise fault(
-            "peak count", path, count_line, found=f"{len(rows)} peak rows", expected=f"{count_text} rows", hint=hint
-        )
+        raise fault("peak count", path, count_line, found=counted(len(rows), "row"), expected=count_text, hint=hint)
     if not rows:
         raise fault("no peaks", path, header_line, found="0 peak rows", expected="at least one")
     if "PK$ANNOTATION" in fields.rows:

@@ -13,7 +13,7 @@ from functools import partial
 import numpy as np
 
 from identify.errors import InputError, quote
-from identify.readers.fault_reports import OnReject, fault, rejection_of
+from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
 from identify.readers.limits import MAX_PEAKS, MAX_RECORD_LINES
 from identify.readers.named_fields import NamedFields, bare_name, record_from_fields
 from identify.readers.numbers import parse_tokens, too_many_peaks
@@ -22,6 +22,7 @@ from identify.records import FloatArray, Source, SpectrumRecord
 _PAIR = re.compile(r"\s*([A-Za-z$][^:]{0,60}?)\s*:\s*(.*)")
 _COUNT_NAMES = frozenset({"numpeaks", "numpeak", "numberofpeaks", "npeaks"})
 _SEPARATORS = re.compile(r"[\s,;:()\[\]{}]+")
+_NO_COUNT = "record without a peak count"
 _ANNOTATION = re.compile(r'"[^"]*"')
 _Line = tuple[int, str]
 
@@ -91,6 +92,8 @@ def _parse_record(block: list[_Line], path: str, number: int) -> SpectrumRecord:
     count_line, stated, rest = 0, "", 0
     for position, (line_number, line) in enumerate(block):
         match = _PAIR.match(line)
+        if match is None and line.lstrip()[:1].isdigit():
+            raise fault(_NO_COUNT, path, line_number, found=quote(line), expected="'Num Peaks: n' before the peaks")
         if match is None:
             expected = "'Name: value' or 'Num Peaks: n'"
             raise fault("record line", path, line_number, found=quote(line), expected=expected)
@@ -100,7 +103,7 @@ def _parse_record(block: list[_Line], path: str, number: int) -> SpectrumRecord:
             break
         pairs.append((name.rstrip("#"), value))
     if not count_line:
-        raise fault("record without a peak count", path, block[0][0], found="none", expected="'Num Peaks: n'")
+        raise fault(_NO_COUNT, path, block[0][0], found="none", expected="'Num Peaks: n'")
     mz, intensity = _parse_peaks(block[rest:], stated, count_line, path)
     return record_from_fields(NamedFields(pairs), Source(path, block[0][0], number), mz, intensity)
 
@@ -121,7 +124,9 @@ def _parse_peaks(rows: list[_Line], stated: str, count_line: int, path: str) -> 
         found = [token for token in _SEPARATORS.split(_ANNOTATION.sub(" ", row)) if token]
         if len(found) % 2:
             parse_tokens(found, partial(_same_line, line_number), path)
-            raise fault("peak row", path, line_number, found=quote(row.strip()), expected="pairs of m/z and intensity")
+            hint = "Decimal commas are not read." if "," in row else ""
+            expected = "pairs of m/z and intensity"
+            raise fault("peak row", path, line_number, found=quote(row.strip()), expected=expected, hint=hint)
         tokens += found
         lines += [line_number] * len(found)
         if len(tokens) > 2 * MAX_PEAKS:
@@ -132,8 +137,8 @@ def _parse_peaks(rows: list[_Line], stated: str, count_line: int, path: str) -> 
             "peak count",
             path,
             count_line,
-            found=f"{values.size // 2} peaks",
-            expected=f"{n_stated} peaks",
+            found=counted(values.size // 2, "peak"),
+            expected=str(n_stated),
             hint="Peaks are missing, or a decimal comma splits numbers.",
         )
     if not n_stated:

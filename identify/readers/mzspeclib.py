@@ -12,7 +12,7 @@ from collections.abc import Iterable, Iterator
 import numpy as np
 
 from identify.errors import InputError, quote
-from identify.readers.fault_reports import OnReject, fault, rejection_of
+from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
 from identify.readers.limits import MAX_PEAKS, MAX_RECORD_LINES
 from identify.readers.named_fields import NamedFields, record_from_fields
 from identify.readers.numbers import parse_columns, too_many_peaks
@@ -137,6 +137,8 @@ def _parse_spectrum(block: list[str], first_line: int, common: list[_Attribute],
     attributes += [item for item in common if item[1] not in stated]
     mz, intensity = _parse_peaks(rows, row_lines, attributes, source)
     fields = NamedFields(_pairs(attributes))
+    if not fields.has("name"):
+        fields.add("name", next((value for _, accession, _, value in attributes if accession == "MS:1003061"), ""))
     if not fields.has("ms level"):
         fields.add("ms level", "2")
     return record_from_fields(fields, source, mz, intensity)
@@ -153,7 +155,7 @@ def _parse_peaks(
     table = parse_columns(tokens, row_lines, path, expected)
     stated = [value for _, accession, _, value in attributes if accession == _COUNT_ACCESSION]
     if stated and stated[0] != str(len(rows)):
-        found, wanted = f"{len(rows)} peak rows", f"{quote(stated[0])} as the number of peaks says"
+        found, wanted = counted(len(rows), "peak row"), f"{quote(stated[0])} as the number of peaks says"
         raise fault("peak count", path, line, found=found, expected=wanted)
     if not rows:
         raise fault("no peaks", path, line, found="0 peak rows", expected="at least one")

@@ -73,7 +73,7 @@ def _recognize_text(text: str, path: str) -> str:
         if re.search(r"<(?:indexedmzML|mzML)\b", text):
             return "mzml"
         raise FormatError(
-            "file", where=path, found=quote(first), expected=FORMATS, hint="This is markup of another kind."
+            "unknown format", where=path, found=quote(first), expected=FORMATS, hint="This is markup of another kind."
         )
     if first.startswith(("{", "[")):
         raise FormatError("unknown format", where=path, found=quote(first), expected=FORMATS, hint="JSON is not read.")
