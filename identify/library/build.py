@@ -8,9 +8,10 @@ from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from datetime import datetime
 from pathlib import Path
+from typing import NamedTuple
 
 from identify import __version__
-from identify.errors import InputError, LibraryError
+from identify.errors import InputError
 from identify.library.drafts import Policy, judge_record
 from identify.library.events import append_event
 from identify.library.insertion import Insertion
@@ -119,7 +120,7 @@ def build_library(
     -----
     One pass, memory bounded by one record and the pages SQLite keeps.
     """
-    streams = [(Path(source).name, _source_hash(Path(source)), _reading(Path(source))) for source in sources]
+    streams = [_stream_of(Path(source)) for source in sources]
     return _build(Path(path), streams, resolve_licences(licences), replace, progress, who, when, reason, status)
 
 
@@ -155,20 +156,28 @@ def build_from_records(
     UsageError, InputError, LibraryError
         As `build_library`.
     """
-    stream = [(origin, "", lambda _on_reject: iter(records))]
+    stream = [_Stream(origin, "", "", lambda _on_reject: iter(records))]
     return _build(Path(path), stream, resolve_licences(licences), replace, None, who, when, reason, status)
 
 
-_Stream = Callable[[OnReject], Iterator[SpectrumRecord]]
+class _Stream(NamedTuple):
+    """Where records come from."""
+
+    name: str
+    sha256: str
+    folder: str
+    """Left out of the provenance of entries: the folders of one computer mean nothing years later."""
+    read: Callable[[OnReject], Iterator[SpectrumRecord]]
 
 
-def _reading(source: Path) -> _Stream:
-    return lambda on_reject: read_spectra(source, on_reject)
+def _stream_of(source: Path) -> _Stream:
+    folder = str(source.parent / "x").removesuffix("x")
+    return _Stream(source.name, _source_hash(source), folder, lambda on_reject: read_spectra(source, on_reject))
 
 
 def _build(
     path: Path,
-    streams: Sequence[tuple[str, str, _Stream]],
+    streams: Sequence[_Stream],
     licences: frozenset[str] | None,
     replace: bool,
     progress: Progress | None,
@@ -184,7 +193,7 @@ def _build(
             content={"schema": SCHEMA_VERSION, "program": f"ionwitness {__version__}"},
         )  # fmt: skip
         event = None
-        for name, source_hash, stream in streams:
+        for stream in streams:
             insertion, tally = Insertion(connection), _Tally()
 
             def reject(rejection: Rejection, tally: _Tally = tally) -> None:
@@ -192,13 +201,13 @@ def _build(
                 if len(listed) < MAX_LISTED:
                     listed.append(rejection)
 
-            for record in _watched(stream(reject), total, tally, progress, name):
-                _take(record, policy, insertion, tally, reject)
+            for record in _watched(stream.read(reject), total, tally, progress, stream.name):
+                _take(record, policy, stream.folder, insertion, tally, reject)
             tally.n_read = tally.n_accepted + tally.reasons.total()
             total.add(tally)
             content = {
-                "source": name,
-                "sha256": source_hash,
+                "source": stream.name,
+                "sha256": stream.sha256,
                 "licences": "all" if licences is None else sorted(licences),
                 "read": tally.n_read,
                 "rejected": dict(tally.reasons),
@@ -230,12 +239,14 @@ def _watched(
         yield record
 
 
-def _take(record: SpectrumRecord, policy: Policy, insertion: Insertion, tally: _Tally, reject: OnReject) -> None:
+def _take(
+    record: SpectrumRecord, policy: Policy, folder: str, insertion: Insertion, tally: _Tally, reject: OnReject
+) -> None:
     draft = judge_record(record, policy)
     if isinstance(draft, Rejection):
         reject(draft)
         return
-    draft = _with_accession(draft, record)
+    draft = _with_provenance(draft, record, folder)
     accession = str(draft.columns["accession"])
     if insertion.has_accession(accession):
         found, hint = f"{accession!r} again", "The first record with it was kept."
@@ -247,14 +258,15 @@ def _take(record: SpectrumRecord, policy: Policy, insertion: Insertion, tally: _
     tally.notes.update(draft.notes)
 
 
-def _with_accession(draft: Draft, record: SpectrumRecord) -> Draft:
-    """The draft, named after file and position where the record has no accession."""
-    if draft.columns["accession"]:
-        return draft
+def _with_provenance(draft: Draft, record: SpectrumRecord, folder: str) -> Draft:
+    """The draft with the file it came from, and named after it where the record has no accession."""
     source = record.source
-    position = source.number if source.number is not None else source.line
-    name = f"{Path(source.path).name}#{position}" if position is not None else Path(source.path).name
-    return replace(draft, columns={**draft.columns, "accession": name})
+    columns = {**draft.columns, "source": str(draft.columns["source"]).removeprefix(folder)}
+    if not columns["accession"]:
+        position = source.number if source.number is not None else source.line
+        name = Path(source.path).name
+        columns["accession"] = name if position is None else f"{name}#{position}"
+    return replace(draft, columns=columns)
 
 
 def _source_hash(source: Path) -> str:
@@ -274,6 +286,3 @@ def describe_build(report: BuildReport) -> list[str]:
     lines += [f"  rejected {count:,} × {reason}" for reason, count in report.n_rejected.items()]
     lines += [f"  noted {count:,} × {remark}" for remark, count in report.notes.items()]
     return lines
-
-
-__all__ = ["BuildReport", "LibraryError", "build_from_records", "build_library", "describe_build"]

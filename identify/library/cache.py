@@ -2,7 +2,7 @@
 
 The library is the truth; the cache can be deleted at any time. A cache names the event up to which it knows the library.
 Entries never change, so a cache of an earlier or later state of the same chain stays useful: entries it lacks are added in
-memory, entries it should not show are marked withdrawn. Anything else (another library, a truncated file, a changed bit,
+memory, entries it should not show are hidden. Anything else (another library, a truncated file, a changed bit,
 another format) means: build anew.
 
 File layout, all little-endian::
@@ -27,7 +27,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from identify.errors import IndexDamaged
-from identify.index.search import SearchIndex, build_index
+from identify.index.search import SearchIndex, add_entries, build_index, hide_entries, merge_index
 from identify.index.segment import Segment, segment_from_arrays
 from identify.library.store import Library
 from identify.settings import Weighting
@@ -39,7 +39,7 @@ _ALIGN = 64
 _MAX_HEADER = 2**20
 _TYPES = frozenset({"<i8", "<i4", "<u4", "<u2", "|u1", "<f4", "<f8"})
 MERGE_AT = 1000
-"""Entries added in memory before the cache file is written anew with them."""
+"""Entries added or hidden in memory before they are merged and the cache file is written anew."""
 
 
 def load_index(library: Library, weighting: Weighting, *, save: bool = True) -> SearchIndex:
@@ -68,15 +68,22 @@ def load_index(library: Library, weighting: Weighting, *, save: bool = True) -> 
         except IndexDamaged:
             continue
         current = _bring_up_to_date(library, index, event)
-        if current is not None:
-            n_added = sum(segment.n_entries for segment in current.segments[1:])
-            if n_added >= MERGE_AT and save and library.as_of is None:
-                break
-            return current
+        if current is None:
+            continue
+        if save and library.as_of is None and _is_far_behind(current):
+            current = merge_index(current)
+            save_index(library, current)
+        return current
     index = build_index(library.iter_peaks(), weighting)
     if save and library.as_of is None:
         save_index(library, index)
     return index
+
+
+def _is_far_behind(index: SearchIndex) -> bool:
+    n_added = sum(segment.n_entries for segment in index.segments[1:])
+    n_hidden = sum(int(mask.sum()) for mask in index.hidden if mask is not None)
+    return n_added + n_hidden >= MERGE_AT
 
 
 def save_index(library: Library, index: SearchIndex) -> Path | None:
@@ -86,7 +93,7 @@ def save_index(library: Library, index: SearchIndex) -> Path | None:
     ----------
     library : Library
     index : SearchIndex
-        Built from the present state of the library.
+        Of the present state of the library, without hidden entries.
 
     Returns
     -------
@@ -131,8 +138,8 @@ def _bring_up_to_date(library: Library, index: SearchIndex, event: str) -> Searc
     missing = np.setdiff1d(wanted, held, assume_unique=True)
     surplus = np.setdiff1d(held, wanted, assume_unique=True)
     if missing.size:
-        index = index.with_entries(library.peaks_of(missing.tolist()))
-    return index.with_withdrawn(surplus.tolist()) if surplus.size else index
+        index = add_entries(index, library.peaks_of(missing.tolist()))
+    return hide_entries(index, surplus.tolist()) if surplus.size else index
 
 
 def write_index(path: Path, index: SearchIndex, library_id: str, event: str) -> None:
@@ -142,7 +149,7 @@ def write_index(path: Path, index: SearchIndex, library_id: str, event: str) -> 
     ----------
     path : Path
     index : SearchIndex
-        Without withdrawn entries.
+        Without hidden entries.
     library_id, event : str
         Hash of the library's first event, and of the last one the index takes into account.
 

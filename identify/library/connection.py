@@ -40,10 +40,15 @@ def translated(path: Path) -> Iterator[None]:
     try:
         yield
     except sqlite3.Error as error:
-        raise _translate(path, error) from error
+        translation = _translate(path, error)
+        if translation is None:
+            raise
+        raise translation from error
+    except UnicodeDecodeError as error:  # SQLite quotes the damaged text in its own message
+        raise LibraryDamaged("library", where=str(path), found="text that is no text", expected="UTF-8") from error
 
 
-def _translate(path: Path, error: sqlite3.Error) -> LibraryError:
+def _translate(path: Path, error: sqlite3.Error) -> LibraryError | None:
     where, said = str(path), str(error)
     code = getattr(error, "sqlite_errorcode", 0) & 0xFF
     if code in (sqlite3.SQLITE_BUSY, sqlite3.SQLITE_LOCKED):
@@ -63,7 +68,9 @@ def _translate(path: Path, error: sqlite3.Error) -> LibraryError:
         )  # fmt: skip
     if code == sqlite3.SQLITE_CONSTRAINT:
         return LibraryConflict("library", where=where, found=said, expected="a change its rules allow")
-    if code in (sqlite3.SQLITE_CORRUPT, sqlite3.SQLITE_NOTADB, sqlite3.SQLITE_TOOBIG):
+    # Our statements are fixed: what does not compile for other reasons than their syntax is the file's fault.
+    foreign = said.startswith("Could not decode") or (code == sqlite3.SQLITE_ERROR and "syntax error" not in said)
+    if foreign or code in (sqlite3.SQLITE_CORRUPT, sqlite3.SQLITE_NOTADB, sqlite3.SQLITE_TOOBIG):
         return LibraryDamaged(
             "library", where=where, found=said, expected="an intact file",
             hint="Run `ionwitness library verify`, and restore the last backup.",
@@ -73,7 +80,7 @@ def _translate(path: Path, error: sqlite3.Error) -> LibraryError:
             "library", where=where, found=said, expected="a file that can be read and written",
             hint="Check the disk and the permissions of the file and its folder.",
         )  # fmt: skip
-    raise error
+    return None
 
 
 @contextmanager

@@ -5,6 +5,7 @@ Every function here is pure, so that records can be judged in several processes.
 
 from __future__ import annotations
 
+import re
 import unicodedata
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -13,7 +14,7 @@ from typing import TYPE_CHECKING
 from identify.errors import FormulaError, SpectrumError, StructureError, quote
 from identify.library.blobs import FLOAT32, FLOAT64, UINT16, pack
 from identify.library.events import canonical_json
-from identify.library.licences import UNSTATED, normalise_licence
+from identify.library.licences import normalise_licence
 from identify.library.rows import CompoundKey, Draft, Value, steps_text
 from identify.records import CleanSpectrum, EntryStatus, Identity, Rejection, SpectrumRecord
 from identify.settings import REFERENCE_CLEANING
@@ -42,6 +43,8 @@ NOTE_DERIVATIVE_UNKNOWN = "derivative stated but not understood"
 NOTE_LABELLED = "isotope-labelled"
 NOTE_ACCURATE = "accurate m/z"
 NOTE_NO_SPLASH = "no SPLASH to verify"
+_UNDERIVATIZED = re.compile(r"(?:\s*0\s?[A-Za-z-]+[;,]?)+")
+"""`0 TMS`: measured without any group, which is no derivative."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -224,7 +227,7 @@ def read_chemistry(record: SpectrumRecord) -> Chemistry:
     if is_labelled:
         notes.append(NOTE_LABELLED)
     measured_as, measured = "", labelled
-    if record.derivative:
+    if record.derivative and not _UNDERIVATIZED.fullmatch(record.derivative):
         derivative = find_derivative(record.derivative)
         if derivative is None:
             measured_as, measured = tidy(record.derivative), None
@@ -304,15 +307,3 @@ def normalised_name(name: str) -> str:
     'ethyl acetate'
     """
     return " ".join(unicodedata.normalize("NFKC", name).casefold().split())
-
-
-__all__ = [
-    "DEFAULT_ENERGY_EV",
-    "UNSTATED",
-    "Chemistry",
-    "Policy",
-    "compound_key",
-    "judge_record",
-    "read_chemistry",
-    "tidy",
-]

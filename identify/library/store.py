@@ -157,12 +157,13 @@ class Library:
     def _forget(self) -> None:
         self._cache.clear()
         rows = self._connection.execute(
-            "SELECT entry_id, status FROM standing WHERE event_seq <= ? ORDER BY event_seq", (self._upto,)
+            "SELECT entry_id, status FROM standing WHERE event_seq <= ? ORDER BY event_seq", (self.last_event,)
         )
         self._standing = {entry_id: self._status(status) for entry_id, status in rows}
 
     @property
-    def _upto(self) -> int:
+    def last_event(self) -> int:
+        """Number of the last event taken into account; very large when that is whatever is committed."""
         return _LATEST if self.as_of is None else self.as_of
 
     def _status(self, text: str) -> EntryStatus:
@@ -175,10 +176,16 @@ class Library:
 
     @property
     def fingerprint(self) -> str:
-        """Hash of the last event (or of event `as_of`): 64 hexadecimal digits."""
+        """Hash of the last event (or of event `as_of`): 64 hexadecimal digits.
+
+        Raises
+        ------
+        LibraryError
+            If there is no event.
+        """
         with self.reading() as connection:
             row = connection.execute(
-                "SELECT hash FROM event WHERE seq <= ? ORDER BY seq DESC LIMIT 1", (self._upto,)
+                "SELECT hash FROM event WHERE seq <= ? ORDER BY seq DESC LIMIT 1", (self.last_event,)
             ).fetchone()
         if row is None:
             raise LibraryError("library", where=str(self.path), found="no event", expected="at least one")
@@ -191,7 +198,7 @@ class Library:
             (last,) = connection.execute(
                 "SELECT max(seq) FROM (SELECT max(event_seq) AS seq FROM entry WHERE event_seq <= ?"
                 " UNION ALL SELECT max(event_seq) FROM standing WHERE event_seq <= ?)",
-                (self._upto, self._upto),
+                (self.last_event, self.last_event),
             ).fetchone()
             (found,) = connection.execute("SELECT hash FROM event WHERE seq = ?", (last or 1,)).fetchone()
         return str(found)
@@ -205,15 +212,20 @@ class Library:
             counts = connection.execute(
                 "SELECT count(*), count(DISTINCT compound_id) FROM entry"  # noqa: S608  (placeholders only)
                 f" WHERE event_seq <= ? AND initial_status IN ({marks})",
-                (self._upto, *searchable),
+                (self.last_event, *searchable),
             ).fetchone()
             if moved:
                 pairs = connection.execute(
-                    "SELECT id, compound_id, initial_status FROM entry WHERE event_seq <= ?", (self._upto,)
+                    "SELECT id, compound_id, initial_status FROM entry WHERE event_seq <= ?", (self.last_event,)
                 )
                 kept = [compound for entry, compound, status in pairs if moved.get(entry, status) in SEARCHABLE]
                 counts = (len(kept), len(set(kept)))
         return LibraryState(str(self.path), self.fingerprint, *map(int, counts))
+
+    def standings(self) -> dict[int, EntryStatus]:
+        """Present standing of the entries that events have moved from the one they came with, by entry id."""
+        with self.reading():
+            return dict(self._standing)
 
     def events(self) -> list[Event]:
         """Events in order."""
@@ -224,7 +236,8 @@ class Library:
         """Ids of the entries with one of these standings, ascending."""
         with self.reading() as connection:
             rows = connection.execute(
-                "SELECT id, initial_status FROM entry INDEXED BY entry_by_event WHERE event_seq <= ?", (self._upto,)
+                "SELECT id, initial_status FROM entry INDEXED BY entry_by_event WHERE event_seq <= ?",
+                (self.last_event,),
             )
             moved = self._standing
             return sorted(entry for entry, status in rows if moved.get(entry, status) in statuses)
@@ -255,7 +268,7 @@ class Library:
                 batch = wanted[start : start + _BATCH]
                 marks = ", ".join("?" * len(batch))
                 rows = connection.execute(
-                    f"{_ENTRY_SELECT} WHERE id IN ({marks}) AND event_seq <= ?", (*batch, self._upto)
+                    f"{_ENTRY_SELECT} WHERE id IN ({marks}) AND event_seq <= ?", (*batch, self.last_event)
                 )
                 for row in rows:
                     found[row[0]] = self._decode(row)
@@ -338,7 +351,7 @@ class Library:
             for entry_id in ids:
                 row = connection.execute(
                     f"{_RECORD_SELECT} JOIN source_peaks ON entry_id = entry.id WHERE entry.id = ? AND event_seq <= ?",
-                    (entry_id, self._upto),
+                    (entry_id, self.last_event),
                 ).fetchone()
                 if row is None:
                     raise LibraryError(
@@ -404,7 +417,7 @@ class Library:
         values = [value for _, some in used for value in some]
         with self.reading() as connection:
             rows = connection.execute(
-                f"{_ENTRY_SELECT} WHERE {clause} AND event_seq <= ? ORDER BY id", (*values, self._upto)
+                f"{_ENTRY_SELECT} WHERE {clause} AND event_seq <= ? ORDER BY id", (*values, self.last_event)
             )
             found = []
             for row in rows:
