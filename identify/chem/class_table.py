@@ -13,7 +13,7 @@ _CHAIN: Final = "~".join(["[CX4H2,CX3H1;!R]"] * 5)
 
 PATTERNS: Final[tuple[tuple[str, str], ...]] = (
     # silicon
-    ("TMS derivative", "[O,N,S;!$(*[Si]([CH3])([CH3])[O,N,S])][Si]([CH3])([CH3])[CH3]"),
+    ("TMS derivative", "[$([O;!$(O([Si])[Si])]),N,S][Si]([CH3])([CH3])[CH3]"),
     ("TBDMS derivative", "[O,N,S][Si]([CH3])([CH3])C([CH3])([CH3])[CH3]"),
     ("siloxane", "[Si]O[Si]"),
     ("alkoxysilane", "[Si;!$([Si](C)(C)C)][OX2][#6]"),

@@ -267,11 +267,19 @@ def draw_svg(smiles: str, width: int = 240, height: int = 180) -> str:
 
 
 def _plain_svg(text: str) -> str:
-    """The ``<svg>`` element alone, without what only rdkit's own viewers use."""
+    """The ``<svg>`` element alone: style text as attributes (a strict content policy allows those), defaults left out."""
     body = text[text.index("<svg") :].strip()
     body = re.sub(r"<!--.*?-->", "", body, flags=re.DOTALL)
     body = re.sub(r"\s+(?:class|xmlns:\w+|xml:space|version|baseProfile)='[^']*'", "", body)
-    return re.sub(r"\s*\n\s*", "\n", body)
+    body = re.sub(r"style='([^']*)'", lambda match: _attributes(match[1]), body)
+    return re.sub(r"\s+", " ", body).replace("> <", ">\n<").replace(" />", "/>")
+
+
+def _attributes(style: str) -> str:
+    """Style declarations as presentation attributes, without those that say what holds anyway."""
+    defaults = {"stroke-linecap", "stroke-linejoin", "stroke-opacity", "stroke-miterlimit", "fill-rule", "fill-opacity"}
+    pairs = (declaration.partition(":")[::2] for declaration in style.split(";") if declaration)
+    return " ".join(f"{name}='{value.removesuffix('px')}'" for name, value in pairs if name not in defaults)
 
 
 @lru_cache(maxsize=16384)
@@ -362,7 +370,7 @@ def _hydrocarbon_classes(mol: Mol) -> tuple[str, ...]:
         names.append("alkylbenzene")
     if _largest_fused_aromatic(mol) > 1:
         names.append("polycyclic aromatic hydrocarbon")
-    if _is_terpenoid(mol):
+    if (n_rings or not is_saturated) and _is_terpenoid(mol):
         names.append("terpene")
     names += ["alkene"] * has_double + ["alkyne"] * has_triple + ["aromatic hydrocarbon"] * bool(aromatic)
     return (*names, "hydrocarbon")
