@@ -158,7 +158,9 @@ def test_public_functions_are_documented_and_say_what_they_raise(path: Path) -> 
             for child in ast.walk(node)
             if isinstance(child, ast.Raise) and isinstance(child.exc, ast.Call) and isinstance(child.exc.func, ast.Name)
         }
-        classes = {name for name in raised if name[:1].isupper()}  # a lower-case name makes an error: its doc names the class
+        classes = {
+            name for name in raised if name[:1].isupper()
+        }  # a lower-case name makes an error: its doc names the class
         for error in classes - {"NotImplementedError", "Exit", "SystemExit"}:
             assert error in text, f"{module_name(path)}.{node.name} raises {error} without saying so"
 
