@@ -97,13 +97,27 @@ def float_slack(query: WeighedQuery) -> float:
     return (query.mz.size + 16) * 2.0**-23
 
 
-def _scan_arrays(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_] | None) -> NDArray[np.int64]:
+def bound_scores(segment: Segment, query: WeighedQuery) -> tuple[NDArray[np.int64], FloatArray, FloatArray, FloatArray]:
+    """Scores from the codes, with the half-width of the interval in which each exact score lies.
+
+    Parameters
+    ----------
+    segment : Segment
+        The entries.
+    query : WeighedQuery
+        The query, weighted as the segment.
+
+    Returns
+    -------
+    rows : int64 array of shape (n,)
+        The rows that share a peak with the query, increasing; the scores of all others are 0.
+    cosine, reverse : float64 arrays of shape (n,)
+        Approximate scores; infinite where nothing is known but that the score lies in [0, 1].
+    slack : float64 array of shape (n,)
+        Half-width of both intervals.
+    """
     dot, matched, below = _sum_columns(segment, query)
     rows = np.flatnonzero(dot > 0)
-    if hidden is not None:
-        rows = rows[~hidden[rows]]
-    if rows.size <= k:
-        return rows
     dot, matched = dot[rows], matched[rows]
     length = np.sqrt(segment.code_square[rows].astype(np.float64) - below[rows])
     slack = segment.code_error[rows] / length
@@ -111,7 +125,16 @@ def _scan_arrays(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[
     inverse_norm = inverse_norms(segment, query)[segment.lowest_mz[rows]]
     matched = np.where(matched > NEGLIGIBLE_SQUARE, matched, 0.0)
     with np.errstate(divide="ignore"):
-        cosine, reverse = dot / length * inverse_norm, dot / length / np.sqrt(matched)
+        return rows, dot / length * inverse_norm, dot / length / np.sqrt(matched), slack
+
+
+def _scan_arrays(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_] | None) -> NDArray[np.int64]:
+    rows, cosine, reverse, slack = bound_scores(segment, query)
+    if hidden is not None:
+        seen = ~hidden[rows]
+        rows, cosine, reverse, slack = rows[seen], cosine[seen], reverse[seen], slack[seen]
+    if rows.size <= k:
+        return rows
     return rows[_may_be_among_best(cosine, slack, k) | _may_be_among_best(reverse, slack, k)]
 
 
