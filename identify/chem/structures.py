@@ -51,7 +51,7 @@ def _read_mol(smiles: str) -> Mol:
 
 
 @lru_cache(maxsize=2048)
-def _plain_mol(smiles: str) -> Mol:
+def plain_mol(smiles: str) -> Mol:
     """Molecule of a SMILES with natural isotopes, for everything that isotopes do not change."""
     from rdkit import Chem, rdBase
 
@@ -260,6 +260,7 @@ def draw_svg(smiles: str, width: int = 240, height: int = 180) -> str:
     options.clearBackground = False
     options.useBWAtomPalette()
     options.bondLineWidth = 1.4
+    options.minFontSize = 9
     options.padding = 0.06
     drawer.DrawMolecule(mol)
     drawer.FinishDrawing()
@@ -305,7 +306,7 @@ def active_hydrogens(smiles: str) -> int:
     >>> active_hydrogens("NCC(=O)O"), active_hydrogens("CC(=O)C")
     (3, 0)
     """
-    return sum(int(atom.GetTotalNumHs()) for atom in _plain_mol(smiles).GetAtoms() if atom.GetAtomicNum() in (7, 8, 16))
+    return sum(int(atom.GetTotalNumHs()) for atom in plain_mol(smiles).GetAtoms() if atom.GetAtomicNum() in (7, 8, 16))
 
 
 @lru_cache(maxsize=1)
@@ -341,7 +342,7 @@ def compound_classes(smiles: str) -> tuple[str, ...]:
     >>> compound_classes("CCCCCCCCCCCCCCCC(=O)OC")
     ('fatty acid methyl ester', 'ester')
     """
-    mol = _plain_mol(smiles)
+    mol = plain_mol(smiles)
     if {atom.GetAtomicNum() for atom in mol.GetAtoms()} <= {1, 6}:
         return _hydrocarbon_classes(mol)
     names = [name for name, pattern in _patterns() if mol.HasSubstructMatch(pattern) and _fills(mol, name, pattern)]
@@ -434,7 +435,7 @@ def _can_tile(atoms: frozenset[int], units: set[frozenset[int]]) -> bool:
 def _fingerprint(smiles: str) -> Any:
     from rdkit.Chem import rdFingerprintGenerator
 
-    return rdFingerprintGenerator.GetMorganGenerator(radius=2, fpSize=2048).GetFingerprint(_plain_mol(smiles))
+    return rdFingerprintGenerator.GetMorganGenerator(radius=2, fpSize=2048).GetFingerprint(plain_mol(smiles))
 
 
 def structure_similarity(a: str, b: str) -> float:
