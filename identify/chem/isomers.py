@@ -12,6 +12,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import chain
 from typing import TYPE_CHECKING, Any, Final
 
 from identify.chem.structures import plain_mol
@@ -25,8 +26,8 @@ MAX_LIMIT: Final = 2000
 MAX_HEAVY_ATOMS: Final = 60
 """Larger compounds are not enumerated: the answer is "at least 1"."""
 
-_Move = tuple[tuple[tuple[int, int, int], ...], tuple[int, int]]
-"""Bonds to set as (atom, atom, order; 0 = none), and the carbons that gain and lose a hydrogen."""
+_MARK: Final = 99
+"""Isotope number that marks where a detached group was bound."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,11 +95,11 @@ def count_isomers(smiles: str, limit: int = 100) -> IsomerCount:
     if "." in first or start.GetNumHeavyAtoms() > MAX_HEAVY_ATOMS:
         return IsomerCount((first,), False)
     start = Chem.MolFromSmiles(first)
-    kept, tried = {first: start}, {first}
+    kept, tried, detached = {first: start}, {first}, set[tuple[str, str]]()
     wanted = _signature(start)
     queue = [first]
     for current in queue:
-        for smiles_found in _neighbours(kept[current]):
+        for smiles_found in chain(_moved_groups(kept[current], detached), _shifted_bonds(kept[current])):
             if smiles_found in tried:
                 continue
             tried.add(smiles_found)
@@ -112,26 +113,48 @@ def count_isomers(smiles: str, limit: int = 100) -> IsomerCount:
     return IsomerCount(tuple(queue), True)
 
 
-def _neighbours(mol: Mol) -> Iterator[str]:
-    """Canonical SMILES of everything one move away, some more than once."""
+def _moved_groups(mol: Mol, detached: set[tuple[str, str]]) -> Iterator[str]:
+    """Canonical SMILES of everything one moved group away, except what the same rest and group gave before.
+
+    What comes out depends on the rest and the group only, not on where the group was; `detached` remembers the pairs done. Sites
+    that are equivalent in the rest give the same, so one of each kind is tried.
+    """
     from rdkit import Chem
 
-    for bonds, (gains, loses) in _moves(mol):
-        edited = Chem.RWMol(mol)
-        for begin, end, order in bonds:
-            edited.RemoveBond(begin, end)
-            if order:
-                edited.AddBond(begin, end, Chem.BondType.SINGLE if order == 1 else Chem.BondType.DOUBLE)
-        for index, change in ((gains, 1), (loses, -1)):
-            atom = edited.GetAtomWithIdx(index)
-            if atom.GetNoImplicit():
-                atom.SetNumExplicitHs(atom.GetNumExplicitHs() + change)
-        edited.UpdatePropertyCache(False)
-        yield str(Chem.MolToSmiles(edited))
+    for a, x, sites in _sources(mol):
+        apart = Chem.RWMol(mol)
+        apart.RemoveBond(a, x)
+        _change_hydrogens(apart.GetAtomWithIdx(a), 1)
+        apart.GetAtomWithIdx(x).SetIsotope(_MARK)
+        apart.UpdatePropertyCache(False)
+        kind = "+".join(sorted({"a" if mol.GetAtomWithIdx(site).GetIsAromatic() else "s" for site in sites}))
+        key = (str(Chem.MolToSmiles(apart)), kind)
+        if key in detached:
+            continue
+        detached.add(key)
+        ranks = list(Chem.CanonicalRankAtoms(apart, breakTies=False))
+        part = _side(mol, x, a)
+        tried = {ranks[a]}
+        apart.GetAtomWithIdx(x).SetIsotope(0)
+        for site in sites:
+            if site in part or ranks[site] in tried:
+                continue
+            tried.add(ranks[site])
+            joined = Chem.RWMol(apart)
+            joined.AddBond(site, x, Chem.BondType.SINGLE)
+            _change_hydrogens(joined.GetAtomWithIdx(site), -1)
+            joined.UpdatePropertyCache(False)
+            yield str(Chem.MolToSmiles(joined))
 
 
-def _moves(mol: Mol) -> Iterator[_Move]:
-    """All moves of one structure; of equivalent sources only one is moved."""
+def _change_hydrogens(atom: Any, change: int) -> None:
+    """One hydrogen more or fewer on an atom that states its own number."""
+    if atom.GetNoImplicit():
+        atom.SetNumExplicitHs(atom.GetNumExplicitHs() + change)
+
+
+def _sources(mol: Mol) -> Iterator[tuple[int, int, list[int]]]:
+    """Groups that may move: their anchor, their own first atom, and the carbons they may go to; one of each equivalent kind."""
     from rdkit import Chem
 
     ranks = list(Chem.CanonicalRankAtoms(mol, breakTies=False))
@@ -144,42 +167,36 @@ def _moves(mol: Mol) -> Iterator[_Move]:
         if bond.IsInRing() or bond.GetBondTypeAsDouble() != 1.0:
             continue
         for anchor, moved in ((bond.GetBeginAtom(), bond.GetEndAtom()), (bond.GetEndAtom(), bond.GetBeginAtom())):
-            key = (ranks[anchor.GetIdx()], ranks[moved.GetIdx()])
-            if anchor.GetAtomicNum() != 6 or key in done:
-                continue
-            done.add(key)
-            is_methyl = moved.GetAtomicNum() == 6 and moved.GetDegree() == 1 and _is_saturated(moved)
-            if is_methyl:
-                sites = with_h
-            elif anchor.GetIsAromatic():
-                sites = aromatic
-            elif _is_saturated(anchor) and moved.GetAtomicNum() != 6:
-                sites = saturated
-            else:
-                continue
             a, x = anchor.GetIdx(), moved.GetIdx()
-            part = _side(mol, x, a)
-            for site in sites:
-                if site not in part and site != a:
-                    yield ((a, x, 0), (site, x, 1)), (a, site)
-    yield from _shifts(mol)
+            if anchor.GetAtomicNum() != 6 or (ranks[a], ranks[x]) in done:
+                continue
+            done.add((ranks[a], ranks[x]))
+            if moved.GetAtomicNum() == 6 and moved.GetDegree() == 1 and _is_saturated(moved):
+                yield a, x, with_h
+            elif anchor.GetIsAromatic():
+                yield a, x, aromatic
+            elif _is_saturated(anchor) and moved.GetAtomicNum() != 6:
+                yield a, x, saturated
 
 
-def _shifts(mol: Mol) -> Iterator[_Move]:
-    """Moves of a double bond by one place: a=b–c to a–b=c."""
+def _shifted_bonds(mol: Mol) -> Iterator[str]:
+    """Canonical SMILES with one double bond moved by one place: a=b–c to a–b=c."""
+    from rdkit import Chem
+
     for bond in mol.GetBonds():
-        if bond.GetBondTypeAsDouble() != 2.0 or {
-            bond.GetBeginAtom().GetAtomicNum(),
-            bond.GetEndAtom().GetAtomicNum(),
-        } != {6}:
+        ends = (bond.GetBeginAtom(), bond.GetEndAtom())
+        if bond.GetBondTypeAsDouble() != 2.0 or any(end.GetAtomicNum() != 6 for end in ends):
             continue
-        for a, b in ((bond.GetBeginAtom(), bond.GetEndAtom()), (bond.GetEndAtom(), bond.GetBeginAtom())):
+        for a, b in (ends, ends[::-1]):
             for c in b.GetNeighbors():
                 if c.GetAtomicNum() == 6 and c.GetTotalNumHs() and _is_saturated(c):
-                    yield (
-                        ((a.GetIdx(), b.GetIdx(), 1), (b.GetIdx(), c.GetIdx(), 2)),
-                        (a.GetIdx(), c.GetIdx()),
-                    )
+                    edited = Chem.RWMol(mol)
+                    edited.GetBondBetweenAtoms(a.GetIdx(), b.GetIdx()).SetBondType(Chem.BondType.SINGLE)
+                    edited.GetBondBetweenAtoms(b.GetIdx(), c.GetIdx()).SetBondType(Chem.BondType.DOUBLE)
+                    _change_hydrogens(edited.GetAtomWithIdx(a.GetIdx()), 1)
+                    _change_hydrogens(edited.GetAtomWithIdx(c.GetIdx()), -1)
+                    edited.UpdatePropertyCache(False)
+                    yield str(Chem.MolToSmiles(edited))
 
 
 def _is_saturated(atom: Any) -> bool:
