@@ -8,8 +8,9 @@ above a spectrum's highest peak means "no ions there".
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
-from identify.records import AlignedPeaks, CleanSpectrum
+from identify.records import AlignedPeaks, CleanSpectrum, FloatArray, Peaks
 
 
 def align(query: CleanSpectrum, entry: CleanSpectrum) -> AlignedPeaks:
@@ -39,3 +40,65 @@ def align(query: CleanSpectrum, entry: CleanSpectrum) -> AlignedPeaks:
     query_intensity[np.searchsorted(axis, query_mz)] = query.nominal.relative[query_start:]
     entry_intensity[np.searchsorted(axis, entry_mz)] = entry.nominal.relative[entry_start:]
     return AlignedPeaks(axis, query_intensity, entry_intensity, lowest)
+
+
+def align_accurate(
+    query: Peaks, entry: Peaks, lowest_mz: int, tolerance_ppm: float, tolerance_da: float
+) -> AlignedPeaks:
+    """Accurate peaks of both spectra on one axis; peaks that are each other's nearest within the tolerance are one.
+
+    Parameters
+    ----------
+    query, entry : Peaks
+        Accurate peaks of the two spectra.
+    lowest_mz : int
+        Higher of the two lower limits, nominal: accurate peaks from ``lowest_mz - 0.5`` upwards take part.
+    tolerance_ppm, tolerance_da : float
+        The larger of the two at the mean m/z of a pair applies, ≥ 0.
+
+    Returns
+    -------
+    AlignedPeaks
+        A pair stands at its mean m/z, other peaks at their own; intensities relative to each whole spectrum's base peak
+        (= 100). May be empty.
+
+    Notes
+    -----
+    O(n log n). Symmetric: swapping the spectra swaps the columns. Between two equally near peaks the lower is the nearer.
+
+    Examples
+    --------
+    >>> query, entry = Peaks([43.0178, 58.0413], [100, 40]), Peaks([43.0180, 58.0651], [100, 40])
+    >>> align_accurate(query, entry, 40, 10.0, 0.002).mz.round(4).tolist()
+    [43.0179, 58.0413, 58.0651]
+    """
+    query_mz, query_intensity = _from_nominal(query, lowest_mz)
+    entry_mz, entry_intensity = _from_nominal(entry, lowest_mz)
+    if query_mz.size == 0 or entry_mz.size == 0:
+        mine = theirs = np.zeros(0, dtype=np.int64)
+    else:
+        theirs_of = _nearest(query_mz, entry_mz)
+        mine = np.flatnonzero(_nearest(entry_mz, query_mz)[theirs_of] == np.arange(query_mz.size))
+        theirs = theirs_of[mine]
+    middle = (query_mz[mine] + entry_mz[theirs]) / 2
+    near = np.abs(query_mz[mine] - entry_mz[theirs]) <= np.maximum(tolerance_da, tolerance_ppm * 1e-6 * middle)
+    mine, theirs, middle = mine[near], theirs[near], middle[near]
+    alone, missed = np.delete(np.arange(query_mz.size), mine), np.delete(np.arange(entry_mz.size), theirs)
+    axis = np.concatenate([middle, query_mz[alone], entry_mz[missed]])
+    order = np.argsort(axis, kind="stable")
+    query_column = np.concatenate([query_intensity[mine], query_intensity[alone], np.zeros(missed.size)])
+    entry_column = np.concatenate([entry_intensity[theirs], np.zeros(alone.size), entry_intensity[missed]])
+    return AlignedPeaks(axis[order], query_column[order], entry_column[order], lowest_mz)
+
+
+def _from_nominal(peaks: Peaks, lowest_mz: int) -> tuple[FloatArray, FloatArray]:
+    start = int(np.searchsorted(peaks.mz, lowest_mz - 0.5))
+    return peaks.mz[start:], peaks.relative[start:]
+
+
+def _nearest(points: FloatArray, axis: FloatArray) -> NDArray[np.int64]:
+    """Position on the (not empty) axis nearest to each point; the lower one of two equally near."""
+    right = np.clip(np.searchsorted(axis, points), 1, max(axis.size - 1, 1))
+    left = right - 1
+    right = np.minimum(right, axis.size - 1)
+    return np.where(np.abs(axis[right] - points) < np.abs(points - axis[left]), right, left)
