@@ -43,6 +43,7 @@ NOTE_DERIVATIVE_UNKNOWN = "derivative stated but not understood"
 NOTE_LABELLED = "isotope-labelled"
 NOTE_ACCURATE = "accurate m/z"
 NOTE_NO_SPLASH = "no SPLASH to verify"
+_ISOTOPE_IN_SMILES = re.compile(r"\[\d+[A-Za-z]")
 _UNDERIVATIZED = re.compile(r"(?:\s*0\s?[A-Za-z-]+[;,]?)+")
 """`0 TMS`: measured without any group, which is no derivative."""
 
@@ -147,7 +148,7 @@ def _draft(record: SpectrumRecord, spectrum: CleanSpectrum, policy: Policy) -> D
         "measured_as": facts.measured_as,
         "formula_as_measured": facts.formula_as_measured,
         "nominal_mass": facts.nominal_mass,
-        "is_labelled": int(facts.is_labelled),
+        "is_labelled": int(bool(facts.label)),
         "licence": normalise_licence(record.licence),
         "authors": tidy(record.authors),
         "source": tidy(str(record.source)),
@@ -186,13 +187,12 @@ class Chemistry:
     """What a record says was measured, read and completed."""
 
     identity: Identity
-    labelled_formula: str
-    """Formula with isotope labels but without derivative groups; empty unless labelled."""
+    label: str
+    """What tells a labelled compound apart: its formula with labels, else the label; empty unless labelled."""
     measured_as: str
     formula_as_measured: str
     nominal_mass: int | None
     """Of the formula as measured; None when that is not knowable."""
-    is_labelled: bool
     notes: tuple[str, ...]
     extra: Mapping[str, str]
     """Stated values that could not be read, under their names."""
@@ -223,8 +223,8 @@ def read_chemistry(record: SpectrumRecord) -> Chemistry:
             notes.append(NOTE_FORMULA)
             extra["formula as stated"] = stated.formula
     inchikey = stated.inchikey or _computed_inchikey(stated, notes)
-    labelled, is_labelled = _labelled_formula(record, formula)
-    if is_labelled:
+    label, labelled = _read_label(record, formula)
+    if label:
         notes.append(NOTE_LABELLED)
     measured_as, measured = "", labelled
     if record.derivative and not _UNDERIVATIZED.fullmatch(record.derivative):
@@ -247,11 +247,10 @@ def read_chemistry(record: SpectrumRecord) -> Chemistry:
     )
     return Chemistry(
         identity,
-        labelled.hill if is_labelled and labelled is not None else "",
+        label,
         measured_as,
         "" if measured is None else measured.hill,
         None if measured is None else measured.nominal_mass,
-        is_labelled,
         tuple(notes),
         extra,
     )
@@ -271,8 +270,25 @@ def _computed_inchikey(identity: Identity, notes: list[str]) -> str:
     return key
 
 
-def _labelled_formula(record: SpectrumRecord, formula: Formula | None) -> tuple[Formula | None, bool]:
-    return formula, False
+def _read_label(record: SpectrumRecord, formula: Formula | None) -> tuple[str, Formula | None]:
+    """What tells a labelled compound apart (empty for none), and the formula with its labels where it is knowable."""
+    from identify.chem.labels import apply_label, find_label
+    from identify.chem.structures import formula_of
+
+    if formula is not None and formula.is_labelled:
+        return formula.hill, formula
+    if _ISOTOPE_IN_SMILES.search(record.identity.smiles):
+        try:
+            labelled = formula_of(record.identity.smiles)
+        except StructureError:
+            return record.identity.smiles, None
+        return labelled.hill, labelled
+    names = (record.identity.name, record.title.partition(";")[0], *record.identity.other_names)
+    label = next(filter(None, map(find_label, names)), None)
+    if label is None:
+        return "", formula
+    with_label = None if formula is None else apply_label(formula, label)
+    return (str(label) if with_label is None else with_label.hill), with_label
 
 
 def compound_key(facts: Chemistry) -> CompoundKey:
@@ -291,9 +307,9 @@ def compound_key(facts: Chemistry) -> CompoundKey:
     identity = facts.identity
     block = identity.inchikey[:14] if len(identity.inchikey) >= 14 else ""
     name = normalised_name(identity.name)
-    if facts.is_labelled:
+    if facts.label:
         base = f"structure {block}" if block else f"name {name} {identity.formula}"
-        return CompoundKey(f"labelled {facts.labelled_formula or name} of {base}", identity.name, "", "", True)
+        return CompoundKey(f"labelled {facts.label} of {base}", identity.name, "", "", True)
     key = f"structure {block}" if block else f"name {name} {identity.formula}"
     return CompoundKey(key, identity.name, identity.formula, identity.smiles, False)
 

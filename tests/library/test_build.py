@@ -87,6 +87,30 @@ def test_zero_groups_are_no_derivative_and_unknown_words_are_kept() -> None:
     assert (unknown.columns["measured_as"], unknown.columns["formula_as_measured"]) == ("n TMS", "")
 
 
+@pytest.mark.parametrize(
+    ("name", "smiles", "formula"),
+    [
+        ("TOLUENE (METHYL-D3)", "Cc1ccccc1", "C7H5[2H]3"),
+        ("Toluene-d8", "Cc1ccccc1", "C7[2H]8"),
+        ("Toluene", "[2H]C([2H])([2H])c1ccccc1", "C7H5[2H]3"),
+    ],
+)
+def test_a_labelled_compound_is_never_the_unlabelled_one(name: str, smiles: str, formula: str) -> None:
+    key = "YXFVVABEGXRONW-UHFFFAOYSA-N"  # of toluene: records of labelled compounds often state it
+    plain = judge(build_record("X", "Toluene", TOLUENE, formula="C7H8", smiles="Cc1ccccc1", inchikey=key))
+    labelled = judge(build_record("X", name, TOLUENE, formula="C7H8", smiles=smiles, inchikey=key))
+    assert isinstance(plain, Draft) and isinstance(labelled, Draft)
+    assert labelled.compound.key != plain.compound.key
+    assert (labelled.compound.is_labelled, labelled.compound.smiles) == (True, "")
+    assert (labelled.columns["is_labelled"], labelled.columns["formula_as_measured"]) == (1, formula)
+
+
+def test_labels_of_unknown_number_leave_the_formula_open() -> None:
+    draft = judge(build_record("X", "deuterated toluene", TOLUENE, formula="C7H8"))
+    assert isinstance(draft, Draft)
+    assert (draft.columns["is_labelled"], draft.columns["formula_as_measured"]) == (1, "")
+
+
 def test_a_formula_that_cannot_be_read_is_kept_as_stated_beside() -> None:
     draft = judge(build_record("X", "Thing", TOLUENE, formula="C7Qq8"))
     assert isinstance(draft, Draft)
