@@ -85,8 +85,9 @@ def _split_mgf(lines: Iterable[str]) -> Iterator[tuple[list[str], int]]:
                 yield block, first_line
             block, first_line = [text], line_number
         elif block:
-            block.append(text)
-            if text == "END IONS" or len(block) > MAX_RECORD_LINES:
+            if len(block) < MAX_RECORD_LINES or text == "END IONS":
+                block.append(text)
+            if text == "END IONS":
                 yield block, first_line
                 block = []
     if block:

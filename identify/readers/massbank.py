@@ -81,19 +81,22 @@ def _split_records(lines: Iterable[str]) -> Iterator[tuple[list[str], int, bool]
     block: list[str] = []
     first_line = 1
     for line_number, line in enumerate(lines, 1):
-        if line[:2] == "  " and 0 < len(block) < MAX_RECORD_LINES:
-            block.append(line)
+        if line[:2] == "  " and block:
+            # Lines beyond the bound are passed over; the record then has more peaks than any reader takes.
+            if len(block) < MAX_RECORD_LINES:
+                block.append(line)
         elif line.rstrip() == END:
             if block:
                 yield block, first_line, True
             block = []
-        elif block and (line.startswith("ACCESSION:") or len(block) >= MAX_RECORD_LINES):
+        elif block and line.startswith("ACCESSION:"):
             yield block, first_line, False
             block, first_line = [line], line_number
         elif block or line.strip():
             if not block:
                 first_line = line_number
-            block.append(line)
+            if len(block) < MAX_RECORD_LINES:
+                block.append(line)
     while block and not block[-1].strip():
         block.pop()
     if block:
@@ -171,7 +174,7 @@ def _split_fields(block: list[str], first_line: int, path: str) -> _Fields:
         line, line_number = block[position], first_line + position
         position += 1
         if line.startswith("  ") and key:
-            fields.values[key][-1] += f" {line.strip()}"
+            fields.values[key][-1] = f"{fields.values[key][-1]} {line.strip()}".strip()
             continue
         tag, colon, value = line.partition(":")
         value = value.strip()
