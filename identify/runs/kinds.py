@@ -1,0 +1,60 @@
+"""What a component is as far as the chromatogram alone can tell: named, never hidden."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import TypedDict
+
+import numpy as np
+
+from identify.runs.model import Component, ComponentKind
+
+AIR_IONS = (14, 16, 17, 18, 20, 28, 29, 32, 36, 40, 44)
+BLEED_IONS = (73, 133, 147, 191, 207, 208, 209, 221, 267, 281, 282, 283, 295, 327, 341, 355, 356, 357, 405, 429)
+"""Residual gas, and siloxanes of column and septum (standards table of interferences)."""
+DOMINATES = 0.8
+SOLVENT_SHARE = 0.2
+SOLVENT_TIMES_MEDIAN = 50.0
+
+
+class Kind(TypedDict):
+    """Fields of a component that say what it is."""
+
+    kind: ComponentKind
+    note: str
+
+
+def find_kind(component: Component, everything: Sequence[Component]) -> Kind:
+    """Kind and the reason for it.
+
+    Parameters
+    ----------
+    component : Component
+    everything : sequence of Component
+        All components of the run, in the order of time.
+
+    Returns
+    -------
+    Kind
+        `compound` when nothing speaks for another kind.
+    """
+    if _share(component, AIR_IONS) >= DOMINATES:
+        return Kind(kind=ComponentKind.AIR, note="more than 80 % of the signal at ions of air and water")
+    if _share(component, BLEED_IONS) >= DOMINATES:
+        return Kind(kind=ComponentKind.BLEED, note="more than 80 % of the signal at siloxane ions")
+    areas = np.array([other.area for other in everything])
+    largest = component.area >= areas.max()
+    early = component.time_s <= everything[0].time_s + 0.15 * (everything[-1].time_s - everything[0].time_s)
+    if (
+        largest
+        and early
+        and component.share_of_signal >= SOLVENT_SHARE
+        and (component.area >= SOLVENT_TIMES_MEDIAN * float(np.median(areas)))
+    ):
+        return Kind(kind=ComponentKind.SOLVENT, note="largest peak of the run, at its beginning")
+    return Kind(kind=ComponentKind.COMPOUND, note="")
+
+
+def _share(component: Component, ions: Sequence[int]) -> float:
+    inside = np.isin(component.peaks.mz, ions)
+    return float(component.peaks.intensity[inside].sum() / component.peaks.intensity.sum())
