@@ -90,8 +90,8 @@ class PlacedLabel:
 
 
 COLUMN_WIDTH = 32.0
-GLYPH_WIDTH = 0.58
-"""Mean width of a digit in ems, a little generous."""
+GLYPH_WIDTH = 0.68
+"""Width of a bold digit in ems, a little generous."""
 
 
 def place_labels(
@@ -126,7 +126,8 @@ def place_labels(
 
     Notes
     -----
-    Greedy: each label tries to stand centred on its tip, then a little to the right, then to the left; if nothing is free it
+    Greedy: each label tries to stand centred on its tip, then a little to the right or left, then
+    beside it; if nothing is free it
     is left out. Only obstacles in the same columns of the drawing are looked at.
     """
     blocked = _Columns(obstacles)
@@ -172,7 +173,7 @@ class _Columns:
 
 def _free_place(label: Label, size: float, blocked: _Columns, frame: Box) -> tuple[float, Box] | None:
     width, gap = GLYPH_WIDTH * size * len(label.text), 0.35 * size
-    for shift in (0.0, 0.3 * width, -0.3 * width):
+    for shift in (0.0, 0.3 * width, -0.3 * width, 0.5 * width, -0.5 * width):
         x = label.x + shift
         if label.upward:
             box = Box(x - width / 2, label.tip - gap - 0.75 * size, x + width / 2, label.tip - gap)

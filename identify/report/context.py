@@ -1,22 +1,17 @@
-"""What the page shows, as typed contexts: built here by pure functions, so that templates only loop and print.
+"""From a report to the contexts of the page: pure functions, so that templates only loop and print.
 
-Every text that came from a file passes `visible_text`; every number is already words. Fields ending in ``_svg`` hold markup made
-by this package and are the only ones a template may print unescaped.
+Every text that came from a file passes `visible_text`.
 """
 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 
 from identify.ranking.claim import PUBLISHED_LEVELS
 from identify.records import (
-    Candidate,
     Claim,
     ClaimLevel,
     CleaningStep,
-    EvidenceItem,
-    Explanation,
     FollowUp,
     Identification,
     LibraryState,
@@ -24,261 +19,45 @@ from identify.records import (
     Report,
     Verdict,
 )
-from identify.report.plots import (
-    MassMark,
-    contribution_bar_svg,
-    mirror_svg,
-    probability_bar_svg,
-    spectrum_svg,
+from identify.report.candidates import build_candidate_detail, build_candidate_row, build_mark
+from identify.report.contexts import (
+    ClaimContext,
+    CleaningRow,
+    CreditRow,
+    Fact,
+    Figure,
+    FollowUpRow,
+    LevelChance,
+    LevelRow,
+    MassRow,
+    PageContext,
+    QueryContext,
+    RejectionRow,
+    SummaryRow,
 )
+from identify.report.plots import MassMark, probability_bar_svg, spectrum_svg
 from identify.report.structures import StructureSheet
 from identify.report.words import (
     CAUTIONS,
     LEVEL_MEANINGS,
+    LONG_TEXT,
     NONE,
-    VERDICT_MARKS,
-    compound_name,
-    count_verdicts,
     counted,
     minutes_text,
     mz_text,
     probability_text,
     relative_text,
-    score_text,
-    signed_text,
+    sentence,
     source_text,
     visible_text,
 )
-from identify.writers.results_json import round_explanation
 
+LONG_REPORT = 40
+"""Above this many queries the browser lays out only what is looked at."""
 DETAILED = 5
 """Candidates shown with mirror plot, evidence and explanation; the rest are table rows."""
 MAX_IONS_NAMED = 12
 MAX_REMOVED_SHOWN = 40
-LONG = 2000
-
-
-@dataclass(frozen=True, slots=True)
-class Fact:
-    """A name and a value."""
-
-    name: str
-    value: str
-
-
-@dataclass(frozen=True, slots=True)
-class Mark:
-    """A verdict as sign, word and style, or how often it was given."""
-
-    sign: str
-    word: str
-    style: str
-    number: int = 0
-
-
-@dataclass(frozen=True, slots=True)
-class LevelChance:
-    """Probability at one level, with its bar."""
-
-    name: str
-    probability: str
-    bar_svg: str
-
-
-@dataclass(frozen=True, slots=True)
-class ClaimContext:
-    """The claim: sentence, level, published levels, chances, members."""
-
-    statement: str
-    level: str
-    style: str
-    meaning: str
-    published: str
-    chances: tuple[LevelChance, ...]
-    members: tuple[str, ...]
-    unlisted: str
-
-
-@dataclass(frozen=True, slots=True)
-class Figure:
-    """A drawing with its caption."""
-
-    plot_svg: str
-    caption: str
-
-
-@dataclass(frozen=True, slots=True)
-class MassRow:
-    """One estimate of the molecular mass."""
-
-    mass: str
-    probability: str
-    basis: str
-
-
-@dataclass(frozen=True, slots=True)
-class EvidenceRow:
-    """One evidence item in words and numbers."""
-
-    kind: str
-    mark: Mark
-    reason: str
-    observed: str
-    expected: str
-    log_odds: str
-    source: str
-
-
-@dataclass(frozen=True, slots=True)
-class ExplanationNode:
-    """A value, its bar and the parts it is the sum of."""
-
-    label: str
-    value: str
-    detail: str
-    bar_svg: str
-    parts: tuple[ExplanationNode, ...]
-
-
-@dataclass(frozen=True, slots=True)
-class CandidateRow:
-    """One line of the candidates table."""
-
-    rank: str
-    name: str
-    anchor: str
-    formula: str
-    measured_as: str
-    cosine: str
-    reverse: str
-    matched: str
-    probability: str
-    marks: tuple[Mark, ...]
-    structure: str
-    """Id of the structure symbol; empty for none."""
-    smiles: str
-    standing: str
-    """Standing of the entry where it is not an ordinary reference."""
-
-
-@dataclass(frozen=True, slots=True)
-class CandidateDetail:
-    """Everything on one candidate."""
-
-    anchor: str
-    row: CandidateRow
-    is_first: bool
-    facts: tuple[Fact, ...]
-    mirror: Figure
-    evidence: tuple[EvidenceRow, ...]
-    explanation: ExplanationNode
-    notes: tuple[str, ...]
-
-
-@dataclass(frozen=True, slots=True)
-class FollowUpRow:
-    """A proposed measurement."""
-
-    action: str
-    reason: str
-    decides: str
-    candidates: str
-
-
-@dataclass(frozen=True, slots=True)
-class CleaningRow:
-    """One cleaning step."""
-
-    step: str
-    reason: str
-    before: str
-    after: str
-    removed: str
-
-
-@dataclass(frozen=True, slots=True)
-class QueryContext:
-    """One query, ready to print."""
-
-    number: int
-    anchor: str
-    name: str
-    facts: tuple[Fact, ...]
-    claim: ClaimContext
-    spectrum: Figure
-    masses: tuple[MassRow, ...]
-    mass_agreement: str
-    candidates: tuple[CandidateRow, ...]
-    has_derivatives: bool
-    details: tuple[CandidateDetail, ...]
-    follow_up: tuple[FollowUpRow, ...]
-    cleaning: tuple[CleaningRow, ...]
-    cleaning_summary: str
-    notes: tuple[str, ...]
-
-
-@dataclass(frozen=True, slots=True)
-class SummaryRow:
-    """One line of the table at the top."""
-
-    number: int
-    anchor: str
-    name: str
-    time: str
-    statement: str
-    level: str
-    style: str
-    probability: str
-    next_step: str
-
-
-@dataclass(frozen=True, slots=True)
-class LevelRow:
-    """One step of the claim ladder with its counterparts."""
-
-    level: str
-    meaning: str
-    msi: str
-    schymanski: str
-
-
-@dataclass(frozen=True, slots=True)
-class CreditRow:
-    """Entries shown that share licence and authors."""
-
-    licence: str
-    authors: str
-    entries: str
-
-
-@dataclass(frozen=True, slots=True)
-class RejectionRow:
-    """An input that was left out."""
-
-    source: str
-    reason: str
-    detail: str
-
-
-@dataclass(frozen=True, slots=True)
-class PageContext:
-    """The whole page."""
-
-    title: str
-    subtitle: str
-    date: str
-    program: str
-    summary: tuple[SummaryRow, ...]
-    counts: tuple[Fact, ...]
-    queries: tuple[QueryContext, ...]
-    ladder: tuple[LevelRow, ...]
-    verdicts: tuple[Mark, ...]
-    cautions: tuple[str, ...]
-    libraries: tuple[Fact, ...]
-    credits: tuple[CreditRow, ...]
-    settings: tuple[Fact, ...]
-    rejected: tuple[RejectionRow, ...]
-    structures_svg: str
 
 
 def build_page(report: Report, *, date: str = "") -> PageContext:
@@ -308,8 +87,9 @@ def build_page(report: Report, *, date: str = "") -> PageContext:
         summary=tuple(_summary(found, query) for found, query in zip(report.identifications, queries, strict=True)),
         counts=_counts(report),
         queries=queries,
+        is_long=len(queries) > LONG_REPORT,
         ladder=tuple(LevelRow(level.value, LEVEL_MEANINGS[level], *PUBLISHED_LEVELS[level]) for level in ClaimLevel),
-        verdicts=tuple(_mark(verdict) for verdict in Verdict),
+        verdicts=tuple(build_mark(verdict) for verdict in Verdict),
         cautions=CAUTIONS,
         libraries=tuple(_library(state) for state in report.libraries),
         credits=_credits(report),
@@ -354,11 +134,11 @@ def _query(number: int, found: Identification, threshold: float, sheet: Structur
     record = found.query.record
     name = visible_text(record.identity.name or record.title) or f"Query {number}"
     rows = tuple(
-        _candidate_row(candidate, anchor, sheet if place < DETAILED else None)
+        build_candidate_row(candidate, anchor, sheet if place < DETAILED else None)
         for place, candidate in enumerate(found.candidates)
     )
     details = tuple(
-        _candidate_detail(candidate, row, name)
+        build_candidate_detail(candidate, row, name)
         for candidate, row in zip(found.candidates[:DETAILED], rows, strict=False)
     )
     return QueryContext(
@@ -369,14 +149,14 @@ def _query(number: int, found: Identification, threshold: float, sheet: Structur
         claim=_claim(found.claim, found.in_library_probability, threshold),
         spectrum=_spectrum(found, name, anchor),
         masses=_masses(found.molecular_ion),
-        mass_agreement=visible_text(found.molecular_ion.agreement, LONG),
+        mass_agreement=sentence(found.molecular_ion.agreement),
         candidates=rows,
         has_derivatives=any(row.measured_as for row in rows),
         details=details,
         follow_up=tuple(_follow_up(plan) for plan in found.follow_up),
         cleaning=tuple(_cleaning(step) for step in found.query.spectrum.steps),
         cleaning_summary=_cleaning_summary(found.query.spectrum.steps),
-        notes=tuple(visible_text(note, LONG) for note in found.notes),
+        notes=tuple(sentence(note) for note in found.notes),
     )
 
 
@@ -399,24 +179,26 @@ def _query_facts(found: Identification) -> tuple[Fact, ...]:
 
 def _claim(claim: Claim, in_library_probability: float, threshold: float) -> ClaimContext:
     chances = (
-        ("best candidate", claim.compound_probability),
-        ("its isomer group", claim.group_probability),
-        ("its class", claim.class_probability),
-        ("compound is in the library", in_library_probability),
+        ("best candidate", claim.compound_probability, threshold),
+        ("its isomer group", claim.group_probability, threshold),
+        ("its class", claim.class_probability, threshold),
+        ("compound in the library", in_library_probability, None),
     )
     unlisted = ""
     if claim.unlisted_isomers is not None:
         unlisted = f"{counted(claim.unlisted_isomers, 'isomer')} without an entry could give the same spectrum."
     return ClaimContext(
-        statement=visible_text(claim.statement, LONG),
+        statement=sentence(claim.statement),
         level=claim.level.value,
         style=claim.level.value.replace(" ", "-"),
         meaning=LEVEL_MEANINGS[claim.level],
         published=_published(claim),
         chances=tuple(
-            LevelChance(name, probability_text(value), probability_bar_svg(value, threshold)) for name, value in chances
+            LevelChance(name, probability_text(value), probability_bar_svg(value, limit))
+            for name, value, limit in chances
         ),
         members=tuple(visible_text(name) for name in claim.members),
+        threshold=f"The tick on a bar is the threshold of a claim, {probability_text(threshold)}.",
         unlisted=unlisted,
     )
 
@@ -466,127 +248,11 @@ def _masses(found: MolecularIonEstimate) -> tuple[MassRow, ...]:
     return tuple(rows)
 
 
-def _candidate_row(candidate: Candidate, anchor: str, sheet: StructureSheet | None) -> CandidateRow:
-    entry, identity = candidate.entry, candidate.entry.identity
-    return CandidateRow(
-        rank=str(candidate.rank),
-        name=compound_name(identity.name, entry.accession),
-        anchor=f"{anchor}-candidate-{candidate.rank}" if sheet else "",
-        formula=visible_text(identity.formula, 60) or NONE,
-        measured_as=visible_text(entry.measured_as, 40),
-        cosine=score_text(candidate.cosine),
-        reverse=score_text(candidate.reverse),
-        matched=f"{candidate.aligned.n_matched} of {candidate.aligned.mz.size}",
-        probability=probability_text(candidate.probability),
-        marks=tuple(_mark(verdict, number) for verdict, number in count_verdicts(candidate.evidence))
-        if candidate.evidence
-        else (),
-        structure=sheet.symbol_for(identity.smiles) if sheet else "",
-        smiles=visible_text(identity.smiles),
-        standing="" if entry.status.value == "reference" else entry.status.value,
-    )
-
-
-def _candidate_detail(candidate: Candidate, row: CandidateRow, query_name: str) -> CandidateDetail:
-    return CandidateDetail(
-        anchor=row.anchor,
-        row=row,
-        is_first=candidate.rank == 1,
-        facts=_candidate_facts(candidate),
-        mirror=_mirror(candidate, row, query_name),
-        evidence=tuple(_evidence(item) for item in candidate.evidence),
-        explanation=_explanation(candidate.explanation),
-        notes=tuple(visible_text(note, LONG) for note in candidate.notes),
-    )
-
-
-def _candidate_facts(candidate: Candidate) -> tuple[Fact, ...]:
-    entry = candidate.entry
-    facts = [
-        Fact("formula", visible_text(entry.identity.formula, 60) or NONE),
-        Fact("InChIKey", visible_text(entry.identity.inchikey, 60) or NONE),
-        Fact("entry", f"{visible_text(entry.accession) or NONE}, {entry.status.value}"),
-        Fact("library", visible_text(candidate.library)),
-        Fact("licence", visible_text(entry.licence) or "not stated"),
-        Fact("authors", visible_text(entry.authors) or "not stated"),
-    ]
-    if entry.measured_as:
-        measured = visible_text(entry.measured_as, 40)
-        formula = visible_text(entry.formula_as_measured, 60)
-        facts.insert(1, Fact("measured as", f"{measured}, {formula}" if formula else measured))
-    if entry.retention.index is not None:
-        phase = f" ({visible_text(entry.retention.phase)} phase)" if entry.retention.phase else ""
-        facts.append(Fact("retention index", f"{entry.retention.index:.0f}{phase}"))
-    if candidate.n_entries > 1:
-        facts.append(Fact("entries among the hits", str(candidate.n_entries)))
-    return tuple(facts)
-
-
-def _mirror(candidate: Candidate, row: CandidateRow, query_name: str) -> Figure:
-    aligned = candidate.aligned
-    rows = list(zip(aligned.mz.tolist(), aligned.query.tolist(), aligned.entry.tolist(), strict=True))
-    only_query = _largest([(mz, query) for mz, query, entry in rows if entry <= 0])
-    only_entry = _largest([(mz, entry) for mz, query, entry in rows if query <= 0])
-    caption = (
-        f"{aligned.n_matched} of {counted(len(rows), 'ion')} match, compared from m/z {aligned.lowest_mz}. "
-        f"Only in the query: {only_query}. Only in the entry: {only_entry}."
-    )
-    drawn = mirror_svg(
-        aligned, name=f"{row.anchor}-mirror", title=f"Mirror plot: {query_name} and {row.name}", description=caption
-    )
-    return Figure(drawn, caption)
-
-
-def _largest(ions: Sequence[tuple[float, float]], limit: int = 6) -> str:
-    if not ions:
-        return "none"
-    order = sorted(ions, key=lambda ion: (-ion[1], ion[0]))
-    text = ", ".join(f"{mz_text(mz)} ({relative_text(value)})" for mz, value in order[:limit])
-    return text + (f" and {len(order) - limit} smaller" if len(order) > limit else "")
-
-
-def _evidence(item: EvidenceItem) -> EvidenceRow:
-    expected = visible_text(item.expected, LONG)
-    uncertainty = visible_text(item.uncertainty, LONG)
-    return EvidenceRow(
-        kind=visible_text(item.kind),
-        mark=_mark(item.verdict),
-        reason=visible_text(item.reason, LONG),
-        observed=visible_text(item.observed, LONG) or NONE,
-        expected=" · ".join(part for part in (expected, uncertainty) if part) or NONE,
-        log_odds=signed_text(item.log_odds) if item.log_odds else NONE,
-        source=visible_text(item.source, LONG),
-    )
-
-
-def _mark(verdict: Verdict, number: int = 0) -> Mark:
-    return Mark(VERDICT_MARKS[verdict], verdict.value, verdict.value.replace(" ", "-"), number)
-
-
-def _explanation(tree: Explanation) -> ExplanationNode:
-    rounded = round_explanation(tree, 2)
-    return _node(rounded, max(_magnitudes(rounded)))
-
-
-def _magnitudes(tree: Explanation) -> list[float]:
-    return [abs(tree.value)] + [value for part in tree.parts for value in _magnitudes(part)]
-
-
-def _node(tree: Explanation, largest: float) -> ExplanationNode:
-    return ExplanationNode(
-        label=visible_text(tree.label),
-        value=signed_text(tree.value),
-        detail=visible_text(tree.detail, LONG),
-        bar_svg=contribution_bar_svg(tree.value, largest),
-        parts=tuple(_node(part, largest) for part in tree.parts),
-    )
-
-
 def _follow_up(plan: FollowUp) -> FollowUpRow:
     return FollowUpRow(
-        action=visible_text(plan.action, LONG),
-        reason=visible_text(plan.reason, LONG),
-        decides=visible_text(plan.decides, LONG),
+        action=visible_text(plan.action, LONG_TEXT),
+        reason=sentence(plan.reason),
+        decides=sentence(plan.decides),
         candidates=", ".join(visible_text(name) for name in plan.candidates),
     )
 
@@ -596,7 +262,7 @@ def _cleaning(step: CleaningStep) -> CleaningRow:
     rest = len(step.removed) - MAX_REMOVED_SHOWN
     return CleaningRow(
         step=visible_text(step.step),
-        reason=visible_text(step.reason, LONG),
+        reason=visible_text(step.reason, LONG_TEXT),
         before=str(step.peaks_before),
         after=str(step.peaks_after),
         removed=(removed + (f" and {rest} more" if rest > 0 else "")) or "none",

@@ -21,6 +21,7 @@ LEFT, RIGHT, TOP, BOTTOM = 46.0, 10.0, 26.0, 46.0
 MIN_LABELLED = 1.5
 """Peaks below this relative intensity (percent) get no label."""
 
+UNIT = "relative intensity, %"
 MATCHED, QUERY_ONLY, ENTRY_ONLY = "matched", "query-only", "entry-only"
 
 
@@ -54,15 +55,18 @@ def spectrum_svg(
     -------
     str
     """
-    height = 280.0
+    height = 300.0
     masses, relative = peaks.mz.tolist(), peaks.relative.tolist()
     across = _mass_scale([*masses, *([mark.mz] if mark else [])], lowest_mz)
     up = Scale(0.0, 100.0, height - BOTTOM, TOP + LARGE_TYPE)
     frame = Box(LEFT, 0.0, WIDTH - RIGHT, height - BOTTOM)
     parts = [_grid(across, up, (0.0, 50.0, 100.0)), _mass_axis(across, height)]
     obstacles = [_stick_box(across(mz), up(value), up(0.0)) for mz, value in zip(masses, relative, strict=True)]
+    parts.append(f'<g class="side"><text x="{LEFT:.0f}" y="16">{UNIT}</text></g>')
+    obstacles.append(Box(LEFT, 0.0, LEFT + 0.55 * LARGE_TYPE * len(UNIT), LARGE_TYPE))
     if mark:
-        drawn, box = _mass_mark(mark, across, frame)
+        tip = up(dict(zip(masses, relative, strict=True)).get(mark.mz, 0.0))
+        drawn, box = _mass_mark(mark, across, frame, tip)
         parts.append(drawn)
         obstacles.append(box)
     parts.append(
@@ -97,7 +101,7 @@ def mirror_svg(aligned: AlignedPeaks, *, name: str, title: str, description: str
     Matched ions: full sticks with a round head. Only in the query: dashed sticks with a hollow diamond. Only in the entry: dotted
     sticks with a hollow square.
     """
-    height = 340.0
+    height = 390.0
     rows = list(zip(aligned.mz.tolist(), aligned.query.tolist(), aligned.entry.tolist(), strict=True))
     across = _mass_scale([row[0] for row in rows], aligned.lowest_mz)
     middle = (height - BOTTOM) / 2 + 2
@@ -105,44 +109,48 @@ def mirror_svg(aligned: AlignedPeaks, *, name: str, title: str, description: str
     down = Scale(0.0, 100.0, middle, height - BOTTOM - LARGE_TYPE - 4)
     frame = Box(LEFT, 0.0, WIDTH - RIGHT, height - BOTTOM)
     parts = [_grid(across, up, (50.0, 100.0)), _grid(across, down, (50.0, 100.0)), _mass_axis(across, height)]
-    parts.append(f'<path class="axis" d="M{LEFT:.0f} {middle:.1f}H{WIDTH - RIGHT:.0f}"/>')
+    parts.append(f'<path class="axis" d="M{LEFT:.0f} {middle:.1f}H{across.end:.0f}"/>')
     wanted: list[tuple[float, Label]] = []
     sticks: dict[str, list[tuple[float, float, float]]] = {MATCHED: [], QUERY_ONLY: [], ENTRY_ONLY: []}
     for mz, query, entry in rows:
         kind = MATCHED if query > 0 and entry > 0 else QUERY_ONLY if query > 0 else ENTRY_ONLY
-        for value, scale in ((query, up), (entry, down)):
-            if value > 0:
-                sticks[kind].append((across(mz), middle, scale(value)))
-                label = Label(_ion_text(mz), across(mz), scale(value), scale is up, kind)
-                # An ion that does not match is news: it is labelled before a matched one of the same height.
-                wanted.append((value * (1.0 if kind == MATCHED else 2.0), label))
+        upward = query >= entry
+        high, low = (query, entry) if upward else (entry, query)
+        near, far = (up, down) if upward else (down, up)
+        sticks[kind].append((across(mz), far(low), near(high)))
+        # One label an ion, at its higher side. One that does not match is news: it comes before a matched one as high.
+        label = Label(_ion_text(mz), across(mz), near(high), upward, kind)
+        wanted.append((high * (1.0 if kind == MATCHED else 2.0), label))
     for kind, group in sticks.items():
         parts += [_sticks(group, f"stick {kind}"), _heads(group, kind)]
-    obstacles = [_stick_box(x, min(ends), max(ends)) for group in sticks.values() for x, *ends in group]
+    words, obstacles = _side_words(up, down)
+    obstacles += [_stick_box(x, min(ends), max(ends)) for group in sticks.values() for x, *ends in group]
     labels = [
         label for weight, label in sorted(wanted, key=lambda item: (-item[0], item[1].x)) if weight >= MIN_LABELLED
     ]
     parts.append(_labels(_place(labels, obstacles, frame, n_large=8, n_fine=14)))
-    parts.append(_side_words(middle, height))
+    parts.append(words)
     return _svg(parts, height, name, title, description)
 
 
-def probability_bar_svg(probability: float, threshold: float) -> str:
-    """SVG of a probability as a bar with the claim threshold as a tick; decorative, the number stands beside it.
+def probability_bar_svg(probability: float, threshold: float | None = None) -> str:
+    """SVG of a probability as a bar, with a tick at a threshold; decorative, the number stands beside it.
 
     Parameters
     ----------
-    probability, threshold : float
+    probability : float
+        In [0, 1].
+    threshold : float, optional
         In [0, 1].
 
     Returns
     -------
     str
     """
+    limit = "" if threshold is None else f'<path class="limit" d="M{100 * threshold:.1f} 0V8"/>'
     return (
         '<svg class="chance" viewBox="0 0 100 8" preserveAspectRatio="none" aria-hidden="true">'
-        f'<path class="rail" d="M0 4H100"/><path class="fill" d="M0 4H{100 * probability:.1f}"/>'
-        f'<path class="limit" d="M{100 * threshold:.1f} 0V8"/></svg>'
+        f'<path class="rail" d="M0 4H100"/><path class="fill" d="M0 4H{100 * probability:.1f}"/>{limit}</svg>'
     )
 
 
@@ -162,8 +170,8 @@ def contribution_bar_svg(value: float, largest: float) -> str:
     length = max(-50.0, min(50.0, 50.0 * value / largest)) if largest > 0 else 0.0
     kind = "for" if value >= 0 else "against"
     return (
-        '<svg class="part" viewBox="-50 0 100 8" preserveAspectRatio="none" aria-hidden="true">'
-        f'<path class="zero" d="M0 0V8"/><path class="{kind}" d="M0 4h{length:.1f}"/></svg>'
+        '<svg class="part" viewBox="-50 0 100 10" aria-hidden="true">'
+        f'<path class="{kind}" d="M0 5h{length:.0f}"/></svg>'
     )
 
 
@@ -172,7 +180,7 @@ def _ion_text(mz: float) -> str:
 
 
 def _mass_scale(masses: Sequence[float], lowest_mz: int) -> Scale:
-    low = min([*masses, float(lowest_mz)] if lowest_mz else [*masses, 1e9], default=0.0)
+    low = min([*masses, float(lowest_mz)] if lowest_mz else masses, default=0.0)
     high = max(masses, default=low + 10.0)
     margin = max(3.0, 0.03 * (high - low))
     return Scale(low - margin, high + margin, LEFT, WIDTH - RIGHT)
@@ -201,11 +209,13 @@ def _tick_word(x: float, base: float, tick: float, extra: str) -> str:
     return f'<text x="{x:.1f}" y="{base + 21:.1f}" text-anchor="middle"{extra}>{tick:g}</text>'
 
 
-def _mass_mark(mark: MassMark, across: Scale, frame: Box) -> tuple[str, Box]:
+def _mass_mark(mark: MassMark, across: Scale, frame: Box, tip: float) -> tuple[str, Box]:
     x, size = across(mark.mz), LARGE_TYPE
-    width = 0.58 * size * len(mark.text)
+    width = 0.66 * size * len(mark.text)
     left = x - width - 6 if x + width + 6 > frame.right else x + 6
-    line = f'<path class="mark" d="M{x:.1f} {frame.top + 4:.1f}V{frame.bottom:.1f}"/>'
+    # The line ends above the label of its own peak, where there is one.
+    gap = 22.0 if tip < frame.bottom else 0.0
+    line = f'<path class="mark" d="M{x:.1f} {frame.top + 4:.1f}V{tip - gap:.1f}"/>'
     word = f'<text class="mark" x="{left:.1f}" y="{frame.top + 18:.1f}">{escape(mark.text)}</text>'
     return line + word, Box(left - 4, frame.top, left + width + 4, frame.top + size)
 
@@ -215,17 +225,16 @@ def _stick_box(x: float, top: float, bottom: float) -> Box:
 
 
 def _sticks(sticks: Iterable[tuple[float, float, float]], classes: str) -> str:
-    path = "".join(f"M{x:.1f} {foot:.1f}V{tip:.1f}" for x, foot, tip in sticks)
+    path = "".join(f"M{x:.4g} {foot:.0f}V{tip:.0f}" for x, foot, tip in sticks)
     return f'<path class="{classes}" d="{path}"/>' if path else ""
 
 
 def _heads(sticks: Iterable[tuple[float, float, float]], kind: str) -> str:
-    shapes = {
-        MATCHED: "M{x:.1f} {y:.1f}h0",
-        QUERY_ONLY: "M{x:.1f} {y:.1f}m0-4l4 4-4 4-4-4z",
-        ENTRY_ONLY: "M{x:.1f} {y:.1f}m-3-3h6v6h-6z",
-    }
-    path = "".join(shapes[kind].format(x=x, y=tip) for x, _, tip in sticks)
+    if kind == MATCHED:
+        path = "".join(f"M{x:.4g} {foot:.0f}h0m0 {tip - foot:.0f}h0" for x, foot, tip in sticks)
+    else:
+        shape = "m0-4l4 4-4 4-4-4z" if kind == QUERY_ONLY else "m-3-3h6v6h-6z"
+        path = "".join(f"M{x:.4g} {tip:.0f}{shape}" for x, _, tip in sticks)
     return f'<path class="head {kind}" d="{path}"/>' if path else ""
 
 
@@ -246,13 +255,12 @@ def _labels(placed: Sequence[PlacedLabel]) -> str:
     return f'<g class="ion">{"".join(words)}</g>'
 
 
-def _side_words(middle: float, height: float) -> str:
-    low = height - BOTTOM
-    return (
-        '<g class="side">'
-        f'<text transform="translate(13 {middle / 2 + 8:.0f}) rotate(-90)">query</text>'
-        f'<text transform="translate(13 {(middle + low) / 2:.0f}) rotate(-90)">entry</text></g>'
-    )
+def _side_words(up: Scale, down: Scale) -> tuple[str, list[Box]]:
+    left, width = LEFT + 4, 0.62 * LARGE_TYPE * 5
+    top, bottom = up(100.0) - 6, down(100.0) + 0.8 * LARGE_TYPE
+    words = f'<text x="{left:.0f}" y="{top:.1f}">query</text><text x="{left:.0f}" y="{bottom:.1f}">entry</text>'
+    boxes = [Box(left, base - LARGE_TYPE, left + width, base + 3) for base in (top, bottom)]
+    return f'<g class="side">{words}</g>', boxes
 
 
 def _svg(parts: Sequence[str], height: float, name: str, title: str, description: str) -> str:

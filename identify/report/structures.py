@@ -53,7 +53,7 @@ class StructureSheet:
 def _draw(smiles: str) -> str:
     from identify.chem.structures import draw_svg
 
-    if not smiles or len(smiles) > MAX_SMILES:
+    if not smiles or len(smiles) > MAX_SMILES or not smiles.isascii():
         return ""
     try:
         drawing = draw_svg(smiles, WIDTH, HEIGHT)

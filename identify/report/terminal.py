@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 from identify.records import Candidate, FollowUp, Identification, Rejection, Report, Verdict
 from identify.report.words import (
     CAUTIONS,
+    NO_BREAK,
     NONE,
     PLAIN_MARKS,
     VERDICT_MARKS,
@@ -18,6 +19,7 @@ from identify.report.words import (
     minutes_text,
     probability_text,
     score_text,
+    sentence,
     source_text,
     visible_text,
 )
@@ -85,7 +87,7 @@ def _print_identification(
     facts += [minutes_text(record.retention.time_s)] if record.retention.time_s is not None else []
     facts += [f"retention index {record.retention.index:.0f}"] if record.retention.index is not None else []
     console.print(_printable(name, console, "bold underline"), _printable(f" ({', '.join(facts)})", console, "dim"))
-    _print(console, visible_text(found.claim.statement, 1000), style="bold", indent=2)
+    _print(console, sentence(found.claim.statement), style="bold", indent=2)
     _print(console, _levels_text(found), indent=2)
     if found.candidates:
         table = _candidate_table(found.candidates[:candidates_shown], console, marks)
@@ -96,7 +98,7 @@ def _print_identification(
     for plan in found.follow_up[:MAX_FOLLOW_UPS]:
         _print(console, _follow_up_text(plan), indent=2, hanging=6)
     for note in found.notes:
-        _print(console, f"Note: {visible_text(note, 1000)}", indent=2, hanging=6)
+        _print(console, f"Note: {sentence(note)}", indent=2, hanging=6)
     console.print()
 
 
@@ -110,7 +112,7 @@ def _levels_text(found: Identification) -> str:
 
 
 def _follow_up_text(plan: FollowUp) -> str:
-    return f"Next: {visible_text(plan.action)}. {visible_text(plan.reason, 1000)}"
+    return f"Next: {sentence(plan.action)} {sentence(plan.reason)}"
 
 
 def _candidate_table(candidates: Sequence[Candidate], console: Console, marks: Mapping[Verdict, str]) -> RenderableType:
@@ -172,22 +174,22 @@ def _print_libraries(report: Report, console: Console) -> None:
 
 def _print(console: Console, text: str, *, style: str = "", indent: int = 0, hanging: int = 0) -> None:
     """Wrapped text with a left margin, its second line indented further by `hanging`; no blanks at line ends."""
-    # A no-break space keeps a number and its percent sign on one line; what is printed has the plain one again.
     lines = textwrap.wrap(
-        text.replace(" %", "\u00a0%"),
+        text.replace(" %", f"{NO_BREAK}%"),
         max(30, console.width),
         initial_indent=" " * indent,
         subsequent_indent=" " * (indent + hanging),
         break_on_hyphens=False,
     )
     for line in lines:
-        console.print(_printable(line.replace("\u00a0%", " %"), console, style), no_wrap=True)
+        console.print(_printable(line, console, style), no_wrap=True)
 
 
 def _printable(text: str, console: Console, style: str = "") -> Text:
     """Text without markup in the characters that the terminal's encoding has."""
     from rich.text import Text
 
+    text = text.replace(NO_BREAK, " ")
     try:
         text.encode(console.encoding)
     except UnicodeEncodeError:

@@ -8,9 +8,12 @@ from pathlib import PurePath
 
 from identify.records import ClaimLevel, EvidenceItem, Verdict
 
-MAX_TEXT = 300
+MAX_TEXT, LONG_TEXT = 300, 2000
+"""Longest name and longest sentence shown, in characters."""
 NONE = "–"
 """Shown where a source states nothing."""
+NO_BREAK = "\u00a0"
+"""Between a number and its unit, so that a line never ends there; the terminal prints a plain space."""
 
 VERDICT_MARKS = {
     Verdict.AGREES: "✓",
@@ -60,14 +63,14 @@ def probability_text(probability: float) -> str:
 
     Examples
     --------
-    >>> probability_text(0.874), probability_text(0.9999), probability_text(0.0)
-    ('87 %', '> 99 %', '< 1 %')
+    >>> [probability_text(value).replace(NO_BREAK, " ") for value in (0.874, 0.9999, 0.0)]
+    ['87 %', '> 99 %', '< 1 %']
     """
     if probability > 0.99:
-        return "> 99 %"
+        return f">{NO_BREAK}99{NO_BREAK}%"
     if probability < 0.01:
-        return "< 1 %"
-    return f"{100.0 * probability:.0f} %"
+        return f"<{NO_BREAK}1{NO_BREAK}%"
+    return f"{100.0 * probability:.0f}{NO_BREAK}%"
 
 
 def score_text(score: float) -> str:
@@ -123,10 +126,10 @@ def minutes_text(time_s: float | None) -> str:
 
     Examples
     --------
-    >>> minutes_text(399.0), minutes_text(None)
+    >>> minutes_text(399.0).replace(NO_BREAK, " "), minutes_text(None)
     ('6.65 min', '–')
     """
-    return NONE if time_s is None else f"{time_s / 60.0:.2f} min"
+    return NONE if time_s is None else f"{time_s / 60.0:.2f}{NO_BREAK}min"
 
 
 def mz_text(mz: float) -> str:
@@ -161,11 +164,11 @@ def relative_text(percent: float) -> str:
 
     Examples
     --------
-    >>> relative_text(85.2), relative_text(2.71), relative_text(0.04)
-    ('85 %', '2.7 %', '0.04 %')
+    >>> [relative_text(value).replace(NO_BREAK, " ") for value in (85.2, 2.71, 0.04)]
+    ['85 %', '2.7 %', '0.04 %']
     """
     decimals = 0 if percent >= 9.95 else 1 if percent >= 0.95 else 2
-    return f"{percent:.{decimals}f} %"
+    return f"{percent:.{decimals}f}{NO_BREAK}%"
 
 
 def visible_text(text: object, limit: int = MAX_TEXT) -> str:
@@ -201,6 +204,27 @@ def _visible(character: str) -> str:
     # Cc controls, Cf invisible formatting, Cs lone surrogates, Co private use, Cn unassigned.
     hidden = unicodedata.category(character) in ("Cc", "Cf", "Cs", "Co", "Cn")
     return f"⟨{ord(character):02X}⟩" if hidden else character
+
+
+def sentence(text: str) -> str:
+    """Text from another room as a sentence: visible, bounded, with a full stop.
+
+    Parameters
+    ----------
+    text : str
+
+    Returns
+    -------
+    str
+        Empty for empty text.
+
+    Examples
+    --------
+    >>> sentence("the molecular mass"), sentence("Done."), sentence("")
+    ('the molecular mass.', 'Done.', '')
+    """
+    shown = visible_text(text, LONG_TEXT)
+    return shown if not shown or shown.endswith((".", "!", "?", "…")) else f"{shown}."
 
 
 def compound_name(name: str, accession: str) -> str:

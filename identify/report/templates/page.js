@@ -12,7 +12,7 @@
     button.addEventListener("click", () => all().forEach((part) => { part.open = open; }));
     bar.append(button);
   });
-  answers.querySelector("h2").after(bar);
+  answers.querySelector(".guide").before(bar);
 
   // A link into a closed part opens it.
   const reveal = () => {

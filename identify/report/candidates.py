@@ -1,0 +1,193 @@
+"""One candidate as the page shows it: table row, mirror plot, evidence, explanation."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+
+from identify.records import Candidate, EvidenceItem, Explanation, Verdict
+from identify.report.contexts import (
+    CandidateDetail,
+    CandidateRow,
+    EvidenceRow,
+    ExplanationNode,
+    Fact,
+    Figure,
+    Mark,
+)
+from identify.report.plots import contribution_bar_svg, mirror_svg
+from identify.report.structures import StructureSheet
+from identify.report.words import (
+    LONG_TEXT,
+    NONE,
+    VERDICT_MARKS,
+    compound_name,
+    count_verdicts,
+    counted,
+    mz_text,
+    probability_text,
+    relative_text,
+    score_text,
+    sentence,
+    signed_text,
+    visible_text,
+)
+from identify.writers.results_json import round_explanation
+
+
+def build_candidate_row(candidate: Candidate, anchor: str, sheet: StructureSheet | None) -> CandidateRow:
+    """Table row of a candidate.
+
+    Parameters
+    ----------
+    candidate : Candidate
+    anchor : str
+        Id of the query on the page.
+    sheet : StructureSheet or None
+        Collects the drawing; None for a row without drawing and link.
+
+    Returns
+    -------
+    CandidateRow
+    """
+    entry, identity = candidate.entry, candidate.entry.identity
+    marks = tuple(build_mark(verdict, number) for verdict, number in count_verdicts(candidate.evidence) if number)
+    return CandidateRow(
+        rank=str(candidate.rank),
+        name=compound_name(identity.name, entry.accession),
+        anchor=f"{anchor}-candidate-{candidate.rank}" if sheet else "",
+        formula=visible_text(identity.formula, 60) or NONE,
+        measured_as=visible_text(entry.measured_as, 40),
+        cosine=score_text(candidate.cosine),
+        reverse=score_text(candidate.reverse),
+        matched=f"{candidate.aligned.n_matched} of {candidate.aligned.mz.size}",
+        probability=probability_text(candidate.probability),
+        marks=marks,
+        verdicts="evidence: " + ", ".join(f"{item.number} {item.word}" for item in marks),
+        structure=sheet.symbol_for(identity.smiles) if sheet else "",
+        smiles=visible_text(identity.smiles),
+        standing="" if entry.status.value == "reference" else entry.status.value,
+    )
+
+
+def build_candidate_detail(candidate: Candidate, row: CandidateRow, query_name: str) -> CandidateDetail:
+    """Everything on one candidate.
+
+    Parameters
+    ----------
+    candidate : Candidate
+    row : CandidateRow
+        Its row, made with a structure sheet.
+    query_name : str
+
+    Returns
+    -------
+    CandidateDetail
+    """
+    return CandidateDetail(
+        anchor=row.anchor,
+        row=row,
+        is_first=candidate.rank == 1,
+        facts=_candidate_facts(candidate),
+        mirror=_mirror(candidate, row, query_name),
+        evidence=tuple(_evidence(item) for item in candidate.evidence),
+        explanation=_explanation(candidate),
+        notes=tuple(sentence(note) for note in candidate.notes),
+    )
+
+
+def _candidate_facts(candidate: Candidate) -> tuple[Fact, ...]:
+    entry = candidate.entry
+    facts = [
+        Fact("formula", visible_text(entry.identity.formula, 60) or NONE),
+        Fact("InChIKey", visible_text(entry.identity.inchikey, 60) or NONE),
+        Fact("entry", f"{visible_text(entry.accession) or NONE}, {entry.status.value}"),
+        Fact("library", visible_text(candidate.library)),
+        Fact("licence", visible_text(entry.licence) or "not stated"),
+        Fact("authors", visible_text(entry.authors) or "not stated"),
+    ]
+    if entry.measured_as:
+        measured = visible_text(entry.measured_as, 40)
+        formula = visible_text(entry.formula_as_measured, 60)
+        facts.insert(1, Fact("measured as", f"{measured}, {formula}" if formula else measured))
+    if entry.retention.index is not None:
+        phase = f" ({visible_text(entry.retention.phase)} phase)" if entry.retention.phase else ""
+        facts.append(Fact("retention index", f"{entry.retention.index:.0f}{phase}"))
+    if candidate.n_entries > 1:
+        facts.append(Fact("entries among the hits", str(candidate.n_entries)))
+    return tuple(facts)
+
+
+def _mirror(candidate: Candidate, row: CandidateRow, query_name: str) -> Figure:
+    aligned = candidate.aligned
+    rows = list(zip(aligned.mz.tolist(), aligned.query.tolist(), aligned.entry.tolist(), strict=True))
+    only_query = _largest([(mz, query) for mz, query, entry in rows if entry <= 0])
+    only_entry = _largest([(mz, entry) for mz, query, entry in rows if query <= 0])
+    caption = (
+        f"{aligned.n_matched} of {counted(len(rows), 'ion')} match, compared from m/z {aligned.lowest_mz}. "
+        f"Only in the query: {only_query}. Only in the entry: {only_entry}."
+    )
+    drawn = mirror_svg(
+        aligned, name=f"{row.anchor}-mirror", title=f"Mirror plot: {query_name} and {row.name}", description=caption
+    )
+    return Figure(drawn, caption)
+
+
+def _largest(ions: Sequence[tuple[float, float]], limit: int = 6) -> str:
+    if not ions:
+        return "none"
+    order = sorted(ions, key=lambda ion: (-ion[1], ion[0]))
+    text = ", ".join(f"{mz_text(mz)} ({relative_text(value)})" for mz, value in order[:limit])
+    return text + (f" and {len(order) - limit} smaller" if len(order) > limit else "")
+
+
+def _evidence(item: EvidenceItem) -> EvidenceRow:
+    expected = visible_text(item.expected, LONG_TEXT)
+    uncertainty = visible_text(item.uncertainty, LONG_TEXT)
+    return EvidenceRow(
+        kind=visible_text(item.kind),
+        mark=build_mark(item.verdict),
+        reason=sentence(item.reason),
+        observed=visible_text(item.observed, LONG_TEXT) or NONE,
+        expected=" · ".join(part for part in (expected, uncertainty) if part) or NONE,
+        log_odds=signed_text(item.log_odds) if item.log_odds else NONE,
+        source=sentence(item.source),
+    )
+
+
+def build_mark(verdict: Verdict, number: int = 0) -> Mark:
+    """Sign, word and style of a verdict.
+
+    Parameters
+    ----------
+    verdict : Verdict
+    number : int
+        How often it was given, where that is counted.
+
+    Returns
+    -------
+    Mark
+    """
+    return Mark(VERDICT_MARKS[verdict], verdict.value, verdict.value.replace(" ", "-"), number)
+
+
+def _explanation(candidate: Candidate) -> ExplanationNode:
+    rounded = round_explanation(candidate.explanation, 2)
+    # The evidence table has said these sentences already.
+    told = frozenset(item.reason for item in candidate.evidence)
+    return _node(rounded, max(_magnitudes(rounded)), told)
+
+
+def _magnitudes(tree: Explanation) -> Iterator[float]:
+    yield abs(tree.value)
+    for part in tree.parts:
+        yield from _magnitudes(part)
+
+
+def _node(tree: Explanation, largest: float, told: frozenset[str]) -> ExplanationNode:
+    return ExplanationNode(
+        label=visible_text(tree.label),
+        value=signed_text(tree.value),
+        detail="" if tree.detail in told else visible_text(tree.detail, LONG_TEXT),
+        bar_svg=contribution_bar_svg(tree.value, largest),
+        parts=tuple(_node(part, largest, told) for part in tree.parts),
+    )
