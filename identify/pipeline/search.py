@@ -1,11 +1,11 @@
-"""The whole job, wired once: files in, `Report` out.
+"""Spectrum files in, `Report` out: the main path.
 
 ::
 
     open_libraries → read → per query: clean → search every index → fetch entries → shortlist (one draft per compound)
         → evidence → rank (probability, claim, follow-up) → Identification → Report
 
-Commands, the run reader and the workbench call these functions; nothing else wires the rooms together.
+This is the main path of the program; `identify.pipeline.runs` adds the way from a run to queries.
 """
 
 from __future__ import annotations
