@@ -22,6 +22,9 @@ from typing import Final
 ELECTRON_MASS: Final = 0.000548579909065
 """Mass of the electron in Da (CODATA 2018)."""
 
+ALIASES: Final[Mapping[str, str]] = MappingProxyType({"D": "[2H]", "T": "[3H]"})
+"""Old symbols of the hydrogen nuclides."""
+
 # One line per element (two or more for the long ones): mass number, atomic mass in Da, natural fraction; "|" between.
 _NATURAL = """
 H: 1 1.007825031898 0.999885 | 2 2.014101777844 0.000115

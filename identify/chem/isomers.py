@@ -4,7 +4,8 @@ Electron ionization often cannot tell such isomers apart, and most of them have 
 them has to know how many others there could be. Kept: rings, and every functional group with its kind of carbon (a phenol stays
 a phenol, an aldehyde an aldehyde, a secondary amine a secondary amine). Moved: methyl groups among all C–H carbons (this
 redistributes alkyl chains), substituents among the C–H carbons of the aromatic rings, heteroatom substituents among the
-saturated C–H carbons, and carbon–carbon double bonds along chains. Stereoisomers are one.
+saturated C–H carbons, and carbon–carbon double bonds along chains. Stereoisomers are one,
+and so are tautomers of azoles.
 """
 
 from __future__ import annotations
@@ -15,7 +16,8 @@ from functools import lru_cache
 from itertools import chain
 from typing import TYPE_CHECKING, Any, Final
 
-from identify.chem.structures import plain_mol
+from identify.chem.molecules import plain_mol
+from identify.chem.structures import connectivity_block, inchikey_of
 from identify.errors import UsageError
 
 if TYPE_CHECKING:
@@ -26,6 +28,7 @@ MAX_LIMIT: Final = 2000
 MAX_HEAVY_ATOMS: Final = 60
 """Larger compounds are not enumerated: the answer is "at least 1"."""
 
+_HALOGENS: Final = frozenset({"F", "Cl", "Br", "I"})
 _MARK: Final = 99
 """Isotope number that marks where a detached group was bound."""
 
@@ -85,7 +88,7 @@ def count_isomers(smiles: str, limit: int = 100) -> IsomerCount:
     >>> str(count_isomers("CCCCCCCCCCCC", 20))
     'at least 20'
     """
-    from rdkit import Chem
+    from rdkit import Chem, rdBase
 
     if not 1 <= limit <= MAX_LIMIT:
         raise UsageError("limit of isomers", found=f"{limit}", expected=f"1 to {MAX_LIMIT}")
@@ -97,20 +100,32 @@ def count_isomers(smiles: str, limit: int = 100) -> IsomerCount:
     start = Chem.MolFromSmiles(first)
     kept, tried, detached = {first: start}, {first}, set[tuple[str, str]]()
     wanted = _signature(start)
-    queue = [first]
+    queue, blocks = [first], set[str]()
+    _is_new(first, blocks)
     for current in queue:
         for smiles_found in chain(_moved_groups(kept[current], detached), _shifted_bonds(kept[current])):
             if smiles_found in tried:
                 continue
             tried.add(smiles_found)
-            found = Chem.MolFromSmiles(smiles_found)
-            if found is None or _signature(found) != wanted:
+            with rdBase.BlockLogs():
+                found = Chem.MolFromSmiles(smiles_found)
+            if found is None or _signature(found) != wanted or not _is_new(smiles_found, blocks):
                 continue
             if len(queue) == limit:
                 return IsomerCount(tuple(queue), False)
             kept[smiles_found] = found
             queue.append(smiles_found)
     return IsomerCount(tuple(queue), True)
+
+
+def _is_new(smiles: str, blocks: set[str]) -> bool:
+    """Whether a structure with a mobile aromatic N–H is no tautomer of an earlier one; `blocks` collects what was seen."""
+    if "[nH]" not in smiles:
+        return True
+    block = connectivity_block(inchikey_of(smiles))
+    is_new = block not in blocks
+    blocks.add(block)
+    return is_new
 
 
 def _moved_groups(mol: Mol, detached: set[tuple[str, str]]) -> Iterator[str]:
@@ -224,7 +239,7 @@ def _kind(atom: Any) -> str:
 
 
 def _signature(mol: Mol) -> tuple[tuple[object, ...], ...]:
-    """Functional groups of a structure: heteroatoms, carbons bound to them by multiple bonds, and C=C, each with its kind."""
+    """Functional groups of a structure, each with its kind: heteroatoms, carbons that hold several or by multiple bonds, C=C."""
     groups: list[tuple[object, ...]] = []
     for atom in mol.GetAtoms():
         around = sorted((bond.GetBondTypeAsDouble(), _kind(bond.GetOtherAtom(atom))) for bond in atom.GetBonds())
@@ -236,6 +251,8 @@ def _signature(mol: Mol) -> tuple[tuple[object, ...], ...]:
                 is_end = len(hetero) == 1 and atom.GetTotalNumHs() > 0
                 beside = [kind for _, kind in around if kind in ("a", "u")]
                 groups.append(("C", is_end, tuple(hetero), tuple(beside)))
+            elif len(hetero) > 1 and any(kind not in _HALOGENS for _, kind in hetero):  # acetals and their like
+                groups.append(("C", tuple(kind for _, kind in hetero)))
     for bond in mol.GetBonds():
         ends = (bond.GetBeginAtom(), bond.GetEndAtom())
         if bond.GetBondTypeAsDouble() in (2.0, 3.0) and all(end.GetAtomicNum() == 6 for end in ends):

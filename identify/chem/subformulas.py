@@ -139,6 +139,8 @@ def explain_mz(formula: Formula, mz: float, tolerance_da: float) -> tuple[Formul
     """
     if not 0 < tolerance_da <= 0.5:
         raise UsageError("mass tolerance", found=f"{tolerance_da} Da", expected="more than 0 and at most 0.5 Da")
+    if not np.isfinite(mz):
+        return ()
     symbols, counts, masses, values = _compositions(formula)
     left = mz + ELECTRON_MASS - masses
     n_hydrogen = np.rint(left / MASS["H"])
