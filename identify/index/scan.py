@@ -41,10 +41,13 @@ COMPILED_FROM_ENTRIES = 60_000
 CHORD_FACTOR = 1.02
 CHORD_LIMIT = 0.3
 """2 sin(θ/2) / sin θ = 1 / cos(θ/2) = 1.0118 at sin θ = 0.3."""
-NEGLIGIBLE_SQUARE = 1e-30
-"""Sums of squares below this may have lost digits to underflow: nothing is concluded from them."""
-SMALLEST_WEIGHT = 1e-30
+NEGLIGIBLE_SQUARE = 1e-24
+"""Sums of squared query weights below this may have lost digits to float32: nothing is concluded from them."""
+SMALLEST_WEIGHT = 1e-20
 """Query weights are raised to this in the scan, so that a matched peak always shows in `dot`."""
+HUGE = 1e30
+"""Stands for the inverse of a negligible length; a score made with it comes out far above `UNDECIDED`."""
+UNDECIDED = 10.0
 
 Float32Array = NDArray[np.float32]
 
@@ -83,11 +86,11 @@ def scan_weights(query: WeighedQuery) -> Float32Array:
 
 
 def inverse_norms(segment: Segment, query: WeighedQuery) -> Float32Array:
-    """``1 / sqrt(Q(L))`` by lowest m/z of the entry, infinite where `Q` is negligible; reaches up to the last one in use."""
+    """``1 / sqrt(Q(L))`` by lowest m/z of the entry, `HUGE` where `Q` is negligible; reaches up to the last one in use."""
     last = int(segment.lowest_mz.max(initial=0))
     lowest = np.maximum(np.arange(last + 1), query.lowest_mz).astype(np.uint16)
     square = query.square_from(lowest)
-    inverse = np.full(last + 1, np.inf)
+    inverse = np.full(last + 1, HUGE)
     np.divide(1.0, np.sqrt(square), out=inverse, where=square > NEGLIGIBLE_SQUARE)
     return inverse.astype(np.float32)
 
@@ -112,7 +115,7 @@ def bound_scores(segment: Segment, query: WeighedQuery) -> tuple[NDArray[np.int6
     rows : int64 array of shape (n,)
         The rows that share a peak with the query, increasing; the scores of all others are 0.
     cosine, reverse : float64 arrays of shape (n,)
-        Approximate scores; infinite where nothing is known but that the score lies in [0, 1].
+        Approximate scores; above `UNDECIDED` where nothing is known but that the score lies in [0, 1].
     slack : float64 array of shape (n,)
         Half-width of both intervals.
     """
@@ -123,9 +126,9 @@ def bound_scores(segment: Segment, query: WeighedQuery) -> tuple[NDArray[np.int6
     slack = segment.code_error[rows] / length
     slack = np.where(slack <= CHORD_LIMIT, CHORD_FACTOR * slack, 1.0) + float_slack(query)
     inverse_norm = inverse_norms(segment, query)[segment.lowest_mz[rows]]
-    matched = np.where(matched > NEGLIGIBLE_SQUARE, matched, 0.0)
-    with np.errstate(divide="ignore"):
-        return rows, dot / length * inverse_norm, dot / length / np.sqrt(matched), slack
+    is_known = matched > NEGLIGIBLE_SQUARE
+    inverse_matched = np.divide(1.0, np.sqrt(matched), out=np.full(rows.size, HUGE), where=is_known)
+    return rows, dot / length * inverse_norm, dot / length * inverse_matched, slack
 
 
 def _scan_arrays(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_] | None) -> NDArray[np.int64]:
@@ -139,7 +142,7 @@ def _scan_arrays(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[
 
 
 def _may_be_among_best(score: FloatArray, slack: FloatArray, k: int) -> NDArray[np.bool_]:
-    lower = np.where(np.isfinite(score), score, 0.0) - slack
+    lower = np.where(score < UNDECIDED, score, 0.0) - slack
     floor = np.partition(lower, lower.size - k)[lower.size - k]
     may: NDArray[np.bool_] = score + slack >= floor
     return may
@@ -147,31 +150,46 @@ def _may_be_among_best(score: FloatArray, slack: FloatArray, k: int) -> NDArray[
 
 def _sum_columns(segment: Segment, query: WeighedQuery) -> tuple[FloatArray, FloatArray, FloatArray]:
     """`dot`, `matched` and `below` of every row."""
-    n_rows = segment.n_blocks * BLOCK_ENTRIES
-    weights = scan_weights(query)
-    dot, matched, below = np.zeros(n_rows), np.zeros(n_rows), np.zeros(n_rows)
+    block_of = np.repeat(np.arange(segment.n_blocks), np.diff(segment.block_start))
+    mz = segment.column_mz.astype(np.int64)
+    weight = _weight_of(mz, query)
+    touched = np.flatnonzero((weight > 0) | (mz < query.lowest_mz))
+    is_dense = segment.column_count[touched] == 0
+    dot, matched, below = _sum_postings(segment, touched[~is_dense], block_of, weight)
+    dense = segment.dense.reshape(-1, BLOCK_ENTRIES)
     for block in range(segment.n_blocks):
-        columns = np.arange(segment.block_start[block], segment.block_start[block + 1])
-        mz = segment.column_mz[columns].astype(np.int64)
         here = slice(block * BLOCK_ENTRIES, (block + 1) * BLOCK_ENTRIES)
-        _, in_query, in_block = np.intersect1d(query.mz, mz, assume_unique=True, return_indices=True)
-        q = weights[in_query]
-        codes = _codes(segment, columns[in_block])
-        dot[here] = q @ codes
-        matched[here] = (q * q) @ (codes > 0).astype(np.float32)
-        low = _codes(segment, columns[mz < query.lowest_mz])
-        below[here] = np.einsum("ij,ij->j", low, low, dtype=np.float64)
+        columns = touched[is_dense & (block_of[touched] == block)]
+        codes = dense[segment.column_at[columns] // BLOCK_ENTRIES].astype(np.float32)
+        q, low = weight[columns], mz[columns] < query.lowest_mz
+        # einsum, not a matrix product: too small for threads to help, and they would fight with other work.
+        dot[here] += np.einsum("i,ij->j", q, codes)
+        matched[here] += np.einsum("i,ij->j", q * q, (codes > 0).astype(np.float32))
+        below[here] += np.einsum("ij,ij->j", codes[low], codes[low], dtype=np.float64)
     return dot[: segment.n_entries], matched[: segment.n_entries], below[: segment.n_entries]
 
 
-def _codes(segment: Segment, columns: NDArray[np.int64]) -> Float32Array:
-    """Codes of some columns of one block, shape ``(n_columns, BLOCK_ENTRIES)``."""
-    codes = np.zeros((columns.size, BLOCK_ENTRIES), dtype=np.float32)
-    for line, column in zip(codes, columns.tolist(), strict=True):
-        at, count = int(segment.column_at[column]), int(segment.column_count[column])
-        if count == 0:
-            line[:] = segment.dense[at : at + BLOCK_ENTRIES]
-        else:
-            rows = segment.posting_row[at : at + count]
-            line[np.minimum(rows, BLOCK_ENTRIES - 1)] = segment.posting_code[at : at + count]
-    return codes
+def _sum_postings(
+    segment: Segment, columns: NDArray[np.int64], block_of: NDArray[np.int64], weight: Float32Array
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """What the postings of some columns add; columns without query weight lie below the query's range."""
+    counts = segment.column_count[columns]
+    owner = np.repeat(np.arange(columns.size), counts)
+    at = np.arange(owner.size) + (segment.column_at[columns] - (np.cumsum(counts) - counts))[owner]
+    rows = segment.posting_row[at] + (block_of[columns] * BLOCK_ENTRIES)[owner]
+    code, q = segment.posting_code[at].astype(np.float64), weight[columns].astype(np.float64)[owner]
+    n_rows = segment.n_blocks * BLOCK_ENTRIES
+
+    def total(values: FloatArray) -> FloatArray:
+        # Cut, because the two-byte row of a damaged posting may reach further; integers where there is nothing to count.
+        return np.bincount(rows, weights=values, minlength=n_rows)[:n_rows].astype(np.float64)
+
+    return total(q * code), total(q * q), total(np.where(q > 0, 0.0, code * code))
+
+
+def _weight_of(mz: NDArray[np.int64], query: WeighedQuery) -> Float32Array:
+    """Query weight at each m/z, 0 where there is no peak."""
+    table = np.zeros(int(mz.max(initial=0)) + 1, dtype=np.float32)
+    end = int(np.searchsorted(query.mz, table.size))
+    table[query.mz[:end]] = scan_weights(query)[:end]
+    return table[mz]

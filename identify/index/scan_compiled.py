@@ -1,9 +1,12 @@
 """The pass of `identify.index.scan` as machine code; importing this module loads numba.
 
 For each block: merge the query's m/z with the block's columns, add dense columns four at a time (the running sums are
-then loaded and stored once for four columns), add postings one by one, and turn the sums into score intervals. A heap per
+then loaded and stored once for four columns) and postings one by one, and turn the sums into score intervals. A heap per
 score holds the k best lower ends so far; a row whose upper end does not reach the heap's least one is forgotten at once,
 the others are kept and judged again at the end, against the final floor.
+
+The loops over rows are written so that the compiler makes vector instructions of them: one array for all sums (fewer
+pointers that might overlap), table lookups in a loop of their own, no infinities, `minimum` instead of a comparison.
 """
 
 from __future__ import annotations
@@ -19,7 +22,9 @@ from identify.index.query import WeighedQuery
 from identify.index.scan import (
     CHORD_FACTOR,
     CHORD_LIMIT,
+    HUGE,
     NEGLIGIBLE_SQUARE,
+    UNDECIDED,
     float_slack,
     inverse_norms,
     scan_weights,
@@ -28,18 +33,26 @@ from identify.index.segment import BLOCK_ENTRIES, Segment
 
 Function = TypeVar("Function", bound=Callable[..., Any])
 
-SUMS_SIZE = 65_536
-"""Running sums are as long as a posting's two-byte row can reach, so that damaged postings cannot write outside."""
-
 _B = BLOCK_ENTRIES
+_REACH = 65_536
+"""Running sums are as long as a posting's two-byte row can reach, so that damaged postings cannot write outside."""
+_MATCHED, _MARGIN, _NORM = _REACH, 2 * _REACH, 2 * _REACH + _B
+_N_SUMS = 2 * _REACH + 2 * _B
+"""One array: `dot` at 0, `matched` at `_MATCHED`, then the margin over the floors and the query's inverse norm."""
+
 _CHORD_FACTOR, _CHORD_LIMIT = np.float32(CHORD_FACTOR), np.float32(CHORD_LIMIT)
-_NEGLIGIBLE = np.float32(NEGLIGIBLE_SQUARE)
+_NEGLIGIBLE, _HUGE, _UNDECIDED = np.float32(NEGLIGIBLE_SQUARE), np.float32(HUGE), np.float32(UNDECIDED)
 _ZERO, _ONE = np.float32(0), np.float32(1)
 
 
 def _compiled(function: Function) -> Function:
-    # Fused multiply-add only: infinities and NaN keep their meaning, sums keep their order.
-    return cast(Function, numba.njit(function, cache=True, nogil=True, fastmath={"contract"}, error_model="numpy"))
+    # Nothing here is NaN or infinite; products and sums may fuse, but sums keep their order.
+    fastmath = {"contract", "nnan", "ninf", "nsz"}
+    return cast(Function, numba.njit(function, cache=True, nogil=True, fastmath=fastmath, error_model="numpy"))
+
+
+def _inlined(function: Function) -> Function:
+    return cast(Function, numba.njit(function, inline="always", error_model="numpy"))
 
 
 def scan(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_] | None) -> NDArray[np.int64]:
@@ -76,30 +89,45 @@ def scan(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_
 @_compiled
 def _scan_blocks(columns: Any, codes: Any, rows: Any, query: Any, slack: Any, k: int, hidden: Any) -> Any:
     n_entries = rows[0].size
-    sums = np.empty((2, SUMS_SIZE), dtype=np.float32)
-    below = np.empty(SUMS_SIZE, dtype=np.uint32)
-    upper = np.empty((3, _B), dtype=np.float32)
+    sums, below = np.empty(_N_SUMS, dtype=np.float32), np.empty(_REACH, dtype=np.uint32)
     kept = np.empty(n_entries, dtype=np.int64)
-    kept_upper = np.empty((2, n_entries), dtype=np.float32)
-    heaps = np.full((2, k), -np.inf, dtype=np.float32)
+    kept_cosine, kept_reverse = np.empty(n_entries, dtype=np.float32), np.empty(n_entries, dtype=np.float32)
+    best_cosine, best_reverse = np.full(k, -_HUGE), np.full(k, -_HUGE)
     n_kept = 0
-    for block in range(columns[0].size - 1):
+    n_blocks = columns[0].size - 1
+    nearest = _find_nearest_block(columns, query)
+    for turn in range(n_blocks):
+        block = (nearest + turn) % n_blocks
         first = block * _B
         n_rows = min(_B, n_entries - first)
-        sums[:, :_B] = 0
-        below[:_B] = 0
+        sums[:_B], sums[_MATCHED : _MATCHED + _B], below[:_B] = 0, 0, 0
         _add_columns(columns, codes, block, query, sums, below)
-        _bound(rows, first, n_rows, sums, below, query[3], slack, upper)
+        _measure(rows, first, n_rows, sums, below, query[3], slack, best_cosine[0], best_reverse[0])
         for row in range(n_rows):
-            reaches = upper[0, row] >= heaps[0, 0] or upper[1, row] >= heaps[1, 0]
-            if reaches and sums[0, row] > 0 and (hidden.size == 0 or not hidden[first + row]):
-                kept[n_kept] = first + row
-                for score in range(2):
-                    kept_upper[score, n_kept] = upper[score, row]
-                    _offer(heaps[score], _lower(upper[score, row], upper[2, row]))
-                n_kept += 1
-    may = (kept_upper[0, :n_kept] >= heaps[0, 0]) | (kept_upper[1, :n_kept] >= heaps[1, 0])
-    return kept[:n_kept][may]
+            if sums[_MARGIN + row] < 0 or sums[row] <= 0 or (hidden.size > 0 and hidden[first + row]):
+                continue
+            square = np.uint32(rows[1][first + row] - below[row])
+            cosine, reverse, width = _ends(
+                sums[row], sums[_MATCHED + row], square, rows[2][first + row], sums[_NORM + row], slack
+            )
+            kept[n_kept], kept_cosine[n_kept], kept_reverse[n_kept] = first + row, cosine, reverse
+            n_kept += 1
+            _offer(best_cosine, cosine - (width + width) if cosine < _UNDECIDED else -width)
+            _offer(best_reverse, reverse - (width + width) if reverse < _UNDECIDED else -width)
+    may = (kept_cosine[:n_kept] >= best_cosine[0]) | (kept_reverse[:n_kept] >= best_reverse[0])
+    return np.sort(kept[:n_kept][may])
+
+
+@_compiled
+def _find_nearest_block(columns: Any, query: Any) -> int:
+    """First block that reaches the query's highest m/z: likely relatives come first and raise the floors early."""
+    block_start, column_mz = columns[0], columns[1]
+    query_mz = query[0]
+    highest = query_mz[-1] if query_mz.size else 0
+    for block in range(block_start.size - 1):
+        if block_start[block + 1] > block_start[block] and column_mz[block_start[block + 1] - 1] >= highest:
+            return block
+    return 0
 
 
 @_compiled
@@ -108,15 +136,14 @@ def _add_columns(columns: Any, codes: Any, block: int, query: Any, sums: Any, be
     block_start, column_mz, column_count, column_at = columns
     dense, posting_row, posting_code = codes
     query_mz, query_weight, lowest_mz, _ = query
-    at = np.zeros(4, dtype=np.int64)
-    weight = np.zeros(4, dtype=np.float32)
+    at, weight = np.zeros(4, dtype=np.int64), np.zeros(4, dtype=np.float32)
     n_waiting = 0
     peak = 0
     for column in range(block_start[block], block_start[block + 1]):
         mz, start, count = column_mz[column], column_at[column], column_count[column]
         if mz < lowest_mz:
             if count == 0:
-                _add_dense_square(dense[start : start + _B], below)
+                _add_dense_squares(dense[start : start + _B], below)
             else:
                 _add_posting_squares(posting_row[start : start + count], posting_code[start : start + count], below)
             continue
@@ -128,52 +155,53 @@ def _add_columns(columns: Any, codes: Any, block: int, query: Any, sums: Any, be
             continue
         if count > 0:
             part = slice(start, start + count)
-            _add_postings(posting_row[part], posting_code[part], query_weight[peak], sums[0], sums[1])
+            _add_postings(posting_row[part], posting_code[part], query_weight[peak], sums)
             continue
         at[n_waiting], weight[n_waiting] = start, query_weight[peak]
         n_waiting += 1
         if n_waiting == 4:
-            _add_four(
-                dense[at[0] : at[0] + _B], dense[at[1] : at[1] + _B], dense[at[2] : at[2] + _B],
-                dense[at[3] : at[3] + _B], weight, sums[0, :_B], sums[1, :_B],
-            )  # fmt: skip
+            _add_four(dense, at, weight, sums)
             n_waiting = 0
-    for waiting in range(n_waiting):
-        _add_dense(dense[at[waiting] : at[waiting] + _B], weight[waiting], sums[0, :_B], sums[1, :_B])
+    if n_waiting > 0:
+        weight[n_waiting:] = 0  # the columns of the last round once more, without weight
+        _add_four(dense, at, weight, sums)
 
 
 @_compiled
-def _add_four(c0: Any, c1: Any, c2: Any, c3: Any, weight: Any, dot: Any, matched: Any) -> None:
+def _add_four(dense: Any, at: Any, weight: Any, sums: Any) -> None:
+    c0, c1 = dense[at[0] : at[0] + _B], dense[at[1] : at[1] + _B]
+    c2, c3 = dense[at[2] : at[2] + _B], dense[at[3] : at[3] + _B]
     q0, q1, q2, q3 = weight[0], weight[1], weight[2], weight[3]
     s0, s1, s2, s3 = q0 * q0, q1 * q1, q2 * q2, q3 * q3
     for row in range(_B):
-        dot[row] += (q0 * np.float32(c0[row]) + q1 * np.float32(c1[row])) + (
-            q2 * np.float32(c2[row]) + q3 * np.float32(c3[row])
+        x0, x1, x2, x3 = _to_float(c0[row]), _to_float(c1[row]), _to_float(c2[row]), _to_float(c3[row])
+        sums[row] = sums[row] + q0 * x0 + q1 * x1 + q2 * x2 + q3 * x3
+        sums[_MATCHED + row] = (
+            sums[_MATCHED + row] + s0 * _is_there(x0) + s1 * _is_there(x1) + s2 * _is_there(x2) + s3 * _is_there(x3)
         )
-        matched[row] += ((s0 if c0[row] > 0 else _ZERO) + (s1 if c1[row] > 0 else _ZERO)) + (
-            (s2 if c2[row] > 0 else _ZERO) + (s3 if c3[row] > 0 else _ZERO)
-        )
+
+
+@_inlined
+def _to_float(code: Any) -> Any:
+    return np.float32(np.int32(code))
+
+
+@_inlined
+def _is_there(code: Any) -> Any:
+    return code if code < _ONE else _ONE
 
 
 @_compiled
-def _add_dense(code: Any, q: Any, dot: Any, matched: Any) -> None:
-    square = q * q
-    for row in range(_B):
-        dot[row] += q * np.float32(code[row])
-        matched[row] += square if code[row] > 0 else _ZERO
-
-
-@_compiled
-def _add_postings(posting_row: Any, posting_code: Any, q: Any, dot: Any, matched: Any) -> None:
+def _add_postings(posting_row: Any, posting_code: Any, q: Any, sums: Any) -> None:
     square = q * q
     for i in range(posting_row.size):
-        row = posting_row[i]
-        dot[row] += q * np.float32(posting_code[i])
-        matched[row] += square
+        row = np.int64(posting_row[i])
+        sums[row] += q * _to_float(posting_code[i])
+        sums[_MATCHED + row] += square
 
 
 @_compiled
-def _add_dense_square(code: Any, below: Any) -> None:
+def _add_dense_squares(code: Any, below: Any) -> None:
     for row in range(_B):
         below[row] += np.uint32(code[row]) * np.uint32(code[row])
 
@@ -185,25 +213,40 @@ def _add_posting_squares(posting_row: Any, posting_code: Any, below: Any) -> Non
 
 
 @_compiled
-def _bound(
-    rows: Any, first: int, n_rows: int, sums: Any, below: Any, inverse_norm: Any, slack: Any, upper: Any
+def _measure(
+    rows: Any,
+    first: int,
+    n_rows: int,
+    sums: Any,
+    below: Any,
+    inverse_norm: Any,
+    slack: Any,
+    floor: Any,
+    floor_reverse: Any,
 ) -> None:
-    """Upper ends of cosine (0) and reverse (1) and the slack (2); NaN where nothing matches, infinite if undecided."""
+    """Write how far each row's upper ends stand above the floors (the better of the two scores)."""
     lowest_mz, code_square, code_error = rows
     for row in range(n_rows):
-        inverse_length = _ONE / np.sqrt(np.float32(np.uint32(code_square[first + row] - below[row])))
-        sine = code_error[first + row] * inverse_length
-        width = (_CHORD_FACTOR * sine if sine <= _CHORD_LIMIT else _ONE) + slack
-        projected = sums[0, row] * inverse_length
-        matched = sums[1, row] if sums[1, row] > _NEGLIGIBLE else _ZERO
-        upper[0, row] = projected * inverse_norm[lowest_mz[first + row]] + width
-        upper[1, row] = projected / np.sqrt(matched) + width
-        upper[2, row] = width
+        sums[_NORM + row] = inverse_norm[lowest_mz[first + row]]
+    for row in range(n_rows):
+        square = np.uint32(code_square[first + row] - below[row])
+        cosine, reverse, _ = _ends(
+            sums[row], sums[_MATCHED + row], square, code_error[first + row], sums[_NORM + row], slack
+        )
+        cosine, reverse = cosine - floor, reverse - floor_reverse
+        sums[_MARGIN + row] = cosine if cosine > reverse else reverse
 
 
-@_compiled
-def _lower(upper: Any, width: Any) -> Any:
-    return upper - (width + width) if np.isfinite(upper) else -width
+@_inlined
+def _ends(dot: Any, matched: Any, square: Any, error: Any, inverse_norm: Any, slack: Any) -> Any:
+    """Upper ends of cosine and reverse match, and half the width of both intervals."""
+    known_square = np.float32(square) if square > 0 else _ONE
+    inverse_length = _ONE / np.sqrt(known_square)
+    sine = error * inverse_length
+    width = (_CHORD_FACTOR * sine if sine <= _CHORD_LIMIT else _ONE) + slack
+    projected = dot * inverse_length
+    inverse_matched = _ONE / np.sqrt(matched) if matched > _NEGLIGIBLE else _HUGE
+    return projected * inverse_norm + width, projected * inverse_matched + width, width
 
 
 @_compiled

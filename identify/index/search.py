@@ -216,7 +216,8 @@ def search_index(index: SearchIndex, spectrum: CleanSpectrum, k: int) -> tuple[H
     ]
     ids, cosine, reverse = _score(index, query, rows)
     best = choose_best(ids, cosine, reverse, k)
-    return tuple(Hit(int(ids[i]), float(cosine[i]), float(reverse[i])) for i in best)
+    columns = ids[best].tolist(), cosine[best].tolist(), reverse[best].tolist()
+    return tuple(Hit(*row) for row in zip(*columns, strict=True))
 
 
 def _score(
