@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from datetime import datetime
 from importlib.resources.abc import Traversable
@@ -23,12 +23,14 @@ from identify.chem.isotopes import isotope_pattern
 from identify.errors import FormatError, FormulaError, StructureError, quote
 from identify.library.build import BuildReport, build_from_records
 from identify.library.shipped import find_shipped
-from identify.records import Acquisition, EntryStatus, Identity, Retention, Source, SpectrumRecord
+from identify.records import Acquisition, EntryStatus, Identity, Retention, Source, SpectrumRecord, read_only
 
 LABEL: Final = "principal ions from memory, rounded, for demonstration; not reference data"
 LICENCE: Final = "CC0"
 AUTHORS: Final = "ionwitness developers"
 ENERGY_EV: Final = 70.0
+DEFAULT_LOWEST_MZ: Final = 26
+"""Where the ions of a file begin unless it states `lowest_mz`: air and water stand below."""
 SMALLEST_PERCENT: Final = 0.1
 """Computed peaks below this share of the base peak are left out, in percent."""
 _FILE_KEYS: Final = MappingProxyType({"class": str, "lowest_mz": int, "compound": list})
@@ -170,8 +172,8 @@ def record_of(entry: StarterEntry) -> SpectrumRecord:
     mz = sorted(mz for mz, intensity in peaks.items() if intensity >= SMALLEST_PERCENT)
     return SpectrumRecord(
         source=Source(f"starter/{entry.file}", number=entry.number),
-        mz=[float(value) for value in mz],
-        intensity=[round(peaks[value], 2) for value in mz],
+        mz=read_only(mz),
+        intensity=read_only([round(peaks[value], 2) for value in mz]),
         accession=entry.accession,
         title=entry.accession,
         identity=Identity(entry.name, entry.formula.hill, entry.smiles, cas=entry.cas),
@@ -186,12 +188,12 @@ def record_of(entry: StarterEntry) -> SpectrumRecord:
     )
 
 
-def computed_peaks(ions: tuple[tuple[Formula, int], ...]) -> dict[int, float]:
+def computed_peaks(ions: Iterable[tuple[Formula, float]]) -> dict[int, float]:
     """Integer m/z → intensity of all ions with their isotope clusters, base peak 100.
 
     Parameters
     ----------
-    ions : tuple of (Formula, int)
+    ions : iterable of (Formula, float)
         Each with the intensity of the tallest peak of its cluster. Of a doubly charged ion only the peaks at whole m/z
         count: the others fall between two integers.
 
@@ -270,7 +272,8 @@ def _entry_of(file: str, number: int, content: Mapping[str, Any], table: Mapping
         measured = None if groups is None else formula_as_measured(formula, groups)
         if measured is None or str(groups) != derivative:
             raise _fault(file, name, f"derivative {quote(derivative)}", "the normal form, such as '2 TMS'")
-    assert measured is not None  # noqa: S101 - both branches above set it or raise
+    assert measured is not None
+    lowest_mz = content.get("lowest_mz", DEFAULT_LOWEST_MZ)
     return StarterEntry(
         file=file,
         number=number,
@@ -280,14 +283,14 @@ def _entry_of(file: str, number: int, content: Mapping[str, Any], table: Mapping
         cas=cas,
         derivative=derivative,
         retention_index=table.get("retention_index"),
-        lowest_mz=content.get("lowest_mz", 26),
+        lowest_mz=lowest_mz,
         formula=formula,
         formula_as_measured=measured,
-        ions=_ions_of(file, name, table["ions"], measured),
+        ions=_ions_of(file, name, table["ions"], measured, lowest_mz),
     )
 
 
-def _ions_of(file: str, name: str, text: str, measured: Formula) -> tuple[tuple[Formula, int], ...]:
+def _ions_of(file: str, name: str, text: str, measured: Formula, lowest_mz: int) -> tuple[tuple[Formula, int], ...]:
     ions: dict[Formula, int] = {}
     for token in text.split():
         match = _ION.fullmatch(token)
@@ -306,6 +309,8 @@ def _ions_of(file: str, name: str, text: str, measured: Formula) -> tuple[tuple[
             raise _fault(file, name, quote(token), f"a part of {measured.hill}")
         if rings_plus_double_bonds(ion) < -0.5:
             raise _fault(file, name, quote(token), "an ion with at least -0.5 rings plus double bonds")
+        if ion.nominal_mass < lowest_mz * (ion.charge or 1):
+            raise _fault(file, name, quote(token), f"no ion below m/z {lowest_mz}")
         ions[ion] = intensity
     if max(ions.values(), default=0) != 100:
         raise _fault(file, name, f"a strongest ion of {max(ions.values(), default=0)}", "100")

@@ -88,7 +88,9 @@ def main() -> int:
             rows.append((statistics.median(scores), max(scores), len(scores), record.accession))
             if any(text.lower() in record.accession.lower() for text in options.show):
                 best = pairs[scores.index(max(scores))][1]
-                print(f"{record.accession}: {' '.join(f'{score:.2f}' for score in scores)}  {costly_mz(best, weighting)}")
+                print(
+                    f"{record.accession}: {' '.join(f'{score:.2f}' for score in scores)}  {costly_mz(best, weighting)}"
+                )
     rows.sort()
     print(f"{len(entries)} starter entries, {len(rows)} with an open record of the same compound and derivative")
     median, best = statistics.median(row[0] for row in rows), statistics.median(row[1] for row in rows)
