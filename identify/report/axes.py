@@ -172,7 +172,7 @@ class _Columns:
 
 
 def _free_place(label: Label, size: float, blocked: _Columns, frame: Box) -> tuple[float, Box] | None:
-    width, gap = GLYPH_WIDTH * size * len(label.text), 0.35 * size
+    width, gap = size * (GLYPH_WIDTH * len(label.text) + 0.25), 0.35 * size
     for shift in (0.0, 0.3 * width, -0.3 * width, 0.5 * width, -0.5 * width):
         x = label.x + shift
         if label.upward:

@@ -3,16 +3,19 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from dataclasses import replace
 
 from identify.records import Candidate, EvidenceItem, Explanation, Verdict
 from identify.report.contexts import (
     CandidateDetail,
     CandidateRow,
+    CandidateTable,
     EvidenceRow,
     ExplanationNode,
     Fact,
     Figure,
     Mark,
+    SourceRow,
 )
 from identify.report.plots import contribution_bar_svg, mirror_svg
 from identify.report.structures import StructureSheet
@@ -23,6 +26,7 @@ from identify.report.words import (
     compound_name,
     count_verdicts,
     counted,
+    file_name,
     mz_text,
     probability_text,
     relative_text,
@@ -34,21 +38,58 @@ from identify.report.words import (
 from identify.writers.results_json import round_explanation
 
 
-def build_candidate_row(candidate: Candidate, anchor: str, sheet: StructureSheet | None) -> CandidateRow:
-    """Table row of a candidate.
+class SourceList:
+    """Sources named so far; each is stated once for the page and referred to by number."""
+
+    def __init__(self) -> None:
+        self._numbers: dict[str, str] = {}
+
+    def number_of(self, source: str) -> str:
+        """Number of a source, from 1; empty for no source.
+
+        Parameters
+        ----------
+        source : str
+
+        Returns
+        -------
+        str
+        """
+        text = sentence(source)
+        return self._numbers.setdefault(text, str(len(self._numbers) + 1)) if text else ""
+
+    def rows(self) -> tuple[SourceRow, ...]:
+        """All sources in the order of their numbers."""
+        return tuple(SourceRow(number, f"source-{number}", text) for text, number in self._numbers.items())
+
+
+def build_candidate_table(
+    candidates: Sequence[Candidate], anchor: str, sheet: StructureSheet | None, caption: str
+) -> CandidateTable:
+    """Table of candidates; a standing that all entries share is said once, in the caption.
 
     Parameters
     ----------
-    candidate : Candidate
+    candidates : sequence of Candidate
     anchor : str
         Id of the query on the page.
     sheet : StructureSheet or None
-        Collects the drawing; None for a row without drawing and link.
+        Collects the drawings; None for rows without drawing and link.
+    caption : str
 
     Returns
     -------
-    CandidateRow
+    CandidateTable
     """
+    rows = tuple(_row(candidate, anchor, sheet) for candidate in candidates)
+    standings = {row.standing for row in rows}
+    if len(rows) > 1 and len(standings) == 1 and "" not in standings:
+        caption += f"; standing of every entry: {rows[0].standing}"
+        rows = tuple(replace(row, standing="") for row in rows)
+    return CandidateTable(caption, any(row.measured_as for row in rows), rows)
+
+
+def _row(candidate: Candidate, anchor: str, sheet: StructureSheet | None) -> CandidateRow:
     entry, identity = candidate.entry, candidate.entry.identity
     marks = tuple(build_mark(verdict, number) for verdict, number in count_verdicts(candidate.evidence) if number)
     return CandidateRow(
@@ -69,7 +110,9 @@ def build_candidate_row(candidate: Candidate, anchor: str, sheet: StructureSheet
     )
 
 
-def build_candidate_detail(candidate: Candidate, row: CandidateRow, query_name: str) -> CandidateDetail:
+def build_candidate_detail(
+    candidate: Candidate, row: CandidateRow, query_name: str, sources: SourceList
+) -> CandidateDetail:
     """Everything on one candidate.
 
     Parameters
@@ -78,6 +121,8 @@ def build_candidate_detail(candidate: Candidate, row: CandidateRow, query_name: 
     row : CandidateRow
         Its row, made with a structure sheet.
     query_name : str
+    sources : SourceList
+        Collects the sources of the evidence.
 
     Returns
     -------
@@ -89,7 +134,7 @@ def build_candidate_detail(candidate: Candidate, row: CandidateRow, query_name: 
         is_first=candidate.rank == 1,
         facts=_candidate_facts(candidate),
         mirror=_mirror(candidate, row, query_name),
-        evidence=tuple(_evidence(item) for item in candidate.evidence),
+        evidence=tuple(_evidence(item, sources) for item in candidate.evidence),
         explanation=_explanation(candidate),
         notes=tuple(sentence(note) for note in candidate.notes),
     )
@@ -101,7 +146,7 @@ def _candidate_facts(candidate: Candidate) -> tuple[Fact, ...]:
         Fact("formula", visible_text(entry.identity.formula, 60) or NONE),
         Fact("InChIKey", visible_text(entry.identity.inchikey, 60) or NONE),
         Fact("entry", f"{visible_text(entry.accession) or NONE}, {entry.status.value}"),
-        Fact("library", visible_text(candidate.library)),
+        Fact("library", file_name(candidate.library)),
         Fact("licence", visible_text(entry.licence) or "not stated"),
         Fact("authors", visible_text(entry.authors) or "not stated"),
     ]
@@ -140,17 +185,17 @@ def _largest(ions: Sequence[tuple[float, float]], limit: int = 6) -> str:
     return text + (f" and {len(order) - limit} smaller" if len(order) > limit else "")
 
 
-def _evidence(item: EvidenceItem) -> EvidenceRow:
+def _evidence(item: EvidenceItem, sources: SourceList) -> EvidenceRow:
     expected = visible_text(item.expected, LONG_TEXT)
     uncertainty = visible_text(item.uncertainty, LONG_TEXT)
     return EvidenceRow(
         kind=visible_text(item.kind),
         mark=build_mark(item.verdict),
         reason=sentence(item.reason),
-        observed=visible_text(item.observed, LONG_TEXT) or NONE,
-        expected=" · ".join(part for part in (expected, uncertainty) if part) or NONE,
-        log_odds=signed_text(item.log_odds) if item.log_odds else NONE,
-        source=sentence(item.source),
+        observed=visible_text(item.observed, LONG_TEXT),
+        expected=" · ".join(part for part in (expected, uncertainty) if part),
+        log_odds=signed_text(item.log_odds) if item.log_odds else "",
+        source=sources.number_of(item.source),
     )
 
 

@@ -19,7 +19,7 @@ from identify.records import (
     Report,
     Verdict,
 )
-from identify.report.candidates import build_candidate_detail, build_candidate_row, build_mark
+from identify.report.candidates import SourceList, build_candidate_detail, build_candidate_table, build_mark
 from identify.report.contexts import (
     ClaimContext,
     CleaningRow,
@@ -43,6 +43,7 @@ from identify.report.words import (
     LONG_TEXT,
     NONE,
     counted,
+    file_name,
     minutes_text,
     mz_text,
     probability_text,
@@ -73,12 +74,12 @@ def build_page(report: Report, *, date: str = "") -> PageContext:
     -------
     PageContext
     """
-    sheet = StructureSheet()
+    sheet, sources = StructureSheet(), SourceList()
     threshold = float(report.settings.get("claim_threshold", 0.95))
     queries = tuple(
-        _query(number, found, threshold, sheet) for number, found in enumerate(report.identifications, start=1)
+        _query(number, found, threshold, sheet, sources) for number, found in enumerate(report.identifications, start=1)
     )
-    libraries = ", ".join(visible_text(state.path) for state in report.libraries) or "no library"
+    libraries = ", ".join(file_name(state.path) for state in report.libraries) or "no library"
     return PageContext(
         title="Identification of unknown spectra",
         subtitle=f"{counted(len(queries), 'query', 'queries')} against {libraries}",
@@ -93,6 +94,7 @@ def build_page(report: Report, *, date: str = "") -> PageContext:
         cautions=CAUTIONS,
         libraries=tuple(_library(state) for state in report.libraries),
         credits=_credits(report),
+        sources=sources.rows(),
         settings=tuple(_settings(report.settings)),
         rejected=tuple(
             RejectionRow(
@@ -129,18 +131,15 @@ def _summary(found: Identification, query: QueryContext) -> SummaryRow:
     )
 
 
-def _query(number: int, found: Identification, threshold: float, sheet: StructureSheet) -> QueryContext:
+def _query(
+    number: int, found: Identification, threshold: float, sheet: StructureSheet, sources: SourceList
+) -> QueryContext:
     anchor = f"query-{number}"
     record = found.query.record
     name = visible_text(record.identity.name or record.title) or f"Query {number}"
-    rows = tuple(
-        build_candidate_row(candidate, anchor, sheet if place < DETAILED else None)
-        for place, candidate in enumerate(found.candidates)
-    )
-    details = tuple(
-        build_candidate_detail(candidate, row, name)
-        for candidate, row in zip(found.candidates[:DETAILED], rows, strict=False)
-    )
+    shown, further = found.candidates[:DETAILED], found.candidates[DETAILED:]
+    table = build_candidate_table(shown, anchor, sheet, f"Candidates for {name}, one for each compound, best first")
+    rest = f"{counted(len(further), 'more candidate')} for {name}"
     return QueryContext(
         number=number,
         anchor=anchor,
@@ -150,9 +149,12 @@ def _query(number: int, found: Identification, threshold: float, sheet: Structur
         spectrum=_spectrum(found, name, anchor),
         masses=_masses(found.molecular_ion),
         mass_agreement=sentence(found.molecular_ion.agreement),
-        candidates=rows,
-        has_derivatives=any(row.measured_as for row in rows),
-        details=details,
+        candidates=table,
+        details=tuple(
+            build_candidate_detail(candidate, row, name, sources)
+            for candidate, row in zip(shown, table.rows, strict=True)
+        ),
+        further=build_candidate_table(further, anchor, None, rest),
         follow_up=tuple(_follow_up(plan) for plan in found.follow_up),
         cleaning=tuple(_cleaning(step) for step in found.query.spectrum.steps),
         cleaning_summary=_cleaning_summary(found.query.spectrum.steps),

@@ -79,6 +79,7 @@ class EvidenceRow:
     expected: str
     log_odds: str
     source: str
+    """Number in the list of sources; empty when the item names none."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -113,6 +114,15 @@ class CandidateRow:
     smiles: str
     standing: str
     """Standing of the entry where it is not an ordinary reference."""
+
+
+@dataclass(frozen=True, slots=True)
+class CandidateTable:
+    """Candidates in a table; no rows for no table."""
+
+    caption: str
+    has_derivatives: bool
+    rows: tuple[CandidateRow, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -162,9 +172,9 @@ class QueryContext:
     spectrum: Figure
     masses: tuple[MassRow, ...]
     mass_agreement: str
-    candidates: tuple[CandidateRow, ...]
-    has_derivatives: bool
+    candidates: CandidateTable
     details: tuple[CandidateDetail, ...]
+    further: CandidateTable
     follow_up: tuple[FollowUpRow, ...]
     cleaning: tuple[CleaningRow, ...]
     cleaning_summary: str
@@ -206,6 +216,15 @@ class CreditRow:
 
 
 @dataclass(frozen=True, slots=True)
+class SourceRow:
+    """Where the rule of an evidence check comes from, stated once for the page."""
+
+    number: str
+    anchor: str
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
 class RejectionRow:
     """An input that was left out."""
 
@@ -231,6 +250,7 @@ class PageContext:
     cautions: tuple[str, ...]
     libraries: tuple[Fact, ...]
     credits: tuple[CreditRow, ...]
+    sources: tuple[SourceRow, ...]
     settings: tuple[Fact, ...]
     rejected: tuple[RejectionRow, ...]
     structures_svg: str

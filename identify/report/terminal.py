@@ -86,7 +86,7 @@ def _print_identification(
     facts = [source_text(record.source.path, record.source.line)]
     facts += [minutes_text(record.retention.time_s)] if record.retention.time_s is not None else []
     facts += [f"retention index {record.retention.index:.0f}"] if record.retention.index is not None else []
-    console.print(_printable(name, console, "bold underline"), _printable(f" ({', '.join(facts)})", console, "dim"))
+    _print(console, f"{name} ({', '.join(facts)})", style="underline")
     _print(console, sentence(found.claim.statement), style="bold", indent=2)
     _print(console, _levels_text(found), indent=2)
     if found.candidates:
@@ -120,7 +120,7 @@ def _candidate_table(candidates: Sequence[Candidate], console: Console, marks: M
 
     derivatives = any(candidate.entry.measured_as for candidate in candidates)
     wide = console.width >= NARROW
-    table = Table(box=None, padding=(0, 2, 0, 0), header_style="dim", show_edge=False)
+    table = Table(box=None, padding=(0, 2 if wide else 1, 0, 0), header_style="dim", show_edge=False)
     table.add_column("#", justify="right", no_wrap=True)
     table.add_column("name", ratio=None, overflow="fold", min_width=14)
     table.add_column("formula", overflow="fold")
@@ -137,7 +137,7 @@ def _candidate_table(candidates: Sequence[Candidate], console: Console, marks: M
         if derivatives and wide:
             cells += [formula, measured_as or NONE]
         else:
-            cells.append(f"{formula} as {measured_as}" if measured_as else formula)
+            cells.append(f"{formula}\nas {measured_as}" if measured_as else formula)
         cells += [score_text(candidate.cosine), score_text(candidate.reverse), probability_text(candidate.probability)]
         cells.append(_evidence_text(candidate, marks))
         table.add_row(*(_printable(cell, console) for cell in cells))

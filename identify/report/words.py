@@ -241,6 +241,25 @@ def compound_name(name: str, accession: str) -> str:
     return visible_text(name) or f"unnamed ({visible_text(accession) or 'no accession'})"
 
 
+def file_name(path: str) -> str:
+    """Last part of a path, for display where the whole is told elsewhere.
+
+    Parameters
+    ----------
+    path : str
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> file_name("/data/libraries/lab.ionlib")
+    'lab.ionlib'
+    """
+    return visible_text(PurePath(path).name or path)
+
+
 def source_text(path: str, line: int | None) -> str:
     """File name and line of a source; the folder is left out.
 
@@ -258,7 +277,7 @@ def source_text(path: str, line: int | None) -> str:
     >>> source_text("/data/run 3/unknowns.jdx", 12)
     'unknowns.jdx, line 12'
     """
-    name = visible_text(PurePath(path).name or path)
+    name = file_name(path)
     return name if line is None else f"{name}, line {line}"
 
 

@@ -15,7 +15,7 @@ from pathlib import Path
 import pytest
 
 import identify.report
-from identify.records import Report
+from identify.records import EntryStatus, Report
 from identify.report import contexts
 from identify.report.context import DETAILED, LONG_REPORT, build_page
 from identify.report.contexts import ExplanationNode
@@ -239,8 +239,27 @@ def test_printed_parts_of_every_explanation_add_up_as_printed() -> None:
 
 def test_candidates_beyond_the_detailed_are_rows_without_links() -> None:
     (query,) = build_page(build_large_report(1, 12)).queries
-    assert len(query.candidates) == 12 and len(query.details) == DETAILED
-    assert [bool(row.anchor) for row in query.candidates] == [True] * DETAILED + [False] * 7
+    assert len(query.candidates.rows) == DETAILED == len(query.details) and len(query.further.rows) == 7
+    assert all(row.anchor for row in query.candidates.rows) and not any(row.anchor for row in query.further.rows)
+    assert query.further.caption == "7 more candidates for Unknown 1"
+
+
+def test_a_standing_shared_by_all_entries_is_said_once() -> None:
+    entries = [build_candidate(rank, status=EntryStatus.DEMONSTRATION) for rank in (1, 2, 3)]
+    (query,) = build_page(build_report(replace(build_identification(), candidates=tuple(entries)))).queries
+    assert query.candidates.caption.endswith("standing of every entry: demonstration")
+    assert {row.standing for row in query.candidates.rows} == {""}
+    mixed = (*entries, build_candidate(4, status=EntryStatus.OWN_STANDARD))
+    (query,) = build_page(build_report(replace(build_identification(), candidates=mixed))).queries
+    assert [row.standing for row in query.candidates.rows] == ["demonstration"] * 3 + ["own standard"]
+
+
+def test_each_source_is_stated_once_and_numbered() -> None:
+    page = build_page(build_report())
+    texts = [row.text for row in page.sources]
+    assert len(set(texts)) == len(texts) and "common practice." in texts
+    used = {item.source for query in page.queries for detail in query.details for item in detail.evidence}
+    assert used - {""} == {row.number for row in page.sources}
 
 
 def test_each_structure_is_drawn_once() -> None:
