@@ -15,6 +15,7 @@ import random
 import sys
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from functools import lru_cache
 from pathlib import Path
 
 ROOT = Path(__file__).resolve().parent.parent
@@ -94,11 +95,15 @@ def parse_ions(text: str) -> tuple[tuple[Formula, int], ...]:
     return tuple((parse_formula(ion), int(intensity)) for ion, intensity in pairs)
 
 
+@lru_cache(maxsize=1)
+def library_ions() -> dict[str, tuple[tuple[Formula, int], ...]]:
+    return {entry.accession.removeprefix("starter: "): entry.ions for entry in starter_entries()}
+
+
 def ions_of(name: str) -> tuple[tuple[Formula, int], ...]:
     if name in OWN_IONS:
         return parse_ions(OWN_IONS[name])
-    (entry,) = (entry for entry in starter_entries() if entry.accession == f"starter: {name}")
-    return entry.ions
+    return library_ions()[name]
 
 
 def scattered(dice: Dice, deviation: float) -> float:

@@ -247,7 +247,7 @@ def _entries_of(file: Traversable) -> Iterator[StarterEntry]:
 
 
 def _check_keys(table: Mapping[str, Any], keys: Mapping[str, type], needed: set[str], file: str, name: str) -> None:
-    for key in needed - table.keys():
+    for key in sorted(needed - table.keys()):
         raise _fault(file, name, f"no '{key}'", f"the keys {', '.join(sorted(needed))}")
     for key, value in table.items():
         if key not in keys:
