@@ -189,7 +189,7 @@ def as_jcamp(unknown: Unknown, peaks: Peaks) -> str:
     ]
     if unknown.retention_index is not None:
         lines += [
-            f"##.RETENTION TIME= {60 * retention_time_min(unknown.retention_index):.1f}",
+            f"##.RETENTION TIME= {retention_time_min(unknown.retention_index):.2f} min",
             f"##$RETENTION INDEX= {unknown.retention_index}",
             f"##$COLUMN= {COLUMN}",
         ]
