@@ -46,7 +46,8 @@ def compound_classes(smiles: str) -> tuple[str, ...]:
     ('fatty acid methyl ester', 'ester')
     """
     mol = plain_mol(smiles)
-    if {atom.GetAtomicNum() for atom in mol.GetAtoms()} <= {1, 6}:
+    elements = {atom.GetAtomicNum() for atom in mol.GetAtoms()}
+    if 6 in elements and elements <= {1, 6}:
         return _hydrocarbon_classes(mol)
     names = [name for name, pattern in _patterns() if mol.HasSubstructMatch(pattern) and _fills(mol, name, pattern)]
     if _is_terpenoid(mol):

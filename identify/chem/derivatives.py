@@ -99,6 +99,8 @@ _BEHIND: Final = re.compile(
     rf"(?<![A-Za-z0-9.'’)\]-])(?:(?<=_)|\b)?{_NUMBER}[\s-]?\(?(?P<group>{_CAPITALS})\)?(?![A-Za-z0-9]|-(?!deriv))"
 )
 _DERIVATIVE: Final = re.compile(rf"(?<![A-Za-z0-9-])(?P<group>{_CAPITALS})[\s-]+deriv")
+_MAYBE: Final = re.compile(r"tms|bdms|tbs|eox|mox|tfa|pfp|hfb|pfb|(?:^|[;(\[])\s*\(?\d", re.IGNORECASE)
+"""What every notation has; most titles have none of it and are done at once."""
 _PARENTHESIS: Final = re.compile(r"[(\[]([^()\[\]]{2,40})[)\]]")
 
 
@@ -156,8 +158,11 @@ def find_derivative(text: str) -> Derivative | None:
     >>> find_derivative("3-methylbutyl acetate") is None
     True
     """
+    text = text[:2000]
+    if not _MAYBE.search(text):
+        return None
     found: dict[str, set[int | None]] = {}
-    for group, number in _statements(text[:2000]):
+    for group, number in _statements(text):
         found.setdefault(group, set()).add(number)
     stated = {group: values - {None} for group, values in found.items()}
     numbers = {group: next(iter(values)) if len(values) == 1 else None for group, values in stated.items()}
@@ -275,7 +280,7 @@ def possible_formulas(parent: Formula, derivative: Derivative, max_groups: int) 
     -------
     tuple of (int, Formula)
         Total of the unknown groups (each at least 1) and composition, by rising total. For a known derivative one pair with
-        total 0; empty when nothing fits.
+        total 0; empty when nothing fits or more than two numbers are unknown.
 
     Raises
     ------
@@ -290,6 +295,8 @@ def possible_formulas(parent: Formula, derivative: Derivative, max_groups: int) 
     [(1, 'C5H13NO2Si'), (2, 'C8H21NO2Si2')]
     """
     unknown = [group for group, number in derivative.groups if number is None]
+    if len(unknown) > 2:
+        return ()
     limit = min(max_groups, MAX_GROUPS)
     found: dict[Formula, int] = {}
     for numbers in product(range(1, limit + 1), repeat=len(unknown)):

@@ -97,7 +97,8 @@ def count_isomers(smiles: str, limit: int = 100) -> IsomerCount:
     first = str(Chem.MolToSmiles(start))
     if "." in first or start.GetNumHeavyAtoms() > MAX_HEAVY_ATOMS:
         return IsomerCount((first,), False)
-    start = Chem.MolFromSmiles(first)
+    with rdBase.BlockLogs():
+        start = Chem.MolFromSmiles(first)
     kept, tried, detached = {first: start}, {first}, set[tuple[str, str]]()
     wanted = _signature(start)
     queue, blocks = [first], set[str]()

@@ -33,8 +33,8 @@ _COUNTS: Final = {
 }
 # Letters D with a number that are part of a name: vitamins, prostaglandins, natural products, dimethylsiloxane units.
 _NOT_LABELS: Final = re.compile(
-    r"(?:\bvitamin|prostaglandin|PG|resolvin|protectin|maresin|lipoxin|thromboxane|leukotriene|aflatoxin|fumonisin|cyclin"
-    r"|calciferol)[\s(-]*D\d?\b\)?",
+    r"(?:\bvitamin|prostaglandin|\bPG|resolvin|protectin|maresin|lipoxin|thromboxane|leukotriene|aflatoxin|fumonisin|cyclin)"
+    r"[\s(-]*(?-i:D[1-7]?)\b\)?|calciferol\s*\(D[2-7]\)",
     re.IGNORECASE,
 )
 _SILOXANE_UNIT: Final = re.compile(r"\(D\d{1,2}\)|^D\d{1,2}(?=-Ph)")
@@ -49,7 +49,7 @@ _DEUTERIUM: Final = (
     re.compile(r"[(\[](?:[\w,'’.-]+-)?2H\(?(?P<count>[1-9]\d?)\)?[)\]]"),  # (2H3), [1,1-2H2]
 )
 _WORD: Final = re.compile(
-    rf"(?P<times>bis|tris|di)?\(?(?:(?P<where>\d+[,\d]*)-)?(?<![A-Za-z])(?P<many>{'|'.join(filter(None, _COUNTS))}|per)?-?"
+    rf"(?P<times>bis|tris|di)?\(?(?:(?P<where>\d[,\d]{{0,40}})-)?(?<![A-Za-z])(?P<many>{'|'.join(filter(None, _COUNTS))}|per)?-?"
     r"deute?r(?:io|o|ium|i?ated)(?!porphyrin|hem)",
     re.IGNORECASE,
 )
@@ -57,6 +57,8 @@ _NUCLIDE: Final = re.compile(
     r"(?<![\w.])(?P<open>\[)?(?P<where>(?:\d+|[A-Za-z]+|α|β)['’]*(?:,(?:\d+|[A-Za-z]+|α|β)['’]*)*-)?"
     r"(?P<number>\d{1,3})(?P<element>[A-Z][a-z]?)(?P<count>\d{1,2})?(?![\w:])"
 )
+_MAYBE: Final = re.compile(r"[Dd]\d|D\)|-[Dd]$|deut|\d[HCNO]|\[\d", re.IGNORECASE)
+"""What every label has; most names have none of it and are done at once."""
 _OUTSIDE_BRACKETS: Final = frozenset({"[13C]", "[15N]", "[17O]", "[18O]"})
 """Nuclides that are read without square brackets."""
 _UNIFORM: Final = frozenset({"u-", "ul-", "all-", "uniform-"})
@@ -105,7 +107,10 @@ def find_label(name: str) -> Label | None:
     >>> find_label("VITAMIN D3") is None, find_label("D-GLUCOSE") is None
     (True, True)
     """
-    name = _NOT_LABELS.sub("", name[:MAX_NAME].strip())
+    name = name[:MAX_NAME].strip()
+    if not _MAYBE.search(name):
+        return None
+    name = _NOT_LABELS.sub("", name)
     if "siloxan" in name.lower() or _PHENYLSILOXANE.match(name):
         name = _SILOXANE_UNIT.sub("", name)
     found: dict[str, int | None] = {}

@@ -41,7 +41,7 @@ def checked(mol: Any, text: str) -> Mol:
     """
     if mol is None:
         raise StructureError("structure", found=quote(text), expected="a valid SMILES or InChI")
-    if not 0 < mol.GetNumHeavyAtoms() <= MAX_ATOMS and mol.GetNumAtoms() != 1:
+    if not mol.GetNumAtoms() or mol.GetNumHeavyAtoms() > MAX_ATOMS:
         raise StructureError(
             "structure", found=f"{mol.GetNumHeavyAtoms()} atoms in {quote(text)}", expected=f"1 to {MAX_ATOMS} atoms"
         )

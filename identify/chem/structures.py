@@ -215,12 +215,14 @@ def draw_svg(smiles: str, width: int = 240, height: int = 180) -> str:
     >>> draw_svg("CCO", 120, 90)[:4], "<?xml" in draw_svg("CCO", 120, 90)
     ('<svg', False)
     """
+    from rdkit import rdBase
     from rdkit.Chem import rdDepictor
     from rdkit.Chem.Draw import rdMolDraw2D
 
     if not (20 <= width <= 4000 and 20 <= height <= 4000):
         raise StructureError("drawing", found=f"{width} × {height} pixels", expected="20 to 4000 pixels each way")
-    mol = rdMolDraw2D.PrepareMolForDrawing(read_mol(smiles), kekulize=True, addChiralHs=False)
+    with rdBase.BlockLogs():
+        mol = rdMolDraw2D.PrepareMolForDrawing(read_mol(smiles), kekulize=True, addChiralHs=False)
     rdDepictor.StraightenDepiction(mol)
     drawer = rdMolDraw2D.MolDraw2DSVG(width, height)
     options: Any = drawer.drawOptions()

@@ -51,6 +51,7 @@ def test_stereoisomers_and_isotopologues_share_the_connectivity_block() -> None:
         ("[O-]c1ccccc1", "C6H5O-"),
         ("C[Si](C)(C)O", "C3H10OSi"),
         ("[CH3]", "CH3"),
+        ("[2H][2H]", "[2H]2"),
     ],
 )
 def test_formula_counts_hydrogens_isotopes_and_charges(smiles: str, formula: str) -> None:
@@ -95,10 +96,12 @@ def test_refusal_says_what_was_found() -> None:
 
 def test_rdkit_says_nothing_on_the_terminal() -> None:
     code = (
+        "from identify.chem.isomers import count_isomers\n"
         "from identify.chem.structures import *\n"
-        "for f in (canonical_smiles, inchikey_of):\n"
-        "    try: f('C1CC')\n"
-        "    except Exception: pass\n"
+        "for f in (canonical_smiles, inchikey_of, draw_svg, compound_classes, count_isomers):\n"
+        "    for s in ('C1CC', '[2H][2H]', '[2H]', 'C(C)(C)(C)(C)C'):\n"
+        "        try: f(s)\n"
+        "        except Exception: pass\n"
     )
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
     assert (done.stdout, done.stderr) == ("", "")
