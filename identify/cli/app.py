@@ -9,6 +9,7 @@ import click
 from identify import __version__
 from identify.cli.demo import demo
 from identify.cli.library import library
+from identify.cli.run import run
 from identify.cli.search import search
 from identify.errors import FetchError, InputError, IonwitnessError, LibraryError, StructureError, UsageError
 
@@ -36,7 +37,7 @@ def ionwitness() -> None:
     """
 
 
-for _command in (demo, search, library):
+for _command in (demo, search, run, library):
     ionwitness.add_command(_command)
 
 

@@ -12,7 +12,7 @@ import click
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
 
-    from identify.pipeline import Progress
+    from identify.pipeline.search import Progress
     from identify.records import Report
 
 FILE = click.Path(path_type=Path)

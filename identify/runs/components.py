@@ -31,12 +31,14 @@ MIN_COMPONENT_SNR = 8.0
 MAX_NEIGHBOURS = 8
 
 
-def find_components(run: Run) -> tuple[Component, ...]:
+def find_components(run: Run, blank: Sequence[Component] = ()) -> tuple[Component, ...]:
     """Everything that eluted, in the order of time.
 
     Parameters
     ----------
     run : Run
+    blank : sequence of Component
+        Components of a blank run; what elutes there too is marked.
 
     Returns
     -------
@@ -68,7 +70,7 @@ def find_components(run: Run) -> tuple[Component, ...]:
         for place in range(len(clusters))
         if (component := _extract(place, clusters, shapes, matrix, signal, background, noise, width, ceiling, total))
     ]
-    return tuple(replace(c, number=n, **find_kind(c, found)) for n, c in enumerate(found, start=1))
+    return tuple(replace(c, number=n, **find_kind(c, found, blank)) for n, c in enumerate(found, start=1))
 
 
 def _extract(

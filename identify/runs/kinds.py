@@ -15,6 +15,9 @@ BLEED_IONS = (73, 133, 147, 191, 207, 208, 209, 221, 267, 281, 282, 283, 295, 32
 DOMINATES = 0.8
 SOLVENT_SHARE = 0.2
 SOLVENT_TIMES_MEDIAN = 50.0
+SAME_TIME_S = 3.0
+SAME_SPECTRUM = 0.9
+BLANK_AREA_SHARE = 0.2
 
 
 class Kind(TypedDict):
@@ -24,7 +27,7 @@ class Kind(TypedDict):
     note: str
 
 
-def find_kind(component: Component, everything: Sequence[Component]) -> Kind:
+def find_kind(component: Component, everything: Sequence[Component], blank: Sequence[Component]) -> Kind:
     """Kind and the reason for it.
 
     Parameters
@@ -32,6 +35,8 @@ def find_kind(component: Component, everything: Sequence[Component]) -> Kind:
     component : Component
     everything : sequence of Component
         All components of the run, in the order of time.
+    blank : sequence of Component
+        Components of the blank run; empty without one.
 
     Returns
     -------
@@ -42,6 +47,12 @@ def find_kind(component: Component, everything: Sequence[Component]) -> Kind:
         return Kind(kind=ComponentKind.AIR, note="more than 80 % of the signal at ions of air and water")
     if _share(component, BLEED_IONS) >= DOMINATES:
         return Kind(kind=ComponentKind.BLEED, note="more than 80 % of the signal at siloxane ions")
+    for other in blank:
+        if _is_same(component, other) and other.area >= BLANK_AREA_SHARE * component.area:
+            note = (
+                f"the blank shows it at {other.time_s / 60:.3f} min with {other.area / component.area:.0%} of the area"
+            )
+            return Kind(kind=ComponentKind.BLANK, note=note)
     areas = np.array([other.area for other in everything])
     largest = component.area >= areas.max()
     early = component.time_s <= everything[0].time_s + 0.15 * (everything[-1].time_s - everything[0].time_s)
@@ -53,6 +64,18 @@ def find_kind(component: Component, everything: Sequence[Component]) -> Kind:
     ):
         return Kind(kind=ComponentKind.SOLVENT, note="largest peak of the run, at its beginning")
     return Kind(kind=ComponentKind.COMPOUND, note="")
+
+
+def _is_same(one: Component, other: Component) -> bool:
+    """Whether two components elute together (within 3 s) with the same spectrum (cosine of root intensities ≥ 0.9)."""
+    if abs(one.time_s - other.time_s) > SAME_TIME_S:
+        return False
+    axis = np.union1d(one.peaks.mz, other.peaks.mz)
+    vectors = np.zeros((2, axis.size))
+    for row, component in enumerate((one, other)):
+        vectors[row, np.searchsorted(axis, component.peaks.mz)] = np.sqrt(component.peaks.intensity)
+    lengths = np.linalg.norm(vectors, axis=1)
+    return bool(vectors[0] @ vectors[1] >= SAME_SPECTRUM * lengths[0] * lengths[1])
 
 
 def _share(component: Component, ions: Sequence[int]) -> float:
