@@ -47,12 +47,11 @@ _ZERO, _ONE = np.float32(0), np.float32(1)
 
 def _compiled(function: Function) -> Function:
     # Nothing here is NaN or infinite; products and sums may fuse, but sums keep their order.
-    fastmath = {"contract", "nnan", "ninf", "nsz"}
-    return cast(Function, numba.njit(function, cache=True, nogil=True, fastmath=fastmath, error_model="numpy"))
-
-
-def _inlined(function: Function) -> Function:
-    return cast(Function, numba.njit(function, inline="always", error_model="numpy"))
+    options = {"nogil": True, "error_model": "numpy", "fastmath": {"contract", "nnan", "ninf", "nsz"}}
+    try:
+        return cast(Function, numba.njit(function, cache=True, **options))
+    except RuntimeError:  # neither beside this file nor in the user's cache folder can anything be written
+        return cast(Function, numba.njit(function, **options))
 
 
 def scan(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_] | None) -> NDArray[np.int64]:
@@ -74,33 +73,40 @@ def scan(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_
     int64 array
         Rows, increasing.
     """
-    rows: NDArray[np.int64] = _scan_blocks(
+    best = np.full((2, min(k, segment.n_entries)), -_HUGE, dtype=np.float32)
+    kept = np.empty(segment.n_entries, dtype=np.int64)
+    upper = np.empty((2, segment.n_entries), dtype=np.float32)
+    n_kept = _scan_blocks(
         (segment.block_start, segment.column_mz, segment.column_count, segment.column_at),
         (segment.dense, segment.posting_row, segment.posting_code),
         (segment.lowest_mz, segment.code_square, segment.code_error),
         (query.mz, scan_weights(query), query.lowest_mz, inverse_norms(segment, query)),
         np.float32(float_slack(query)),
-        min(k, segment.n_entries),
         np.zeros(0, dtype=np.bool_) if hidden is None else hidden,
+        (np.empty(_N_SUMS, dtype=np.float32), np.empty(_REACH, dtype=np.uint32)),
+        (best[0], best[1], kept, upper[0], upper[1]),
     )
-    return rows
+    may = (upper[0, :n_kept] >= best[0, 0]) | (upper[1, :n_kept] >= best[1, 0])
+    return np.sort(kept[:n_kept][may])
 
 
 @_compiled
-def _scan_blocks(columns: Any, codes: Any, rows: Any, query: Any, slack: Any, k: int, hidden: Any) -> Any:
+def _scan_blocks(
+    columns: Any, codes: Any, rows: Any, query: Any, slack: Any, hidden: Any, running: Any, results: Any
+) -> int:
+    """Fill the heaps and the kept rows with their upper ends; the number of rows kept."""
+    sums, below = running
+    best_cosine, best_reverse, kept, kept_cosine, kept_reverse = results
     n_entries = rows[0].size
-    sums, below = np.empty(_N_SUMS, dtype=np.float32), np.empty(_REACH, dtype=np.uint32)
-    kept = np.empty(n_entries, dtype=np.int64)
-    kept_cosine, kept_reverse = np.empty(n_entries, dtype=np.float32), np.empty(n_entries, dtype=np.float32)
-    best_cosine, best_reverse = np.full(k, -_HUGE), np.full(k, -_HUGE)
-    n_kept = 0
     n_blocks = columns[0].size - 1
     nearest = _find_nearest_block(columns, query)
+    n_kept = 0
     for turn in range(n_blocks):
         block = (nearest + turn) % n_blocks
         first = block * _B
         n_rows = min(_B, n_entries - first)
-        sums[:_B], sums[_MATCHED : _MATCHED + _B], below[:_B] = 0, 0, 0
+        for row in range(_B):
+            sums[row], sums[_MATCHED + row], below[row] = _ZERO, _ZERO, 0
         _add_columns(columns, codes, block, query, sums, below)
         _measure(rows, first, n_rows, sums, below, query[3], slack, best_cosine[0], best_reverse[0])
         for row in range(n_rows):
@@ -114,8 +120,7 @@ def _scan_blocks(columns: Any, codes: Any, rows: Any, query: Any, slack: Any, k:
             n_kept += 1
             _offer(best_cosine, cosine - (width + width) if cosine < _UNDECIDED else -width)
             _offer(best_reverse, reverse - (width + width) if reverse < _UNDECIDED else -width)
-    may = (kept_cosine[:n_kept] >= best_cosine[0]) | (kept_reverse[:n_kept] >= best_reverse[0])
-    return np.sort(kept[:n_kept][may])
+    return n_kept
 
 
 @_compiled
@@ -163,7 +168,8 @@ def _add_columns(columns: Any, codes: Any, block: int, query: Any, sums: Any, be
             _add_four(dense, at, weight, sums)
             n_waiting = 0
     if n_waiting > 0:
-        weight[n_waiting:] = 0  # the columns of the last round once more, without weight
+        for waiting in range(n_waiting, 4):
+            weight[waiting] = 0  # a column of the last round once more, without weight
         _add_four(dense, at, weight, sums)
 
 
@@ -181,12 +187,12 @@ def _add_four(dense: Any, at: Any, weight: Any, sums: Any) -> None:
         )
 
 
-@_inlined
+@_compiled
 def _to_float(code: Any) -> Any:
     return np.float32(np.int32(code))
 
 
-@_inlined
+@_compiled
 def _is_there(code: Any) -> Any:
     return code if code < _ONE else _ONE
 
@@ -237,7 +243,7 @@ def _measure(
         sums[_MARGIN + row] = cosine if cosine > reverse else reverse
 
 
-@_inlined
+@_compiled
 def _ends(dot: Any, matched: Any, square: Any, error: Any, inverse_norm: Any, slack: Any) -> Any:
     """Upper ends of cosine and reverse match, and half the width of both intervals."""
     known_square = np.float32(square) if square > 0 else _ONE
