@@ -20,6 +20,7 @@ def demo(folder: Path, browser: bool | None) -> int:
 
     The starter library holds principal ions from memory, rounded, for demonstration; it is not reference data.
     """
+    import tomllib
     from importlib.resources import as_file
 
     from identify.cli.library import current_user, now
@@ -32,11 +33,19 @@ def demo(folder: Path, browser: bool | None) -> int:
     library = folder / "starter.ionlib"
     built = build_starter(library, current_user(), now(), replace=True)
     click.echo(f"Starter library: {built.n_accepted} entries of {built.n_compounds} compounds, in {library}")
-    with as_file(find_shipped("demo")) as case, progress_bar("Identifying") as progress:
-        unknowns = sorted(path for path in (case / "unknowns").iterdir() if path.is_file())
-        report = search_files(unknowns, [library], Settings(), progress)
+    with as_file(find_shipped("demo")) as case:
+        told = tomllib.loads((case / "case.toml").read_text(encoding="utf-8"))
+        click.echo(f"\n{told['title']}\n{told['story'].strip()}\n")
+        unknowns = [case / "unknowns" / unknown["file"] for unknown in told["unknown"]]
+        with progress_bar("Identifying") as progress:
+            report = search_files(unknowns, [library], Settings(), progress)
     html = folder / "report.html"
     code = deliver(report, folder / "result.json", folder / "result.csv", html)
+    click.echo("\nWhat was put in:")
+    for unknown in told["unknown"]:
+        kind = " (not in the library)" if unknown["kind"] == "not in library" else ""
+        click.echo(f"  {unknown['file']}: {', '.join(unknown['answer'])}{kind}")
+    click.echo(f"\n{told['caution']}\nReport: {html}")
     if browser or (browser is None and sys.stdout.isatty()):
         click.launch(html.resolve().as_uri())
     return code

@@ -75,7 +75,7 @@ def read_settings(path: Path | None) -> str:
 
 
 def deliver(report: Report, json_path: Path | None, csv_path: Path | None, html_path: Path | None) -> int:
-    """Exit code of the report, after showing it on the terminal and writing the files asked for.
+    """Exit code of the report, after writing the files asked for and showing it on the terminal.
 
     Parameters
     ----------
@@ -89,11 +89,11 @@ def deliver(report: Report, json_path: Path | None, csv_path: Path | None, html_
     from rich.console import Console
 
     from identify.report.html import write_html
+    from identify.report.overview import DETAILS_UP_TO, render_overview
     from identify.report.terminal import render_terminal
     from identify.writers.results_csv import write_csv
     from identify.writers.results_json import write_json
 
-    render_terminal(report, Console())
     writers: tuple[tuple[Path | None, Callable[[Path, Report], None]], ...] = (
         (json_path, write_json),
         (csv_path, write_csv),
@@ -103,6 +103,8 @@ def deliver(report: Report, json_path: Path | None, csv_path: Path | None, html_
         if path is not None:
             write(path, report)
             click.echo(f"Written: {path}", err=True)
+    render = render_terminal if len(report.identifications) <= DETAILS_UP_TO else render_overview
+    render(report, Console())
     return report.exit_code
 
 

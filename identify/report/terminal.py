@@ -57,12 +57,23 @@ def render_terminal(report: Report, console: Console, candidates_shown: int = 5)
     marks = _marks(console)
     for found in report.identifications:
         _print_identification(found, console, marks, candidates_shown)
-    if report.rejected:
-        _print_rejected(report.rejected, console)
     if any(found.candidates for found in report.identifications):
         legend = "   ".join(f"{mark} {verdict.value}" for verdict, mark in marks.items())
         _print(console, f"Evidence: {legend}", style="dim")
         _print(console, SCORES_LEGEND, style="dim")
+    print_notices(report, console)
+
+
+def print_notices(report: Report, console: Console) -> None:
+    """Nothing comes out; rejected inputs, libraries and cautions are printed on `console`: the end of every report.
+
+    Parameters
+    ----------
+    report : Report
+    console : rich.console.Console
+    """
+    if report.rejected:
+        _print_rejected(report.rejected, console)
     _print_libraries(report, console)
     for caution in CAUTIONS:
         _print(console, f"Caution: {caution}", style="dim", hanging=9)
