@@ -24,6 +24,7 @@ from identify.records import EntryStatus, Rejection, SpectrumRecord
 
 Progress = Callable[[int, str], None]
 """Called with the number of records read and the name of the source, about every 100 records."""
+Accept = Callable[["BuildReport"], None]
 OnReject = Callable[[Rejection], None]
 
 DUPLICATE = "duplicate accession"
@@ -81,6 +82,7 @@ def build_library(
     when: datetime,
     reason: str = "",
     status: EntryStatus = EntryStatus.REFERENCE,
+    accept: Accept | None = None,
 ) -> BuildReport:
     """Report on a new library made of all electron-ionization spectra in the sources.
 
@@ -102,6 +104,8 @@ def build_library(
     reason : str
     status : EntryStatus
         Standing the entries get.
+    accept : callable, optional
+        Called with the report before the library takes its place; when it raises, there is no library.
 
     Returns
     -------
@@ -121,7 +125,7 @@ def build_library(
     One pass, memory bounded by one record and the pages SQLite keeps.
     """
     streams = [_stream_of(Path(source)) for source in sources]
-    return _build(Path(path), streams, resolve_licences(licences), replace, progress, who, when, reason, status)
+    return _build(Path(path), streams, resolve_licences(licences), replace, progress, who, when, reason, status, accept)
 
 
 def build_from_records(
@@ -185,6 +189,7 @@ def _build(
     when: datetime,
     reason: str,
     status: EntryStatus,
+    accept: Accept | None = None,
 ) -> BuildReport:
     policy, total, listed = Policy(licences, status), _Tally(), list[Rejection]()
     with new_library_file(path, replace) as connection:
@@ -219,10 +224,17 @@ def _build(
                 hint="See the reasons; `--licence all` takes every licence.",
             )  # fmt: skip
         (n_compounds,) = connection.execute("SELECT count(*) FROM compound").fetchone()
+        report = _report(path, event.hash, n_compounds, total, listed)
+        if accept:
+            accept(report)
+    return report
+
+
+def _report(path: Path, fingerprint: str, n_compounds: int, total: _Tally, listed: list[Rejection]) -> BuildReport:
+    reasons, notes = dict(total.reasons.most_common()), dict(total.notes.most_common())
     return BuildReport(
-        str(path), event.hash, total.n_read, total.n_accepted, n_compounds, dict(total.reasons.most_common()),
-        dict(total.notes.most_common()), tuple(listed),
-    )  # fmt: skip
+        str(path), fingerprint, total.n_read, total.n_accepted, n_compounds, reasons, notes, tuple(listed)
+    )
 
 
 def _nothing(tally: _Tally) -> str:

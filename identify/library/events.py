@@ -23,6 +23,7 @@ from identify.errors import UsageError, quote
 GENESIS = "0" * 64
 """Previous hash of the first event."""
 MAX_WHO, MAX_REASON = 200, 4000
+_ENCODER = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,7 +63,7 @@ def canonical_json(value: Any) -> str:
     >>> canonical_json({"b": 1, "a": [0.5, "µ"]})
     '{"a":[0.5,"µ"],"b":1}'
     """
-    return json.dumps(value, sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
+    return _ENCODER.encode(value)
 
 
 def sha256_of(text: str) -> str:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import re
 import unicodedata
 from collections.abc import Sequence
+from functools import lru_cache
 
 from identify.errors import UsageError
 
@@ -21,6 +22,7 @@ _CREATIVE = re.compile(
 _PUBLIC = re.compile(r"^(?:PUBLIC[ -]DOMAIN|PD|PUBLIC DOMAIN MARK.*)$")
 
 
+@lru_cache(maxsize=256)
 def normalise_licence(text: str) -> str:
     """One form of a licence's name, without its version; `not stated` for none.
 
