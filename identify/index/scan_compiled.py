@@ -47,7 +47,7 @@ _ZERO, _ONE = np.float32(0), np.float32(1)
 
 def _compiled(function: Function) -> Function:
     # Nothing here is NaN or infinite; products and sums may fuse, but sums keep their order.
-    options = {"nogil": True, "error_model": "numpy", "fastmath": {"contract", "nnan", "ninf", "nsz"}}
+    options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "fastmath": {"contract", "nnan", "ninf", "nsz"}}
     try:
         return cast(Function, numba.njit(function, cache=True, **options))
     except RuntimeError:  # neither beside this file nor in the user's cache folder can anything be written
@@ -73,7 +73,7 @@ def scan(segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_
     int64 array
         Rows, increasing.
     """
-    best = np.full((2, min(k, segment.n_entries)), -_HUGE, dtype=np.float32)
+    best = np.full((2, max(1, min(k, segment.n_entries))), -_HUGE, dtype=np.float32)
     kept = np.empty(segment.n_entries, dtype=np.int64)
     upper = np.empty((2, segment.n_entries), dtype=np.float32)
     n_kept = _scan_blocks(
