@@ -295,6 +295,8 @@ def _pairs_of_mzml(item: dict[str, Any], scan: Mapping[str, Any]) -> list[tuple[
             pairs.append(("polarity", sign))
     for name, value in item.items():
         for text in value if isinstance(value, list) else [value]:
+            if name == "id" and str(text).startswith("index="):
+                continue
             if name not in _STRUCTURE and isinstance(text, str | int | float) and str(text):
                 pairs += [(_MZML_NAMES.get(name, name), part) for part in str(text).split("\n")]
     return pairs

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from identify.errors import InputError, quote
 from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
@@ -22,37 +22,14 @@ from identify.records import Source, SpectrumRecord
 _DATA_LABELS = ("PEAKTABLE", "XYPOINTS", "XYDATA")
 _DATA_FORM = re.compile(r"\s*(\([^()]*(?:\([^()]*\))?\))[\s,]*(?:PEAKS|XYDATA|XYPOINTS|PROFILE)?(.*)", re.IGNORECASE)
 _SHAPE_LABELS = frozenset(
-    {
-        "TITLE",
-        "JCAMPDX",
-        "JCAMPCS",
-        "DATATYPE",
-        "DATACLASS",
-        "XUNITS",
-        "XFACTOR",
-        "YFACTOR",
-        "FIRSTX",
-        "LASTX",
-        "FIRSTY",
-    }
-    | {"DELTAX", "MAXX", "MINX", "MAXY", "MINY", "NPOINTS", "BLOCKS", "BLOCKID", "END", "PAGE", "DATATABLE", "NTUPLES"}
-    | {
-        "VARNAME",
-        "SYMBOL",
-        "VARTYPE",
-        "VARFORM",
-        "VARDIM",
-        "UNITS",
-        "FIRST",
-        "LAST",
-        "MIN",
-        "MAX",
-        "FACTOR",
-        "ENDNTUPLES",
-    }
-    | {*_DATA_LABELS}
+    {"TITLE", "JCAMPDX", "JCAMPCS", "DATATYPE", "DATACLASS", "BLOCKS", "BLOCKID", "END", "NPOINTS", *_DATA_LABELS}
+    | {"XUNITS", "YUNITS", "XFACTOR", "YFACTOR", "FIRSTX", "LASTX", "FIRSTY", "DELTAX", "MAXX", "MINX", "MAXY", "MINY"}
+    | {"NTUPLES", "PAGE", "DATATABLE", "ENDNTUPLES", "VARNAME", "SYMBOL", "VARTYPE", "VARFORM", "VARDIM", "UNITS"}
+    | {"FIRST", "LAST", "MIN", "MAX", "FACTOR"}
 )
+"""Labels that say how the block is built: read where they matter, not kept."""
 _NO_LABEL = "?"
+_NOT_STATED = "not stated"
 _FREE_LICENCE = re.compile(r"public domain|\bCC0\b|\bCC[ -]BY", re.IGNORECASE)
 
 
@@ -251,15 +228,19 @@ class _Reader:
             fields.add("name", block.text("TITLE"))
         if "PAGE" in labels:
             _add_page_variables(fields, block, labels["PAGE"])
-        if not fields.has("authors") and block.text("ORIGIN"):
-            fields.add("authors", block.text("ORIGIN"))
-        if not fields.has("licence") and _FREE_LICENCE.search(block.text("OWNER")[:500]):
-            fields.add("licence", block.text("OWNER"))
+        origin, owner = block.text("ORIGIN"), block.text("OWNER")
+        if not fields.has("authors") and origin != _NOT_STATED:
+            fields.add("authors", origin)
+        if not fields.has("licence") and _FREE_LICENCE.search(owner[:500]):
+            fields.add("licence", owner)
         self._number += 1
         source = Source(self._path, line, self._number)
-        return record_from_fields(
+        record = record_from_fields(
             fields, source, points.x, points.y, comments=block.comments, is_profile=points.is_profile
         )
+        said = {record.authors, record.licence, _NOT_STATED}
+        doubled = {name for name in ("ORIGIN", "OWNER") if record.extra.get(name) in said}
+        return replace(record, extra={name: text for name, text in record.extra.items() if name not in doubled})
 
 
 def _add_label(block: _Block, label: _Label, path: str) -> None:

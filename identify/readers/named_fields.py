@@ -26,7 +26,7 @@ SPELLINGS: Mapping[str, tuple[str, ...]] = {
     "title": ("title", "recordtitle"),
     "synonym": ("synon", "synonym", "synonyms", "syn", "othername", "names", "casname"),
     "formula": ("formula", "molecularformula", "molform", "chemicalformula", "chformula"),
-    "smiles": ("smiles", "canonicalsmiles", "computedsmiles"),
+    "smiles": ("smiles", "canonicalsmiles", "computedsmiles", "smilesstring", "smilesformula"),
     "inchi": ("inchi", "computedinchi", "inchicode"),
     "inchikey": ("inchikey",),
     "cas": ("cas", "casno", "casrn", "casnumber", "casregistryno", "casregistrynumber"),

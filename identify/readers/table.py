@@ -21,7 +21,8 @@ from identify.readers.table_rows import RowReader, find_heading, looks_like_row,
 from identify.records import Source, SpectrumRecord, read_only
 
 _COMMENT_MARKS = ("#", "%", "//", "!")
-_STATEMENT = re.compile(r"([A-Za-z][\w .#/()-]{0,40}?)\s*[:=]\s*(.*)")
+_STATEMENT = re.compile(r"([A-Za-z$][^:=]{0,60}?)\s*[:=]\s*(.*)")
+_QUOTED_CELL = re.compile(r'"((?:[^"]|"")*:(?:[^"]|"")*)"')
 _STARTS_SPECTRUM = frozenset(SPELLINGS["name"] + SPELLINGS["title"] + SPELLINGS["accession"])
 
 
@@ -73,7 +74,9 @@ def parse_table(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterato
     draft = _Draft()
     number = 0
     for line_number, line in enumerate(lines, 1):
-        text = line.strip().strip("\ufeff")
+        text = line.strip()
+        if (cell := _QUOTED_CELL.fullmatch(text)) is not None:
+            text = cell.group(1).replace('""', '"').strip()
         if not text:
             draft.after_gap = draft.has_rows
             continue
@@ -107,7 +110,9 @@ def _starts_anew(text: str, draft: _Draft) -> bool:
     statement = _STATEMENT.fullmatch(text)
     if statement is not None and bare_name(statement.group(1)) in _STARTS_SPECTRUM:
         return True
-    return (draft.after_gap and not text.startswith(_COMMENT_MARKS)) or find_heading(text) is not None
+    if draft.after_gap and not text.startswith(_COMMENT_MARKS):
+        return True
+    return ":" not in text and find_heading(text) is not None
 
 
 def _take_line(draft: _Draft, text: str, line_number: int, path: str, *, is_first: bool) -> None:
@@ -119,7 +124,7 @@ def _take_line(draft: _Draft, text: str, line_number: int, path: str, *, is_firs
         draft.comments.append(cut_field(text.lstrip("#%!/ ")))
     elif looks_like_row(text) or draft.peaks:
         _take_row(draft, text, line_number, path)
-    elif draft.rows is None and (heading := find_heading(text)) is not None:
+    elif draft.rows is None and ":" not in text and (heading := find_heading(text)) is not None:
         draft.rows = heading
     elif (statement := _STATEMENT.fullmatch(text)) is not None and draft.rows is None:
         draft.statements.append((statement.group(1), statement.group(2)))
