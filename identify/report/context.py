@@ -289,7 +289,7 @@ def _credits(report: Report) -> tuple[CreditRow, ...]:
             key = (visible_text(entry.licence) or "not stated", visible_text(entry.authors) or "not stated")
             groups.setdefault(key, {})[visible_text(entry.accession) or NONE] = None
     return tuple(
-        CreditRow(licence, authors, ", ".join(sorted(names))) for (licence, authors), names in sorted(groups.items())
+        CreditRow(licence, authors, "; ".join(sorted(names))) for (licence, authors), names in sorted(groups.items())
     )
 
 

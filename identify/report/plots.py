@@ -196,8 +196,11 @@ def _grid(across: Scale, up: Scale, levels: Sequence[float]) -> str:
 
 def _mass_axis(across: Scale, height: float) -> str:
     base = height - BOTTOM
-    coarse = choose_ticks(across.low, across.high, 4)
-    fine = [tick for tick in choose_ticks(across.low, across.high, 9) if tick not in coarse]
+    ticks = choose_ticks(across.low, across.high, 9)
+    step = ticks[1] - ticks[0] if len(ticks) > 1 else 1.0
+    # Every second tick keeps its number on a narrow screen.
+    coarse = [tick for tick in ticks if len(ticks) < 4 or round(tick / step) % 2 == 0]
+    fine = [tick for tick in ticks if tick not in coarse]
     marks = "".join(f"M{across(tick):.1f} {base:.1f}v5" for tick in (*coarse, *fine))
     words = "".join(_tick_word(across(tick), base, tick, "") for tick in coarse)
     words += "".join(_tick_word(across(tick), base, tick, ' class="fine"') for tick in fine)

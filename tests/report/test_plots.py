@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import re
 from xml.etree import ElementTree
 
@@ -92,3 +93,13 @@ def test_bars_show_share_and_sign() -> None:
     assert 'class="limit"' not in probability_bar_svg(0.25)
     assert 'class="against" d="M0 5h-25"' in contribution_bar_svg(-1.0, 2.0)
     assert 'class="for" d="M0 5h0"' in contribution_bar_svg(0.0, 0.0)
+
+
+@pytest.mark.parametrize("highest", [60, 131, 218, 286, 420, 650, 1100])
+def test_numbers_on_the_mass_axis_are_evenly_spaced_at_both_sizes(highest: int) -> None:
+    svg = spectrum_svg(build_peaks({41: 50, highest: 100}), name="q", title="t", description="d")
+    axis = svg[svg.index('<path class="axis"') : svg.index('class="unit"')]
+    found = [(int(word), "fine" in classes) for classes, word in re.findall(r"<text([^>]*)>(\d+)</text>", axis)]
+    for numbers in (sorted(word for word, _ in found), sorted(word for word, is_fine in found if not is_fine)):
+        assert len(numbers) >= 2
+        assert len({after - before for before, after in itertools.pairwise(numbers)}) == 1
