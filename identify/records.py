@@ -233,6 +233,10 @@ class EntryStatus(StrEnum):
     DEMONSTRATION = "demonstration"
     QUARANTINED = "quarantined"
     WITHDRAWN = "withdrawn"
+    PROPOSED = "proposed"
+    """A standard that waits for its review."""
+    REFUSED = "refused"
+    """A proposed standard that its reviewer did not accept."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -129,10 +129,20 @@ def connect(path: Path, *, writable: bool, busy_timeout_s: float = BUSY_TIMEOUT_
             version = read_version(connection, path)
         if version != SCHEMA_VERSION:
             raise _wrong_version(path, version)
+        if writable:
+            with translated(path):
+                keep_log(connection)
     except BaseException:
         connection.close()
         raise
     return connection
+
+
+def keep_log(connection: sqlite3.Connection) -> None:
+    """Switch to a write-ahead log (readers and a writer do not wait for each other), if it is not on already."""
+    (mode,) = connection.execute("PRAGMA journal_mode").fetchone()
+    if mode != "wal":
+        connection.execute("PRAGMA journal_mode = WAL")
 
 
 def connect_any_version(path: Path, *, writable: bool, busy_timeout_s: float = BUSY_TIMEOUT_S) -> sqlite3.Connection:

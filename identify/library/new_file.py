@@ -11,7 +11,7 @@ import os
 import secrets
 import sqlite3
 from collections.abc import Iterator
-from contextlib import contextmanager, suppress
+from contextlib import contextmanager, nullcontext, suppress
 from pathlib import Path
 
 from identify.errors import LibraryBusy, LibraryConflict, LibraryError, LibraryMissing, LibraryVersionError
@@ -64,11 +64,11 @@ def new_library_file(path: Path, replace: bool) -> Iterator[sqlite3.Connection]:
             finally:
                 connection.close()
         sync_to_disk(temporary)
-        with _released_target(path, replace):
+        with hold_exclusively(path) if replace and path.exists() else nullcontext():
             _move(temporary, path, replace)
         sync_to_disk(folder)
     finally:
-        _remove(temporary)
+        remove_with_side_files(temporary)
 
 
 def _create(path: Path) -> sqlite3.Connection:
@@ -101,7 +101,7 @@ def remove_leftovers(path: Path) -> list[Path]:
         if not found.name.startswith(prefix) or found.name.endswith(_SIDE_FILES):
             continue
         if not _is_being_written(found):
-            _remove(found)
+            remove_with_side_files(found)
             removed.append(found)
     return removed
 
@@ -119,7 +119,8 @@ def _is_being_written(path: Path) -> bool:
     return False
 
 
-def _remove(path: Path) -> None:
+def remove_with_side_files(path: Path) -> None:
+    """Remove a database file with its journal and log, whichever of them exist."""
     for name in (path.name, *(path.name + side for side in _SIDE_FILES)):
         path.with_name(name).unlink(missing_ok=True)
 
@@ -162,11 +163,20 @@ def _count_curation(path: Path) -> int:
 
 
 @contextmanager
-def _released_target(path: Path, replace: bool) -> Iterator[None]:
-    """Hold the old library exclusively, its log emptied, while it is replaced: a log must not meet another file."""
-    if not (replace and path.exists()):
-        yield
-        return
+def hold_exclusively(path: Path) -> Iterator[None]:
+    """Nobody else reads or writes the library inside the block, and its log is emptied into it.
+
+    A file that takes its place must not meet the log of the one before.
+
+    Parameters
+    ----------
+    path : Path
+
+    Raises
+    ------
+    LibraryBusy, LibraryError
+        If it is in use or cannot be opened for writing.
+    """
     connection = connect_any_version(path, writable=True)
     try:
         with translated(path):

@@ -2,11 +2,12 @@
 
 Nothing in a library is ever changed: rows are only added, and triggers hold everybody to it. What an entry *is* stands in
 `entry` and `source_peaks`; what became of it (quarantined, withdrawn, accepted) stands in `standing`, one row per event, so
-that the library as it stood after any event can be read back.
+that the library as it stood after any event can be read back. `reported` remembers which entries were shown in results; it
+is no part of the state a search depends on and has a chain of hashes of its own.
 
 ::
 
-    event ◄── entry.event_seq        compound ◄── entry.compound_id      entry ◄── source_peaks, standing
+    event ◄── entry.event_seq        compound ◄── entry.compound_id      entry ◄── source_peaks, standing, reported
 """
 
 from __future__ import annotations
@@ -106,6 +107,26 @@ CREATE INDEX entry_by_mass ON entry (nominal_mass);
 CREATE INDEX entry_by_inchikey ON entry (inchikey);
 """
 
+_TABLES_2 = """
+CREATE TABLE reported (
+  id INTEGER PRIMARY KEY CHECK (id > 0),
+  at TEXT NOT NULL,
+  who TEXT NOT NULL,
+  result TEXT NOT NULL,
+  query_id TEXT NOT NULL,
+  query_name TEXT NOT NULL,
+  query_source TEXT NOT NULL,
+  fingerprint TEXT NOT NULL,
+  entry_id INTEGER NOT NULL REFERENCES entry (id),
+  rank INTEGER NOT NULL,
+  probability REAL NOT NULL,
+  claim TEXT NOT NULL,
+  previous_hash TEXT NOT NULL UNIQUE,
+  hash TEXT NOT NULL UNIQUE
+) STRICT;
+CREATE INDEX reported_by_entry ON reported (entry_id);
+"""
+
 
 def _append_only(table: str) -> str:
     """Triggers that forbid changing or removing rows of `table`."""
@@ -130,6 +151,7 @@ MIGRATIONS: tuple[Migration, ...] = (
         "events, compounds, entries",
         _TABLES_1 + "".join(map(_append_only, ("event", "compound", "entry", "source_peaks", "standing"))),
     ),
+    Migration(2, "reported queries", _TABLES_2 + _append_only("reported")),
 )
 """Every step ever released, in order; a step is never edited afterwards."""
 
