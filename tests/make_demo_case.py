@@ -236,7 +236,7 @@ def as_open_record(unknown: Unknown, peaks: Peaks) -> str:
     base = max(counts for _, counts in peaks)
     details = dict(unknown.details)
     lines = [
-        f"ACCESSION: MSBNK-Demo-DEMO{number}",
+        f"ACCESSION: INVNT-Demo-DEMO{number}",
         f"RECORD_TITLE: {unknown.title}; {details['type']}; MS; 70 eV",
         "DATE: 2025.01.01",
         "AUTHORS: ionwitness developers",

@@ -15,7 +15,7 @@ NAME = "Inventol"
 
 def massbank(pairs: Pairs, name: str = NAME) -> str:
     rows = "\n".join(f"  {mz:.10g} {height:.10g} 999" for mz, height in pairs)
-    return f"""ACCESSION: MSBNK-Invented-{name.upper()}1
+    return f"""ACCESSION: INVNT-Invented-{name.upper()}1
 RECORD_TITLE: {name}; GC-EI-Q; MS
 LICENSE: CC0
 CH$NAME: {name}

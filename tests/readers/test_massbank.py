@@ -11,7 +11,7 @@ from identify.readers import read_pasted, read_spectra
 from identify.readers.massbank import parse_massbank
 from identify.records import Rejection, SpectrumRecord
 
-RECORD = """ACCESSION: MSBNK-Invented-IN000001
+RECORD = """ACCESSION: INVNT-Invented-IN000001
 RECORD_TITLE: Inventol; GC-EI-TOF; MS; 2 TMS
 DATE: 2026.01.01
 AUTHORS: Nobody A, Invented Laboratory
@@ -69,7 +69,7 @@ def with_line(line: str) -> SpectrumRecord:
 
 def test_every_field_lands_where_it_belongs() -> None:
     record = parse(RECORD)
-    assert record.accession == "MSBNK-Invented-IN000001"
+    assert record.accession == "INVNT-Invented-IN000001"
     assert record.title == "Inventol; GC-EI-TOF; MS; 2 TMS"
     assert (record.licence, record.authors) == ("CC BY", "Nobody A, Invented Laboratory")
     assert record.comments == ("first comment", "second comment")

@@ -1,0 +1,1 @@
+"""Tests mirror the package: tests/<room>/test_<module>.py."""
