@@ -54,7 +54,7 @@ class IsomerCount:
 
 
 @lru_cache(maxsize=4096)
-def count_isomers(smiles: str, limit: int = 100) -> IsomerCount:
+def count_isomers(smiles: str, limit: int = 50) -> IsomerCount:
     """Positional and chain isomers of a compound that keep its rings and functional groups.
 
     Parameters
@@ -232,36 +232,40 @@ def _side(mol: Mol, start: int, without: int) -> set[int]:
     return side
 
 
-def _kind(atom: Any) -> str:
-    """What a functional group sees of a neighbour: aromatic, unsaturated or saturated carbon, or the element."""
-    if atom.GetAtomicNum() != 6:
-        return str(atom.GetSymbol())
-    return "a" if atom.GetIsAromatic() else "s" if _is_saturated(atom) else "u"
-
-
 def _signature(mol: Mol) -> tuple[tuple[object, ...], ...]:
-    """Functional groups of a structure, each with its kind: heteroatoms, carbons that hold several or by multiple bonds, C=C."""
+    """Functional groups of a structure, each with its kind: heteroatoms, carbons that hold several or by multiple bonds, C=C.
+
+    What a group sees of a neighbour is aromatic (a), unsaturated (u) or saturated (s) carbon, or the element.
+    """
+    atoms = list(mol.GetAtoms())
+    bonds = [(b.GetBeginAtomIdx(), b.GetEndAtomIdx(), b.GetBondTypeAsDouble(), b.IsInRing()) for b in mol.GetBonds()]
+    near: list[list[tuple[float, int]]] = [[] for _ in atoms]
+    kinds = ["s" if atom.GetAtomicNum() == 6 else str(atom.GetSymbol()) for atom in atoms]
+    for begin, end, order, _ in bonds:
+        near[begin].append((order, end))
+        near[end].append((order, begin))
+    carbons = [index for index, kind in enumerate(kinds) if kind == "s"]
+    for index in carbons:
+        if any(order != 1.0 for order, _ in near[index]):
+            kinds[index] = "a" if atoms[index].GetIsAromatic() else "u"
     groups: list[tuple[object, ...]] = []
-    for atom in mol.GetAtoms():
-        around = sorted((bond.GetBondTypeAsDouble(), _kind(bond.GetOtherAtom(atom))) for bond in atom.GetBonds())
-        if atom.GetAtomicNum() != 6:
-            groups.append((atom.GetSymbol(), atom.GetTotalNumHs(), atom.GetFormalCharge(), tuple(around)))
-        elif not atom.GetIsAromatic():
-            hetero = [entry for entry in around if entry[1] not in ("a", "u", "s")]
-            if any(order > 1 for order, _ in hetero):
-                is_end = len(hetero) == 1 and atom.GetTotalNumHs() > 0
-                beside = [kind for _, kind in around if kind in ("a", "u")]
-                groups.append(("C", is_end, tuple(hetero), tuple(beside)))
-            elif len(hetero) > 1 and any(kind not in _HALOGENS for _, kind in hetero):  # acetals and their like
-                groups.append(("C", tuple(kind for _, kind in hetero)))
-    for bond in mol.GetBonds():
-        ends = (bond.GetBeginAtom(), bond.GetEndAtom())
-        if bond.GetBondTypeAsDouble() in (2.0, 3.0) and all(end.GetAtomicNum() == 6 for end in ends):
-            beside = sorted(
-                _kind(near)
-                for end, other in (ends, ends[::-1])
-                for near in end.GetNeighbors()
-                if near.GetIdx() != other.GetIdx() and _kind(near) != "s"
-            )
-            groups.append(("CC", bond.GetBondTypeAsDouble(), bond.IsInRing(), tuple(beside)))
+    for index, kind in enumerate(kinds):
+        if kind not in ("a", "u", "s"):
+            atom, around = atoms[index], sorted((order, kinds[other]) for order, other in near[index])
+            groups.append((kind, atom.GetTotalNumHs(), atom.GetFormalCharge(), tuple(around)))
+    for index in carbons:
+        around = sorted((order, kinds[other]) for order, other in near[index])
+        hetero = tuple(entry for entry in around if entry[1] not in ("a", "u", "s"))
+        if not hetero or kinds[index] == "a":
+            continue
+        if any(order > 1 for order, _ in hetero):
+            is_end = len(hetero) == 1 and atoms[index].GetTotalNumHs() > 0
+            groups.append(("C", is_end, hetero, tuple(kind for _, kind in around if kind in ("a", "u"))))
+        elif len(hetero) > 1 and any(kind not in _HALOGENS for _, kind in hetero):  # acetals and their like
+            groups.append(("C", hetero))
+    for begin, end, order, in_ring in bonds:
+        if order in (2.0, 3.0) and kinds[begin] == kinds[end] == "u":
+            ends = near[begin] + near[end]
+            beside = sorted(kinds[other] for _, other in ends if other not in (begin, end) and kinds[other] != "s")
+            groups.append(("CC", order, in_ring, tuple(beside)))
     return tuple(sorted(groups, key=repr))
