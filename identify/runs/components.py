@@ -13,7 +13,7 @@ and Stein 1999 (J Am Soc Mass Spectrom 10:770); non-negative least squares, Laws
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -22,6 +22,7 @@ from identify.runs.clusters import Cluster, cluster_ion_peaks
 from identify.runs.ion_peaks import correct_skew, estimate_skew, estimate_width, find_ion_peaks
 from identify.runs.kinds import find_kind
 from identify.runs.model import Component, IonMatrix, NoiseModel, Run
+from identify.runs.overload import RATIO_ERROR, Overload, find_overloads
 from identify.runs.shapes import Shape, fit_shapes
 from identify.runs.traces import build_ion_matrix, estimate_background, fit_noise
 
@@ -53,43 +54,100 @@ def find_components(run: Run, blank: Sequence[Component] = ()) -> tuple[Componen
     matrix = build_ion_matrix(run)
     background = estimate_background(matrix)
     noise = fit_noise(matrix, background)
-    signal = matrix.intensity - background
-    width = estimate_width(np.maximum(signal, 0.0), noise)
-    peaks = find_ion_peaks(np.maximum(signal, 0.0), background, noise, width)
+    signal = np.maximum(matrix.intensity - background, 0.0)
+    width = estimate_width(signal, noise)
+    overloads = find_overloads(signal, width)
+    residual, level = _without(overloads, signal, background, noise)
+    peaks = find_ion_peaks(residual, level, noise, width)
     skew = estimate_skew(peaks, matrix.mz, width)
     if skew:
         matrix = correct_skew(matrix, skew)
-        signal = matrix.intensity - background
-        peaks = find_ion_peaks(np.maximum(signal, 0.0), background, noise, width)
+        signal = np.maximum(matrix.intensity - background, 0.0)
+        overloads = find_overloads(signal, width)
+        residual, level = _without(overloads, signal, background, noise)
+        peaks = find_ion_peaks(residual, level, noise, width)
     clusters = cluster_ion_peaks(peaks, run.n_scans, width)
-    shapes = fit_shapes(clusters, signal, width)
-    ceiling = _detector_ceiling(matrix)
-    total = float(np.maximum(signal, 0.0).sum())
-    found = [
-        component
-        for place in range(len(clusters))
-        if (component := _extract(place, clusters, shapes, matrix, signal, background, noise, width, ceiling, total))
-    ]
+    stage = Stage(matrix, residual, level, noise, width, float(signal.sum()), _detector_ceiling(matrix))
+    shapes = fit_shapes(clusters, residual, width)
+    found = [c for place in range(len(clusters)) if (c := _extract(place, clusters, shapes, stage))]
+    found += [_from_overload(overload, stage) for overload in overloads]
+    found.sort(key=lambda component: component.time_s)
     return tuple(replace(c, number=n, **find_kind(c, found, blank)) for n, c in enumerate(found, start=1))
 
 
-def _extract(
-    place: int,
-    clusters: Sequence[Cluster],
-    shapes: Sequence[Shape],
-    matrix: IonMatrix,
-    signal: FloatArray,
-    background: FloatArray,
-    noise: NoiseModel,
-    width: float,
-    ceiling: float,
-    total: float,
-) -> Component | None:
-    shape = shapes[place]
+@dataclass(frozen=True, slots=True, eq=False)
+class Stage:
+    """What every extraction needs.
+
+    Attributes
+    ----------
+    signal : ndarray of shape (n_scans, n_ions)
+        Above background and without overloaded peaks.
+    level : ndarray of shape (n_scans, n_ions)
+        What else was in a reading, as the intensity whose noise it carries.
+    total : float
+        All signal above background, summed over scans and ions.
+    """
+
+    matrix: IonMatrix
+    signal: FloatArray
+    level: FloatArray
+    noise: NoiseModel
+    width: float
+    total: float
+    ceiling: float
+
+    def time_s(self, scan: float) -> float:
+        """Time at a scan position between scans."""
+        return float(np.interp(scan, np.arange(self.matrix.time_s.size), self.matrix.time_s))
+
+
+def _without(
+    overloads: Sequence[Overload], signal: FloatArray, background: FloatArray, noise: NoiseModel
+) -> tuple[FloatArray, FloatArray]:
+    """Signal without the overloaded peaks, and the noise level with the uncertainty of taking them out."""
+    if not overloads:
+        return signal, background
+    rest, level = signal.copy(), background.astype(np.float64)
+    for overload in overloads:
+        rows = slice(overload.start, overload.start + overload.amount.shape[0])
+        rest[rows] = np.maximum(rest[rows] - overload.amount, 0.0)
+        level[rows] += overload.amount + (RATIO_ERROR * overload.amount) ** 2 / noise.per_count
+    return rest, level
+
+
+def _from_overload(overload: Overload, stage: Stage) -> Component:
+    spectrum = overload.spectrum
+    ions = np.nonzero(spectrum > max(stage.noise.smallest, 0.0005 * float(spectrum.max())))[0]
+    rows = slice(overload.first, overload.last + 1)
+    there = float((stage.signal[rows].sum() + overload.amount[: overload.last + 1 - overload.start].sum()))
+    mine = float(overload.amount[overload.first - overload.start : overload.last + 1 - overload.start].sum())
+    area = float(overload.amount.sum() * stage.matrix.scan_time_s)
+    spread = np.sqrt(stage.noise.sigma(spectrum[ions]) ** 2 + (RATIO_ERROR * spectrum[ions]) ** 2)
+    return Component(
+        number=0,
+        time_s=stage.time_s(overload.apex),
+        start_s=float(stage.matrix.time_s[overload.first]),
+        end_s=float(stage.matrix.time_s[overload.last]),
+        height=float(spectrum[ions].sum()),
+        area=area,
+        share_of_signal=min(1.0, area / (stage.total * stage.matrix.scan_time_s)),
+        signal_to_noise=float(spectrum[ions].sum() / np.sqrt(np.sum(spread**2))),
+        peaks=Peaks(stage.matrix.mz[ions].astype(np.float64), spectrum[ions]),
+        uncertainty=spread,
+        shape_quality=0.0,
+        purity=min(1.0, mine / there) if there > 0 else 0.0,
+        is_saturated=True,
+        note="overloaded: its ion ratios drift over the peak",
+    )
+
+
+def _extract(place: int, clusters: Sequence[Cluster], shapes: Sequence[Shape], stage: Stage) -> Component | None:
+    shape, matrix, noise = shapes[place], stage.matrix, stage.noise
     start, end = shape.first, shape.first + shape.values.size
-    design = _design(place, clusters, shapes, start, end, width)
-    window = signal[start:end]
-    sigma = noise.sigma(np.maximum(window, 0.0) + background[start:end])
+    design = _design(place, clusters, shapes, start, end, stage.width)
+    window = stage.signal[start:end]
+    sigma = noise.sigma(window + stage.level[start:end])
     amplitude, spread, explained = _solve(design, window, sigma)
     ions = np.nonzero((amplitude >= MIN_AMPLITUDE_SIGMA * spread) & (amplitude >= noise.smallest))[0]
     if ions.size == 0:
@@ -99,23 +157,22 @@ def _extract(
     if snr < MIN_COMPONENT_SNR:
         return None
     area = float(own.sum() * shape.values.sum() * matrix.scan_time_s)
-    apex_time = float(np.interp(clusters[place].apex, np.arange(matrix.time_s.size), matrix.time_s))
     top = round(clusters[place].apex)
     raw = matrix.intensity[max(0, top - 1) : top + 2][:, ions]
     return Component(
         number=0,
-        time_s=apex_time,
+        time_s=stage.time_s(clusters[place].apex),
         start_s=float(matrix.time_s[start]),
         end_s=float(matrix.time_s[min(end, matrix.time_s.size) - 1]),
         height=float(own.sum()),
         area=area,
-        share_of_signal=min(1.0, area / (total * matrix.scan_time_s)) if total > 0 else 0.0,
+        share_of_signal=min(1.0, area / (stage.total * matrix.scan_time_s)) if stage.total > 0 else 0.0,
         signal_to_noise=snr,
         peaks=Peaks(matrix.mz[ions].astype(np.float64), own),
         uncertainty=spread[ions],
         shape_quality=float(np.average(explained[ions], weights=own)),
         purity=_purity(window, own, ions, shape),
-        is_saturated=bool((raw >= ceiling).any()),
+        is_saturated=bool((raw >= stage.ceiling).any()),
     )
 
 

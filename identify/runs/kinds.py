@@ -63,7 +63,7 @@ def find_kind(component: Component, everything: Sequence[Component], blank: Sequ
         and (component.area >= SOLVENT_TIMES_MEDIAN * float(np.median(areas)))
     ):
         return Kind(kind=ComponentKind.SOLVENT, note="largest peak of the run, at its beginning")
-    return Kind(kind=ComponentKind.COMPOUND, note="")
+    return Kind(kind=ComponentKind.COMPOUND, note=component.note)
 
 
 def _is_same(one: Component, other: Component) -> bool:
