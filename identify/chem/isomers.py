@@ -28,6 +28,8 @@ MAX_LIMIT: Final = 2000
 MAX_HEAVY_ATOMS: Final = 60
 """Larger compounds are not enumerated: the answer is "at least 1"."""
 
+TRIES_PER_ISOMER: Final = 6
+"""Structures looked at per isomer of the limit (and 100 more): most moves of a crowded molecule change its groups."""
 _HALOGENS: Final = frozenset({"F", "Cl", "Br", "I"})
 _MARK: Final = 99
 """Isotope number that marks where a detached group was bound."""
@@ -67,7 +69,7 @@ def count_isomers(smiles: str, limit: int = 50) -> IsomerCount:
     Returns
     -------
     IsomerCount
-        Complete, or "at least `limit`"; "at least 1" for salts, mixtures and more than `MAX_HEAVY_ATOMS` atoms.
+        Complete, or "at least" as many as were found within `limit` and `TRIES_PER_ISOMER`; "at least 1" for salts, mixtures and more than `MAX_HEAVY_ATOMS` atoms.
 
     Raises
     ------
@@ -108,6 +110,8 @@ def count_isomers(smiles: str, limit: int = 50) -> IsomerCount:
             if smiles_found in tried:
                 continue
             tried.add(smiles_found)
+            if len(tried) > 100 + TRIES_PER_ISOMER * limit:
+                return IsomerCount(tuple(queue), False)
             with rdBase.BlockLogs():
                 found = Chem.MolFromSmiles(smiles_found)
             if found is None or _signature(found) != wanted or not _is_new(smiles_found, blocks):
