@@ -13,7 +13,8 @@ from itertools import product
 from types import MappingProxyType
 from typing import Final
 
-from identify.chem.formula import Formula
+from identify.chem.elements import MASS_NUMBER
+from identify.chem.formula import MAX_NOMINAL_MASS, Formula
 
 GROUPS: Final[Mapping[str, tuple[tuple[str, int], ...]]] = MappingProxyType(
     {
@@ -237,12 +238,8 @@ def formula_as_measured(parent: Formula, derivative: Derivative) -> Formula | No
     Returns
     -------
     Formula or None
-        None when a number of groups is unknown, or the compound has too few hydrogens or oxygens for the groups.
-
-    Raises
-    ------
-    FormulaError
-        If the result is heavier than a formula may be.
+        None when a number of groups is unknown, the compound has too few hydrogens or oxygens for the groups,
+        or the result is heavier than a formula may be.
 
     Examples
     --------
@@ -263,7 +260,8 @@ def formula_as_measured(parent: Formula, derivative: Derivative) -> Formula | No
         measured[symbol] = measured.get(symbol, 0) + count
     if any(count < 0 for count in measured.values()):
         return None
-    return Formula.from_counts(measured, parent.charge)
+    mass = sum(MASS_NUMBER[symbol] * count for symbol, count in measured.items())
+    return Formula.from_counts(measured, parent.charge) if mass <= MAX_NOMINAL_MASS else None
 
 
 def possible_formulas(parent: Formula, derivative: Derivative, max_groups: int) -> tuple[tuple[int, Formula], ...]:
@@ -281,11 +279,6 @@ def possible_formulas(parent: Formula, derivative: Derivative, max_groups: int) 
     tuple of (int, Formula)
         Total of the unknown groups (each at least 1) and composition, by rising total. For a known derivative one pair with
         total 0; empty when nothing fits or more than two numbers are unknown.
-
-    Raises
-    ------
-    FormulaError
-        If a result is heavier than a formula may be.
 
     Examples
     --------

@@ -69,7 +69,8 @@ def count_isomers(smiles: str, limit: int = 50) -> IsomerCount:
     Returns
     -------
     IsomerCount
-        Complete, or "at least" as many as were found within `limit` and `TRIES_PER_ISOMER`; "at least 1" for salts, mixtures and more than `MAX_HEAVY_ATOMS` atoms.
+        Complete, or "at least" as many as were found within `limit` and `TRIES_PER_ISOMER`; "at least 1" for salts, mixtures
+        and more than `MAX_HEAVY_ATOMS` atoms.
 
     Raises
     ------

@@ -14,7 +14,7 @@ from identify.chem.classes import compound_classes
 from identify.chem.elements import MASS_NUMBER, NUCLIDES
 from identify.chem.formula import Formula
 from identify.chem.molecules import MAX_SMILES, checked, plain_mol, read_mol
-from identify.errors import StructureError, quote
+from identify.errors import FormulaError, StructureError, quote
 
 __all__ = [
     "active_hydrogens",
@@ -167,9 +167,7 @@ def formula_of(smiles: str) -> Formula:
     Raises
     ------
     StructureError
-        For a SMILES that cannot be read, or an isotope that the table does not hold.
-    FormulaError
-        For an element that the table does not hold, or a molecule that is too heavy.
+        For a SMILES that cannot be read, an element or isotope that the table does not hold, or a molecule that is too heavy.
 
     Examples
     --------
@@ -187,7 +185,10 @@ def formula_of(smiles: str) -> Formula:
                 raise StructureError("structure", found=f"isotope {symbol} in {quote(smiles)}", expected="a nuclide")
         counts += [(symbol, 1), ("H", int(atom.GetTotalNumHs()))]
         charge += int(atom.GetFormalCharge())
-    return Formula.from_counts(counts, charge)
+    try:
+        return Formula.from_counts(counts, charge)
+    except FormulaError as error:
+        raise StructureError(f"formula of {quote(smiles)}", found=error.found, expected=error.expected) from None
 
 
 @lru_cache(maxsize=1024)

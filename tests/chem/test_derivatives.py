@@ -169,6 +169,9 @@ def test_groups_that_do_not_fit_give_no_formula() -> None:
     assert formula_as_measured(parse_formula("CH4"), Derivative((("TMS", 5),))) is None
     assert formula_as_measured(parse_formula("C6H6"), Derivative((("MEOX", 1),))) is None
     assert formula_as_measured(parse_formula("C6D6"), Derivative((("TMS", 1),))) is None
+    assert (
+        formula_as_measured(parse_formula("C820H150"), Derivative((("TMS", 1),))) is None
+    )  # heavier than a formula may be
 
 
 def test_unknown_number_gives_no_single_formula_but_bounded_possible_ones() -> None:

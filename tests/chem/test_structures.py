@@ -22,7 +22,7 @@ from identify.chem.structures import (
     smiles_of_inchi,
     structure_similarity,
 )
-from identify.errors import FormulaError, StructureError
+from identify.errors import StructureError
 
 CAFFEINE = "CN1C=NC2=C1C(=O)N(C(=O)N2C)C"
 
@@ -116,7 +116,9 @@ def test_importing_the_module_does_not_import_rdkit() -> None:
 def test_unknown_isotope_and_too_heavy_molecule_are_refused() -> None:
     with pytest.raises(StructureError, match=r"isotope \[20C\]"):
         formula_of("[20CH4]")
-    with pytest.raises(FormulaError, match="10000 Da"):
+    with pytest.raises(StructureError, match="element 'Pu'"):
+        formula_of("C[Pu]")
+    with pytest.raises(StructureError, match="at most 10000 Da"):
         formula_of("Br" + "C(Br)(Br)" * 90 + "Br")
 
 
