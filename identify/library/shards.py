@@ -148,20 +148,23 @@ def open_shards(folder: Path) -> tuple[Shard, ...]:
     path = folder / LIST_NAME
     try:
         with path.open("rb") as stream:
-            listed = json.loads(stream.read(_MAX_LIST_BYTES))
-        if listed["format"] != FORMAT:
-            raise ValueError(f"format {listed['format']}")
-        weighting = Weighting(*map(float, listed["weighting"]))
-        shards = tuple(
-            Shard(folder / Path(str(name)).name, int(count), str(listed["token"]), weighting)
-            for name, count in listed["shards"]
-        )
-    except (OSError, ValueError, KeyError, TypeError) as error:
-        raise IndexDamaged("list of shards", where=str(path), found=str(error), expected=f"format {FORMAT}") from None
+            version, shards = _parse_list(json.loads(stream.read(_MAX_LIST_BYTES)), folder)
+    except (OSError, ValueError, KeyError, TypeError, UsageError) as error:
+        raise IndexDamaged("list of shards", where=str(path), found=str(error), expected="a whole list") from None
+    if version != FORMAT:
+        raise IndexDamaged("list of shards", where=str(path), found=f"format {version}", expected=f"format {FORMAT}")
     for shard in shards:
         if not shard.path.is_file():
             raise IndexDamaged("shard", where=str(shard.path), found="no file", expected="the file the list names")
     return shards
+
+
+def _parse_list(listed: Any, folder: Path) -> tuple[int, tuple[Shard, ...]]:
+    weighting = Weighting(*map(float, listed["weighting"]))
+    token = str(listed["token"])
+    # The name alone: a list cannot lead out of its folder.
+    shards = (Shard(folder / Path(str(name)).name, int(n), token, weighting) for name, n in listed["shards"])
+    return int(listed["format"]), tuple(shards)
 
 
 def search_shards(
