@@ -41,6 +41,8 @@ BLEED_TOLERANCE = 0.35
 """Relative tolerance of an isotope ratio in weak bleed peaks (judgement: counting noise of a peak at 1 % of the base)."""
 MAX_BLEED_SHARE = 0.5
 """A spectrum that is mostly siloxane ions is a siloxane, not bleed on something else."""
+ROUNDING_STEPS = 3.0
+"""Intensities below three steps of the record's own rounding are too coarse to show a noise floor."""
 MAX_FLOOR_FRACTION = 0.01
 """The noise floor never takes a peak above 1 % of the base peak: a weak molecular ion is worth more than a tidy list."""
 
@@ -231,8 +233,9 @@ def drop_noise(mz: FloatArray, intensity: FloatArray, settings: CleaningSettings
     """Peaks above the noise floor that the spectrum itself shows.
 
     A floor is seen when at least 40 peaks lie within a factor of 4 of each other at the bottom (lower half of the list,
-    10th to 90th percentile): fragments fall off over decades, noise does not. The floor is then twice their median, at
-    most 1 % of the base peak, at least `noise_fraction` of it.
+    10th to 90th percentile): fragments fall off over decades, noise does not. Intensities rounded to a coarse step (many
+    records hold 1, 2, 3 … of 999) look alike for another reason and show no floor. The floor is then twice the median of
+    those peaks, at most 1 % of the base peak, at least `noise_fraction` of it.
     """
     base = float(intensity.max())
     floor = settings.noise_fraction * base
@@ -240,7 +243,8 @@ def drop_noise(mz: FloatArray, intensity: FloatArray, settings: CleaningSettings
     bottom = np.sort(intensity)[: intensity.size // 2]
     if bottom.size >= 40:
         low, median, high = np.percentile(bottom, (10, 50, 90))
-        if high <= 4.0 * low:
+        steps = np.diff(np.unique(intensity))
+        if high <= 4.0 * low and low > ROUNDING_STEPS * steps.min(initial=np.inf):
             floor = max(floor, min(2.0 * float(median), MAX_FLOOR_FRACTION * base))
             reason = f"below the noise floor of this spectrum, {floor / base:.2%} of the base peak"
     return StepResult(intensity >= floor, reason)

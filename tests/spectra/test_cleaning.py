@@ -86,6 +86,11 @@ def test_noise_floor_is_found_and_never_above_one_percent() -> None:
     assert len(removed(spectrum, "noise floor")) > 100
 
 
+def test_intensities_rounded_to_a_coarse_step_show_no_floor() -> None:
+    rounded = {float(mz): float(1 + mz % 3) for mz in range(60, 160)} | {43.0: 999.0, 58.0: 400.0}
+    assert removed(clean(rounded), "noise floor") == []
+
+
 def test_reference_cleaning_keeps_what_was_published() -> None:
     peaks = {28: 40.0, 32: 10.0, 57: 100.0, 400.0: 0.001} | BLEED
     assert len(clean(peaks, REFERENCE_CLEANING).nominal) == len(peaks)
