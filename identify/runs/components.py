@@ -21,7 +21,7 @@ from identify.records import FloatArray, Peaks
 from identify.runs.clusters import Cluster, cluster_ion_peaks
 from identify.runs.ion_peaks import correct_skew, estimate_skew, estimate_width, find_ion_peaks
 from identify.runs.kinds import find_kind
-from identify.runs.model import Component, IonMatrix, NoiseModel, Run
+from identify.runs.model import Component, Decomposition, IonMatrix, NoiseModel, Run
 from identify.runs.overload import RATIO_ERROR, Overload, find_overloads
 from identify.runs.shapes import Shape, fit_shapes
 from identify.runs.traces import build_ion_matrix, estimate_background, fit_noise
@@ -30,10 +30,20 @@ NEIGHBOUR_WIDTHS = 3.5
 MIN_AMPLITUDE_SIGMA = 3.0
 MIN_COMPONENT_SNR = 8.0
 MAX_NEIGHBOURS = 8
+SIGNIFICANT_SIGMA = 3.0
+FIT_ERROR = 0.1
+"""A reading counts as unexplained when it exceeds the fit by three standard deviations and this share of itself: shapes differ
+that much at the flanks of strong peaks."""
+MIN_HIDDEN_SHARE = 0.05
+"""A component hidden in an overloaded peak is reported from this share of its height (petrol run: ion chemistry in the source
+makes up to 4 %)."""
+KIN_SHARE, KIN_SIGNAL = 0.25, 0.75
+"""Up to this share of its height when so much of the signal lies within one m/z unit of the overloaded peak's own ions: gain and
+loss of hydrogen in a crowded ion source."""
 
 
 def find_components(run: Run, blank: Sequence[Component] = ()) -> tuple[Component, ...]:
-    """Everything that eluted, in the order of time.
+    """Everything that eluted, in the order of time: the components of `decompose`.
 
     Parameters
     ----------
@@ -45,6 +55,27 @@ def find_components(run: Run, blank: Sequence[Component] = ()) -> tuple[Componen
     -------
     tuple of Component
         May be empty.
+
+    Raises
+    ------
+    FormatError
+        If the run holds no points, or too many cells.
+    """
+    return decompose(run, blank).components
+
+
+def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
+    """The run as components, background and what belongs to neither.
+
+    Parameters
+    ----------
+    run : Run
+    blank : sequence of Component
+        Components of a blank run; what elutes there too is marked.
+
+    Returns
+    -------
+    Decomposition
 
     Raises
     ------
@@ -67,12 +98,30 @@ def find_components(run: Run, blank: Sequence[Component] = ()) -> tuple[Componen
         residual, level = _without(overloads, signal, background, noise)
         peaks = find_ion_peaks(residual, level, noise, width)
     clusters = cluster_ion_peaks(peaks, run.n_scans, width)
-    stage = Stage(matrix, residual, level, noise, width, float(signal.sum()), _detector_ceiling(matrix))
+    significant = signal * (signal >= SIGNIFICANT_SIGMA * noise.sigma(background + signal))
+    stage = Stage(matrix, residual, level, noise, width, float(significant.sum()), _detector_ceiling(matrix))
     shapes = fit_shapes(clusters, residual, width)
-    found = [c for place in range(len(clusters)) if (c := _extract(place, clusters, shapes, stage))]
-    found += [_from_overload(overload, stage) for overload in overloads]
+    extracted = [_extract(place, clusters, shapes, stage) for place in range(len(clusters))]
+    large = [_from_overload(overload, stage) for overload in overloads]
+    unassigned = _unassigned(extracted, shapes, stage)
+    found = [c for c in extracted if c and not any(_is_drift(c, whole) for whole in large)] + large
     found.sort(key=lambda component: component.time_s)
-    return tuple(replace(c, number=n, **find_kind(c, found, blank)) for n, c in enumerate(found, start=1))
+    components = tuple(replace(c, number=n, **find_kind(c, found, blank)) for n, c in enumerate(found, start=1))
+    total = matrix.intensity.sum(axis=1, dtype=np.float64)
+    return Decomposition(components, matrix.time_s, total, background.sum(axis=1), unassigned, width, skew)
+
+
+def _unassigned(extracted: Sequence[Component | None], shapes: Sequence[Shape], stage: Stage) -> FloatArray:
+    """Signal of each scan above its noise that no component explains, shape ``(n_scans,)``."""
+    rest = stage.signal.copy()
+    for component, shape in zip(extracted, shapes, strict=True):
+        if component:
+            columns = np.searchsorted(stage.matrix.mz, component.peaks.mz.astype(np.int64))
+            rows = slice(shape.first, shape.first + shape.values.size)
+            rest[rows, columns] -= np.outer(shape.values, component.peaks.intensity)
+    limit = SIGNIFICANT_SIGMA * stage.noise.sigma(stage.level + stage.signal)
+    limit = np.maximum(limit, FIT_ERROR * stage.signal)
+    return np.asarray(np.where(rest > limit, rest, 0.0).sum(axis=1))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -120,7 +169,7 @@ def _from_overload(overload: Overload, stage: Stage) -> Component:
     spectrum = overload.spectrum
     ions = np.nonzero(spectrum > max(stage.noise.smallest, 0.0005 * float(spectrum.max())))[0]
     rows = slice(overload.first, overload.last + 1)
-    there = float((stage.signal[rows].sum() + overload.amount[: overload.last + 1 - overload.start].sum()))
+    there = float(stage.signal[rows].sum() + overload.amount[: overload.last + 1 - overload.start].sum())
     mine = float(overload.amount[overload.first - overload.start : overload.last + 1 - overload.start].sum())
     area = float(overload.amount.sum() * stage.matrix.scan_time_s)
     spread = np.sqrt(stage.noise.sigma(spectrum[ions]) ** 2 + (RATIO_ERROR * spectrum[ions]) ** 2)
@@ -140,6 +189,17 @@ def _from_overload(overload: Overload, stage: Stage) -> Component:
         is_saturated=True,
         note="overloaded: its ion ratios drift over the peak",
     )
+
+
+def _is_drift(component: Component, overloaded: Component) -> bool:
+    """Whether a component within an overloaded stretch is too small to be told from the drift of its ions."""
+    if not overloaded.start_s <= component.time_s <= overloaded.end_s:
+        return False
+    if component.height < MIN_HIDDEN_SHARE * overloaded.height:
+        return True
+    near = np.abs(component.peaks.mz[:, None] - overloaded.peaks.mz[None, :]).min(axis=1) <= 1.0
+    kin = float(component.peaks.intensity[near].sum() / component.peaks.intensity.sum())
+    return component.height < KIN_SHARE * overloaded.height and kin >= KIN_SIGNAL
 
 
 def _extract(place: int, clusters: Sequence[Cluster], shapes: Sequence[Shape], stage: Stage) -> Component | None:

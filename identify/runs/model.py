@@ -165,3 +165,34 @@ class Component:
     is_saturated: bool
     kind: ComponentKind = ComponentKind.COMPOUND
     note: str = ""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Decomposition:
+    """A run taken apart.
+
+    Parameters
+    ----------
+    components : tuple of Component
+        In the order of elution.
+    time_s : ndarray of shape (n_scans,)
+    total, background, unassigned : ndarray of shape (n_scans,)
+        Per scan: all intensity, slow background, and signal above background and noise that belongs to no component.
+    width_scans : float
+        Typical full width at half height of a peak.
+    skew_scans_per_mz : float
+        Scan skew that was corrected; 0 when the run shows none.
+    """
+
+    components: tuple[Component, ...]
+    time_s: FloatArray
+    total: FloatArray
+    background: FloatArray
+    unassigned: FloatArray
+    width_scans: float
+    skew_scans_per_mz: float
+
+    @property
+    def scan_time_s(self) -> float:
+        """Median time from scan to scan, in seconds."""
+        return float(np.median(np.diff(self.time_s)))

@@ -144,7 +144,7 @@ def _measure(signal: FloatArray, first: int, last: int, width: float) -> Overloa
 def _guides(window: FloatArray, mean: FloatArray) -> NDArray[np.int64]:
     """The strongest ions of the stretch: they are its own beyond doubt."""
     order = np.argsort(-mean, kind="stable")[:GUIDE_IONS]
-    return order[mean[order] >= GUIDE_SHARE * mean.max()]
+    return np.asarray(order[mean[order] >= GUIDE_SHARE * mean.max()], dtype=np.int64)
 
 
 def _falling_tail(trace: FloatArray, start_value: float) -> FloatArray:
