@@ -36,7 +36,8 @@ _TERMS = {
     "MS:1002894": "inchikey",
     "MS:1002599": "splash",
 }
-_STRUCTURE = frozenset({_COUNT_ACCESSION, "MS:1003072", "MS:1003237"})
+_MASS_ACCESSION, _FORMULA_ACCESSION = "MS:1000224", "MS:1000866"
+_STRUCTURE = frozenset({_COUNT_ACCESSION, "MS:1003072", "MS:1003065", "MS:1003237"})
 _Attribute = tuple[str, str, str, str]
 
 
@@ -165,8 +166,11 @@ def _parse_peaks(
 def _pairs(attributes: list[_Attribute]) -> Iterator[tuple[str, str]]:
     names = {group: value for group, accession, _, value in attributes if accession == _NAME_ACCESSION}
     units = {group: value for group, accession, _, value in attributes if group and accession == _UNIT_ACCESSION}
+    has_formula = any(accession == _FORMULA_ACCESSION for _, accession, _, _ in attributes)
     for group, accession, name, value in attributes:
         if accession in _STRUCTURE or accession in (_NAME_ACCESSION, _UNIT_ACCESSION):
+            continue
+        if accession == _MASS_ACCESSION and has_formula:
             continue
         if accession == _VALUE_ACCESSION:
             yield names.get(group, "other attribute"), value

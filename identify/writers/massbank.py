@@ -7,11 +7,10 @@ from __future__ import annotations
 
 import re
 
-from identify.chem.formula import parse_formula
-from identify.errors import FormatError, IonwitnessError, quote
+from identify.errors import FormatError, quote
 from identify.records import SpectrumRecord
 from identify.spectra.splash import compute_splash
-from identify.writers.named_values import number_text, one_line
+from identify.writers.named_values import exact_mass_text, number_text, one_line
 
 _ACCESSION = re.compile(r"[A-Za-z0-9]+-[A-Za-z0-9_]{1,32}-[A-Z0-9_]{1,64}")
 _CONTRIBUTOR = re.compile(r"[A-Za-z0-9_]{1,32}")
@@ -115,7 +114,7 @@ def _collect(record: SpectrumRecord, date: str, contributor: str) -> dict[str, l
     values["COMMENT"] = comments + values["COMMENT"]
     values["DATE"] = values["DATE"] or [date]
     values["CH$COMPOUND_CLASS"] = values["CH$COMPOUND_CLASS"] or [NOTHING]
-    values["CH$EXACT_MASS"] = values["CH$EXACT_MASS"] or [_exact_mass(identity.formula)]
+    values["CH$EXACT_MASS"] = values["CH$EXACT_MASS"] or [exact_mass_text(identity.formula)]
     return {tag: [text for text in map(one_line, texts) if text] for tag, texts in values.items()}
 
 
@@ -147,13 +146,6 @@ def _chromatography(record: SpectrumRecord) -> list[str]:
     if retention.time_s is not None:
         lines.append(f"RETENTION_TIME {number_text(retention.time_s)} sec")
     return lines
-
-
-def _exact_mass(formula: str) -> str:
-    try:
-        return f"{parse_formula(formula).monoisotopic_mass:.5f}" if formula else ""
-    except IonwitnessError:
-        return ""
 
 
 def _find_faults(record: SpectrumRecord, values: dict[str, list[str]]) -> list[str]:

@@ -1,13 +1,14 @@
 """Spectrum records → mzSpecLib 1.0 text (HUPO-PSI; standards 5.5 of the project's reference notes).
 
-The format takes spectra for second-level ones unless told otherwise, so level 1 and the ionization are stated with each. Its
-metadata rules ask for a precursor m/z, which an electron-ionization spectrum does not have: none is written.
+The format takes spectra for second-level ones unless told otherwise, so level 1 and the ionization are stated with each. A
+precursor m/z and a charge of the analyte, which its rules mention (as MAY and SHOULD in the validator of the `mzspeclib`
+package), are not written: an electron-ionization spectrum has no precursor, and the analyte is the neutral molecule.
 """
 
 from __future__ import annotations
 
 from identify.records import SpectrumRecord
-from identify.writers.named_values import display_name, named_values, number_text, one_line
+from identify.writers.named_values import display_name, exact_mass_text, named_values, number_text, one_line
 
 _SPECTRUM_TERMS = {"SPLASH": "MS:1002599|splash key"}
 _ANALYTE_TERMS = {
@@ -56,6 +57,7 @@ def render_mzspeclib(record: SpectrumRecord, number: int = 1) -> str:
         f"MS:1003059|number of peaks={record.mz.size}",
         "MS:1003072|spectrum origin type=MS:1003073|observed spectrum",
     ]
+    lines.append("MS:1003065|spectrum aggregation type=MS:1003066|singleton spectrum")
     analyte: list[str] = []
     group = 0
     for name, value in named_values(record):
@@ -69,6 +71,8 @@ def render_mzspeclib(record: SpectrumRecord, number: int = 1) -> str:
             lines.append(f"{_SPECTRUM_TERMS[name]}={value}")
         elif name in _ANALYTE_TERMS:
             analyte.append(f"{_ANALYTE_TERMS[name]}={value}")
+            mass = exact_mass_text(value) if name == "Formula" else ""
+            analyte += [f"MS:1000224|molecular mass={mass}"] * bool(mass)
         else:
             group += 1
             target = analyte if name in _ANALYTE_NAMES else lines

@@ -8,6 +8,8 @@ from __future__ import annotations
 
 import numpy as np
 
+from identify.chem.formula import parse_formula
+from identify.errors import FormulaError
 from identify.records import SpectrumRecord
 
 _INDEX_NAMES = {"kovats": "Kovats index", "linear": "Linear index", "lee": "Lee index"}
@@ -51,6 +53,20 @@ def field_name(text: str) -> str:
 def display_name(record: SpectrumRecord) -> str:
     """Name of the compound, else the title, else the accession; ``not named`` without any."""
     return one_line(record.identity.name or record.title or record.accession) or "not named"
+
+
+def exact_mass_text(formula: str) -> str:
+    """Monoisotopic mass of a formula in Da with five decimals; empty where it cannot be read.
+
+    Examples
+    --------
+    >>> exact_mass_text("C5H12O"), exact_mass_text("?")
+    ('88.08882', '')
+    """
+    try:
+        return f"{parse_formula(formula).monoisotopic_mass:.5f}" if formula else ""
+    except FormulaError:
+        return ""
 
 
 def named_values(record: SpectrumRecord) -> list[tuple[str, str]]:

@@ -55,7 +55,16 @@ def test_key_does_not_depend_on_peak_order(order: list[int]) -> None:
 
 @pytest.mark.parametrize(
     ("mz", "intensity"),
-    [([], []), ([43], [1, 2]), ([43], [0]), ([43], [-1]), ([-43], [1]), ([np.nan], [1]), ([43], [np.inf]), ([1e12], [1])],
+    [
+        ([], []),
+        ([43], [1, 2]),
+        ([43], [0]),
+        ([43], [-1]),
+        ([-43], [1]),
+        ([np.nan], [1]),
+        ([43], [np.inf]),
+        ([1e12], [1]),
+    ],
 )
 def test_peaks_without_a_key_are_refused(mz: list[float], intensity: list[float]) -> None:
     with pytest.raises(SpectrumError):

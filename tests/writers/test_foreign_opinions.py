@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import io
 import socket
 from pathlib import Path
@@ -38,7 +39,9 @@ def test_the_validator_of_mzspeclib_finds_no_breach_of_a_must_rule(tmp_path: Pat
     from mzspeclib.validate.level import RequirementLevel
 
     path = tmp_path / "a.mzSpecLib.txt"
-    records = [build_record(number) for number in (1, 2, 3)]
+    # Plain letters only: its index counts letters where it needs bytes, and then looks in the wrong place.
+    plain = dataclasses.replace(build_record().identity, name="Inventol")
+    records = [build_record(number, title="Inventol; GC-EI-TOF; MS", identity=plain) for number in (1, 2, 3)]
     write_spectra(path, records, "mzspeclib")
     library = SpectrumLibrary(filename=str(path))
     assert len(library) == 3
@@ -50,7 +53,8 @@ def test_the_validator_of_mzspeclib_finds_no_breach_of_a_must_rule(tmp_path: Pat
     missed = {item.message.split(" failed to validate")[0] for item in chain.error_log}
     assert missed <= {"Spectrum_has_precursor_charge", "Spectrum_has_precursor_mz", "Analyte_has_charge"}, missed
     found = library.get_spectrum(spectrum_number=2)
-    assert [peak[:2] for peak in found.peak_list] == list(zip(records[1].mz, records[1].intensity, strict=True))
+    wanted = np.column_stack([records[1].mz, records[1].intensity])
+    np.testing.assert_array_equal(np.array([peak[:2] for peak in found.peak_list], dtype=float), wanted)
 
 
 def test_the_jcamp_package_reads_the_same_peaks() -> None:
