@@ -30,6 +30,8 @@ NEIGHBOUR_WIDTHS = 3.5
 MIN_AMPLITUDE_SIGMA = 3.0
 MIN_COMPONENT_SNR = 8.0
 MAX_NEIGHBOURS = 8
+MAX_PASSES = 3
+REMNANT_IONS, REMNANT_PURITY = 4, 0.25
 SIGNIFICANT_SIGMA = 3.0
 FIT_ERROR = 0.1
 """A reading counts as unexplained when it exceeds the fit by three standard deviations and this share of itself: shapes differ
@@ -100,8 +102,7 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
     clusters = cluster_ion_peaks(peaks, run.n_scans, width)
     significant = signal * (signal >= SIGNIFICANT_SIGMA * noise.sigma(background + signal))
     stage = Stage(matrix, residual, level, noise, width, float(significant.sum()), _detector_ceiling(matrix))
-    shapes = fit_shapes(clusters, residual, width)
-    extracted = [_extract(place, clusters, shapes, stage) for place in range(len(clusters))]
+    clusters, shapes, extracted = _extract_all(clusters, stage)
     large = [_from_overload(overload, stage) for overload in overloads]
     unassigned = _unassigned(extracted, shapes, stage)
     found = [c for c in extracted if c and not any(_is_drift(c, whole) for whole in large)] + large
@@ -109,6 +110,26 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
     components = tuple(replace(c, number=n, **find_kind(c, found, blank)) for n, c in enumerate(found, start=1))
     total = matrix.intensity.sum(axis=1, dtype=np.float64)
     return Decomposition(components, matrix.time_s, total, background.sum(axis=1), unassigned, width, skew)
+
+
+def _extract_all(
+    clusters: Sequence[Cluster], stage: Stage
+) -> tuple[Sequence[Cluster], Sequence[Shape], list[Component | None]]:
+    """Clusters that make components, with shapes and components; what the others held goes to their neighbours."""
+    for _ in range(MAX_PASSES):
+        shapes = fit_shapes(clusters, stage.signal, stage.width)
+        extracted = [_extract(place, clusters, shapes, stage) for place in range(len(clusters))]
+        keep = [place for place, component in enumerate(extracted) if component and not _is_remnant(component)]
+        if len(keep) == len(clusters):
+            break
+        clusters = [clusters[place] for place in keep]
+        shapes, extracted = [shapes[place] for place in keep], [extracted[place] for place in keep]
+    return clusters, shapes, extracted
+
+
+def _is_remnant(component: Component) -> bool:
+    """Whether a component is likelier what its neighbours' shapes left over: few ions, a small part of what is there."""
+    return len(component.peaks) <= REMNANT_IONS and component.purity < REMNANT_PURITY
 
 
 def _unassigned(extracted: Sequence[Component | None], shapes: Sequence[Shape], stage: Stage) -> FloatArray:
@@ -244,9 +265,8 @@ def _design(
     reach = NEIGHBOUR_WIDTHS * width
     near = [i for i in range(len(clusters)) if i != place and abs(clusters[i].apex - apex) <= reach]
     near.sort(key=lambda i: abs(clusters[i].apex - apex))
-    columns = [shapes[place].on(start, end)]
-    columns += [column for i in near[:MAX_NEIGHBOURS] if (column := shapes[i].on(start, end)).max() > 0.02]
-    return np.column_stack([*columns, np.ones(end - start)])
+    columns = [column for i in near[:MAX_NEIGHBOURS] if (column := shapes[i].on(start, end)).max() > 0.02]
+    return np.column_stack([shapes[place].on(start, end), *columns, np.ones(end - start)])
 
 
 def _solve(design: FloatArray, window: FloatArray, sigma: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
@@ -258,7 +278,7 @@ def _solve(design: FloatArray, window: FloatArray, sigma: FloatArray) -> tuple[F
     covariance = np.linalg.pinv(design.T @ design)
     mean_variance = np.sum(design[:, :1] * sigma**2, axis=0) / design[:, 0].sum()
     spread = np.sqrt(max(covariance[0, 0], 0.0) * mean_variance)
-    for ion in np.nonzero(window.max(axis=0) >= 2.0 * sigma.min(axis=0))[0]:
+    for ion in np.nonzero((window.max(axis=0) >= 2.0 * sigma.min(axis=0)))[0]:
         trace = window[:, ion]
         solution, rest = nnls(design, trace)
         amplitude[ion] = solution[0]

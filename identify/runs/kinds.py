@@ -13,6 +13,8 @@ AIR_IONS = (14, 16, 17, 18, 20, 28, 29, 32, 36, 40, 44)
 BLEED_IONS = (73, 133, 147, 191, 207, 208, 209, 221, 267, 281, 282, 283, 295, 327, 341, 355, 356, 357, 405, 429)
 """Residual gas, and siloxanes of column and septum (standards table of interferences)."""
 DOMINATES = 0.8
+SILOXANE_SHARE = 0.2
+"""m/z 73 alone is no siloxane: ethers show it too."""
 SOLVENT_SHARE = 0.2
 SOLVENT_TIMES_MEDIAN = 50.0
 SAME_TIME_S = 3.0
@@ -45,7 +47,7 @@ def find_kind(component: Component, everything: Sequence[Component], blank: Sequ
     """
     if _share(component, AIR_IONS) >= DOMINATES:
         return Kind(kind=ComponentKind.AIR, note="more than 80 % of the signal at ions of air and water")
-    if _share(component, BLEED_IONS) >= DOMINATES:
+    if _share(component, BLEED_IONS) >= DOMINATES and _share(component, BLEED_IONS[1:]) >= SILOXANE_SHARE:
         return Kind(kind=ComponentKind.BLEED, note="more than 80 % of the signal at siloxane ions")
     for other in blank:
         if _is_same(component, other) and other.area >= BLANK_AREA_SHARE * component.area:
