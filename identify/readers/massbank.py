@@ -134,7 +134,7 @@ class _Fields:
 def _parse_record(block: list[str], first_line: int, path: str, number: int) -> SpectrumRecord:
     fields = _split_fields(block, first_line, path)
     mz, intensity = _parse_peaks(fields, path)
-    title = fields.take("RECORD_TITLE")
+    title = _cut(fields.take("RECORD_TITLE"))
     energy, energy_note = read_energy(
         fields.take(f"{_SPECTROMETRY} IONIZATION_ENERGY") or fields.take(f"{_SPECTROMETRY} IONIZATION_POTENTIAL")
     )

@@ -15,11 +15,10 @@ import numpy as np
 from identify.errors import InputError, quote
 from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
 from identify.readers.limits import MAX_PEAKS, MAX_RECORD_LINES
-from identify.readers.named_fields import NamedFields, bare_name, record_from_fields
+from identify.readers.named_fields import NamedFields, bare_name, record_from_fields, split_statement
 from identify.readers.numbers import parse_tokens, too_many_peaks
 from identify.records import FloatArray, Source, SpectrumRecord
 
-_PAIR = re.compile(r"\s*([A-Za-z$][^:]{0,60}?)\s*:\s*(.*)")
 _COUNT_NAMES = frozenset({"numpeaks", "numpeak", "numberofpeaks", "npeaks"})
 _SEPARATORS = re.compile(r"[\s,;:()\[\]{}]+")
 _NO_COUNT = "record without a peak count"
@@ -68,9 +67,9 @@ def _split_records(lines: Iterable[str]) -> Iterator[list[_Line]]:
                 yield block
                 block, in_peaks, n_lines = [], False, 0
             continue
-        match = _PAIR.match(line)
-        if match is not None:
-            name = bare_name(match.group(1))
+        pair = split_statement(line)
+        if pair is not None:
+            name = bare_name(pair[0])
             starts = name == "name" and any(_is_name(text) for _, text in block)
             if block and ((in_peaks and name not in _COUNT_NAMES) or starts):
                 yield block
@@ -91,15 +90,15 @@ def _parse_record(block: list[_Line], path: str, number: int) -> SpectrumRecord:
     pairs: list[tuple[str, str]] = []
     count_line, stated, rest = 0, "", 0
     for position, (line_number, line) in enumerate(block):
-        match = _PAIR.match(line)
-        if match is None and line.lstrip()[:1].isdigit():
+        pair = split_statement(line)
+        if pair is None and line.lstrip()[:1].isdigit():
             raise fault(_NO_COUNT, path, line_number, found=quote(line), expected="'Num Peaks: n' before the peaks")
-        if match is None:
+        if pair is None:
             expected = "'Name: value' or 'Num Peaks: n'"
             raise fault("record line", path, line_number, found=quote(line), expected=expected)
-        name, value = match.groups()
+        name, value = pair
         if bare_name(name) in _COUNT_NAMES:
-            count_line, stated, rest = line_number, value.strip(), position + 1
+            count_line, stated, rest = line_number, value, position + 1
             break
         pairs.append((name.rstrip("#"), value))
     if not count_line:

@@ -62,6 +62,7 @@ SPELLINGS: Mapping[str, tuple[str, ...]] = {
 _FIELD_OF = {name: field for field, names in SPELLINGS.items() for name in names}
 _INDEX_KINDS = (("kovats", "kovats index"), ("linear", "linear index"), ("lee", "lee index"), ("", "retention index"))
 _PHASES = frozenset({"non-polar", "semi-polar", "polar"})
+_MAX_NAME_CHARS = 61
 _NOTHING = frozenset({"", "N/A", "NA", "n/a", "-"})
 _QUOTED_PAIR = re.compile(r'"([A-Za-z][^"=]{0,60})=([^"]*)"')
 _BARE_PAIR = re.compile(r'(?<![\w"])([A-Za-z][\w.-]{0,60})=([^\s"]+)')
@@ -132,6 +133,29 @@ class NamedFields:
                 self._rest.setdefault(name, []).append(value)
         self._known = {}
         return {name: "\n".join(values) for name, values in self._rest.items()}
+
+
+def split_statement(text: str, signs: str = ":") -> tuple[str, str] | None:
+    """Name and value of a line ``name: value``, or None where it is none.
+
+    Parameters
+    ----------
+    text : str
+        One line; only its first characters are searched, so that a hostile line costs no time.
+    signs : str
+        Characters that may stand between name and value; the first one found counts.
+
+    Examples
+    --------
+    >>> split_statement("Num Peaks : 3"), split_statement("43 100")
+    (('Num Peaks', '3'), None)
+    """
+    start = text[: _MAX_NAME_CHARS + 40].lstrip()
+    positions = [position for sign in signs if (position := start.find(sign)) > 0]
+    name = start[: min(positions)].rstrip() if positions else ""
+    if not name or len(name) > _MAX_NAME_CHARS or not (name[0] == "$" or (name[0].isascii() and name[0].isalpha())):
+        return None
+    return name, text.lstrip()[min(positions) + 1 :].strip()
 
 
 def pairs_in_comment(text: str) -> list[tuple[str, str]]:

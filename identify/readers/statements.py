@@ -43,6 +43,9 @@ IONIZATION_TERMS = {
 }
 """Names of the ionization types in the controlled vocabulary of mass spectrometry (psi-ms) → code."""
 
+_MAX_WORDS = 100
+"""Characters of a statement that are looked at: more are no statement, and would cost time."""
+
 _EI_WORDS = re.compile(r"\b(?:EI\b|electron[ -]?(?:impact|ioni[sz]ation))|^EI[+-]?$", re.IGNORECASE)
 _CI_WORDS = re.compile(r"\b(?:[PN]?CI\b|chemical[ -]?ioni[sz]ation)|^[PN]?CI[+-]?$", re.IGNORECASE)
 _RANGE = re.compile(r"(?<![\d.])(\d+(?:\.\d+)?)\s*(?:-|–|to|\.\.|,)\s*(\d+(?:\.\d+)?)(?![\d.])")
@@ -130,7 +133,8 @@ def read_energy(text: str) -> tuple[float | None, dict[str, str]]:
     """
     if not text:
         return None, {}
-    match = re.fullmatch(r"\s*([0-9.]+)\s*(?:eV|V|volts?|electron ?volts?)?\s*\.?\s*", text, re.IGNORECASE)
+    tidy = " ".join(text[:_MAX_WORDS].split())
+    match = re.fullmatch(r"([0-9.]+) ?(?:eV|V|volts?|electron ?volts?)? ?\.?", tidy, re.IGNORECASE)
     value = None if match is None else parse_number(match.group(1))
     if value is None or value <= 0:
         return None, {"ionization energy as stated": text}
@@ -248,5 +252,5 @@ def read_derivative_segments(title: str) -> str:
     ''
     """
     found = [segment.strip() for segment in title.split(";")[1:]]
-    words = [segment for segment in found if _DERIVATIVE.fullmatch(segment)]
+    words = [segment for segment in found if len(segment) <= _MAX_WORDS and _DERIVATIVE.fullmatch(segment)]
     return "; ".join(re.sub(r"[ -]derivative$", "", segment, flags=re.IGNORECASE) for segment in words)

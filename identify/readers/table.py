@@ -7,22 +7,26 @@ settled by the first one of each spectrum (`identify.readers.table_rows`) and th
 
 from __future__ import annotations
 
-import re
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field
 
 from identify.errors import FormatError, InputError, quote
 from identify.readers.fault_reports import OnReject, fault, rejection_of
 from identify.readers.limits import MAX_PEAKS, MAX_RECORD_LINES
-from identify.readers.named_fields import SPELLINGS, NamedFields, bare_name, cut_field, record_from_fields
+from identify.readers.named_fields import (
+    SPELLINGS,
+    NamedFields,
+    bare_name,
+    cut_field,
+    record_from_fields,
+    split_statement,
+)
 from identify.readers.numbers import too_many_peaks
 from identify.readers.recognize import FORMATS
 from identify.readers.table_rows import RowReader, find_heading, looks_like_row, settle_rows
 from identify.records import Source, SpectrumRecord, read_only
 
 _COMMENT_MARKS = ("#", "%", "//", "!")
-_STATEMENT = re.compile(r"([A-Za-z$][^:=]{0,60}?)\s*[:=]\s*(.*)")
-_QUOTED_CELL = re.compile(r'"((?:[^"]|"")*:(?:[^"]|"")*)"')
 _STARTS_SPECTRUM = frozenset(SPELLINGS["name"] + SPELLINGS["title"] + SPELLINGS["accession"])
 
 
@@ -74,9 +78,7 @@ def parse_table(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterato
     draft = _Draft()
     number = 0
     for line_number, line in enumerate(lines, 1):
-        text = line.strip()
-        if (cell := _QUOTED_CELL.fullmatch(text)) is not None:
-            text = cell.group(1).replace('""', '"').strip()
+        text = _single_cell(line.strip())
         if not text:
             draft.after_gap = draft.has_rows
             continue
@@ -89,6 +91,14 @@ def parse_table(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterato
         raise _no_table(path, "no row of numbers")
     if draft.has_rows or draft.statements or draft.rows is not None:
         yield from _finish(draft, path, number + 1, on_reject)
+
+
+def _single_cell(text: str) -> str:
+    """Content of a line that is one quoted cell with a colon in it; any other line as it is."""
+    if len(text) < 3 or text[0] != '"' or text[-1] != '"' or ":" not in text:
+        return text
+    inner = text[1:-1]
+    return text if '"' in inner.replace('""', "") else inner.replace('""', '"').strip()
 
 
 def _no_table(path: str, found: str, line: int | None = None) -> FormatError:
@@ -107,8 +117,8 @@ def _starts_anew(text: str, draft: _Draft) -> bool:
         except FormatError:
             return True
         return peaks[0][0] <= draft.peaks[-1][0]
-    statement = _STATEMENT.fullmatch(text)
-    if statement is not None and bare_name(statement.group(1)) in _STARTS_SPECTRUM:
+    statement = split_statement(text, ":=")
+    if statement is not None and bare_name(statement[0]) in _STARTS_SPECTRUM:
         return True
     if draft.after_gap and not text.startswith(_COMMENT_MARKS):
         return True
@@ -126,8 +136,8 @@ def _take_line(draft: _Draft, text: str, line_number: int, path: str, *, is_firs
         _take_row(draft, text, line_number, path)
     elif draft.rows is None and ":" not in text and (heading := find_heading(text)) is not None:
         draft.rows = heading
-    elif (statement := _STATEMENT.fullmatch(text)) is not None and draft.rows is None:
-        draft.statements.append((statement.group(1), statement.group(2)))
+    elif draft.rows is None and (statement := split_statement(text, ":=")) is not None:
+        draft.statements.append(statement)
     elif is_first and draft.rows is None:
         raise _no_table(path, quote(text), line_number)
     else:

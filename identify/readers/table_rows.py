@@ -20,7 +20,6 @@ _INTENSITY_NAMES = _RELATIVE_NAMES | {
 }
 _DECIMAL_COMMA = re.compile(r"[+-]?\d+,\d+(?:[eE][+-]?\d+)?", re.ASCII)
 _ROW_START = re.compile(r"[\s\"'(\[]*[+-]?(?:\d|[.,]\d|nan\b|inf)", re.IGNORECASE)
-_COLON = re.compile(r"\s*:\s*")
 _PAIRS_HINT = "Write one pair per line, or pairs with a colon: 43:100 58:22."
 
 
@@ -129,7 +128,7 @@ def _read_columns(
 def _read_pairs(text: str, where: str) -> list[tuple[float, float]]:
     tokens: list[str] = []
     for group in re.split(r"[;,]", text):
-        words = _COLON.sub(":", group.strip(" \t()[]")).split()
+        words = " ".join(group.strip(" \t()[]").split()).replace(" :", ":").replace(": ", ":").split()
         if any(":" in word for word in words):
             words = [part for word in words for part in (word.split(":") if word.count(":") == 1 else (word,))]
             is_paired = len(words) % 2 == 0

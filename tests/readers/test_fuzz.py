@@ -6,6 +6,7 @@ import gzip
 import io
 import tarfile
 import tempfile
+import time
 import zipfile
 from pathlib import Path
 
@@ -173,3 +174,46 @@ def archive(kind: str) -> bytes:
             info.size = len(text)
             tar.addfile(info, io.BytesIO(text))
     return gzip.compress(buffer.getvalue(), mtime=0) if kind == "tar.gz" else buffer.getvalue()
+
+
+LONG = 2_000_000
+HOSTILE_LINES = [
+    "Name" + " " * LONG,
+    "Name" + " " * LONG + "x",
+    "43" + " " * LONG + "100 :",
+    '"' + ":" * LONG,
+    '"' + ':"' * (LONG // 2),
+    "43:" + " " * LONG + "100",
+    "(" * LONG,
+    "##" + " " * LONG + "=",
+    "##XYDATA= " + "(" * LONG,
+    "40" + "A" * LONG,
+    "ACCESSION: " + "x" * LONG,
+    "AC$MASS_SPECTROMETRY: IONIZATION_ENERGY 70" + " " * LONG + "x",
+    "RECORD_TITLE: a; TMS" + " " * LONG + "x",
+    "RECORD_TITLE: " + "RT: 1 " * (LONG // 6),
+    "MS:1000511|" + "=" * LONG,
+    "[1]MS:" + "1" * LONG,
+    "<" + "=" * LONG,
+    "Comments: " + '"a=' * (LONG // 3),
+    "1" * LONG,
+    "1," * (LONG // 2),
+    "\t" * LONG + "1",
+]
+
+
+@pytest.mark.parametrize("line", HOSTILE_LINES, ids=lambda line: line[:20])
+def test_a_hostile_line_costs_no_more_time_than_its_length(line: str) -> None:
+    heads = {
+        "massbank": ["ACCESSION: X"],
+        "msp": ["Name: x"],
+        "jcamp": ["##TITLE= x"],
+        "mzspeclib": ["<mzSpecLib>", "<Spectrum=1>"],
+        "table": ["43 100"],
+        "mgf": ["BEGIN IONS"],
+    }
+    start = time.process_time()
+    for name, head in heads.items():
+        run(name, [*head, line, "Num Peaks: 1", "43 1", "//", "##END=", "END IONS"])
+        run(name, [line, "43 1"])
+    assert time.process_time() - start < 5
