@@ -14,7 +14,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager, nullcontext, suppress
 from pathlib import Path
 
-from identify.errors import LibraryBusy, LibraryConflict, LibraryError, LibraryMissing, LibraryVersionError
+from identify.errors import LibraryBusy, LibraryConflict, LibraryError, LibraryMissing, LibraryVersionError, UsageError
 from identify.library.connection import check_not_on_network, connect_any_version, translated
 from identify.library.schema import apply_migrations
 
@@ -213,3 +213,30 @@ def sync_to_disk(path: Path) -> None:
         os.fsync(descriptor)
     finally:
         os.close(descriptor)
+
+
+def write_new_file(path: Path, data: bytes, *, mode: int = 0o666) -> None:
+    """Write a small file that must not exist yet, and see it onto the disk.
+
+    Parameters
+    ----------
+    path : Path
+    data : bytes
+    mode : int
+        Permissions, narrowed by the user's mask.
+
+    Raises
+    ------
+    UsageError
+        If the file exists or cannot be written.
+    """
+    try:
+        descriptor = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL, mode)
+        with os.fdopen(descriptor, "wb") as stream:
+            stream.write(data)
+            stream.flush()
+            os.fsync(stream.fileno())
+    except FileExistsError:
+        raise UsageError("file", where=str(path), found="one that already exists", expected="a new name") from None
+    except OSError as error:
+        raise UsageError("file", where=str(path), found=str(error), expected="a place to write to") from None

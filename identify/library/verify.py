@@ -1,8 +1,8 @@
 """Recompute everything a library states about itself, and name the first thing that is wrong.
 
 Checked in this order: tables and triggers against this program's schema, the file structure (SQLite's own check), the
-chain of events, every entry's content hash, the digests in the events, compounds, and the standing of every entry as the
-events tell it. Needs no write access.
+chain of events, every entry's content hash, the digests in the events, compounds, the standing of every entry as the
+events tell it, and the chain of reported queries. Needs no write access.
 """
 
 from __future__ import annotations
@@ -16,11 +16,14 @@ from identify.errors import LibraryDamaged
 from identify.library.connection import connect_any_version, read_version, translated
 from identify.library.events import Event, find_chain_fault, read_events, sha256_of
 from identify.library.insertion import digest_of
+from identify.library.reported import find_reported_fault
 from identify.library.rows import CONTENT_COLUMNS, content_hash
 from identify.library.schema import SCHEMA_VERSION, expected_objects, schema_objects
 
 Progress = Callable[[int, str], None]
 MAX_PROBLEMS = 100
+REPORTED_SINCE = 2
+"""First schema version with the table of reported queries."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -119,6 +122,9 @@ def _find_problems(connection: sqlite3.Connection, version: int, progress: Progr
     yield from _check_digests(connection)
     yield from _check_compounds(connection)
     yield from _check_standing(connection)
+    if version >= REPORTED_SINCE and (fault := find_reported_fault(connection)):
+        place, _, found = fault.partition(": ")
+        yield Problem(place, found or "missing")
 
 
 def _check_file(connection: sqlite3.Connection) -> Iterator[Problem]:
