@@ -1,6 +1,7 @@
 """Windows of the named documents at their boundaries, and the rules applied to spectra.
 
-Vectors: standards.md 1.1–1.6 and 1.9, computed there from tables that are themselves from memory (EPA TIC: read in a copy). They test our reading of those tables, not the originals.
+Vectors: standards.md 1.1–1.6 and 1.9, computed there from tables that are themselves from memory (EPA TIC: read in a
+copy). They test our reading of those tables, not the originals.
 """
 
 from __future__ import annotations
