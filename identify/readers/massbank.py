@@ -224,7 +224,7 @@ def _parse_peaks(fields: _Fields, path: str) -> tuple[FloatArray, FloatArray]:
         raise fault("no peaks", path, header_line, found="0 peak rows", expected="at least one")
     if "PK$ANNOTATION" in fields.rows:
         annotation, _ = fields.rows.pop("PK$ANNOTATION")
-        fields.values["PK$ANNOTATION"] += annotation
+        fields.values["PK$ANNOTATION"] += [row.strip() for row in annotation]
     return np.ascontiguousarray(table[:, 0]), np.ascontiguousarray(table[:, 1])
 
 

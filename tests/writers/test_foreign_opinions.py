@@ -80,9 +80,9 @@ def test_matchms_reads_the_same_peaks_and_name_of_the_exchange_format(tmp_path: 
 
 @pytest.fixture(scope="module")
 def open_records(shared_data: Path) -> list[SpectrumRecord]:
-    """Every twelfth electron-ionization record of the open release, 1,000 in all."""
+    """Every twelfth full-scan electron-ionization record of the open release, 1,000 in all."""
     records = read_spectra(shared_data / "massbank-2025.05.1-ei.zip", lambda _: None)
-    kept = [record for record in records if record.acquisition.ionization == "EI"]
+    kept = [item for item in records if item.acquisition.ionization == "EI" and item.acquisition.ms_level == 1]
     return kept[::12][:1000]
 
 
