@@ -7,7 +7,10 @@ from pathlib import Path
 
 import click
 
-from identify.cli.search import FILE, deliver, progress_bar
+from identify.cli.options import FILE, current_user, describe_os_error, now
+from identify.cli.progress import progress_bar
+from identify.cli.search import deliver
+from identify.errors import UsageError
 
 
 @click.command()
@@ -23,13 +26,16 @@ def demo(folder: Path, browser: bool | None) -> int:
     import tomllib
     from importlib.resources import as_file
 
-    from identify.cli.library import current_user, now
     from identify.library.shipped import find_shipped
     from identify.library.starter import build_starter
     from identify.pipeline import search_files
     from identify.settings import Settings
 
-    folder.mkdir(parents=True, exist_ok=True)
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        found = "a file" if isinstance(error, FileExistsError) else describe_os_error(error)
+        raise UsageError("folder", where=str(folder), found=found, expected="a folder to write to") from None
     library = folder / "starter.ionlib"
     built = build_starter(library, current_user(), now(), replace=True)
     click.echo(f"Starter library: {built.n_accepted} entries of {built.n_compounds} compounds, in {library}")

@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from datetime import UTC, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
-from identify.cli.search import FILE, progress_bar
+from identify.cli.options import FILE, WHO, WHY, now
+from identify.cli.progress import progress_bar
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
@@ -17,35 +17,6 @@ if TYPE_CHECKING:
 @click.group()
 def library() -> None:
     """Build the reference library, look into it, check it, pass it on."""
-
-
-def current_user() -> str:
-    """Login name of whoever runs the command; `unknown` where the system does not say.
-
-    Returns
-    -------
-    str
-    """
-    import getpass
-
-    try:
-        return getpass.getuser()
-    except (KeyError, OSError):
-        return "unknown"
-
-
-def now() -> datetime:
-    """The present, with time zone: the only place where commands read the clock.
-
-    Returns
-    -------
-    datetime
-    """
-    return datetime.now(UTC)
-
-
-WHO = click.option("--who", default=current_user, show_default="your login name", help="Name written into the event.")
-WHY = click.option("--why", default="", help="Reason written into the event.")
 
 
 @library.command()

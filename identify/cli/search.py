@@ -3,19 +3,21 @@
 from __future__ import annotations
 
 import sys
-from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
-if TYPE_CHECKING:
-    from collections.abc import Callable, Iterator
+from identify.cli.options import FILE, MAX_TEXT_BYTES, read_text
+from identify.cli.progress import progress_bar
+from identify.errors import InputError, UsageError
 
-    from identify.pipeline.search import Progress
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
     from identify.records import Report
 
-FILE = click.Path(path_type=Path)
+__all__ = ["FILE", "deliver", "progress_bar", "read_settings", "search"]
 
 
 @click.command()
@@ -26,6 +28,13 @@ FILE = click.Path(path_type=Path)
 @click.option("--report", "html_path", type=FILE, help="Write a self-contained HTML report.")
 @click.option("--top", type=int, help="Candidates reported per query (default 25).")
 @click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
+@click.option(
+    "--prefer-own/--no-prefer-own", default=None, help="Own standards before other entries that score the same."
+)
+@click.option(
+    "--as-of", metavar="EVENT", multiple=True,
+    help="The library as it stood after this event (number or hash); with several libraries once for each, in order.",
+)  # fmt: skip
 def search(
     queries: tuple[Path, ...],
     libraries: tuple[Path, ...],
@@ -34,18 +43,31 @@ def search(
     html_path: Path | None,
     top: int | None,
     settings_path: Path | None,
+    prefer_own: bool | None,
+    as_of: tuple[str, ...],
 ) -> int:
     """Identify every spectrum in QUERIES (files, folders, archives, or - for pasted peaks)."""
     from identify.pipeline import search_files, search_pasted
     from identify.settings import resolve
 
-    settings = resolve(read_settings(settings_path), where=str(settings_path or "settings"), top=top)
+    settings = resolve(
+        read_settings(settings_path), where=str(settings_path or "settings"), top=top, prefer_own_standards=prefer_own
+    )
     if queries == (Path("-"),):
-        report = search_pasted(sys.stdin.read(), libraries, settings)
+        report = search_pasted(_read_pasted(), libraries, settings, as_of=as_of)
     else:
         with progress_bar("Identifying") as progress:
-            report = search_files(queries, libraries, settings, progress)
+            report = search_files(queries, libraries, settings, progress, as_of=as_of)
     return deliver(report, json_path, csv_path, html_path)
+
+
+def _read_pasted() -> str:
+    data = sys.stdin.buffer.read(MAX_TEXT_BYTES + 1)
+    if len(data) > MAX_TEXT_BYTES:
+        raise InputError(
+            "pasted text", found=f"more than {MAX_TEXT_BYTES // 2**20} MB", expected="less", hint="Give it as a file."
+        )
+    return data.decode("utf-8", "replace")
 
 
 def read_settings(path: Path | None) -> str:
@@ -64,14 +86,7 @@ def read_settings(path: Path | None) -> str:
     UsageError
         If the file cannot be read as text.
     """
-    if path is None:
-        return ""
-    from identify.errors import UsageError
-
-    try:
-        return path.read_text(encoding="utf-8")
-    except (OSError, UnicodeDecodeError) as error:
-        raise UsageError("settings", where=str(path), found=str(error), expected="a readable TOML file") from None
+    return "" if path is None else read_text(path, "settings", UsageError)
 
 
 def deliver(report: Report, json_path: Path | None, csv_path: Path | None, html_path: Path | None) -> int:
@@ -106,28 +121,3 @@ def deliver(report: Report, json_path: Path | None, csv_path: Path | None, html_
     render = render_terminal if len(report.identifications) <= DETAILS_UP_TO else render_overview
     render(report, Console())
     return report.exit_code
-
-
-@contextmanager
-def progress_bar(label: str) -> Iterator[Progress | None]:
-    """A progress callback that draws on a terminal; None when output is piped.
-
-    Parameters
-    ----------
-    label : str
-
-    Yields
-    ------
-    callable or None
-    """
-    from rich.console import Console
-    from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
-
-    console = Console(stderr=True)
-    if not console.is_terminal:
-        yield None
-        return
-    columns = (TextColumn("{task.description}"), BarColumn(), TextColumn("{task.completed:.0f}"), TimeElapsedColumn())
-    with Progress(*columns, console=console, transient=True) as bar:
-        task = bar.add_task(label, total=None)
-        yield lambda done, name: bar.update(task, completed=done, description=f"{label} {name[:40]}")

@@ -21,13 +21,24 @@ from identify.evidence.facts import build_query_facts
 from identify.evidence.gather import gather_evidence
 from identify.evidence.molecular_ion import estimate_molecular_ion
 from identify.index import SearchIndex, search_index
+from identify.index.union import merge_hits
 from identify.library.cache import load_index
 from identify.library.store import Library, open_library
 from identify.ranking.grouping import Match
 from identify.ranking.rank import rank
 from identify.ranking.shortlist import shortlist
 from identify.readers import read_pasted, read_spectra
-from identify.records import Identification, LibraryState, Query, Rejection, Report, SpectrumRecord
+from identify.records import (
+    Entry,
+    EntryStatus,
+    Hit,
+    Identification,
+    LibraryState,
+    Query,
+    Rejection,
+    Report,
+    SpectrumRecord,
+)
 from identify.settings import Settings
 from identify.spectra.cleaning import clean_spectrum
 
@@ -45,7 +56,9 @@ class SearchableLibrary:
 
 
 @contextmanager
-def open_libraries(paths: Sequence[Path], settings: Settings) -> Iterator[tuple[SearchableLibrary, ...]]:
+def open_libraries(
+    paths: Sequence[Path], settings: Settings, as_of: Sequence[int | str] = ()
+) -> Iterator[tuple[SearchableLibrary, ...]]:
     """Libraries with their search indexes, closed on leaving the block.
 
     Parameters
@@ -54,6 +67,8 @@ def open_libraries(paths: Sequence[Path], settings: Settings) -> Iterator[tuple[
         At least one library file.
     settings : Settings
         The weighting decides which index is loaded.
+    as_of : sequence of int or str
+        For each library the event (number, or first digits of its hash) after which it is seen; empty for the present.
 
     Yields
     ------
@@ -62,7 +77,7 @@ def open_libraries(paths: Sequence[Path], settings: Settings) -> Iterator[tuple[
     Raises
     ------
     UsageError
-        Without any path, or with the same library twice.
+        Without any path, with the same library twice, or with another number of events than libraries.
     LibraryError
         If one of them cannot be opened.
     """
@@ -70,10 +85,14 @@ def open_libraries(paths: Sequence[Path], settings: Settings) -> Iterator[tuple[
         raise UsageError("--library", found="none", expected="at least one library file")
     if len({path.resolve() for path in paths}) < len(paths):
         raise UsageError("--library", found="the same library twice", expected="each library once")
+    if as_of and len(as_of) != len(paths):
+        found = f"{len(as_of)} events for {len(paths)} libraries"
+        raise UsageError("--as-of", found=found, expected="one event for each library, in their order")
+    events: Sequence[int | str | None] = as_of or [None] * len(paths)
     with ExitStack() as stack:
         opened = []
-        for path in paths:
-            library = stack.enter_context(open_library(path))
+        for path, event in zip(paths, events, strict=True):
+            library = stack.enter_context(open_library(path, as_of=event))
             opened.append(SearchableLibrary(library, load_index(library, settings.weighting), library.state()))
         yield tuple(opened)
 
@@ -92,12 +111,7 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
     Identification
         At most `settings.top` candidates, best first; none when no entry shares a peak.
     """
-    matches: list[Match] = []
-    for searchable in libraries:
-        hits = search_index(searchable.index, query.spectrum, settings.search_depth)
-        entries = searchable.library.get_entries([hit.entry_id for hit in hits])
-        matches += [Match(hit, entry, searchable.state.path) for hit, entry in zip(hits, entries, strict=True)]
-    drafts = shortlist(query.spectrum, matches, settings)
+    drafts = shortlist(query.spectrum, _find_matches(query, libraries, settings), settings)
     molecular_ion = estimate_molecular_ion(query.spectrum, [(draft.entry, draft.cosine) for draft in drafts])
     facts = build_query_facts(query)
     evidence = [gather_evidence(query, draft.entry, draft.aligned, settings, facts) for draft in drafts]
@@ -110,6 +124,21 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
         candidates=ranking.candidates[: settings.top],
         follow_up=ranking.follow_up,
     )
+
+
+def _find_matches(query: Query, libraries: Sequence[SearchableLibrary], settings: Settings) -> list[Match]:
+    """The best hits over all libraries with their entries; of equal ones own standards first, if the settings say so."""
+    found: list[Sequence[Hit]] = []
+    entries: list[dict[int, Entry]] = []
+    for searchable in libraries:
+        hits = search_index(searchable.index, query.spectrum, settings.search_depth)
+        found.append(hits)
+        entries.append({entry.id: entry for entry in searchable.library.get_entries([hit.entry_id for hit in hits])})
+    own = [[key for key, entry in held.items() if entry.status is EntryStatus.OWN_STANDARD] for held in entries]
+    merged = merge_hits(found, settings.search_depth, own, prefer_own=settings.prefer_own_standards)
+    return [
+        Match(item.hit, entries[item.library][item.hit.entry_id], libraries[item.library].state.path) for item in merged
+    ]
 
 
 def make_query(record: SpectrumRecord, number: int, settings: Settings) -> Query:
@@ -140,6 +169,8 @@ def identify_records(
     settings: Settings,
     rejected: list[Rejection],
     progress: Progress | None = None,
+    *,
+    first: int = 1,
 ) -> Iterator[Identification]:
     """Identifications one by one; a spectrum that cannot be used is added to `rejected` and the rest goes on.
 
@@ -151,14 +182,16 @@ def identify_records(
     rejected : list of Rejection
         Grows by what is left out.
     progress : callable, optional
+    first : int
+        Number of the first query.
 
     Yields
     ------
     Identification
     """
-    for number, record in enumerate(records, start=1):
+    for number, record in enumerate(records, start=first):
         if progress:
-            progress(number - 1, record.title or record.identity.name)
+            progress(number - first, record.title or record.identity.name)
         try:
             query = make_query(record, number, settings)
         except SpectrumError as error:
@@ -173,7 +206,12 @@ def _rejection(error: SpectrumError, record: SpectrumRecord) -> Rejection:
 
 
 def search_files(
-    paths: Sequence[Path], library_paths: Sequence[Path], settings: Settings, progress: Progress | None = None
+    paths: Sequence[Path],
+    library_paths: Sequence[Path],
+    settings: Settings,
+    progress: Progress | None = None,
+    *,
+    as_of: Sequence[int | str] = (),
 ) -> Report:
     """Report on every spectrum in the files.
 
@@ -184,6 +222,8 @@ def search_files(
     library_paths : sequence of Path
     settings : Settings
     progress : callable, optional
+    as_of : sequence of int or str
+        See `open_libraries`.
 
     Returns
     -------
@@ -196,10 +236,17 @@ def search_files(
         See `open_libraries`.
     """
     rejected: list[Rejection] = []
-    return _report(_read_all(paths, rejected), library_paths, settings, rejected, progress)
+    return _report(_read_all(paths, rejected), library_paths, settings, rejected, progress, as_of)
 
 
-def search_pasted(text: str, library_paths: Sequence[Path], settings: Settings, name: str = "pasted text") -> Report:
+def search_pasted(
+    text: str,
+    library_paths: Sequence[Path],
+    settings: Settings,
+    name: str = "pasted text",
+    *,
+    as_of: Sequence[int | str] = (),
+) -> Report:
     """Report on peaks pasted as text.
 
     Parameters
@@ -210,6 +257,8 @@ def search_pasted(text: str, library_paths: Sequence[Path], settings: Settings, 
     settings : Settings
     name : str
         Stands for the file name in the report.
+    as_of : sequence of int or str
+        See `open_libraries`.
 
     Returns
     -------
@@ -221,7 +270,7 @@ def search_pasted(text: str, library_paths: Sequence[Path], settings: Settings, 
         See `open_libraries`.
     """
     rejected: list[Rejection] = []
-    return _report(read_pasted(text, name, rejected.append), library_paths, settings, rejected, None)
+    return _report(read_pasted(text, name, rejected.append), library_paths, settings, rejected, None, as_of)
 
 
 def _report(
@@ -230,8 +279,9 @@ def _report(
     settings: Settings,
     rejected: list[Rejection],
     progress: Progress | None,
+    as_of: Sequence[int | str],
 ) -> Report:
-    with open_libraries(library_paths, settings) as libraries:
+    with open_libraries(library_paths, settings, as_of) as libraries:
         found = tuple(identify_records(records, libraries, settings, rejected, progress))
         states = tuple(searchable.state for searchable in libraries)
     return Report("ionwitness", __version__, settings.as_dict(), states, found, tuple(rejected))

@@ -184,16 +184,17 @@ def _print_libraries(report: Report, console: Console) -> None:
 
 
 def _print(console: Console, text: str, *, style: str = "", indent: int = 0, hanging: int = 0) -> None:
-    """Wrapped text with a left margin, its second line indented further by `hanging`; no blanks at line ends."""
+    """Wrapped text with a left margin, its second line indented further by `hanging`; words stay whole."""
     lines = textwrap.wrap(
         text.replace(" %", f"{NO_BREAK}%"),
         max(30, console.width),
         initial_indent=" " * indent,
         subsequent_indent=" " * (indent + hanging),
         break_on_hyphens=False,
+        break_long_words=False,  # a path cut in two cannot be copied
     )
     for line in lines:
-        console.print(_printable(line, console, style), no_wrap=True)
+        console.print(_printable(line, console, style), no_wrap=True, overflow="ignore", crop=False)
 
 
 def _printable(text: str, console: Console, style: str = "") -> Text:
