@@ -62,6 +62,8 @@ def load_index(library: Library, weighting: Weighting, *, save: bool = True) -> 
     LibraryDamaged, LibraryError
         If the library cannot be read. A cache that cannot be used or written is never an error.
     """
+    # Before anything else is read: what another process adds meanwhile must not count as known to the cache.
+    now = library.search_fingerprint
     for path in cache_paths(library, weighting):
         try:
             index, event = read_index(path, _library_id(library), weighting)
@@ -72,11 +74,11 @@ def load_index(library: Library, weighting: Weighting, *, save: bool = True) -> 
             continue
         if save and library.as_of is None and _is_far_behind(current):
             current = merge_index(current)
-            save_index(library, current)
+            save_index(library, current, now)
         return current
     index = build_index(library.iter_peaks(), weighting)
     if save and library.as_of is None:
-        save_index(library, index)
+        save_index(library, index, now)
     return index
 
 
@@ -86,20 +88,23 @@ def _is_far_behind(index: SearchIndex) -> bool:
     return n_added + n_hidden >= MERGE_AT
 
 
-def save_index(library: Library, index: SearchIndex) -> Path | None:
+def save_index(library: Library, index: SearchIndex, event: str) -> Path | None:
     """Where the cache of a freshly built index was written; None where nothing could be.
 
     Parameters
     ----------
     library : Library
     index : SearchIndex
-        Of the present state of the library, without hidden entries.
+        Without hidden entries.
+    event : str
+        `Library.search_fingerprint` as it was before the entries of the index were read: entries that came meanwhile may
+        be in the index, none that came before is missing.
 
     Returns
     -------
     Path or None
     """
-    library_id, event = _library_id(library), library.search_fingerprint
+    library_id = _library_id(library)
     for path in cache_paths(library, index.weighting):
         try:
             path.parent.mkdir(parents=True, exist_ok=True)
