@@ -20,7 +20,7 @@ LAYERS: dict[str, float] = {
     "similarity": 4,
     "index": 4,
     "retention": 4,
-    "runs": 4,
+    "runs": 4.2,  # its findings carry a retention ladder
     "evidence": 5,
     "ranking": 6,
     "readers": 7,

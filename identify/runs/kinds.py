@@ -69,15 +69,27 @@ def find_kind(component: Component, everything: Sequence[Component], blank: Sequ
 
 
 def _is_same(one: Component, other: Component) -> bool:
-    """Whether two components elute together (within 3 s) with the same spectrum (cosine of root intensities ≥ 0.9)."""
-    if abs(one.time_s - other.time_s) > SAME_TIME_S:
-        return False
+    """Whether two components elute together (within 3 s) with the same spectrum (similarity ≥ 0.9)."""
+    return abs(one.time_s - other.time_s) <= SAME_TIME_S and spectrum_similarity(one, other) >= SAME_SPECTRUM
+
+
+def spectrum_similarity(one: Component, other: Component) -> float:
+    """Cosine of the root intensities of two components, in [0, 1].
+
+    Parameters
+    ----------
+    one, other : Component
+
+    Returns
+    -------
+    float
+    """
     axis = np.union1d(one.peaks.mz, other.peaks.mz)
     vectors = np.zeros((2, axis.size))
     for row, component in enumerate((one, other)):
         vectors[row, np.searchsorted(axis, component.peaks.mz)] = np.sqrt(component.peaks.intensity)
     lengths = np.linalg.norm(vectors, axis=1)
-    return bool(vectors[0] @ vectors[1] >= SAME_SPECTRUM * lengths[0] * lengths[1])
+    return float(vectors[0] @ vectors[1] / max(1e-300, float(lengths[0] * lengths[1])))
 
 
 def _share(component: Component, ions: Sequence[int]) -> float:

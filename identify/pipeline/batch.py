@@ -1,0 +1,117 @@
+"""Many queries on all cores: worker processes with their own open libraries, results in the order of the queries.
+
+Each worker opens the libraries once (the index is memory-mapped, so they share its pages) and takes small groups of records;
+at most a few groups are under way, so that memory stays bounded whatever the number of queries.
+"""
+
+from __future__ import annotations
+
+import os
+from collections import deque
+from collections.abc import Iterable, Iterator, Sequence
+from concurrent.futures import Future, ProcessPoolExecutor
+from contextlib import ExitStack
+from itertools import chain, islice
+from multiprocessing import get_context
+from pathlib import Path
+
+from identify.pipeline.search import (
+    Progress,
+    SearchableLibrary,
+    identify_records,
+    open_libraries,
+)
+from identify.records import Identification, Rejection, SpectrumRecord
+from identify.settings import Settings
+
+WORTH_WORKERS = 60
+"""From this many queries on, starting workers (about a second each) pays."""
+GROUP = 12
+GROUPS_UNDER_WAY = 3
+"""Per worker: enough to keep it busy, few enough to bound memory."""
+MAX_WORKERS = 16
+
+
+def identify_many(
+    records: Iterable[SpectrumRecord],
+    libraries: Sequence[SearchableLibrary],
+    settings: Settings,
+    rejected: list[Rejection],
+    progress: Progress | None = None,
+) -> Iterator[Identification]:
+    """Identifications in the order of the records, from this process for a few and from workers for many.
+
+    Parameters
+    ----------
+    records : iterable of SpectrumRecord
+        Consumed as results are taken.
+    libraries : sequence of SearchableLibrary
+    settings : Settings
+    rejected : list of Rejection
+        Grows by what is left out.
+    progress : callable, optional
+
+    Yields
+    ------
+    Identification
+        The same, bit for bit, whatever the number of workers.
+    """
+    remaining = iter(records)
+    first = list(islice(remaining, WORTH_WORKERS))
+    workers = min(MAX_WORKERS, len(os.sched_getaffinity(0)))
+    everything = chain(first, remaining)
+    if len(first) < WORTH_WORKERS or workers < 2:
+        yield from identify_records(everything, libraries, settings, rejected, progress)
+        return
+    paths = [Path(searchable.state.path) for searchable in libraries]
+    with ProcessPoolExecutor(workers, get_context("spawn"), _open_in_worker, (paths, settings)) as pool:
+        under_way: deque[Future[_Results]] = deque()
+        done = 0
+        for start, group in _groups(everything):
+            under_way.append(pool.submit(_identify_group, start, group))
+            if len(under_way) >= workers * GROUPS_UNDER_WAY:
+                done += GROUP
+                yield from _take(under_way.popleft(), rejected, progress, done)
+        while under_way:
+            done += GROUP
+            yield from _take(under_way.popleft(), rejected, progress, done)
+
+
+_Results = tuple[list[Identification], list[Rejection]]
+
+
+def _groups(records: Iterator[SpectrumRecord]) -> Iterator[tuple[int, list[SpectrumRecord]]]:
+    start = 1
+    while group := list(islice(records, GROUP)):
+        yield start, group
+        start += len(group)
+
+
+def _take(
+    future: Future[_Results], rejected: list[Rejection], progress: Progress | None, done: int
+) -> Iterator[Identification]:
+    found, left_out = future.result()
+    rejected.extend(left_out)
+    if progress:
+        progress(done, found[-1].query.record.title if found else "")
+    yield from found
+
+
+class _Worker:
+    """What a worker process keeps open between groups."""
+
+    stack = ExitStack()
+    """Holds the libraries open until the process ends."""
+    libraries: tuple[SearchableLibrary, ...] = ()
+    settings: Settings = Settings()
+
+
+def _open_in_worker(paths: list[Path], settings: Settings) -> None:
+    _Worker.libraries = _Worker.stack.enter_context(open_libraries(paths, settings))
+    _Worker.settings = settings
+
+
+def _identify_group(start: int, records: list[SpectrumRecord]) -> _Results:
+    rejected: list[Rejection] = []
+    found = list(identify_records(records, _Worker.libraries, _Worker.settings, rejected, first=start))
+    return found, rejected
