@@ -40,6 +40,9 @@ _MATCHED, _MARGIN, _NORM = _REACH, 2 * _REACH, 2 * _REACH + _B
 _N_SUMS = 2 * _REACH + 2 * _B
 """One array: `dot` at 0, `matched` at `_MATCHED`, then the margin over the floors and the query's inverse norm."""
 
+_STRIDE = 128
+"""Rows passed over together when none of them reaches a floor."""
+
 _CHORD_FACTOR, _CHORD_LIMIT = np.float32(CHORD_FACTOR), np.float32(CHORD_LIMIT)
 _NEGLIGIBLE, _HUGE, _UNDECIDED = np.float32(NEGLIGIBLE_SQUARE), np.float32(HUGE), np.float32(UNDECIDED)
 _ZERO, _ONE = np.float32(0), np.float32(1)
@@ -96,7 +99,6 @@ def _scan_blocks(
 ) -> int:
     """Fill the heaps and the kept rows with their upper ends; the number of rows kept."""
     sums, below = running
-    best_cosine, best_reverse, kept, kept_cosine, kept_reverse = results
     n_entries = rows[0].size
     n_blocks = columns[0].size - 1
     nearest = _find_nearest_block(columns, query)
@@ -108,18 +110,49 @@ def _scan_blocks(
         for row in range(_B):
             sums[row], sums[_MATCHED + row], below[row] = _ZERO, _ZERO, 0
         _add_columns(columns, codes, block, query, sums, below)
-        _measure(rows, first, n_rows, sums, below, query[3], slack, best_cosine[0], best_reverse[0])
-        for row in range(n_rows):
-            if sums[_MARGIN + row] < 0 or sums[row] <= 0 or (hidden.size > 0 and hidden[first + row]):
+        _measure(rows, first, n_rows, sums, below, query[3], slack, results[0][0], results[1][0])
+        for start in range(0, n_rows, _STRIDE):
+            end = min(start + _STRIDE, n_rows)
+            if _largest(sums, _MARGIN + start, _MARGIN + end) < 0:
                 continue
-            square = np.uint32(rows[1][first + row] - below[row])
-            cosine, reverse, width = _ends(
-                sums[row], sums[_MATCHED + row], square, rows[2][first + row], sums[_NORM + row], slack
-            )
-            kept[n_kept], kept_cosine[n_kept], kept_reverse[n_kept] = first + row, cosine, reverse
-            n_kept += 1
-            _offer(best_cosine, cosine - (width + width) if cosine < _UNDECIDED else -width)
-            _offer(best_reverse, reverse - (width + width) if reverse < _UNDECIDED else -width)
+            n_kept = _keep(rows, first, start, end, sums, below, slack, hidden, results, n_kept)
+    return n_kept
+
+
+@_compiled
+def _largest(values: Any, start: int, end: int) -> Any:
+    largest = values[start]
+    for i in range(start + 1, end):
+        largest = values[i] if values[i] > largest else largest
+    return largest
+
+
+@_compiled
+def _keep(
+    rows: Any,
+    first: int,
+    start: int,
+    end: int,
+    sums: Any,
+    below: Any,
+    slack: Any,
+    hidden: Any,
+    results: Any,
+    n_kept: int,
+) -> int:
+    """Keep the rows of a stretch that reach a floor, and raise the floors."""
+    best_cosine, best_reverse, kept, kept_cosine, kept_reverse = results
+    for row in range(start, end):
+        if sums[_MARGIN + row] < 0 or sums[row] <= 0 or (hidden.size > 0 and hidden[first + row]):
+            continue
+        square = np.uint32(rows[1][first + row] - below[row])
+        cosine, reverse, width = _ends(
+            sums[row], sums[_MATCHED + row], square, rows[2][first + row], sums[_NORM + row], slack
+        )
+        kept[n_kept], kept_cosine[n_kept], kept_reverse[n_kept] = first + row, cosine, reverse
+        n_kept += 1
+        _offer(best_cosine, cosine - (width + width) if cosine < _UNDECIDED else -width)
+        _offer(best_reverse, reverse - (width + width) if reverse < _UNDECIDED else -width)
     return n_kept
 
 
