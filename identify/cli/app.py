@@ -9,8 +9,20 @@ import click
 from identify import __version__
 from identify.cli.demo import demo
 from identify.cli.library import library
+from identify.cli.library_care import (
+    affected,
+    backup,
+    consensus,
+    migrate,
+    quarantine,
+    reinstate,
+    restore,
+    verify,
+)
+from identify.cli.library_proof import check_signed, create_key, sign
 from identify.cli.run import run
 from identify.cli.search import search
+from identify.cli.serve import serve
 from identify.errors import FetchError, InputError, IonwitnessError, LibraryError, StructureError, UsageError
 
 EXIT_CODES: tuple[tuple[type[IonwitnessError], int], ...] = (
@@ -37,8 +49,12 @@ def ionwitness() -> None:
     """
 
 
-for _command in (demo, search, run, library):
+for _command in (demo, search, run, library, serve):
     ionwitness.add_command(_command)
+for _command in (verify, backup, restore, migrate, quarantine, reinstate, affected, consensus):
+    library.add_command(_command)
+for _command in (create_key, sign, check_signed):
+    library.add_command(_command)
 
 
 def main() -> None:
