@@ -7,6 +7,7 @@ import sys
 import click
 
 from identify import __version__
+from identify.cli.confirm import confirm, instrument
 from identify.cli.demo import demo
 from identify.cli.library import library
 from identify.cli.library_care import (
@@ -49,7 +50,7 @@ def ionwitness() -> None:
     """
 
 
-for _command in (demo, search, run, library, serve):
+for _command in (demo, search, run, confirm, instrument, library, serve):
     ionwitness.add_command(_command)
 for _command in (verify, backup, restore, migrate, quarantine, reinstate, affected, consensus):
     library.add_command(_command)

@@ -31,11 +31,7 @@ def demo(folder: Path, browser: bool | None) -> int:
     from identify.pipeline import search_files
     from identify.settings import Settings
 
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        found = "a file" if isinstance(error, FileExistsError) else describe_os_error(error)
-        raise UsageError("folder", where=str(folder), found=found, expected="a folder to write to") from None
+    _make_folder(folder)
     library = folder / "starter.ionlib"
     built = build_starter(library, current_user(), now(), replace=True)
     click.echo(f"Starter library: {built.n_accepted} entries of {built.n_compounds} compounds, in {library}")
@@ -55,3 +51,11 @@ def demo(folder: Path, browser: bool | None) -> int:
     if browser or (browser is None and sys.stdout.isatty()):
         click.launch(html.resolve().as_uri())
     return code
+
+
+def _make_folder(folder: Path) -> None:
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        found = "a file" if isinstance(error, FileExistsError) else describe_os_error(error)
+        raise UsageError("folder", where=str(folder), found=found, expected="a folder to write to") from None
