@@ -6,14 +6,13 @@ nothing else wires the rooms together.
 Not for: any decision of its own. Each step is a function of the room that owns it.
 """
 
+from identify.pipeline.files import search_files, search_pasted
 from identify.pipeline.search import (
     SearchableLibrary,
     identify_query,
     identify_records,
     make_query,
     open_libraries,
-    search_files,
-    search_pasted,
 )
 
 __all__ = [

@@ -38,6 +38,8 @@ def identify_many(
     settings: Settings,
     rejected: list[Rejection],
     progress: Progress | None = None,
+    *,
+    as_of: Sequence[int | str] = (),
 ) -> Iterator[Identification]:
     """Identifications in the order of the records, from this process for a few and from workers for many.
 
@@ -50,6 +52,8 @@ def identify_many(
     rejected : list of Rejection
         Grows by what is left out.
     progress : callable, optional
+    as_of : sequence of int or str
+        The events the libraries were opened at, for the workers to do the same.
 
     Yields
     ------
@@ -64,7 +68,7 @@ def identify_many(
         yield from identify_records(everything, libraries, settings, rejected, progress)
         return
     paths = [Path(searchable.state.path) for searchable in libraries]
-    with ProcessPoolExecutor(workers, get_context("spawn"), _open_in_worker, (paths, settings)) as pool:
+    with ProcessPoolExecutor(workers, get_context("spawn"), _open_in_worker, (paths, settings, as_of)) as pool:
         under_way: deque[Future[_Results]] = deque()
         done = 0
         for start, group in _groups(everything):
@@ -106,8 +110,8 @@ class _Worker:
     settings: Settings = Settings()
 
 
-def _open_in_worker(paths: list[Path], settings: Settings) -> None:
-    _Worker.libraries = _Worker.stack.enter_context(open_libraries(paths, settings))
+def _open_in_worker(paths: list[Path], settings: Settings, as_of: Sequence[int | str]) -> None:
+    _Worker.libraries = _Worker.stack.enter_context(open_libraries(paths, settings, as_of))
     _Worker.settings = settings
 
 

@@ -1,11 +1,12 @@
-"""Spectrum files in, `Report` out: the main path.
+"""Spectra in, identifications out: the main path.
 
 ::
 
     open_libraries → read → per query: clean → search every index → fetch entries → shortlist (one draft per compound)
-        → evidence → rank (probability, claim, follow-up) → Identification → Report
+        → evidence → rank (probability, claim, follow-up) → Identification
 
-This is the main path of the program; `identify.pipeline.runs` adds the way from a run to queries.
+This is the main path of the program. `identify.pipeline.files` puts files before it and a `Report` behind it,
+`identify.pipeline.batch` runs it on all cores, `identify.pipeline.runs` adds the way from a run to queries.
 """
 
 from __future__ import annotations
@@ -15,8 +16,7 @@ from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 
-from identify import __version__
-from identify.errors import IonwitnessError, SpectrumError, UsageError
+from identify.errors import SpectrumError, UsageError
 from identify.evidence.facts import build_query_facts
 from identify.evidence.gather import gather_evidence
 from identify.evidence.molecular_ion import estimate_molecular_ion
@@ -27,7 +27,6 @@ from identify.library.store import Library, open_library
 from identify.ranking.grouping import Match
 from identify.ranking.rank import rank
 from identify.ranking.shortlist import shortlist
-from identify.readers import read_pasted, read_spectra
 from identify.records import (
     Entry,
     EntryStatus,
@@ -36,7 +35,6 @@ from identify.records import (
     LibraryState,
     Query,
     Rejection,
-    Report,
     SpectrumRecord,
 )
 from identify.settings import Settings
@@ -203,93 +201,3 @@ def identify_records(
 def _rejection(error: SpectrumError, record: SpectrumRecord) -> Rejection:
     source = record.source
     return Rejection(source.path, source.line, "unusable spectrum", error.found, error.expected, error.hint)
-
-
-def search_files(
-    paths: Sequence[Path],
-    library_paths: Sequence[Path],
-    settings: Settings,
-    progress: Progress | None = None,
-    *,
-    as_of: Sequence[int | str] = (),
-) -> Report:
-    """Report on every spectrum in the files.
-
-    Parameters
-    ----------
-    paths : sequence of Path
-        Spectrum files of any readable format, folders or archives.
-    library_paths : sequence of Path
-    settings : Settings
-    progress : callable, optional
-    as_of : sequence of int or str
-        See `open_libraries`.
-
-    Returns
-    -------
-    Report
-        With what was rejected; a file that cannot be read at all is a rejection, not an error.
-
-    Raises
-    ------
-    LibraryError, UsageError
-        See `open_libraries`.
-    """
-    rejected: list[Rejection] = []
-    return _report(_read_all(paths, rejected), library_paths, settings, rejected, progress, as_of)
-
-
-def search_pasted(
-    text: str,
-    library_paths: Sequence[Path],
-    settings: Settings,
-    name: str = "pasted text",
-    *,
-    as_of: Sequence[int | str] = (),
-) -> Report:
-    """Report on peaks pasted as text.
-
-    Parameters
-    ----------
-    text : str
-        Any text format the readers know, or bare m/z–intensity pairs.
-    library_paths : sequence of Path
-    settings : Settings
-    name : str
-        Stands for the file name in the report.
-    as_of : sequence of int or str
-        See `open_libraries`.
-
-    Returns
-    -------
-    Report
-
-    Raises
-    ------
-    LibraryError, UsageError
-        See `open_libraries`.
-    """
-    rejected: list[Rejection] = []
-    return _report(read_pasted(text, name, rejected.append), library_paths, settings, rejected, None, as_of)
-
-
-def _report(
-    records: Iterable[SpectrumRecord],
-    library_paths: Sequence[Path],
-    settings: Settings,
-    rejected: list[Rejection],
-    progress: Progress | None,
-    as_of: Sequence[int | str],
-) -> Report:
-    with open_libraries(library_paths, settings, as_of) as libraries:
-        found = tuple(identify_records(records, libraries, settings, rejected, progress))
-        states = tuple(searchable.state for searchable in libraries)
-    return Report("ionwitness", __version__, settings.as_dict(), states, found, tuple(rejected))
-
-
-def _read_all(paths: Sequence[Path], rejected: list[Rejection]) -> Iterator[SpectrumRecord]:
-    for path in paths:
-        try:
-            yield from read_spectra(path, rejected.append)
-        except IonwitnessError as error:
-            rejected.append(Rejection(str(path), None, error.what, error.found, error.expected, error.hint))
