@@ -54,7 +54,8 @@ def recognize_format(head: bytes, path: str) -> str:
             hint = "Read a run with the command for runs." if "netCDF" in kind else ""
             raise FormatError("unknown format", where=path, found=kind, expected=FORMATS, hint=hint)
     if is_binary(head):
-        raise FormatError("unknown format", where=path, found="binary data", expected=FORMATS)
+        hint = "If it is text, save it as UTF-8."
+        raise FormatError("unknown format", where=path, found="binary data", expected=FORMATS, hint=hint)
     encoding, mark_length = find_byte_order_mark(head)
     text = head[mark_length:].decode(encoding or "utf-8", "replace")
     start = text.lstrip()
