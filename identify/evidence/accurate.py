@@ -1,4 +1,4 @@
-"""Accurate masses: internal recalibration on well-known ions, and ions explained by pieces of the candidate's formula."""
+"""Accurate masses of a query: internal recalibration on well-known ions, and the ions worth judging."""
 
 from __future__ import annotations
 
@@ -8,19 +8,9 @@ from statistics import median
 
 import numpy as np
 
-from identify.chem.formula import Formula, parse_formula
-from identify.chem.subformulas import explain_mz
-from identify.errors import FormulaError
-from identify.evidence.facts import FormulaFacts
-from identify.evidence.finding import Finding, not_assessed
-from identify.records import Peaks, Verdict
-from identify.settings import Settings
+from identify.chem.formula import parse_formula
+from identify.records import Peaks
 
-ACCURATE = "accurate mass"
-SOURCE = (
-    "Subformulas of the formula as measured within the tolerance of the settings, electron mass accounted for; weighed on the "
-    "accurate-mass records among the open EI records"
-)
 MAX_IONS = 16
 """Ions judged per candidate: the ones with the greatest intensity times m/z."""
 MIN_SHARE = 0.005
@@ -102,21 +92,6 @@ def find_recalibration(peaks: Peaks) -> Recalibration:
     return Recalibration(middle, True, tuple(found), f"Shifted by {-middle:+.1f} ppm on {names}.")
 
 
-def tolerance_at(mz: float, settings: Settings) -> float:
-    """Tolerance in Da at an m/z: the larger of the two that the settings give."""
-    return max(settings.tolerance_da, settings.tolerance_ppm * mz * 1e-6)
-
-
-@lru_cache(maxsize=20_000)
-def _best_ion(formula: str, mz: float, tolerance_da: float) -> tuple[Formula, float] | None:
-    """Subformula ion nearest to an m/z and its deviation in Da; None when none lies within the tolerance."""
-    try:
-        ions = explain_mz(parse_formula(formula), mz, min(tolerance_da, 0.5))
-    except FormulaError:  # too many subsets to enumerate: such a formula explains everything and decides nothing
-        return None
-    return (ions[0], mz - ions[0].monoisotopic_mass) if ions else None
-
-
 def mass_error_histogram(errors_ppm: list[float], width_ppm: float = 2.0) -> tuple[tuple[float, int], ...]:
     """Number of ions per class of mass error.
 
@@ -145,7 +120,8 @@ def mass_error_histogram(errors_ppm: list[float], width_ppm: float = 2.0) -> tup
 def choose_ions(peaks: Peaks) -> tuple[tuple[float, float], ...]:
     """The (m/z, relative intensity) pairs worth judging: greatest intensity times m/z first, isotope peaks left out.
 
-    A peak counts as an isotope peak when another one 1.002–1.004 Da below it is at least 2.5 times taller.
+    A peak counts as an isotope peak when a peak 1.0018–1.0042 Da below it is at least 2.5 times taller (13C), or one
+    1.9935–2.0000 Da below it is at least a fifth as tall (34S, 37Cl, 81Br): subformulas are made of principal isotopes.
     """
     mz, relative = peaks.mz, peaks.relative
     order = np.argsort(-relative * mz, kind="stable")
@@ -154,73 +130,10 @@ def choose_ions(peaks: Peaks) -> tuple[tuple[float, float], ...]:
         if relative[place] < 100.0 * MIN_SHARE:
             continue
         below = (mz > mz[place] - 1.0042) & (mz < mz[place] - 1.0018)
-        if bool((relative[below] >= 2.5 * relative[place]).any()):
+        second = (mz > mz[place] - 2.0) & (mz < mz[place] - 1.9935)
+        if bool((relative[below] >= 2.5 * relative[place]).any() or (relative[second] >= 0.2 * relative[place]).any()):
             continue
         chosen.append((float(mz[place]), float(relative[place])))
         if len(chosen) == MAX_IONS:
             break
     return tuple(chosen)
-
-
-def check_accurate_mass(
-    ions: tuple[tuple[float, float], ...] | None,
-    recalibration: Recalibration | None,
-    formula: FormulaFacts | None,
-    settings: Settings,
-) -> Finding:
-    """Whether the accurate masses of the query are those of pieces of the candidate's formula.
-
-    Parameters
-    ----------
-    ions : tuple of (m/z, relative intensity) or None
-        From `choose_ions`; None for a nominal-mass query.
-    recalibration : Recalibration or None
-    formula : FormulaFacts or None
-    settings : Settings
-        Tolerance: the larger of `tolerance_ppm` and `tolerance_da`.
-
-    Returns
-    -------
-    Finding
-    """
-    if not ions or recalibration is None:
-        return not_assessed(ACCURATE, "The query has nominal masses only.")
-    if formula is None:
-        return not_assessed(ACCURATE, "The entry has no formula to take apart.")
-    limit = formula.nominal_mass + 0.6
-    explained = total = 0.0
-    errors: list[float] = []
-    missed: list[str] = []
-    for measured, relative in ions:
-        mz = recalibration.correct(measured)
-        weight = relative * measured
-        total += weight
-        best = _best_ion(formula.formula.hill, mz, tolerance_at(mz, settings)) if mz <= limit else None
-        if best is None:
-            missed.append(f"{mz:.4f}")
-        else:
-            explained += weight
-            errors.append(best[1] / mz * 1e6)
-    share = explained / total
-    size = next(word for edge, word in ((0.5, "few"), (0.8, "half"), (0.95, "most"), (2.0, "all")) if share < edge)
-    middle = f", median error {median(errors):+.1f} ppm" if errors else ""
-    if size == "all":
-        verdict, reason = Verdict.AGREES, "The main ions have the accurate masses of pieces of this formula."
-    elif size == "most":
-        verdict = Verdict.INCONCLUSIVE
-        reason = f"Most ions fit pieces of this formula; m/z {', '.join(missed[:3])} does not."
-    else:
-        verdict, reason = (
-            Verdict.CONFLICTS,
-            f"No piece of this formula has the accurate mass of m/z {', '.join(missed[:4])}.",
-        )
-    return Finding(
-        ACCURATE,
-        verdict,
-        reason,
-        cell=size,
-        observed=f"{len(errors)} of {len(ions)} ions, {100 * share:.0f} % by weight{middle}",
-        expected="all main ions",
-        uncertainty=f"± {settings.tolerance_ppm:g} ppm or ± {1000 * settings.tolerance_da:g} mDa. {recalibration.reason}",
-        source=SOURCE,
-    )

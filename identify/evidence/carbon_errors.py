@@ -2,8 +2,8 @@
 
 Fitted on the open EI records (MassBank release 2025.05.1, 60–80 eV or unstated, unlabelled),
 M at least 5 % of base and M+1 recorded, by `tests/benchmarks/fit_evidence.py carbons`. Records used:
-4,204 sector, 158 time-of-flight, 68 high-resolution, 11 quadrupole. Quadrupole and trap records are too few: those classes use
-the wide sector model.
+4,204 sector, 158 time-of-flight, 68 high-resolution, 11 quadrupole.
+Quadrupole and trap records are too few: those classes use the wide sector model.
 """
 
 from __future__ import annotations
@@ -39,4 +39,5 @@ ERRORS: dict[str, tuple[CarbonErrors, ...]] = {
     "time-of-flight": _NARROW,
     "high-resolution": _NARROW,
 }
+NARROW_CLASSES = frozenset({"time-of-flight", "high-resolution"})
 """By `identify.evidence.facts.instrument_class`; the first row is the floor below which M+1 does not vote."""

@@ -136,12 +136,12 @@ def check_explained(facts: QueryFacts, formula: FormulaFacts | None) -> Finding:
     listed = ", ".join(str(mz) for _, mz in unexplained[:6])
     if size in ("none", "trace"):
         verdict, reason = Verdict.AGREES, "Pieces of this formula can give practically all ions of the query."
-    elif size in ("some", "much"):
+    elif size == "much":
         verdict, reason = Verdict.CONFLICTS, f"No piece of this formula has the mass of m/z {listed}."
     else:
         verdict, reason = (
             Verdict.INCONCLUSIVE,
-            f"A small part of the intensity (m/z {listed}) is not reachable; background explains it.",
+            f"A part of the intensity (m/z {listed}) is not reachable; background explains it.",
         )
     return Finding(
         EXPLAINED,

@@ -16,6 +16,7 @@ from identify.chem.formula import Formula, parse_formula, rings_plus_double_bond
 from identify.chem.isotopes import isotope_pattern
 from identify.chem.subformulas import reachable_nominal
 from identify.errors import FormulaError
+from identify.evidence.accurate import Recalibration, choose_ions, find_recalibration
 from identify.records import Acquisition, CleanSpectrum, Entry, FloatArray, Query
 
 HEADROOM = 16
@@ -51,6 +52,10 @@ class QueryFacts:
         m/z whose intensity is clipped, as far as the spectrum shows it.
     instrument_class : str
         `sector`, `quadrupole`, `trap`, `time-of-flight`, `high-resolution` or `unknown`.
+    accurate_ions : tuple of (m/z, relative intensity)
+        Main ions with accurate m/z; empty for a nominal-mass query.
+    recalibration : Recalibration or None
+        None for a nominal-mass query.
     """
 
     dense: tuple[float, ...]
@@ -63,6 +68,8 @@ class QueryFacts:
     has_isotope_peaks: bool
     saturated: tuple[int, ...]
     instrument_class: str
+    accurate_ions: tuple[tuple[float, float], ...] = ()
+    recalibration: Recalibration | None = None
 
     def at(self, mz: int) -> float:
         """Relative intensity at an integer m/z, 0 outside the spectrum."""
@@ -254,6 +261,8 @@ def spectrum_facts(spectrum: CleanSpectrum, acquisition: Acquisition) -> QueryFa
         has_isotope_peaks=_has_isotope_peaks(array),
         saturated=_saturated(mz, relative),
         instrument_class=instrument_class(acquisition),
+        accurate_ions=choose_ions(spectrum.accurate) if spectrum.accurate is not None else (),
+        recalibration=find_recalibration(spectrum.accurate) if spectrum.accurate is not None else None,
     )
 
 

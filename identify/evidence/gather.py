@@ -2,17 +2,17 @@
 
 from __future__ import annotations
 
+from identify.evidence.accurate_check import check_accurate_mass
 from identify.evidence.composition import check_explained, check_formula_rules
 from identify.evidence.facts import QueryFacts, build_query_facts, entry_formula
 from identify.evidence.finding import Finding, weigh
+from identify.evidence.fragment_isotopes import check_fragment_halogens
+from identify.evidence.fragments import check_extra_ions, check_missing_ions
 from identify.evidence.high_mass import check_ions_above, check_losses, check_molecular_ion
 from identify.evidence.isotopes import check_carbon_count, check_isotope_pattern
 from identify.evidence.retention_check import check_retention
 from identify.records import AlignedPeaks, Entry, EvidenceItem, Query
 from identify.settings import Settings
-
-BACKGROUND = frozenset({73, 147, 207, 221, 267, 281, 295, 341, 355, 429, 149, 18, 28, 32, 40, 44})
-"""Siloxane bleed, phthalate plasticiser, residual air and water (`standards.md` 6)."""
 
 
 def gather_evidence(
@@ -44,14 +44,18 @@ def examine(
 ) -> tuple[Finding, ...]:
     """Findings of all checks, before they are weighed (see `gather_evidence`)."""
     facts = facts or build_query_facts(query)
-    formula, _ = entry_formula(entry, facts)
+    formula, n_groups = entry_formula(entry, facts)
     return (
-        check_molecular_ion(facts, formula, entry),
+        check_molecular_ion(facts, formula, entry, n_groups),
         check_isotope_pattern(facts, formula),
+        check_fragment_halogens(facts, formula),
         check_carbon_count(facts, formula),
         check_losses(facts, formula, entry),
-        check_ions_above(facts, formula, entry, BACKGROUND),
+        check_ions_above(facts, formula, entry),
         check_formula_rules(facts, formula),
         check_explained(facts, formula),
+        check_missing_ions(facts, aligned),
+        check_extra_ions(facts, aligned, formula),
+        check_accurate_mass(facts, formula, settings),
         check_retention(query, entry),
     )

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from identify.evidence.facts import FormulaFacts, QueryFacts
 from identify.evidence.finding import Finding, not_assessed
+from identify.evidence.fragments import BACKGROUND
 from identify.records import Entry, Verdict
 
 MOLECULAR_ION = "molecular ion"
@@ -36,7 +37,9 @@ def level_of(relative: float) -> str:
     return next(name for limit, name in LEVELS if relative < limit)
 
 
-def check_molecular_ion(facts: QueryFacts, formula: FormulaFacts | None, entry: Entry) -> Finding:
+def check_molecular_ion(
+    facts: QueryFacts, formula: FormulaFacts | None, entry: Entry, n_groups: int | None = None
+) -> Finding:
     """Whether the query shows the molecular ion as strongly as the entry's own spectrum leads one to expect.
 
     Parameters
@@ -46,46 +49,71 @@ def check_molecular_ion(facts: QueryFacts, formula: FormulaFacts | None, entry: 
         Formula as measured.
     entry : Entry
         Its own spectrum says whether absence is normal.
+    n_groups : int or None
+        Number of derivative groups chosen from the query, for an entry that does not state it.
 
     Returns
     -------
     Finding
-        The tallest isotope peak stands for the ion (for Br2 the one at M + 2).
+        The tallest isotope peak stands for the ion (for Br2 the one at M + 2). Where a silylated entry shows no molecular ion,
+        [M − CH3]+ (trimethylsilyl) or [M − C4H9]+ (tert-butyldimethylsilyl) stands for it.
     """
     if formula is None:
         return not_assessed(MOLECULAR_ION, "The entry has no formula, so the mass of its molecular ion is not known.")
     mass, mz = formula.nominal_mass, formula.nominal_mass + formula.strongest_offset
+    label = f"M (m/z {mass})" if mz == mass else f"M (m/z {mass}; tallest isotope peak at m/z {mz})"
+    stand_in = ""
+    own = _entry_at(entry, mz)
+    lost = 57 if "TBDMS" in entry.measured_as else 15 if "Si" in formula.heavy else 0
+    if lost and own < LEVELS[0][0] and _entry_at(entry, mz - lost) >= 1.0:
+        mz, stand_in, label = (
+            mz - lost,
+            f"M − {lost}, ",
+            f"M − {lost} (m/z {mz - lost}), usual in place of M for silyl groups,",
+        )
+        own = _entry_at(entry, mz)
     if mz < facts.lowest_mz or (facts.highest_mz is not None and mz > facts.highest_mz):
         return not_assessed(MOLECULAR_ION, f"m/z {mz} lies outside the measured range.")
-    seen, own = facts.at(mz), _entry_at(entry, mz)
-    seen_level, own_level = level_of(seen), level_of(own)
-    label = f"M (m/z {mz})" if mz == mass else f"M (m/z {mass}; tallest isotope peak at m/z {mz})"
-    gap = RANK[own_level] - RANK[seen_level]
-    if own_level == "absent" and seen_level == "absent":
-        verdict, reason = Verdict.INCONCLUSIVE, f"Neither spectrum shows {label}; its absence is normal for this entry."
-    elif own_level == "absent":
-        verdict = Verdict.INCONCLUSIVE
-        reason = f"The query has an ion where {label} would be, but the entry's own spectrum does not show its molecular ion."
-    elif seen_level == "absent" and facts.floor >= own / 2:
-        verdict, reason = Verdict.INCONCLUSIVE, f"The query does not show {label}, but records nothing that weak."
-    elif seen_level == "absent":
-        verdict, reason = Verdict.CONFLICTS, f"The query does not show {label}, which the entry's own spectrum shows."
-    elif gap >= 2:
-        verdict, reason = Verdict.CONFLICTS, f"The query shows {label} far weaker than the entry's own spectrum."
-    elif gap <= -2:
-        verdict, reason = Verdict.INCONCLUSIVE, f"The query shows {label} far stronger than the entry's own spectrum."
-    else:
-        verdict, reason = Verdict.AGREES, f"The query shows {label} about as strong as the entry's own spectrum."
+    seen = facts.at(mz)
+    verdict, reason = _compare_levels(seen, own, label, facts.floor)
+    cell = f"{stand_in}entry {level_of(own)}, query {level_of(seen)}"
+    if n_groups is not None:
+        reason = f"{reason[:-1]}, taken as {n_groups} groups because that fits the query best."
+        if verdict is Verdict.AGREES:  # the number was chosen so that it would
+            verdict, cell = Verdict.INCONCLUSIVE, ""
     return Finding(
         MOLECULAR_ION,
         verdict,
         reason,
-        cell=f"entry {own_level}, query {seen_level}",
+        cell=cell,
         observed=f"{seen:.1f} % of base",
         expected=f"{own:.1f} % of base in the entry",
         uncertainty=f"peaks below {facts.floor:.2g} % are not recorded",
         source=PRESENCE_SOURCE,
     )
+
+
+def _compare_levels(seen: float, own: float, label: str, floor: float) -> tuple[Verdict, str]:
+    seen_level, own_level = level_of(seen), level_of(own)
+    gap = RANK[own_level] - RANK[seen_level]
+    if own_level == "absent" and seen_level == "absent":
+        return Verdict.INCONCLUSIVE, f"Neither spectrum shows {label}; its absence is normal for this entry."
+    if own_level == "absent":
+        return (
+            Verdict.INCONCLUSIVE,
+            f"The query has an ion where {label} would be, but the entry's own spectrum does not show its molecular ion.",
+        )
+    if seen_level == "absent" and floor >= own / 2:
+        return Verdict.INCONCLUSIVE, f"The query does not show {label}, but records nothing that weak."
+    if seen_level == "absent":
+        return Verdict.CONFLICTS, f"The query does not show {label}, which the entry's own spectrum shows."
+    if gap >= 2:
+        return Verdict.CONFLICTS, f"The query shows {label} far weaker than the entry's own spectrum."
+    if gap == 1 and own_level == "strong":
+        return Verdict.INCONCLUSIVE, f"The query shows {label} weaker than the entry's own spectrum."
+    if gap <= -2:
+        return Verdict.INCONCLUSIVE, f"The query shows {label} far stronger than the entry's own spectrum."
+    return Verdict.AGREES, f"The query shows {label} about as strong as the entry's own spectrum."
 
 
 def _entry_at(entry: Entry, mz: int) -> float:
@@ -140,9 +168,7 @@ def excess_above(dense: tuple[float, ...], formula: FormulaFacts) -> tuple[float
     return worst, where
 
 
-def check_ions_above(
-    facts: QueryFacts, formula: FormulaFacts | None, entry: Entry, background: frozenset[int]
-) -> Finding:
+def check_ions_above(facts: QueryFacts, formula: FormulaFacts | None, entry: Entry) -> Finding:
     """Whether the query has ions heavier than the candidate's molecule.
 
     Parameters
@@ -152,8 +178,6 @@ def check_ions_above(
         Formula as measured.
     entry : Entry
         Its own spectrum may show the same ions.
-    background : frozenset of int
-        m/z of named background; an excess there is background, not contradiction.
 
     Returns
     -------
@@ -172,8 +196,8 @@ def check_ions_above(
             Verdict.INCONCLUSIVE,
             f"m/z {mz} lies above M, but the entry's own spectrum has such ions too.",
         )
-    elif mz in background:
-        verdict, reason = Verdict.INCONCLUSIVE, f"m/z {mz} lies above M and is a known background ion."
+    elif mz in BACKGROUND:
+        verdict, reason = Verdict.INCONCLUSIVE, f"m/z {mz} lies above M and is known background ({BACKGROUND[mz]})."
     elif size == "trace":
         verdict, reason = Verdict.INCONCLUSIVE, f"A trace at m/z {mz} lies above M; background would explain it."
     else:

@@ -6,7 +6,7 @@ import math
 from dataclasses import dataclass
 from itertools import pairwise
 
-from identify.evidence.carbon_errors import ERRORS, CarbonErrors
+from identify.evidence.carbon_errors import ERRORS, NARROW_CLASSES, CarbonErrors
 from identify.evidence.facts import FormulaFacts, QueryFacts
 from identify.evidence.finding import Finding, not_assessed
 from identify.records import Verdict
@@ -203,7 +203,8 @@ def check_carbon_count(facts: QueryFacts, formula: FormulaFacts | None) -> Findi
     Returns
     -------
     Finding
-        An excess conflicts only where [M+H]+ cannot explain it (no N, O or S in the formula).
+        An excess conflicts only where [M+H]+ cannot explain it: no N, O or S in the formula, or an instrument class on
+        which the open records show hardly any.
     """
     if formula is None:
         return not_assessed(CARBONS, "The entry has no formula to count carbons in.")
@@ -213,6 +214,7 @@ def check_carbon_count(facts: QueryFacts, formula: FormulaFacts | None) -> Findi
     if isinstance(count, str):
         return not_assessed(CARBONS, count)
     carbons = formula.carbons
+    family = "narrow" if facts.instrument_class in NARROW_CLASSES else "wide"
     if count.low <= carbons <= count.high:
         middle = count.inner_low <= carbons <= count.inner_high
         verdict, side = Verdict.AGREES, "near" if middle else "within"
@@ -220,13 +222,15 @@ def check_carbon_count(facts: QueryFacts, formula: FormulaFacts | None) -> Findi
     elif carbons > count.high:
         verdict, reason = Verdict.CONFLICTS, f"M+1 is too small for {carbons} carbons."
         side = "too few" if count.counted > 0.3 * carbons else "far too few"
+    elif family == "narrow":
+        verdict, side = Verdict.CONFLICTS, "excess"
+        reason = f"M+1 is taller than {carbons} carbons give; on {facts.instrument_class} instruments [M+H]+ rarely adds so much."
     elif any(formula.formula.count(symbol) for symbol in ("N", "O", "S")):
         verdict, side = Verdict.INCONCLUSIVE, "excess explainable"
         reason = f"M+1 is taller than {carbons} carbons give; [M+H]+ or a second compound would explain it."
     else:
         verdict, side = Verdict.CONFLICTS, "excess"
         reason = f"M+1 is taller than {carbons} carbons give, and this formula hardly forms [M+H]+."
-    family = "wide" if facts.instrument_class in ("sector", "unknown") else "narrow"
     return Finding(
         CARBONS,
         verdict,

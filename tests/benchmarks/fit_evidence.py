@@ -11,8 +11,9 @@ from __future__ import annotations
 
 import math
 import sys
-from collections import Counter, defaultdict
+from collections import Counter
 from collections.abc import Iterator
+from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
@@ -20,7 +21,11 @@ from evidence_data import OpenRecords, as_query, load_open_records
 
 from identify.evidence.carbon_errors import CarbonErrors
 from identify.evidence.facts import build_query_facts, formula_facts, spectrum_facts
+from identify.evidence.fragments import EXTRA, MISSING
+from identify.evidence.gather import examine
 from identify.evidence.isotopes import CARBON_13, take_apart
+from identify.settings import Settings
+from identify.spectra.align import align
 
 ROOM = Path(__file__).resolve().parents[2] / "identify" / "evidence"
 PROVENANCE = "Fitted on the open EI records (MassBank release 2025.05.1, 60–80 eV or unstated, unlabelled)"
@@ -63,7 +68,9 @@ def carbon_model(rows: list[tuple[str, float, float]]) -> dict[str, tuple[Carbon
             near = np.argsort(distance)[: max(60, int(0.25 * len(members)))]
             quantiles = np.quantile(error[near], (0.05, 0.25, 0.75, 0.95))
             knots.append(CarbonErrors(knot, *(round(float(value), 3) for value in quantiles)))
-        for name in ("sector", "unknown", "quadrupole", "trap") if pool == "sector" else ("time-of-flight", "high-resolution"):
+        for name in (
+            ("sector", "unknown", "quadrupole", "trap") if pool == "sector" else ("time-of-flight", "high-resolution")
+        ):
             model[name] = tuple(knots)
     return model
 
@@ -77,9 +84,9 @@ def fit_carbons(records: OpenRecords) -> None:
         '"""How far carbons counted from M+1 are off, by instrument class and intensity of M.',
         "",
         f"{PROVENANCE},",
-        "M at least 5 % of base and M+1 recorded, by `tests/benchmarks/fit_evidence.py carbons`. Records used: ",
-        f"{', '.join(f'{number:,} {name}' for name, number in counts.most_common())}. Quadrupole and trap records are too few: those classes use",
-        "the wide sector model.",
+        "M at least 5 % of base and M+1 recorded, by `tests/benchmarks/fit_evidence.py carbons`. Records used:",
+        f"{', '.join(f'{number:,} {name}' for name, number in counts.most_common())}.",
+        "Quadrupole and trap records are too few: those classes use the wide sector model.",
         '"""',
         "",
         "from __future__ import annotations",
@@ -104,13 +111,153 @@ def fit_carbons(records: OpenRecords) -> None:
         *(f"    CarbonErrors{tuple(row)}," for row in model["time-of-flight"]),
         ")",
         "ERRORS: dict[str, tuple[CarbonErrors, ...]] = {",
-        *(f'    "{name}": {"_NARROW" if rows == model["time-of-flight"] else "_WIDE"},' for name, rows in model.items()),
+        *(
+            f'    "{name}": {"_NARROW" if rows == model["time-of-flight"] else "_WIDE"},'
+            for name, rows in model.items()
+        ),
         "}",
+        'NARROW_CLASSES = frozenset({"time-of-flight", "high-resolution"})',
         '"""By `identify.evidence.facts.instrument_class`; the first row is the floor below which M+1 does not vote."""',
         "",
     ]
     (ROOM / "carbon_errors.py").write_text("\n".join(lines), encoding="utf-8")
 
 
+@dataclass(frozen=True)
+class Judged:
+    """The findings on one candidate of one query."""
+
+    query: int
+    right: bool
+    same_formula: bool
+    weight: float
+    cosine: float
+    cells: dict[str, tuple[str, str]]
+    """Cell and verdict by kind of check."""
+
+
+N_WRONG = 3
+MAX_QUERIES_PER_COMPOUND = 2
+SEED = 20250501
+
+
+def judge_candidates(records: OpenRecords) -> Iterator[Judged]:
+    """Findings on the right and the closest wrong candidates of up to two records of every compound with replicates.
+
+    The right candidate is the best other entry of the compound, measured as the same derivative. Wrong ones are the most
+    similar entries of other compounds: the `N_WRONG` best of another formula as measured (weight 1/3 each), and the best one of
+    the same formula among the ten nearest, kept apart because formula checks cannot speak about isomers.
+    """
+    rng = np.random.default_rng(SEED)
+    settings = Settings()
+    for (compound, _), places in records.replicates.items():
+        if len(places) < 2:
+            continue
+        for place in rng.permutation(places)[:MAX_QUERIES_PER_COMPOUND].tolist():
+            entry = records.entries[place]
+            query = as_query(entry)
+            facts = build_query_facts(query)
+            cosine = records.matrix[places] @ records.matrix[place]
+            right = max(other for other in zip(cosine.tolist(), places, strict=True) if other[1] != place)
+            near = [item for item in records.nearest(place, 15) if records.compounds[item[0]] != compound]
+            formula = entry.formula_as_measured
+            other = [item for item in near if records.entries[item[0]].formula_as_measured not in ("", formula)][
+                :N_WRONG
+            ]
+            isomer = [item for item in near[:10] if records.entries[item[0]].formula_as_measured == formula][:1]
+            rows = [(right[1], right[0], True, True, 1.0)]
+            rows += [(item[0], item[1], False, False, 1.0 / len(other)) for item in other]
+            rows += [(item[0], item[1], False, True, 1.0) for item in isomer]
+            for candidate, similarity, is_right, same, weight in rows:
+                chosen = records.entries[candidate]
+                aligned = align(query.spectrum, chosen.spectrum)
+                found = examine(query, chosen, aligned, settings, facts)
+                cells = {item.kind: (item.cell, item.verdict.value) for item in found}
+                yield Judged(place, is_right, same, weight, similarity, cells)
+
+
+def likelihood_ratios(judged: list[Judged]) -> dict[str, dict[str, tuple[float, float, float]]]:
+    """By kind and cell: log-odds, and the weights of right and wrong candidates in the cell."""
+    table: dict[str, dict[str, tuple[float, float, float]]] = {}
+    used = [item for item in judged if item.right or not item.same_formula]
+    for kind in judged[0].cells:
+        right: Counter[str] = Counter()
+        wrong: Counter[str] = Counter()
+        for item in used:
+            (right if item.right else wrong)[item.cells[kind][0]] += item.weight  # type: ignore[assignment]
+        n_right, n_wrong = sum(right.values()), sum(wrong.values())
+        table[kind] = {}
+        for cell in sorted((set(right) | set(wrong)) - {""}):
+            pooled = (right[cell] + wrong[cell]) / (n_right + n_wrong)
+            share_right = (right[cell] + PSEUDO * pooled * n_right / n_wrong) / (n_right + PSEUDO * pooled)
+            share_wrong = (wrong[cell] + PSEUDO * pooled) / (n_wrong + PSEUDO * pooled)
+            seen = right[cell] + wrong[cell]
+            shrink = seen / (seen + SHRINK)
+            table[kind][cell] = (
+                shrink * math.log(max(share_right, 1e-6) / max(share_wrong, 1e-6)),
+                right[cell],
+                wrong[cell],
+            )
+    for kind in (MISSING, EXTRA):
+        table[kind] = at_equal_cosine(used, kind)
+    return table
+
+
+PSEUDO, SHRINK = 4.0, 4.0
+"""Pseudo-observations spread like the pooled data, and the number of observations at which half of a log-odds value is kept."""
+
+
+def at_equal_cosine(used: list[Judged], kind: str) -> dict[str, tuple[float, float, float]]:
+    """Log-odds of a kind's cells beyond what cosine similarity says: logistic regression with cosine in four bends."""
+    cells = sorted({item.cells[kind][0] for item in used} - {""})
+    cosine = np.array([item.cosine for item in used])
+    bends = np.stack(
+        [np.ones_like(cosine), cosine, *(np.maximum(cosine - knot, 0) for knot in (0.6, 0.8, 0.9))], axis=1
+    )
+    marks = np.array([[item.cells[kind][0] == cell for cell in cells] for item in used], float)
+    design = np.hstack([bends, marks])
+    truth = np.array([item.right for item in used], float)
+    weight = np.array([item.weight for item in used])
+    ridge = np.array([1e-3] * bends.shape[1] + [2.0] * len(cells))
+    beta = np.zeros(design.shape[1])
+    for _ in range(60):
+        probability = 1.0 / (1.0 + np.exp(-design @ beta))
+        curvature = design.T @ (design * (weight * probability * (1 - probability))[:, None]) + np.diag(ridge)
+        beta += np.linalg.solve(curvature, design.T @ (weight * (truth - probability)) - ridge * beta)
+    effect = beta[bends.shape[1] :]
+    totals = (marks * weight[:, None]).sum(axis=0)
+    effect = effect - float((effect * totals).sum() / totals.sum())
+    rights = (marks * (weight * truth)[:, None]).sum(axis=0)
+    return {
+        cell: (float(e), float(r), float(n - r)) for cell, e, r, n in zip(cells, effect, rights, totals, strict=True)
+    }
+
+
+def fit_weights(records: OpenRecords) -> None:
+    """Write the log-odds table."""
+    judged = list(judge_candidates(records))
+    table = likelihood_ratios(judged)
+    queries = len({item.query for item in judged})
+    lines = [
+        '"""Measured log-odds of each cell of each check (see `identify.evidence.finding`).',
+        "",
+        f"{PROVENANCE}",
+        f"by `tests/benchmarks/fit_evidence.py weights`: {queries:,} queries. Right: the best other entry of the compound;",
+        "wrong: the three most similar entries of another formula. For `ions missing in the query` and `ions only in the",
+        "query` at equal cosine similarity. The comment gives how many right and wrong candidates fell into the cell.",
+        '"""',
+        "",
+        "from __future__ import annotations",
+        "",
+        "LOG_ODDS: dict[str, dict[str, float]] = {",
+    ]
+    for kind, cells in table.items():
+        lines.append(f'    "{kind}": {{')
+        for cell, (value, right, wrong) in cells.items():
+            lines.append(f'        "{cell}": {value:.2f},  # {right:.0f} right, {wrong:.0f} wrong')
+        lines.append("    },")
+    (ROOM / "weights.py").write_text("\n".join([*lines, "}", ""]), encoding="utf-8")
+
+
 if __name__ == "__main__":
-    {"carbons": fit_carbons}[sys.argv[1]](load_open_records())
+    {"carbons": fit_carbons, "weights": fit_weights}[sys.argv[1]](load_open_records())
