@@ -7,6 +7,7 @@ import sys
 import click
 
 from identify import __version__
+from identify.cli.compare import compare
 from identify.cli.confirm import confirm, instrument
 from identify.cli.demo import demo
 from identify.cli.library import library
@@ -50,7 +51,7 @@ def ionwitness() -> None:
     """
 
 
-for _command in (demo, search, run, confirm, instrument, library, serve):
+for _command in (demo, search, run, confirm, instrument, compare, library, serve):
     ionwitness.add_command(_command)
 for _command in (verify, backup, restore, migrate, quarantine, reinstate, affected, consensus):
     library.add_command(_command)
