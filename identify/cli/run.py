@@ -1,40 +1,119 @@
-"""``ionwitness run``: a GC-MS run in, its components named."""
+"""``ionwitness run``: GC-MS runs in, their components named."""
 
 from __future__ import annotations
 
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from identify.cli.search import FILE, deliver, progress_bar, read_settings
 
+if TYPE_CHECKING:
+    from identify.pipeline.runs import RunOptions
+    from identify.runs.findings import RunsReport
+
 
 @click.command()
-@click.argument("path", metavar="RUN", type=FILE)
+@click.argument("paths", metavar="RUN...", nargs=-1, required=True, type=FILE)
 @click.option("--library", "libraries", multiple=True, required=True, type=FILE, help="Library to search; repeatable.")
 @click.option("--blank", type=FILE, help="Blank run: what it shows too is marked.")
-@click.option("--ladder", "ladder_path", type=FILE, help="Retention times of n-alkanes: carbon number, minutes.")
+@click.option("--ladder", type=FILE, help="n-Alkanes: a table (carbon number, minutes) or a run of an alkane mixture.")
+@click.option(
+    "--column", default="", help="Column phase, such as '5% phenyl methylpolysiloxane': indices become evidence."
+)
+@click.option("--at", "at", help="Search one spectrum by hand: minutes, or two for the mean of the scans between.")
+@click.option("--background", help="With --at: minutes of scans to subtract, separated by commas.")
 @click.option("--json", "json_path", type=FILE, help="Write the full result as JSON.")
-@click.option("--csv", "csv_path", type=FILE, help="Write one row per candidate as CSV.")
+@click.option("--csv", "csv_path", type=FILE, help="Write one row per component as CSV.")
 @click.option("--report", "html_path", type=FILE, help="Write a self-contained HTML report.")
 @click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
 def run(
-    path: Path,
+    paths: tuple[Path, ...],
     libraries: tuple[Path, ...],
     blank: Path | None,
-    ladder_path: Path | None,
+    ladder: Path | None,
+    column: str,
+    at: str | None,
+    background: str | None,
     json_path: Path | None,
     csv_path: Path | None,
     html_path: Path | None,
     settings_path: Path | None,
 ) -> int:
-    """Find and name everything that eluted in RUN (ANDI-MS netCDF)."""
-    from identify.pipeline.runs import run_file
-    from identify.retention import parse_ladder
+    """Find and name everything that eluted in each RUN (ANDI-MS netCDF, mzML)."""
+    from identify.errors import UsageError
+    from identify.pipeline.runs import identify_scans, run_files
     from identify.settings import resolve
 
     settings = resolve(read_settings(settings_path), where=str(settings_path or "settings"))
-    ladder = parse_ladder(ladder_path.read_text(encoding="utf-8"), str(ladder_path)) if ladder_path else None
+    if at is not None:
+        if len(paths) != 1 or blank or ladder:
+            raise UsageError("--at", found="several runs, a blank or a ladder beside it", expected="one run alone")
+        report = identify_scans(
+            paths[0], _minutes(at, "--at"), _minutes(background or "", "--background"), libraries, settings
+        )
+        return deliver(report, json_path, csv_path, html_path)
+    if background is not None:
+        raise UsageError("--background", found="no --at", expected="--at with the minutes of the peak")
+    options = _options(blank, ladder, column)
     with progress_bar("Identifying") as progress:
-        found = run_file(path, libraries, settings, blank=blank, ladder=ladder, progress=progress)
-    return deliver(found.report, json_path, csv_path, html_path)
+        found = run_files(paths, libraries, settings, options, progress)
+    _write(found, json_path, csv_path, html_path)
+    from rich.console import Console
+
+    from identify.report.run_terminal import render_run_terminal
+
+    render_run_terminal(found, Console())
+    return found.report.exit_code
+
+
+def _write(found: RunsReport, json_path: Path | None, csv_path: Path | None, html_path: Path | None) -> None:
+    from identify.report.run_html import write_run_html
+    from identify.writers.run_csv import write_run_csv
+    from identify.writers.run_json import write_run_json
+
+    for path, write in ((json_path, write_run_json), (csv_path, write_run_csv), (html_path, write_run_html)):
+        if path is not None:
+            write(path, found)
+            click.echo(f"Written: {path}", err=True)
+
+
+def _options(blank: Path | None, ladder: Path | None, column: str) -> RunOptions:
+    from identify.errors import UsageError
+    from identify.pipeline.runs import RunOptions
+    from identify.readers.runs import is_run
+    from identify.retention import parse_ladder, phase_class
+
+    if column and not phase_class(column):
+        raise UsageError(
+            "--column", found=repr(column[:60]), expected="a column or phase name whose phase class is known"
+        )
+    if ladder is None:
+        return RunOptions(blank=blank, column=column)
+    if is_run(ladder):
+        return RunOptions(blank=blank, ladder_run=ladder, column=column)
+    try:
+        text = ladder.read_text(encoding="utf-8")
+    except (OSError, UnicodeDecodeError) as error:
+        raise UsageError("--ladder", where=str(ladder), found=str(error), expected="a readable text or run") from None
+    return RunOptions(blank=blank, ladder=parse_ladder(text, str(ladder)), column=column)
+
+
+def _minutes(text: str, option: str) -> tuple[float, ...]:
+    import math
+
+    from identify.errors import UsageError
+
+    values = []
+    for part in text.split(","):
+        if not part.strip():
+            continue
+        try:
+            value = float(part)
+        except ValueError:
+            value = math.nan
+        if not math.isfinite(value):
+            raise UsageError(option, found=repr(part[:40]), expected="minutes separated by commas, like 6.55,6.75")
+        values.append(value)
+    return tuple(values)

@@ -181,7 +181,9 @@ class _Analysis:
         width_s = decomposition.width_scans * decomposition.scan_time_s
         settled = settle_jointly(findings, width_s, self.settings)
         named = [
-            replace(f, identification=name_class(f.identification, self.settings)) if f.identification else f
+            replace(f, identification=name_class(f.identification, f.component, self.settings))
+            if f.identification
+            else f
             for f in settled
         ]
         return RunFindings(number, run, decomposition, tuple(named), scale, run.notes)

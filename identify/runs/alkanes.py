@@ -28,12 +28,14 @@ TRACE_SHARE = 0.2
 MIN_RUNGS = 3
 
 
-def alkane_carbons(component: Component) -> int | None:
+def alkane_carbons(component: Component, series_share: float = MIN_SERIES_SHARE) -> int | None:
     """Carbon number of the alkane that a component's spectrum shows; 0 for an alkane without molecular ion, None for no alkane.
 
     Parameters
     ----------
     component : Component
+    series_share : float
+        Share of the signal that must lie in the alkane series, in [0, 1].
 
     Returns
     -------
@@ -52,7 +54,7 @@ def alkane_carbons(component: Component) -> int | None:
     chain = np.isin(mz % 14, (0, 1, 13))
     carbons = _from_molecular_ion(values)
     own = chain | np.isin(mz, (14 * carbons + 2, 14 * carbons + 3) if carbons else ())
-    if float(relative[own].sum() / relative.sum()) < MIN_SERIES_SHARE:
+    if float(relative[own].sum() / relative.sum()) < series_share:
         return None
     return carbons
 

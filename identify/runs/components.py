@@ -102,7 +102,7 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
     clusters = cluster_ion_peaks(peaks, run.n_scans, width)
     significant = signal * (signal >= SIGNIFICANT_SIGMA * noise.sigma(background + signal))
     stage = Stage(matrix, residual, level, noise, width, float(significant.sum()), _detector_ceiling(matrix))
-    clusters, shapes, extracted = _extract_all(clusters, stage)
+    shapes, extracted = _extract_all(clusters, stage)
     large = [_from_overload(overload, stage) for overload in overloads]
     unassigned = _unassigned(extracted, shapes, stage)
     found = [c for c in extracted if c and not any(_is_drift(c, whole) for whole in large)] + large
@@ -112,10 +112,10 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
     return Decomposition(components, matrix.time_s, total, background.sum(axis=1), unassigned, width, skew)
 
 
-def _extract_all(
-    clusters: Sequence[Cluster], stage: Stage
-) -> tuple[Sequence[Cluster], Sequence[Shape], list[Component | None]]:
-    """Clusters that make components, with shapes and components; what the others held goes to their neighbours."""
+def _extract_all(clusters: Sequence[Cluster], stage: Stage) -> tuple[Sequence[Shape], list[Component | None]]:
+    """Shapes and components of the clusters that make one; what the others held goes to their neighbours."""
+    shapes: Sequence[Shape] = ()
+    extracted: list[Component | None] = []
     for _ in range(MAX_PASSES):
         shapes = fit_shapes(clusters, stage.signal, stage.width)
         extracted = [_extract(place, clusters, shapes, stage) for place in range(len(clusters))]
@@ -124,7 +124,7 @@ def _extract_all(
             break
         clusters = [clusters[place] for place in keep]
         shapes, extracted = [shapes[place] for place in keep], [extracted[place] for place in keep]
-    return clusters, shapes, extracted
+    return shapes, extracted
 
 
 def _is_remnant(component: Component) -> bool:
@@ -278,7 +278,7 @@ def _solve(design: FloatArray, window: FloatArray, sigma: FloatArray) -> tuple[F
     covariance = np.linalg.pinv(design.T @ design)
     mean_variance = np.sum(design[:, :1] * sigma**2, axis=0) / design[:, 0].sum()
     spread = np.sqrt(max(covariance[0, 0], 0.0) * mean_variance)
-    for ion in np.nonzero((window.max(axis=0) >= 2.0 * sigma.min(axis=0)))[0]:
+    for ion in np.nonzero(window.max(axis=0) >= 2.0 * sigma.min(axis=0))[0]:
         trace = window[:, ion]
         solution, rest = nnls(design, trace)
         amplitude[ion] = solution[0]

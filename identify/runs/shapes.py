@@ -65,8 +65,8 @@ def fit_shapes(clusters: Sequence[Cluster], signal: FloatArray, width: float) ->
     A cluster with no neighbour within two widths takes the signal-weighted mean of its strongest ions that agree with
     their median (correlation ≥ 0.95), falling monotonously on both sides. A crowded cluster takes its shape from ions that
     only it shows (narrow, falling to the baseline on both sides, their apex at the cluster's) if these are clearly wider or
-    narrower than usual. Usual is the median shape of the nearest isolated clusters, moved to its own apex by cubic splines; without any
-    isolated cluster in the run, a Gaussian of the typical width.
+    narrower than usual. Usual is the median shape of the nearest isolated clusters, moved to its own apex by cubic splines;
+    without any isolated cluster in the run, a Gaussian of the typical width.
     """
     apexes = np.array([cluster.apex for cluster in clusters])
     half = int(np.ceil(HALF_WINDOW_WIDTHS * width))
@@ -154,7 +154,7 @@ def _fall_from(traces: FloatArray, top: int) -> FloatArray:
 def _falling(values: FloatArray) -> FloatArray:
     """The shape made to fall monotonously from its maximum, and 0 below 0.5 % of it."""
     top = int(np.argmax(values))
-    falling = _fall_from(values[None, :], top)[0] / max(float(values[top]), 1e-9)
+    falling: FloatArray = _fall_from(values[None, :], top)[0] / max(float(values[top]), 1e-9)
     falling[falling < 0.005] = 0.0
     return falling
 
