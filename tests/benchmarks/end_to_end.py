@@ -1,0 +1,78 @@
+"""Times of the main job on the open records: build, cold search, many queries. Needs ../shared/data.
+
+``python tests/benchmarks/end_to_end.py [--queries 400]`` prints one line per goal of the design (table in DEVELOPERS.md).
+"""
+
+from __future__ import annotations
+
+import argparse
+import resource
+import subprocess
+import sys
+import tempfile
+import time
+import zipfile
+from pathlib import Path
+
+from identify.pipeline.batch import identify_many
+from identify.pipeline.search import identify_records, open_libraries
+from identify.readers import read_spectra
+from identify.records import Rejection
+from identify.settings import Settings
+from identify.writers.results_json import report_to_dict
+from tests.builders import build_report
+
+DATA = Path(__file__).resolve().parents[3] / "shared" / "data" / "massbank-2025.05.1-ei.zip"
+COMMAND = [sys.executable, "-c", "from identify.cli import main; main()"]
+
+
+def timed(*arguments: object) -> float:
+    """Wall time of one command in a fresh process, in seconds."""
+    start = time.perf_counter()
+    subprocess.run([*COMMAND, *map(str, arguments)], check=True, capture_output=True)
+    return time.perf_counter() - start
+
+
+def main() -> None:
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("--queries", type=int, default=400)
+    n_queries: int = parser.parse_args().queries
+    with tempfile.TemporaryDirectory() as name:
+        folder = Path(name)
+        library = folder / "all.ionlib"
+        print(f"--help                        {timed('--help'):8.2f} s      goal 0.3")
+        print(
+            f"library build (12,486 records) {timed('library', 'build', library, DATA, '--licence', 'all'):7.1f} s      goal 20"
+        )
+        peak = resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss / 1024
+        print(f"  peak memory                 {peak:8.0f} MB     goal 1000")
+        with zipfile.ZipFile(DATA) as archive:
+            members = [n for n in archive.namelist() if n.endswith(".txt")][:: max(1, 14_155 // n_queries)]
+            archive.extractall(folder / "queries", members)
+        one = next((folder / "queries").rglob("*Osaka*.txt"))
+        print(f"first search (index is made)  {timed('search', one, '--library', library):8.2f} s")
+        cold = timed("search", one, "--library", library, "--json", folder / "one.json")
+        print(f"one cold search with JSON     {cold:8.2f} s      goal 1.5")
+        left_out: list[Rejection] = []
+        records = [r for r in read_spectra(folder / "queries", left_out.append) if r.acquisition.ionization == "EI"]
+        settings, frame = Settings(), build_report()
+        with open_libraries([library], settings) as libraries:
+            start = time.perf_counter()
+            for found in identify_records(records[:100], libraries, settings, left_out):
+                report_to_dict(_with(frame, found))
+            print(f"one core, cleaning to JSON    {100 / (time.perf_counter() - start):8.1f} queries/s")
+            list(identify_many(records[:70], libraries, settings, left_out))
+            start = time.perf_counter()
+            n_found = sum(1 for _ in identify_many(records, libraries, settings, left_out))
+            rate = n_found / (time.perf_counter() - start)
+            print(f"all cores, start-up included  {rate:8.1f} queries/s goal 100 ({n_found} queries)")
+
+
+def _with(frame: object, found: object) -> object:
+    from dataclasses import replace
+
+    return replace(frame, identifications=(found,))
+
+
+if __name__ == "__main__":
+    main()
