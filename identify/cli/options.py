@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import os
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
-from identify.errors import InputError, IonwitnessError
+from identify.errors import InputError, IonwitnessError, UsageError
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterable, Sequence
@@ -108,6 +109,37 @@ def describe_os_error(error: OSError) -> str:
         (PermissionError, "no permission"),
     )
     return next((text for kind, text in words if isinstance(error, kind)), error.strerror or type(error).__name__)
+
+
+def check_outputs(outputs: Sequence[Path | None], inputs: Sequence[Path]) -> None:
+    """Nothing comes out; results will have a place to go, found out before the work is done.
+
+    Parameters
+    ----------
+    outputs : sequence of Path or None
+        Files that will be written.
+    inputs : sequence of Path
+        Files of this command that must not be overwritten.
+
+    Raises
+    ------
+    UsageError
+        If a folder is missing or cannot be written, or a file is named twice.
+    """
+    taken = {path.resolve(): "a file that this command reads" for path in inputs}
+    for path in outputs:
+        if path is None:
+            continue
+        found = taken.get(path.resolve(), "")
+        if path.is_dir():
+            found = "a folder of that name"
+        elif not path.parent.is_dir():
+            found = "no such folder"
+        elif not os.access(path.parent, os.W_OK):
+            found = "a folder without permission to write"
+        if found:
+            raise UsageError("output file", where=str(path), found=found, expected="a new file in a folder to write to")
+        taken[path.resolve()] = "the same file twice"
 
 
 def say(text: str) -> None:

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 import click
 
-from identify.cli.options import FILE, MAX_TEXT_BYTES, read_text
+from identify.cli.options import FILE, MAX_TEXT_BYTES, WHO, check_outputs, now, read_text
 from identify.cli.progress import progress_bar
 from identify.errors import InputError, UsageError
 
@@ -35,6 +35,11 @@ __all__ = ["FILE", "deliver", "progress_bar", "read_settings", "search"]
     "--as-of", metavar="EVENT", multiple=True,
     help="The library as it stood after this event (number or hash); with several libraries once for each, in order.",
 )  # fmt: skip
+@click.option(
+    "--record/--no-record", "is_recorded", default=None,
+    help="Remember in the library which entries answered (default: when a result file is written and the library allows).",
+)  # fmt: skip
+@WHO
 def search(
     queries: tuple[Path, ...],
     libraries: tuple[Path, ...],
@@ -45,6 +50,8 @@ def search(
     settings_path: Path | None,
     prefer_own: bool | None,
     as_of: tuple[str, ...],
+    is_recorded: bool | None,
+    who: str,
 ) -> int:
     """Identify every spectrum in QUERIES (files, folders, archives, or - for pasted peaks)."""
     from identify.pipeline import search_files, search_pasted
@@ -53,12 +60,45 @@ def search(
     settings = resolve(
         read_settings(settings_path), where=str(settings_path or "settings"), top=top, prefer_own_standards=prefer_own
     )
+    outputs = (json_path, csv_path, html_path)
+    check_outputs(outputs, (*queries, *libraries))
+    written = next((path for path in outputs if path), None)
+    if is_recorded and written is None:
+        raise UsageError("--record", found="no result file", expected="--json, --csv or --report with it")
     if queries == (Path("-"),):
         report = search_pasted(_read_pasted(), libraries, settings, as_of=as_of)
     else:
         with progress_bar("Identifying") as progress:
             report = search_files(queries, libraries, settings, progress, as_of=as_of)
-    return deliver(report, json_path, csv_path, html_path)
+    code = deliver(report, json_path, csv_path, html_path)
+    if written and is_recorded is not False:
+        remember(report, written, who, is_required=bool(is_recorded))
+    return code
+
+
+def remember(report: Report, result: Path, who: str, *, is_required: bool) -> None:
+    """Nothing comes out; afterwards the libraries know which entries answered, or it is said why not.
+
+    Parameters
+    ----------
+    report : Report
+    result : Path
+        File the report was written to.
+    who : str
+    is_required : bool
+        Whether a library that cannot remember it is an error.
+
+    Raises
+    ------
+    LibraryError
+        If a library cannot be written although it is required.
+    """
+    from identify.pipeline.remember import remember_report
+
+    for fault in remember_report(report, result, who=who, when=now()):
+        if is_required:
+            raise fault
+        click.echo(f"Not recorded in the library: {fault}", err=True)
 
 
 def _read_pasted() -> str:

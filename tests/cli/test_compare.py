@@ -5,7 +5,6 @@ from __future__ import annotations
 import copy
 import csv
 import json
-import shutil
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -17,13 +16,6 @@ from identify.errors import FormatError, InputError, UsageError
 from identify.library.store import open_library
 
 Run = Callable[..., Result]
-
-
-@pytest.fixture
-def lab(starter: Path, tmp_path: Path) -> Path:
-    path = tmp_path / "lab ä.ionlib"
-    shutil.copyfile(starter, path)
-    return path
 
 
 @pytest.fixture

@@ -34,16 +34,6 @@ PK$PEAK: m/z int. rel.int.
 """
 
 
-@pytest.fixture
-def lab(starter: Path, tmp_path: Path) -> Path:
-    """A library of one's own, in a folder with blanks and letters of many scripts."""
-    folder = tmp_path / "mein Labor ä 实验室"
-    folder.mkdir()
-    path = folder / "labor 1.ionlib"
-    shutil.copyfile(starter, path)
-    return path
-
-
 def first_accession(path: Path) -> str:
     with open_library(path) as library:
         return library.get_entries(library.entry_ids()[:1])[0].accession
