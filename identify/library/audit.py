@@ -1,0 +1,269 @@
+"""Every reference checked against its own metadata, its replicates and its neighbours, with a proposal what to do.
+
+Two kinds of findings: statements that contradict each other (a SPLASH, a formula and a structure), which stand by
+themselves, and observations on the spectrum, whose log-odds (how much more often wrong entries show them than right ones)
+add up. The sum decides between use, use with caution and quarantine; a person decides whether to follow.
+"""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+
+from identify.evidence.facts import formula_facts, spectrum_facts
+from identify.index import SearchIndex, search_index
+from identify.library.audit_cells import DEPTH, Cell, Neighbour, have_same_form, observe_entry, top_of_cluster
+from identify.library.audit_metadata import AuditFinding, Grade, check_statements
+from identify.library.audit_weights import BASE_LOG_ODDS, CAUTION_FROM, QUARANTINE_FROM, WEIGHTS
+from identify.library.store import Library
+from identify.records import Entry, EntryStatus
+from identify.similarity.scores import cosine_score
+from identify.spectra.align import align
+
+Progress = Callable[[int, str], None]
+
+USE, CAUTION, QUARANTINE = "use", "use with caution", "quarantine"
+SHOWN_FROM = 0.5
+"""Observations with less evidence against the entry are not findings."""
+SERIOUS_FROM = 2.0
+NEAR_DUPLICATE = 0.9999
+IDENTICAL_TO_OTHER = 0.995
+
+
+@dataclass(frozen=True, slots=True)
+class EntryAudit:
+    """Findings on one entry, weightiest first."""
+
+    entry_id: int
+    accession: str
+    name: str
+    findings: tuple[AuditFinding, ...]
+    log_odds: float
+    """Evidence from the spectrum that the entry is wrong (natural logarithm), all observations and the base rate."""
+    suspicion: str
+    """What the error may be; empty when there is no idea."""
+    proposal: str
+    """`use`, `use with caution` or `quarantine`."""
+    overruled: str = ""
+    """Reason of the reviewer who put the entry back into use; empty when nobody did."""
+
+
+@dataclass(frozen=True, slots=True)
+class AuditReport:
+    """Audits of all entries in use or in quarantine."""
+
+    path: str
+    fingerprint: str
+    audits: tuple[EntryAudit, ...]
+    """By entry id."""
+
+    @property
+    def by_proposal(self) -> Mapping[str, int]:
+        """Number of entries by proposal, most frequent first."""
+        return dict(Counter(audit.proposal for audit in self.audits).most_common())
+
+    @property
+    def by_finding(self) -> Mapping[str, int]:
+        """Number of entries by kind of finding, most frequent first."""
+        kinds = (kind for audit in self.audits for kind in {finding.kind for finding in audit.findings})
+        return dict(Counter(kinds).most_common())
+
+    @property
+    def to_quarantine(self) -> Mapping[str, str]:
+        """Reasons by accession for entries proposed for quarantine, as `quarantine_entries` takes them."""
+        return {
+            audit.accession: "; ".join(finding.kind for finding in audit.findings if finding.grade is not Grade.NOTE)
+            for audit in self.audits
+            if audit.proposal == QUARANTINE
+        }
+
+
+def audit_library(library: Library, index: SearchIndex, *, progress: Progress | None = None) -> AuditReport:
+    """Audits of every entry that is in use or in quarantine.
+
+    Parameters
+    ----------
+    library : Library
+    index : SearchIndex
+        Of the library.
+    progress : callable, optional
+        Called with the number of entries done, every 50.
+
+    Returns
+    -------
+    AuditReport
+
+    Raises
+    ------
+    LibraryError, LibraryDamaged
+        If it cannot be read.
+    """
+    audited = frozenset(EntryStatus) - {EntryStatus.WITHDRAWN, EntryStatus.REFUSED, EntryStatus.PROPOSED}
+    ids = library.entry_ids(audited)
+    overruled = read_overruled(library)
+    audits = []
+    for number, entry_id in enumerate(ids):
+        if progress and number % 50 == 0:
+            progress(number, "entries")
+        (entry,) = library.get_entries([entry_id])
+        audits.append(audit_entry(library, index, entry, overruled=overruled.get(entry_id, "")))
+    return AuditReport(str(library.path), library.fingerprint, tuple(audits))
+
+
+def read_overruled(library: Library) -> dict[int, str]:
+    """Reasons why reviewers put quarantined entries back into use, by entry id."""
+    out: dict[int, str] = {}
+    for event in library.events():
+        for entry_id, _ in event.details.get("standing", ()):
+            if event.kind == "reinstated":
+                out[entry_id] = f"{event.who}: {event.reason}"
+            else:
+                out.pop(entry_id, None)
+    return out
+
+
+def audit_entry(library: Library, index: SearchIndex, entry: Entry, *, overruled: str = "") -> EntryAudit:
+    """Audit of one entry against the searchable entries of the library.
+
+    Parameters
+    ----------
+    library : Library
+    index : SearchIndex
+        Of the library.
+    entry : Entry
+        In the library; its standing does not matter.
+    overruled : str
+        Why a reviewer has put it back into use; the proposal is then at most `use with caution`.
+
+    Returns
+    -------
+    EntryAudit
+    """
+    neighbours, replicates = look_around(library, index, entry, leave_out=entry.id)
+    cells = observe_entry(entry, neighbours, replicates)
+    log_odds, observed = weigh_cells(cells)
+    (record,) = library.get_records([entry.id])
+    stated = check_statements(entry, record, [replicate.entry for replicate in replicates])
+    twins = _find_twins(entry, neighbours)
+    findings = sorted((*stated, *twins, *observed), key=lambda finding: (_ORDER[finding.grade], -finding.log_odds))
+    proposal = propose(log_odds, stated)
+    if overruled and proposal == QUARANTINE:
+        proposal = CAUTION
+    suspicion = "" if proposal == USE else suspect(entry, neighbours, replicates)
+    return EntryAudit(
+        entry.id, entry.accession, entry.identity.name, tuple(findings), log_odds, suspicion, proposal, overruled
+    )
+
+
+_ORDER = {Grade.SERIOUS: 0, Grade.CAUTION: 1, Grade.NOTE: 2}
+
+
+def look_around(
+    library: Library, index: SearchIndex, entry: Entry, *, leave_out: int
+) -> tuple[list[Neighbour], list[Neighbour]]:
+    """Most similar other entries, and the other entries of the same compound in the same form.
+
+    Parameters
+    ----------
+    library : Library
+    index : SearchIndex
+    entry : Entry
+        Need not be in the library.
+    leave_out : int
+        Entry id that must not be its own neighbour.
+
+    Returns
+    -------
+    neighbours, replicates : list of Neighbour
+        Best first.
+    """
+    hits = [hit for hit in search_index(index, entry.spectrum, DEPTH) if hit.entry_id != leave_out]
+    entries = library.get_entries([hit.entry_id for hit in hits])
+    neighbours = [Neighbour(other, hit.cosine) for other, hit in zip(entries, hits, strict=True)]
+    replicates = [neighbour for neighbour in neighbours if have_same_form(entry, neighbour.entry)]
+    seen = {neighbour.entry.id for neighbour in neighbours} | {leave_out}
+    for other in library.find_entries(compound_id=entry.compound_id):
+        if other.id not in seen and have_same_form(entry, other):
+            cosine = cosine_score(align(entry.spectrum, other.spectrum), index.weighting)
+            replicates.append(Neighbour(other, cosine))
+    return neighbours, sorted(replicates, key=lambda neighbour: -neighbour.cosine)
+
+
+def weigh_cells(cells: Sequence[Cell]) -> tuple[float, list[AuditFinding]]:
+    """Log-odds that an entry is wrong, and the observations that speak for it.
+
+    Parameters
+    ----------
+    cells : sequence of Cell
+
+    Returns
+    -------
+    log_odds : float
+        Base rate of the training set and the weights of all cells.
+    findings : list of AuditFinding
+    """
+    total, findings = BASE_LOG_ODDS, []
+    for cell in cells:
+        weight = WEIGHTS.get(cell.kind, {}).get(cell.cell, 0.0)
+        total += weight
+        if weight >= SHOWN_FROM:
+            grade = Grade.SERIOUS if weight >= SERIOUS_FROM else Grade.CAUTION
+            findings.append(AuditFinding(cell.kind, grade, cell.reason, cell.observed, cell.expected, weight))
+    return total, findings
+
+
+def propose(log_odds: float, stated: Sequence[AuditFinding]) -> str:
+    """What to do with an entry: `use`, `use with caution`, `quarantine`."""
+    grades = {finding.grade for finding in stated}
+    if Grade.SERIOUS in grades or log_odds >= QUARANTINE_FROM:
+        return QUARANTINE
+    return CAUTION if Grade.CAUTION in grades or log_odds >= CAUTION_FROM else USE
+
+
+def _find_twins(entry: Entry, neighbours: Sequence[Neighbour]) -> list[AuditFinding]:
+    found = []
+    for neighbour in neighbours[:5]:
+        other = neighbour.entry
+        seen = f"{other.accession}, {other.identity.name}, cosine {neighbour.cosine:.4f}"
+        if other.compound_id == entry.compound_id and neighbour.cosine >= NEAR_DUPLICATE:
+            reason = "Practically the same spectrum is in the library twice."
+            found.append(AuditFinding("near-duplicate", Grade.NOTE, reason, seen))
+        elif other.compound_id != entry.compound_id and neighbour.cosine >= IDENTICAL_TO_OTHER:
+            reason = "The spectrum is practically that of another compound."
+            found.append(AuditFinding("like another compound", Grade.NOTE, reason, seen))
+    return found[:2]
+
+
+def suspect(entry: Entry, neighbours: Sequence[Neighbour], replicates: Sequence[Neighbour]) -> str:
+    """What the error in an entry may be, in words; empty when nothing fits.
+
+    Parameters
+    ----------
+    entry : Entry
+    neighbours, replicates : sequence of Neighbour
+
+    Returns
+    -------
+    str
+    """
+    formula = formula_facts(entry.formula_as_measured)
+    best = next((neighbour for neighbour in neighbours if neighbour.cosine >= 0.8), None)
+    if best is not None and best.entry.compound_id != entry.compound_id and not replicates:
+        known = formula_facts(best.entry.formula_as_measured)
+        if known is not None and formula is not None and known.nominal_mass != formula.nominal_mass:
+            return f"the spectrum resembles that of {best.entry.identity.name} ({best.entry.accession})"
+    if replicates and replicates[0].cosine < 0.5 and best is not None:
+        return f"unlike the compound's other spectra, it resembles that of {best.entry.identity.name}"
+    if formula is None:
+        return ""
+    shift = top_of_cluster(spectrum_facts(entry.spectrum, entry.acquisition)) - formula.nominal_mass
+    if shift > 0 and shift % 72 == 0 and not entry.measured_as:
+        return f"{shift // 72} trimethylsilyl groups more than declared"
+    if shift == 1:
+        return "all m/z one too high, or [M+H]+ instead of M"
+    if 1 < shift <= 12:
+        return f"an isotope-labelled compound ({shift} Da heavier) under the unlabelled formula"
+    if shift > 12:
+        return f"a molecule {shift} Da heavier than the formula"
+    return ""

@@ -1,0 +1,274 @@
+"""What a library entry's own spectrum, its replicates and its neighbours say about the identity it claims, as cells.
+
+The same checks that judge a candidate judge a reference: ions above M, losses, isotopes, carbons, explained intensity. Two
+more come from the library: do other spectra of the compound look alike, and are the spectra that look alike of compounds
+with this mass and of related structure? Each observation falls into one of a few cells; `identify.library.audit_weights` says
+how much more often wrong entries fall into it than right ones.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from identify.errors import StructureError
+from identify.evidence.composition import check_explained, check_formula_rules
+from identify.evidence.facts import FormulaFacts, QueryFacts, entry_formula, formula_facts, spectrum_facts
+from identify.evidence.finding import Finding
+from identify.evidence.high_mass import excess_above, improbable_loss
+from identify.evidence.isotopes import check_carbon_count, check_isotope_pattern
+from identify.library.conflicts import have_like_energy
+from identify.records import Entry
+
+TOP = "highest ions"
+ABOVE = "ions above M"
+LOSSES = "losses from M"
+NEIGHBOUR_MASS = "mass of similar spectra"
+REPLICATES = "replicates"
+RELATED = "structure of similar spectra"
+DEPTH = 40
+"""Most similar spectra looked at."""
+USEFUL_COSINE = 0.6
+"""A neighbour below this says nothing about mass or structure (judgement)."""
+USUAL_LOSSES = frozenset(
+    {
+        1,
+        2,
+        3,
+        15,
+        16,
+        17,
+        18,
+        19,
+        20,
+        26,
+        27,
+        28,
+        29,
+        30,
+        31,
+        32,
+        33,
+        34,
+        35,
+        36,
+        39,
+        40,
+        41,
+        42,
+        43,
+        44,
+        45,
+        46,
+        47,
+        48,
+    }
+)
+"""Single losses from M that molecules of many classes show (McLafferty & Turecek, from memory)."""
+
+
+@dataclass(frozen=True, slots=True)
+class Cell:
+    """One observation on one entry."""
+
+    kind: str
+    cell: str
+    """Row of the weight table; empty when nothing could be assessed."""
+    reason: str
+    observed: str = ""
+    expected: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Neighbour:
+    """A similar spectrum of the library."""
+
+    entry: Entry
+    cosine: float
+
+
+def observe_entry(entry: Entry, neighbours: Sequence[Neighbour], replicates: Sequence[Neighbour]) -> tuple[Cell, ...]:
+    """Cells of an entry, always one per kind in the same order.
+
+    Parameters
+    ----------
+    entry : Entry
+    neighbours : sequence of Neighbour
+        Most similar other entries, best first.
+    replicates : sequence of Neighbour
+        Other entries of the compound, measured in the same form at like energy, with their cosine.
+
+    Returns
+    -------
+    tuple of Cell
+    """
+    facts = spectrum_facts(entry.spectrum, entry.acquisition)
+    formula, _ = entry_formula(entry, facts)
+    return (
+        *_own_cells(facts, formula),
+        _neighbour_mass(formula, neighbours),
+        _replicates(replicates),
+        _related(entry, neighbours),
+    )
+
+
+def _own_cells(facts: QueryFacts, formula: FormulaFacts | None) -> tuple[Cell, ...]:
+    checks = (check_isotope_pattern, check_carbon_count, check_explained, check_formula_rules)
+    found = [_from_finding(check(facts, formula)) for check in checks]
+    if formula is None:
+        missing = "The formula as measured is not known."
+        return (Cell(TOP, "", missing), Cell(ABOVE, "", missing), Cell(LOSSES, "", missing), *found)
+    return (_highest_ions(facts, formula), _above(facts, formula), _losses(facts, formula), *found)
+
+
+def _from_finding(finding: Finding) -> Cell:
+    return Cell(finding.kind, finding.cell, finding.reason, finding.observed, finding.expected)
+
+
+def top_of_cluster(facts: QueryFacts) -> int:
+    """m/z of the lightest strong ion of the highest cluster of at least 1 % of the base peak.
+
+    Parameters
+    ----------
+    facts : QueryFacts
+
+    Returns
+    -------
+    int
+        The highest peak when none reaches 1 %.
+    """
+    for mz in range(facts.top_mz, 0, -1):
+        value = facts.at(mz)
+        if value < 1.0:
+            continue
+        is_carbon_13 = facts.at(mz - 1) * mz * 0.00085 * 1.6 >= value
+        is_halogen = facts.at(mz - 2) * 0.25 < value < facts.at(mz - 2) * 1.05
+        if not (is_carbon_13 or is_halogen):
+            return mz
+    return facts.top_mz
+
+
+def _highest_ions(facts: QueryFacts, formula: FormulaFacts) -> Cell:
+    mass = formula.nominal_mass
+    gap = mass - top_of_cluster(facts)
+    seen = facts.at(mass + formula.strongest_offset)
+    observed = f"highest cluster at m/z {mass - gap}, {seen:.1f} % of base at M"
+    if -14 <= gap < 0 and seen < 1.0:
+        cell, reason = (
+            f"M+{-gap} instead of M" if gap == -1 else "a little above M",
+            "The highest ions lie just above M.",
+        )
+    elif gap < 0:
+        cell, reason = ("above M, M seen" if seen >= 1.0 else "far above M"), "The highest ions lie above M."
+    elif gap == 0 or seen >= 1.0:
+        cell = "M strong" if seen >= 20.0 else "M seen"
+        reason = "The spectrum ends with M."
+    elif gap in USUAL_LOSSES:
+        cell, reason = "usual loss", f"M is not seen; M − {gap} is a usual loss."
+    elif gap < 49:
+        cell, reason = "unusual loss", f"M is not seen; M − {gap} would be an unusual loss."
+    else:
+        cell = "ends below M − 48" if gap < 90 else "ends far below M"
+        reason = f"The spectrum ends {gap} below M."
+    return Cell(TOP, cell, reason, observed, f"M at m/z {mass}")
+
+
+def _above(facts: QueryFacts, formula: FormulaFacts) -> Cell:
+    excess, mz = excess_above(facts.dense, formula)
+    cell = "none" if excess < 0.5 else "trace" if excess < 2.0 else "some" if excess < 10.0 else "strong"
+    reason = f"m/z {mz} is heavier than the molecule (M {formula.nominal_mass})." if mz else "Nothing lies above M."
+    return Cell(ABOVE, cell, reason, f"{excess:.1f} % of base", "isotope peaks and [M+H]+ only")
+
+
+def _losses(facts: QueryFacts, formula: FormulaFacts) -> Cell:
+    if facts.top_mz < formula.nominal_mass - 60:
+        return Cell(LOSSES, "", "There are no ions in the range of small losses from M.")
+    worst, loss = improbable_loss(facts.dense, formula)
+    cell = "none" if worst < 1.0 else "trace" if worst < 3.0 else "some" if worst < 10.0 else "strong"
+    reason = f"M − {loss} would be an improbable loss." if loss else "All ions near M are probable losses."
+    return Cell(LOSSES, cell, reason, f"{worst:.1f} % of base", "no ion at M − 4…13, 21…25, 37, 38")
+
+
+def _neighbour_mass(formula: FormulaFacts | None, neighbours: Sequence[Neighbour]) -> Cell:
+    if formula is None:
+        return Cell(NEIGHBOUR_MASS, "", "The formula as measured is not known.")
+    best: dict[bool, Neighbour] = {}
+    for neighbour in neighbours:
+        known = formula_facts(neighbour.entry.formula_as_measured)
+        if known is not None:
+            best.setdefault(known.nominal_mass == formula.nominal_mass, neighbour)
+    same = best[True].cosine if True in best else 0.0
+    other = best[False].cosine if False in best else 0.0
+    if max(same, other) < USEFUL_COSINE:
+        return Cell(NEIGHBOUR_MASS, "no similar spectrum", "No other spectrum of the library is similar.")
+    lead = same - other
+    cell = next(
+        name
+        for limit, name in (
+            (0.15, "same mass clearly best"), (0.02, "same mass best"), (-0.02, "both alike"),
+            (-0.1, "other mass best"), (-0.3, "other mass clearly best"), (-2.0, "other mass far best"),
+        )
+        if lead >= limit
+    )  # fmt: skip
+    nearest = best[lead >= 0].entry
+    reason = f"The most similar spectrum is of {nearest.identity.name} ({nearest.formula_as_measured})."
+    return Cell(NEIGHBOUR_MASS, cell, reason, f"same mass {same:.2f}, other mass {other:.2f}", "similar spectra of M")
+
+
+def _replicates(replicates: Sequence[Neighbour]) -> Cell:
+    if not replicates:
+        return Cell(REPLICATES, "", "There is no other spectrum of this compound in this form.")
+    best = max(replicates, key=lambda neighbour: neighbour.cosine)
+    cell = next(
+        name
+        for limit, name in (
+            (0.95, "the same"),
+            (0.85, "alike"),
+            (0.7, "related"),
+            (0.5, "different"),
+            (-1.0, "strange"),
+        )
+        if best.cosine >= limit
+    )
+    reason = f"The most similar of {len(replicates)} other spectra of this compound is {best.entry.accession}."
+    return Cell(REPLICATES, cell, reason, f"cosine {best.cosine:.2f}", "0.85 or more")
+
+
+def _related(entry: Entry, neighbours: Sequence[Neighbour]) -> Cell:
+    from identify.chem.structures import structure_similarity
+
+    smiles = entry.identity.smiles
+    useful = [
+        neighbour
+        for neighbour in neighbours
+        if neighbour.entry.compound_id != entry.compound_id and neighbour.entry.identity.smiles
+    ]
+    if not smiles or not useful or useful[0].cosine < USEFUL_COSINE:
+        return Cell(RELATED, "", "There is no structure, or no similar spectrum of another compound, to compare with.")
+    total = weight = 0.0
+    for neighbour in useful[:10]:
+        share = neighbour.cosine**4
+        try:
+            total += share * structure_similarity(smiles, neighbour.entry.identity.smiles)
+        except StructureError:
+            continue
+        weight += share
+    if not weight:
+        return Cell(RELATED, "", "The structures cannot be read.")
+    mean = total / weight
+    cell = next(
+        name
+        for limit, name in ((0.4, "close"), (0.25, "related"), (0.15, "remote"), (0.08, "foreign"), (-1.0, "alien"))
+        if mean >= limit
+    )
+    reason = f"The compounds with the most similar spectra are {cell} in structure."
+    return Cell(RELATED, cell, reason, f"mean similarity {mean:.2f}", "similar spectra of similar structures")
+
+
+def have_same_form(entry: Entry, other: Entry) -> bool:
+    """Whether two entries are of one compound, measured in one form, at like energy."""
+    return (
+        entry.compound_id == other.compound_id
+        and entry.measured_as == other.measured_as
+        and have_like_energy(other, entry.acquisition.energy_ev)
+    )
