@@ -27,6 +27,7 @@ if TYPE_CHECKING:
 @click.option("--json", "json_path", type=FILE, help="Write the full result as JSON.")
 @click.option("--csv", "csv_path", type=FILE, help="Write one row per component as CSV.")
 @click.option("--report", "html_path", type=FILE, help="Write a self-contained HTML report.")
+@click.option("--top", type=int, default=10, show_default=True, help="Candidates kept per component.")
 @click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
 def run(
     paths: tuple[Path, ...],
@@ -39,6 +40,7 @@ def run(
     json_path: Path | None,
     csv_path: Path | None,
     html_path: Path | None,
+    top: int,
     settings_path: Path | None,
 ) -> int:
     """Find and name everything that eluted in each RUN (ANDI-MS netCDF, mzML)."""
@@ -46,7 +48,7 @@ def run(
     from identify.pipeline.runs import identify_scans, run_files
     from identify.settings import resolve
 
-    settings = resolve(read_settings(settings_path), where=str(settings_path or "settings"))
+    settings = resolve(read_settings(settings_path), where=str(settings_path or "settings"), top=top)
     if at is not None:
         if len(paths) != 1 or blank or ladder:
             raise UsageError("--at", found="several runs, a blank or a ladder beside it", expected="one run alone")

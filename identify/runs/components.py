@@ -142,7 +142,12 @@ def _unassigned(extracted: Sequence[Component | None], shapes: Sequence[Shape], 
             rest[rows, columns] -= np.outer(shape.values, component.peaks.intensity)
     limit = SIGNIFICANT_SIGMA * stage.noise.sigma(stage.level + stage.signal)
     limit = np.maximum(limit, FIT_ERROR * stage.signal)
-    return np.asarray(np.where(rest > limit, rest, 0.0).sum(axis=1))
+    over = rest > limit
+    # A single reading above the limit is noise: a peak lasts.
+    beside = np.zeros_like(over)
+    beside[1:] |= over[:-1]
+    beside[:-1] |= over[1:]
+    return np.asarray(np.where(over & beside, rest, 0.0).sum(axis=1))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
