@@ -9,7 +9,7 @@ from identify.records import Candidate, FollowUp, MolecularIonEstimate, Query
 
 
 def propose_follow_up(
-    query: Query,  # noqa: ARG001  (retention and accurate mass of the query join here)
+    query: Query,
     candidates: Sequence[Candidate],
     molecular_ion: MolecularIonEstimate,
 ) -> tuple[FollowUp, ...]:
