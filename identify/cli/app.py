@@ -11,6 +11,7 @@ from identify.cli.compare import compare
 from identify.cli.confirm import confirm, instrument
 from identify.cli.demo import demo
 from identify.cli.library import library
+from identify.cli.library_audit import audit, export
 from identify.cli.library_care import (
     affected,
     backup,
@@ -25,6 +26,7 @@ from identify.cli.library_proof import check_signed, create_key, sign
 from identify.cli.run import run
 from identify.cli.search import search
 from identify.cli.serve import serve
+from identify.cli.standard import standard
 from identify.errors import FetchError, InputError, IonwitnessError, LibraryError, StructureError, UsageError
 
 EXIT_CODES: tuple[tuple[type[IonwitnessError], int], ...] = (
@@ -51,9 +53,9 @@ def ionwitness() -> None:
     """
 
 
-for _command in (demo, search, run, confirm, instrument, compare, library, serve):
+for _command in (demo, search, run, confirm, instrument, compare, standard, library, serve):
     ionwitness.add_command(_command)
-for _command in (verify, backup, restore, migrate, quarantine, reinstate, affected, consensus):
+for _command in (audit, export, verify, backup, restore, migrate, quarantine, reinstate, affected, consensus):
     library.add_command(_command)
 for _command in (create_key, sign, check_signed):
     library.add_command(_command)

@@ -1,0 +1,131 @@
+"""``ionwitness library audit`` and ``export``: which entries to trust, and what may be passed on."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import click
+
+from identify.cli.options import FILE, WHO, WHY, check_outputs, now, say, say_event
+from identify.cli.progress import progress_bar
+
+if TYPE_CHECKING:
+    from identify.library.audit import AuditReport, EntryAudit
+
+HEADING = (
+    "accession", "name", "standing", "proposal", "evidence that it is wrong (log-odds)", "what may be wrong", "overruled",
+    "grade", "finding", "reason", "observed", "expected",
+)  # fmt: skip
+
+
+@click.command()
+@click.argument("path", metavar="LIB", type=FILE)
+@click.option("--csv", "csv_path", type=FILE, help="Write one row per finding as CSV.")
+@click.option(
+    "--show", "shown", type=click.IntRange(0), default=20, show_default=True, help="Entries shown, worst first."
+)
+@click.option(
+    "--quarantine", "is_applied", is_flag=True, help="Set aside what is proposed for quarantine (with --why)."
+)
+@WHO
+@WHY
+def audit(path: Path, csv_path: Path | None, shown: int, is_applied: bool, who: str, why: str) -> None:
+    """Check every entry of LIB against its own metadata, its replicates and its neighbours, with a proposal for each."""
+    from identify.library.audit import audit_library
+    from identify.library.cache import load_index
+    from identify.library.standing import quarantine_entries
+    from identify.library.store import open_library
+    from identify.settings import Settings
+
+    check_outputs((csv_path,), (path,))
+    with open_library(path, writable=is_applied) as library:
+        with progress_bar("Checking") as progress:
+            report = audit_library(library, load_index(library, Settings().weighting), progress=progress)
+        entries = library.get_entries([item.entry_id for item in report.audits if item.findings])
+        standing = {entry.accession: entry.status.value for entry in entries}
+        _show(report, standing, shown)
+        if csv_path:
+            _write(csv_path, report, standing)
+        if is_applied:
+            reasons = {key: text for key, text in report.to_quarantine.items() if standing.get(key) != "quarantined"}
+            if reasons:
+                say_event(quarantine_entries(library, reasons, who=who, when=now(), reason=why))
+            say(f"set aside: {len(reasons):,}")
+
+
+def _show(report: AuditReport, standing: dict[str, str], shown: int) -> None:
+    doubtful = sorted(
+        (item for item in report.audits if item.findings), key=lambda item: (_ORDER[item.proposal], -item.log_odds, item.entry_id)
+    )  # fmt: skip
+    say(f"{report.path}: {len(report.audits):,} entries, fingerprint {report.fingerprint[:16]}")
+    say("proposed: " + ", ".join(f"{name} {n:,}" for name, n in report.by_proposal.items()))
+    say("findings: " + (", ".join(f"{kind} {n:,}" for kind, n in report.by_finding.items()) or "none"))
+    for item in doubtful[:shown]:
+        say(
+            f"{item.accession} {item.name} ({standing[item.accession]}): {item.proposal}, log-odds {item.log_odds:+.1f}"
+        )
+        if item.suspicion:
+            say(f"  perhaps: {item.suspicion}")
+        if item.overruled:
+            say(f"  overruled by {item.overruled}")
+        for finding in item.findings:
+            say(f"  {finding.grade.value}, {finding.kind}: {finding.reason}")
+    if len(doubtful) > shown:
+        say(f"and {len(doubtful) - shown:,} more entries with findings")
+
+
+_ORDER = {"quarantine": 0, "use with caution": 1, "use": 2}
+
+
+def _write(path: Path, report: AuditReport, standing: dict[str, str]) -> None:
+    from identify.writers.rows_csv import write_rows
+
+    rows = [row for item in report.audits if item.findings for row in _rows(item, standing[item.accession])]
+    write_rows(path, HEADING, rows)
+    click.echo(f"Written: {path}", err=True)
+
+
+def _rows(item: EntryAudit, standing: str) -> list[tuple[str, ...]]:
+    entry = (
+        item.accession, item.name, standing, item.proposal, f"{item.log_odds:.2f}", item.suspicion, item.overruled
+    )  # fmt: skip
+    return [(*entry, f.grade.value, f.kind, f.reason, f.observed, f.expected) for f in item.findings]
+
+
+@click.command()
+@click.argument("path", metavar="LIB", type=FILE)
+@click.argument("target", metavar="FILE", type=FILE)
+@click.option(
+    "--format", "file_format", required=True,
+    type=click.Choice(["massbank", "jcamp", "msp", "mzspeclib", "mzml", "csv"]), help="Open format to write.",
+)  # fmt: skip
+@click.option("--accession", "accessions", multiple=True, help="Entry to export (default: all in use); repeatable.")
+@click.option("--own-standards", is_flag=True, help="Export own standards only.")
+@click.option("--contributor", default="", help="Contributor's code, for MassBank records.")
+@click.option(
+    "--i-have-the-right", is_flag=True, help="Write licences into one file that may not be passed on together."
+)
+def export(
+    path: Path,
+    target: Path,
+    file_format: str,
+    accessions: tuple[str, ...],
+    own_standards: bool,
+    contributor: str,
+    i_have_the_right: bool,
+) -> None:
+    """Write entries of LIB to FILE in an open format; licences and authors travel with them."""
+    from identify.library.export import export_entries
+    from identify.library.store import SEARCHABLE, open_library
+    from identify.records import EntryStatus
+
+    check_outputs((target,), (path,))
+    statuses = frozenset({EntryStatus.OWN_STANDARD}) if own_standards else SEARCHABLE
+    with open_library(path) as library:
+        report = export_entries(
+            library, target, file_format, accessions=accessions, statuses=statuses, i_have_the_right=i_have_the_right,
+            contributor=contributor, when=now(),
+        )  # fmt: skip
+    say(f"{report.path}: {report.n_written:,} spectra ({report.file_format})")
+    say("licences: " + ", ".join(f"{name} {n:,}" for name, n in report.licences.items()))
