@@ -8,7 +8,7 @@ add up. The sum decides between use, use with caution and quarantine; a person d
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import dataclass
 
 from identify.evidence.facts import formula_facts, spectrum_facts
@@ -140,7 +140,7 @@ def audit_entry(library: Library, index: SearchIndex, entry: Entry, *, overruled
     -------
     EntryAudit
     """
-    neighbours, replicates = look_around(library, index, entry, leave_out=entry.id)
+    neighbours, replicates = look_around(library, index, entry, leave_out={entry.id})
     cells = observe_entry(entry, neighbours, replicates)
     log_odds, observed = weigh_cells(cells)
     (record,) = library.get_records([entry.id])
@@ -160,7 +160,7 @@ _ORDER = {Grade.SERIOUS: 0, Grade.CAUTION: 1, Grade.NOTE: 2}
 
 
 def look_around(
-    library: Library, index: SearchIndex, entry: Entry, *, leave_out: int
+    library: Library, index: SearchIndex, entry: Entry, *, leave_out: Collection[int]
 ) -> tuple[list[Neighbour], list[Neighbour]]:
     """Most similar other entries, and the other entries of the same compound in the same form.
 
@@ -170,19 +170,19 @@ def look_around(
     index : SearchIndex
     entry : Entry
         Need not be in the library.
-    leave_out : int
-        Entry id that must not be its own neighbour.
+    leave_out : collection of int
+        Entry ids that do not count as neighbours: its own.
 
     Returns
     -------
     neighbours, replicates : list of Neighbour
         Best first.
     """
-    hits = [hit for hit in search_index(index, entry.spectrum, DEPTH) if hit.entry_id != leave_out]
+    hits = [hit for hit in search_index(index, entry.spectrum, DEPTH) if hit.entry_id not in leave_out]
     entries = library.get_entries([hit.entry_id for hit in hits])
     neighbours = [Neighbour(other, hit.cosine) for other, hit in zip(entries, hits, strict=True)]
     replicates = [neighbour for neighbour in neighbours if have_same_form(entry, neighbour.entry)]
-    seen = {neighbour.entry.id for neighbour in neighbours} | {leave_out}
+    seen = {neighbour.entry.id for neighbour in neighbours} | set(leave_out)
     for other in library.find_entries(compound_id=entry.compound_id):
         if other.id not in seen and have_same_form(entry, other):
             cosine = cosine_score(align(entry.spectrum, other.spectrum), index.weighting)

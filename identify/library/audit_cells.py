@@ -21,6 +21,7 @@ from identify.library.conflicts import have_like_energy
 from identify.records import Entry
 
 TOP = "highest ions"
+BESIDE = "M+1 beside M"
 ABOVE = "ions above M"
 LOSSES = "losses from M"
 NEIGHBOUR_MASS = "mass of similar spectra"
@@ -94,7 +95,7 @@ def observe_entry(entry: Entry, neighbours: Sequence[Neighbour], replicates: Seq
     ----------
     entry : Entry
     neighbours : sequence of Neighbour
-        Most similar other entries, best first.
+        Most similar other entries, best first; replicates among them count as replicates only.
     replicates : sequence of Neighbour
         Other entries of the compound, measured in the same form at like energy, with their cosine.
 
@@ -106,7 +107,7 @@ def observe_entry(entry: Entry, neighbours: Sequence[Neighbour], replicates: Seq
     formula, _ = entry_formula(entry, facts)
     return (
         *_own_cells(facts, formula),
-        _neighbour_mass(formula, neighbours),
+        _neighbour_mass(formula, [found for found in neighbours if not have_same_form(entry, found.entry)]),
         _replicates(replicates),
         _related(entry, neighbours),
     )
@@ -117,8 +118,9 @@ def _own_cells(facts: QueryFacts, formula: FormulaFacts | None) -> tuple[Cell, .
     found = [_from_finding(check(facts, formula)) for check in checks]
     if formula is None:
         missing = "The formula as measured is not known."
-        return (Cell(TOP, "", missing), Cell(ABOVE, "", missing), Cell(LOSSES, "", missing), *found)
-    return (_highest_ions(facts, formula), _above(facts, formula), _losses(facts, formula), *found)
+        return (*(Cell(kind, "", missing) for kind in (TOP, BESIDE, ABOVE, LOSSES)), *found)
+    own = (_highest_ions(facts, formula), _beside(facts, formula), _above(facts, formula), _losses(facts, formula))
+    return (*own, *found)
 
 
 def _from_finding(finding: Finding) -> Cell:
@@ -171,6 +173,23 @@ def _highest_ions(facts: QueryFacts, formula: FormulaFacts) -> Cell:
         cell = "ends below M − 48" if gap < 90 else "ends far below M"
         reason = f"The spectrum ends {gap} below M."
     return Cell(TOP, cell, reason, observed, f"M at m/z {mass}")
+
+
+def _beside(facts: QueryFacts, formula: FormulaFacts) -> Cell:
+    """Whether the ion one above M is larger than 13C and a little [M+H]+ make it: a sign that everything is one too high."""
+    mass = formula.nominal_mass
+    molecular, next_one = facts.at(mass), facts.at(mass + 1)
+    if max(molecular, next_one) < 1.0:
+        return Cell(BESIDE, "", "Neither M nor M+1 is seen.")
+    excess = next_one - formula.ratio(1) * molecular
+    share = excess / max(molecular, next_one)
+    cell = next(
+        name
+        for limit, name in ((0.9, "alone"), (0.5, "very tall"), (0.2, "tall"), (-2.0, "usual"))
+        if share >= limit
+    )
+    reason = f"The ion at m/z {mass + 1} is {cell} beside M."
+    return Cell(BESIDE, cell, reason, f"M {molecular:.1f} %, M+1 {next_one:.1f} % of base", "13C of M, a little [M+H]+")
 
 
 def _above(facts: QueryFacts, formula: FormulaFacts) -> Cell:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
 from enum import StrEnum
@@ -62,6 +63,7 @@ def check_statements(entry: Entry, record: SpectrumRecord, replicates: Sequence[
     found = (
         _splash(record),
         *_structure(entry),
+        _formula_of_others(entry, replicates),
         _derivative(entry, record),
         _energy(entry),
         _peaks(entry),
@@ -101,6 +103,15 @@ def _structure(entry: Entry) -> list[AuditFinding]:
         reason = "InChIKey and structure are not of the same compound."
         found.append(AuditFinding("InChIKey and structure", Grade.CAUTION, reason, identity.inchikey, key))
     return found
+
+
+def _formula_of_others(entry: Entry, replicates: Sequence[Entry]) -> AuditFinding | None:
+    others = Counter(other.formula_as_measured for other in replicates if other.formula_as_measured)
+    if not entry.formula_as_measured or not others or entry.formula_as_measured in others:
+        return None
+    reason = "The other entries of this compound in this form have another formula."
+    usual = others.most_common(1)[0][0]
+    return AuditFinding("formula of replicates", Grade.SERIOUS, reason, entry.formula_as_measured, usual)
 
 
 def _derivative(entry: Entry, record: SpectrumRecord) -> AuditFinding | None:

@@ -146,7 +146,13 @@ def keep_log(connection: sqlite3.Connection) -> None:
 
 
 def connect_any_version(path: Path, *, writable: bool, busy_timeout_s: float = BUSY_TIMEOUT_S) -> sqlite3.Connection:
-    """As `connect`, for a library of any schema version (migration, verification)."""
+    """As `connect`, for a library of any schema version (migration, verification).
+
+    Raises
+    ------
+    LibraryMissing, LibraryError, LibraryBusy, LibraryDamaged
+        As `connect`; LibraryError also for an SQLite too old for STRICT tables.
+    """
     _check_file(path)
     if writable:
         _check_can_write(path)

@@ -1,0 +1,229 @@
+"""Every finding of an audit has a reason, its evidence adds up, and a reviewer's word is kept."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from pathlib import Path
+
+import pytest
+from library_builders import BENZENE, TOLUENE, WHEN, build_record, build_test_library
+
+from identify.library.audit import (
+    CAUTION,
+    QUARANTINE,
+    USE,
+    AuditReport,
+    audit_entry,
+    audit_library,
+    look_around,
+    propose,
+    read_overruled,
+    suspect,
+    weigh_cells,
+)
+from identify.library.audit_cells import Cell, Neighbour, observe_entry
+from identify.library.audit_metadata import AuditFinding, Grade, check_statements
+from identify.library.audit_weights import BASE_LOG_ODDS, CAUTION_FROM, QUARANTINE_FROM, WEIGHTS
+from identify.library.cache import load_index
+from identify.library.standing import quarantine_entries, reinstate_entry
+from identify.library.store import open_library
+from identify.records import Entry, EntryStatus, Retention, SpectrumRecord
+from identify.settings import Weighting
+
+
+def make(
+    peaks, name: str = "Toluene", formula: str = "C7H8", smiles: str = "Cc1ccccc1", **more
+) -> tuple[Entry, SpectrumRecord]:
+    """Entry and record without a library file."""
+    import tempfile
+
+    with tempfile.TemporaryDirectory() as folder:
+        path = Path(folder) / "a.ionlib"
+        build_test_library(path, [build_record("X", name, peaks, formula=formula, smiles=smiles, **more)])
+        with open_library(path) as library:
+            return library.get_entries([1])[0], library.get_records([1])[0]
+
+
+def statements(entry: Entry, record: SpectrumRecord, others=()) -> dict[str, Grade]:
+    return {finding.kind: finding.grade for finding in check_statements(entry, record, others)}
+
+
+def cells(entry: Entry, neighbours=(), replicates=()) -> dict[str, str]:
+    return {cell.kind: cell.cell for cell in observe_entry(entry, neighbours, replicates)}
+
+
+FULL = TOLUENE | {51: 8.0, 63: 7.0}
+
+
+def test_a_sound_entry_has_no_findings_on_its_statements() -> None:
+    assert statements(*make(FULL)) == {}
+
+
+def test_statements_that_contradict_each_other_are_found() -> None:
+    entry, record = make(FULL, formula="C7H8O")
+    assert statements(entry, record) == {"formula and structure": Grade.SERIOUS}
+    entry, record = make(FULL, inchikey="UHOVQNZJYSORNB-UHFFFAOYSA-N")
+    assert statements(entry, record) == {"InChIKey and structure": Grade.CAUTION}
+    entry, record = make(FULL, smiles="C1CC")
+    assert statements(entry, record) == {"structure": Grade.CAUTION}
+
+
+def test_peaks_that_do_not_fit_their_splash_are_serious() -> None:
+    entry, record = make(FULL)
+    assert statements(entry, replace(record, splash="splash10-0006-0900000000-b112e4e059e1ecf98c5f")) == {
+        "SPLASH": Grade.SERIOUS
+    }
+
+
+@pytest.mark.parametrize(
+    ("energy", "expected"),
+    [(70.0, {}), (None, {"energy": Grade.NOTE}), (20.0, {"energy": Grade.CAUTION}), (120.0, {"energy": Grade.CAUTION})],
+)
+def test_energies_other_than_70_ev_ask_for_caution(energy: float | None, expected: dict[str, Grade]) -> None:
+    assert statements(*make(FULL, energy_ev=energy)) == expected
+
+
+def test_few_peaks_and_undeclared_derivatization_ask_for_caution() -> None:
+    assert statements(*make({91: 100.0, 92: 60.0})) == {"few peaks": Grade.CAUTION}
+    comment = "The compound was chemically modified with MSTFA before measurement."
+    entry, record = make(FULL, comments=(comment,))
+    assert statements(entry, record) == {"derivative not declared": Grade.CAUTION}
+    entry, record = make(
+        FULL, comments=(comment,), derivative="1 TMS", name="Cresol", formula="C7H8O", smiles="Cc1ccccc1O"
+    )
+    assert statements(entry, record) == {}
+
+
+def test_a_retention_index_far_from_the_others_is_found() -> None:
+    entry, record = make(FULL)
+
+    def at(index: float, phase: str = "non-polar") -> Entry:
+        return replace(entry, retention=Retention(index=index, phase=phase))
+
+    others = [at(765.0), at(770.0)]
+    assert statements(at(768.0), record, others) == {}
+    assert statements(at(1020.0), record, others) == {"retention index": Grade.CAUTION}
+    assert statements(at(1020.0, "polar"), record, others) == {}, "another phase"
+    assert statements(at(1020.0), record, others[:1]) == {}, "one value is no rule"
+
+
+def test_a_formula_unlike_that_of_the_replicates_is_serious() -> None:
+    entry, record = make(FULL)
+    wrong = replace(entry, formula_as_measured="C8H10")
+    assert statements(wrong, record, [entry]) == {"formula of replicates": Grade.SERIOUS}
+
+
+def test_observations_on_the_molecular_region() -> None:
+    right, _ = make(FULL)
+    assert cells(right)["highest ions"] == "M strong"
+    assert cells(right)["ions above M"] == "none"
+    shifted, _ = make({mz + 1: height for mz, height in FULL.items()})
+    assert cells(shifted)["M+1 beside M"] == "very tall"
+    assert cells(right)["M+1 beside M"] == "usual"
+    heavier, _ = make(FULL | {107: 40.0, 122: 30.0})
+    assert cells(heavier)["highest ions"] == "above M, M seen"
+    lighter, _ = make({39: 20.0, 50: 30.0, 51: 40.0, 78: 100.0})
+    assert cells(lighter)["highest ions"] == "unusual loss", "M − 14"
+    unknown, _ = make(FULL, formula="")
+    assert cells(unknown)["highest ions"] == ""
+
+
+def test_observations_on_neighbours_and_replicates() -> None:
+    entry, _ = make(FULL)
+    other, _ = make(BENZENE, name="Benzene", formula="C6H6", smiles="c1ccccc1")
+    same, other = replace(entry, id=2), replace(other, id=3, compound_id=9)
+    twin = replace(entry, id=4, compound_id=8)
+    assert cells(entry, [Neighbour(other, 0.95)])["mass of similar spectra"] == "other mass far best"
+    assert (
+        cells(entry, [Neighbour(twin, 0.95), Neighbour(other, 0.5)])["mass of similar spectra"]
+        == "same mass clearly best"
+    )
+    assert (
+        cells(entry, [Neighbour(same, 0.99), Neighbour(other, 0.5)])["mass of similar spectra"] == "no similar spectrum"
+    ), "replicates are judged as replicates only"
+    assert cells(entry, [], [Neighbour(same, 0.3)])["replicates"] == "strange"
+    assert cells(entry, [], [Neighbour(same, 0.3), Neighbour(same, 0.96)])["replicates"] == "the same"
+    assert cells(entry)["replicates"] == ""
+
+
+def test_the_evidence_of_the_findings_adds_up_with_the_silent_observations() -> None:
+    chosen = [Cell(kind, cell, "because") for kind, rows in WEIGHTS.items() for cell in list(rows)[:1]]
+    log_odds, findings = weigh_cells(chosen)
+    assert log_odds == pytest.approx(BASE_LOG_ODDS + sum(WEIGHTS[cell.kind][cell.cell] for cell in chosen))
+    assert {finding.kind for finding in findings} == {
+        cell.kind for cell in chosen if WEIGHTS[cell.kind][cell.cell] >= 0.5
+    }
+    assert weigh_cells([Cell("highest ions", "", "not assessed")]) == (BASE_LOG_ODDS, [])
+
+
+def test_every_cell_that_can_be_observed_is_in_the_table_or_is_rare() -> None:
+    """A renamed cell would silently weigh nothing."""
+    for kind in ("highest ions", "ions above M", "losses from M", "mass of similar spectra", "replicates"):
+        assert len(WEIGHTS[kind]) >= 4, kind
+    assert CAUTION_FROM < QUARANTINE_FROM
+
+
+def test_proposals_follow_the_thresholds_and_serious_statements() -> None:
+    serious = AuditFinding("x", Grade.SERIOUS, "x")
+    caution = AuditFinding("x", Grade.CAUTION, "x")
+    low = CAUTION_FROM - 1
+    assert propose(low, []) == USE
+    assert propose(CAUTION_FROM, []) == CAUTION
+    assert propose(QUARANTINE_FROM, []) == QUARANTINE
+    assert propose(low, [caution]) == CAUTION
+    assert propose(low, [serious]) == QUARANTINE
+
+
+def audit(path: Path) -> AuditReport:
+    with open_library(path) as library:
+        return audit_library(library, load_index(library, Weighting()))
+
+
+def test_an_audit_proposes_and_a_reviewer_decides(tmp_path: Path) -> None:
+    path = tmp_path / "a.ionlib"
+    records = [build_record(f"R{n}", "Toluene", FULL, formula="C7H8", smiles="Cc1ccccc1") for n in range(2)]
+    records.append(build_record("BAD", "Cresol", FULL, formula="C7H8O", smiles="Cc1ccccc1"))
+    build_test_library(path, records)
+    report = audit(path)
+    by_name = {entry.accession: entry for entry in report.audits}
+    assert by_name["BAD"].proposal == QUARANTINE
+    assert report.to_quarantine.keys() >= {"BAD"}
+    assert "formula and structure" in report.to_quarantine["BAD"]
+    assert sum(report.by_proposal.values()) == 3
+    kinds = {finding.kind for finding in by_name["R0"].findings}
+    assert "near-duplicate" in kinds
+    with open_library(path, writable=True) as library:
+        quarantine_entries(library, {"BAD": report.to_quarantine["BAD"]}, who="Ben", when=WHEN, reason="audit")
+        assert library.state().entries == 2
+    assert {entry.accession for entry in audit(path).audits} == {"R0", "R1", "BAD"}, "quarantined ones stay visible"
+    with open_library(path, writable=True) as library:
+        reinstate_entry(library, "BAD", who="Cleo", when=WHEN, reason="a typing error in the formula only")
+        assert read_overruled(library) == {3: "Cleo: a typing error in the formula only"}
+    again = {entry.accession: entry for entry in audit(path).audits}["BAD"]
+    assert (again.proposal, again.overruled) == (CAUTION, "Cleo: a typing error in the formula only")
+    assert again.findings, "what was found is still said"
+
+
+def test_a_withdrawn_entry_is_not_audited(library_path: Path) -> None:
+    from library_builders import move
+
+    move(library_path, 2, EntryStatus.WITHDRAWN)
+    assert {entry.entry_id for entry in audit(library_path).audits} == {1, 3, 4, 5}
+
+
+def test_the_suspicion_names_the_compound_a_spectrum_resembles(tmp_path: Path) -> None:
+    path = tmp_path / "a.ionlib"
+    many = {30 + 3 * n: 10.0 + n for n in range(20)}
+    records = [
+        build_record("A", "Right", many, formula="C6H14O", smiles="CCCCCCO"),
+        build_record("B", "Wrong", many, formula="C9H12", smiles="CCCc1ccccc1"),
+    ]
+    build_test_library(path, records)
+    with open_library(path) as library:
+        index = load_index(library, Weighting())
+        entry = library.get_entries([2])[0]
+        found = audit_entry(library, index, entry)
+        suspicion = suspect(entry, *look_around(library, index, entry, leave_out={2}))
+    assert suspicion == "the spectrum resembles that of Right (A)"
+    kinds = {finding.kind: finding for finding in found.findings}
+    assert kinds["like another compound"].observed.startswith("A, Right, cosine 1.0000")
