@@ -43,7 +43,11 @@ def run(
     top: int,
     settings_path: Path | None,
 ) -> int:
-    """Find and name everything that eluted in each RUN (ANDI-MS netCDF, mzML)."""
+    """Find and name everything that eluted in each RUN (ANDI-MS netCDF, mzML).
+
+    \b
+    Options that contradict each other are refused (UsageError).
+    """
     from identify.errors import UsageError
     from identify.pipeline.runs import identify_scans, run_files
     from identify.settings import resolve

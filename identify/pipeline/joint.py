@@ -157,7 +157,7 @@ def _index_agrees(finding: Finding) -> bool:
     )
 
 
-def _order_of_indices(findings: Sequence[Finding], width_s: float) -> dict[int, str]:  # noqa: ARG001
+def _order_of_indices(findings: Sequence[Finding], width_s: float) -> dict[int, str]:
     """Claims whose entries' indices do not rise with the time of elution."""
     reasons: dict[int, str] = {}
     rows: dict[str, list[tuple[int, float, float]]] = {}
@@ -175,7 +175,7 @@ def _order_of_indices(findings: Sequence[Finding], width_s: float) -> dict[int, 
     return reasons
 
 
-def _order_in_series(findings: Sequence[Finding], width_s: float) -> dict[int, str]:  # noqa: ARG001
+def _order_in_series(findings: Sequence[Finding], width_s: float) -> dict[int, str]:
     """Claims on members of a homologous series that elute against the order of their chain lengths."""
     series: dict[str, list[tuple[int, float, float]]] = {}
     for place, finding in enumerate(findings):
@@ -187,7 +187,7 @@ def _order_in_series(findings: Sequence[Finding], width_s: float) -> dict[int, s
             series.setdefault(f"{key} {best.entry.measured_as}", []).append((place, float(length), best.probability))
     reasons: dict[int, str] = {}
     for members in series.values():
-        for place in _misfits(members, lambda early, late: late > early):
+        for place in _misfits(members, lambda early, late: late >= early):
             reasons[place] = (
                 "Longer chains of a homologous series elute later; this claim and its series are out of order."
             )

@@ -75,7 +75,7 @@
         link.append(title, make("path", { d: `M${at.toFixed(1)} ${band - 6}V${(foot - 3).toFixed(1)}` }), word);
         return link;
       }));
-      if (held) group.querySelector(`a[href="${CSS.escape ? held.replace(/"/g, "") : held}"]`)?.focus();
+      if (held) [...group.children].find((link) => link.getAttribute("href") === held)?.focus();
     };
 
     const draw = () => {
