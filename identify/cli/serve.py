@@ -40,27 +40,18 @@ def serve(
 ) -> int:
     """Open the workbench: a local page for the whole job."""
     from identify.cli.options import current_user
-    from identify.errors import UsageError
     from identify.settings import resolve
 
-    try:
-        from identify.workbench.server import Address, bind, open_workbench
-        from identify.workbench.server import serve as run_server
-    except ModuleNotFoundError as error:
-        raise UsageError(
-            "workbench", found=f"no {error.name}", expected="the packages of the workbench",
-            hint="Install them with `pip install 'ionwitness[workbench]'`.",
-        ) from None  # fmt: skip
+    _check_packages()
     case_path = case_path or libraries[0].with_suffix(".ioncase")
     if people:
         return _add_people(case_path, people)
-    if not Address(address, port).is_loopback and not allow_network:
-        raise UsageError(
-            "--address", found=address, expected="a loopback address",
-            hint="Add --allow-network to serve others: they sign in by name and password, without encryption of its own.",
-        )  # fmt: skip
+    from identify.workbench.server import Address, bind, open_workbench
+    from identify.workbench.server import serve as run_server
+
+    _check_address(Address(address, port).is_loopback, address, allow_network)
     settings = resolve(read_settings(settings_path), where=str(settings_path or "settings"))
-    listener = bind(address, port, lambda said: UsageError("--port", found=f"{port}: {said}", expected="a free port"))
+    listener = bind(address, port)
     bound = Address(address, listener.getsockname()[1], names)
     with listener, open_workbench(libraries, case_path, settings, bound, local_user=current_user()) as opened:
         if opened.link:
@@ -71,6 +62,29 @@ def serve(
             click.launch(opened.link)
         run_server(opened, listener)
     return 0
+
+
+def _check_packages() -> None:
+    from importlib.util import find_spec
+
+    from identify.errors import UsageError
+
+    missing = [name for name in ("fastapi", "uvicorn", "multipart", "argon2", "jinja2") if find_spec(name) is None]
+    if missing:
+        raise UsageError(
+            "workbench", found=f"no {', '.join(missing)}", expected="the packages of the workbench",
+            hint="Install them with `pip install 'ionwitness[workbench]'`.",
+        )  # fmt: skip
+
+
+def _check_address(is_loopback: bool, address: str, is_allowed: bool) -> None:
+    from identify.errors import UsageError
+
+    if not is_loopback and not is_allowed:
+        raise UsageError(
+            "--address", found=address, expected="a loopback address",
+            hint="Add --allow-network to serve others: they sign in by name and password, without encryption of its own.",
+        )  # fmt: skip
 
 
 def _add_people(case_path: Path, people: tuple[str, ...]) -> int:

@@ -183,11 +183,12 @@ class CaseFile:
         run_id: int | None = None,
         state: str = "",
         text: str = "",
+        in_runs: bool = True,
         limit: int = 100,
         offset: int = 0,
     ) -> list[QueryRow]:
         """Queries with latest result and decision: components of a run by number, everything else newest first."""
-        clause, values = _condition(only, run_id, state, text)
+        clause, values = _condition(only, run_id, state, text, in_runs)
         order = "number" if run_id is not None else "job_id DESC, number"
         with self.reading() as connection:
             rows = connection.execute(
@@ -195,9 +196,9 @@ class CaseFile:
             ).fetchall()
         return [QueryRow(*row) for row in rows]
 
-    def count_queries(self, *, text: str = "") -> dict[str, int]:
-        """Number of queries by state."""
-        clause, values = _condition(None, None, "", text)
+    def count_queries(self, *, text: str = "", in_runs: bool = True) -> dict[str, int]:
+        """Number of queries by state; without components of runs on request."""
+        clause, values = _condition(None, None, "", text, in_runs)
         with self.reading() as connection:
             rows = connection.execute(
                 f"SELECT state, count(*) FROM ({_LIST}) AS item WHERE {clause} GROUP BY state",  # noqa: S608
@@ -249,14 +250,23 @@ class CaseFile:
             )
         return unpack(row[0], self.path)
 
-    def plans(self, limit: int = 500) -> list[tuple[int, str, str, list[dict[str, Any]]]]:
-        """Id, name, state and proposed measurements of the queries nobody has accepted or rejected."""
+    def count_run(self, run_id: int) -> dict[str, dict[str, int]]:
+        """Number of a run's components by level of the claim, and by state."""
+        counts: dict[str, dict[str, int]] = {}
         with self.reading() as connection:
-            rows = connection.execute(
-                f"SELECT item.id, item.name, state, follow_up FROM ({_LIST}) AS item JOIN result ON result.id = result_id"  # noqa: S608
-                " WHERE state IN ('open', 'follow-up') ORDER BY item.id DESC LIMIT ?",
-                (limit,),
-            ).fetchall()
+            for column in ("level", "state"):
+                text = f"SELECT {column}, count(*) FROM ({_LIST}) AS item WHERE run_id = ? GROUP BY {column}"  # noqa: S608
+                rows = connection.execute(text, (run_id,))
+                counts[column] = dict(rows.fetchall())
+        return counts
+
+    def plans(self, limit: int = 500) -> list[tuple[int, str, str, list[dict[str, Any]]]]:
+        """Id, name, state and proposed measurements of the queries nobody has accepted or rejected.
+
+        Of a run's components, only those with a claim on a compound or its isomers, or marked for follow-up.
+        """
+        with self.reading() as connection:
+            rows = connection.execute(_PLANS, (limit,)).fetchall()
         return [(query_id, name, state, json.loads(plans)) for query_id, name, state, plans in rows]
 
     def results_of(self, query_id: int) -> list[tuple[int, str, str]]:
@@ -301,8 +311,15 @@ _LIST = (
     f" LEFT JOIN decision ON decision.seq = {_LATEST_DECISION}"
 )
 
+_PLANS = (
+    f"SELECT item.id, item.name, state, follow_up FROM ({_LIST}) AS item JOIN result ON result.id = result_id"  # noqa: S608
+    " WHERE state = 'follow-up'"
+    " OR (state = 'open' AND (item.run_id IS NULL OR item.level NOT IN ('no claim', 'class')))"
+    " ORDER BY item.id DESC LIMIT ?"
+)
 
-def _condition(only: int | None, run_id: int | None, state: str, text: str) -> tuple[str, list[Any]]:
+
+def _condition(only: int | None, run_id: int | None, state: str, text: str, in_runs: bool) -> tuple[str, list[Any]]:
     escaped = text.replace("\\", "\\\\").replace("%", "\\%").replace("_", "\\_")
     pattern = f"%{escaped}%"
     like = "(name LIKE ? ESCAPE '\\' OR source LIKE ? ESCAPE '\\' OR statement LIKE ? ESCAPE '\\' OR best LIKE ? ESCAPE '\\')"
@@ -311,6 +328,7 @@ def _condition(only: int | None, run_id: int | None, state: str, text: str) -> t
         (run_id is not None, "run_id = ?", (run_id,)),
         (bool(state), "state = ?", (state,)),
         (bool(text), like, (pattern,) * 4),
+        (not in_runs, "run_id IS NULL", ()),
     ]
     used = [(clause, values) for asked, clause, values in conditions if asked]
     return " AND ".join(clause for clause, _ in used) or "1", [value for _, some in used for value in some]

@@ -28,7 +28,13 @@ class Mark:
 
 
 def chromatogram_svg(
-    time_s: Sequence[float], intensity: Sequence[float], marks: Sequence[Mark], start_s: float, end_s: float, title: str
+    time_s: Sequence[float],
+    intensity: Sequence[float],
+    marks: Sequence[Mark],
+    start_s: float,
+    end_s: float,
+    title: str,
+    top: float = 0.0,
 ) -> str:
     """SVG of a chromatogram between two times.
 
@@ -39,6 +45,8 @@ def chromatogram_svg(
     start_s, end_s : float
         Window shown, in seconds.
     title : str
+    top : float
+        Signal at the upper edge; higher peaks are cut. 0 for that of the highest.
 
     Returns
     -------
@@ -46,10 +54,12 @@ def chromatogram_svg(
     """
     inside = [(t, y) for t, y in zip(time_s, intensity, strict=True) if start_s <= t <= end_s]
     across = Scale(start_s, end_s, LEFT, WIDTH - RIGHT)
-    top = max((y for _, y in inside), default=1.0) or 1.0
+    top = top or max((y for _, y in inside), default=1.0) or 1.0
     up = Scale(0.0, top, HEIGHT - BOTTOM, TOP + SMALL_TYPE + 6)
     columns = _envelope(inside, across)
-    line = "".join(f"{'L' if place else 'M'}{x:.1f} {up(y):.1f}" for place, (x, y) in enumerate(columns))
+    line = "".join(
+        f"{'L' if place else 'M'}{x:.1f} {up(min(y, 1.04 * top)):.1f}" for place, (x, y) in enumerate(columns)
+    )
     shown = [mark for mark in marks if start_s <= mark.time_s <= end_s]
     parts = [
         _axis(start_s, end_s, across),
@@ -60,7 +70,7 @@ def chromatogram_svg(
         Label(str(m.number), across(m.time_s), up(min(m.height, top))) for m in sorted(shown, key=lambda m: -m.height)
     ]
     frame = Box(LEFT, 0.0, WIDTH - RIGHT, HEIGHT - BOTTOM)
-    placed = place_labels(labels, [], frame, size=SMALL_TYPE, large_size=LARGE_TYPE, n_large=6, n_fine=40)
+    placed = place_labels(labels[:60], [], frame, size=SMALL_TYPE, large_size=LARGE_TYPE, n_large=6, n_fine=40)
     words = "".join(
         f'<text x="{item.x:.1f}" y="{item.baseline:.1f}"{_fine(item.is_fine)}>{item.label.text}</text>'
         for item in placed

@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import ipaddress
 import socket
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from identify.errors import UsageError
 from identify.settings import Settings
@@ -18,6 +19,9 @@ from identify.workbench.jobs import JobRunner
 from identify.workbench.pages import Workbench
 from identify.workbench.people import list_people
 from identify.workbench.sessions import Person, Sessions
+
+if TYPE_CHECKING:
+    import uvicorn
 
 LOOPBACK = "127.0.0.1"
 
@@ -101,6 +105,27 @@ def open_workbench(
             jobs.stop()
 
 
+def make_server(opened: Opened) -> uvicorn.Server:
+    """A server of an open workbench, to be run on a listening socket.
+
+    Parameters
+    ----------
+    opened : Opened
+
+    Returns
+    -------
+    uvicorn.Server
+    """
+    import uvicorn
+
+    config = uvicorn.Config(
+        opened.app, log_level="warning", access_log=False, server_header=False, date_header=False, proxy_headers=False,
+        timeout_keep_alive=30, limit_concurrency=200, h11_max_incomplete_event_size=32_768, ws="none", lifespan="off",
+        timeout_graceful_shutdown=5,
+    )  # fmt: skip
+    return uvicorn.Server(config)
+
+
 def serve(opened: Opened, listener: socket.socket) -> None:
     """Nothing comes out until the server is told to stop.
 
@@ -110,16 +135,10 @@ def serve(opened: Opened, listener: socket.socket) -> None:
     listener : socket
         Bound already, so that the port is ours before the link is printed.
     """
-    import uvicorn
-
-    config = uvicorn.Config(
-        opened.app, log_level="warning", access_log=False, server_header=False, date_header=False, proxy_headers=False,
-        timeout_keep_alive=30, limit_concurrency=200, h11_max_incomplete_event_size=32_768, ws="none", lifespan="off",
-    )  # fmt: skip
-    uvicorn.Server(config).run(sockets=[listener])
+    make_server(opened).run(sockets=[listener])
 
 
-def bind(host: str, port: int, fail: Callable[[str], UsageError]) -> socket.socket:
+def bind(host: str, port: int) -> socket.socket:
     """A listening socket.
 
     Parameters
@@ -127,12 +146,15 @@ def bind(host: str, port: int, fail: Callable[[str], UsageError]) -> socket.sock
     host : str
     port : int
         0 takes any free one.
-    fail : callable
-        Makes the error from what the system says.
 
     Returns
     -------
     socket
+
+    Raises
+    ------
+    UsageError
+        If the address is not ours or the port is taken.
     """
     family = socket.AF_INET6 if ":" in host else socket.AF_INET
     listener = socket.socket(family, socket.SOCK_STREAM)
@@ -141,6 +163,7 @@ def bind(host: str, port: int, fail: Callable[[str], UsageError]) -> socket.sock
         listener.bind((host, port))
     except OSError as error:
         listener.close()
-        raise fail(error.strerror or str(error)) from None
+        said = error.strerror or str(error)
+        raise UsageError("--port", found=f"{host}, {port}: {said}", expected="a free port of this computer") from None
     listener.listen(128)
     return listener

@@ -137,7 +137,13 @@ def entry_line(number: int, entry: Entry, share: str = "") -> dict[str, Any]:
 
 
 def show_entry(desk: TheDesk, person: ThePerson, request: Request, library_number: Number, entry_id: EntryId) -> View:
-    """One entry: spectrum, structure, provenance, audit, replicates, history."""
+    """One entry: spectrum, structure, provenance, audit, replicates, history.
+
+    Raises
+    ------
+    NotFound
+        If there is none.
+    """
     library = desk.library(library_number)
     if entry_id not in library.entry_ids(ALL_STATUSES):
         raise NotFound("entry", found=str(entry_id), expected=f"an entry of {library.path.name}")

@@ -67,7 +67,13 @@ def show_query(
     result: Annotated[int | None, Query(ge=1, le=2**40)] = None,
     why_not: Annotated[str, Query(max_length=100)] = "",
 ) -> View:
-    """The query, its latest (or another) result, its decisions, and why a compound is not the answer."""
+    """The query, its latest (or another) result, its decisions, and why a compound is not the answer.
+
+    Raises
+    ------
+    NotFound
+        If there is no such query or result.
+    """
     row = find_query(desk, query_id)
     results = desk.case.results_of(query_id)
     if result is not None and result not in [item[0] for item in results]:
@@ -195,7 +201,17 @@ def add_decision(
     standard: Annotated[str, Form(max_length=200)] = "",
     note: Annotated[str, Form(max_length=4000)] = "",
 ) -> Outcome:
-    """Keep what a person decided about a query."""
+    """Keep what a person decided about a query.
+
+    Raises
+    ------
+    NotFound
+        If there is no such query or result.
+    UsageError
+        If something a decision needs is missing.
+    LibraryConflict
+        If somebody has decided in between.
+    """
     row = find_query(desk, query_id)
     if result not in [item[0] for item in desk.case.results_of(query_id)]:
         raise NotFound("result", found=str(result), expected=f"one of those of query {query_id}")

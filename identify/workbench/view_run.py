@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any
+from typing import Annotated, Any, Literal
 
 from fastapi import APIRouter, File, Form, Path, Query, Request, UploadFile
 
@@ -18,6 +18,7 @@ from identify.workbench.view_work_list import display_name, keep_upload, query_l
 Id = Annotated[int, Path(ge=1, le=2**40)]
 Minutes = Annotated[float | None, Query(ge=0, le=100_000)]
 MAX_COMPONENTS = 5000
+MARGIN_MIN = 0.5
 
 
 def add_routes(pages: APIRouter, twins: APIRouter) -> None:
@@ -40,14 +41,15 @@ def show_run(
     run_id: Id,
     start: Minutes = None,
     end: Minutes = None,
-    every: Annotated[bool, Query()] = False,
+    which: Annotated[Literal["claimed", "compounds", "all"], Query()] = "claimed",
 ) -> View:
-    """Chromatogram between two times (in minutes) and the components that elute there; with `every`, artefacts too."""
+    """Chromatogram between two times (in minutes) and the components that elute there."""
     job_id, name, at, run = _find_run(desk, run_id)
     rows = {row.number: row for row in desk.case.queries(run_id=run_id, limit=MAX_COMPONENTS)}
     first, last = run["time_s"][0] / 60.0, run["time_s"][-1] / 60.0
-    start_min = first if start is None else min(max(start, first), last)
-    end_min = last if end is None else max(min(end, last), first)
+    times = [item["time_s"] / 60.0 for item in run["components"]] or [first, last]
+    start_min = min(max(min(times) - MARGIN_MIN if start is None else start, first), last)
+    end_min = max(min(max(times) + MARGIN_MIN if end is None else end, last), first)
     if end_min - start_min < 0.01:
         start_min, end_min = first, last
     components = [_line(item, rows.get(item["number"])) for item in run["components"]]
@@ -55,7 +57,7 @@ def show_run(
     data = {
         "id": run_id, "name": visible_text(name), "at": at, "job": job_id, "run": told, "components": components,
         "start_min": round(start_min, 3), "end_min": round(end_min, 3),
-        "first_min": round(first, 3), "last_min": round(last, 3), "every": every,
+        "first_min": round(first, 3), "last_min": round(last, 3), "which": which,
     }  # fmt: skip
 
     def draw() -> dict[str, Any]:
@@ -72,12 +74,19 @@ def _draw(data: dict[str, Any], run: dict[str, Any]) -> dict[str, Any]:
         for item in inside
     ]
     title = f"Chromatogram of {data['name']}, {data['start_min']:.2f} to {data['end_min']:.2f} min"
-    shown = inside if data["every"] else [item for item in inside if item["kind"] == "compound"]
+    compounds = [item for item in inside if item["kind"] == "compound"]
+    claimed = [item for item in compounds if item["query"] and item["query"]["level"] != "no claim"]
+    shown = {"claimed": claimed, "compounds": compounds, "all": inside}[data["which"]]
+    # The solvent would leave nothing to see of everything else.
+    top = max((item["height"] for item in compounds), default=0.0) * 1.02
     width = data["end_min"] - data["start_min"]
     return {
-        "plot_svg": chromatogram_svg(run["time_s"], run["intensity"], marks, start_s, end_s, title),
+        "plot_svg": chromatogram_svg(run["time_s"], run["intensity"], marks, start_s, end_s, title, top),
         "shown": shown,
-        "n_hidden": len(inside) - len(shown),
+        "sizes": {"claimed": len(claimed), "compounds": len(compounds), "all": len(inside)},
+        "is_cut": any(
+            y > top > 0 for t, y in zip(run["time_s"], run["intensity"], strict=True) if start_s <= t <= end_s
+        ),
         "is_zoomed": width < data["last_min"] - data["first_min"] - 0.01,
         "steps": {
             "earlier": (data["start_min"] - 0.8 * width, data["start_min"] + 0.2 * width),

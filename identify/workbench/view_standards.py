@@ -107,7 +107,13 @@ def propose(
     note: Long = "",
     reason: Long = "",
 ) -> Outcome:
-    """Propose the spectrum of a query as an own standard."""
+    """Propose the spectrum of a query as an own standard.
+
+    Raises
+    ------
+    NotFound, UsageError, InputError, LibraryError
+        If there is no such query, something is missing, or the library refuses it.
+    """
     find_query(desk, query)
     details = StandardDetails(supplier, lot, purity, measured_on, analyst, method, note)
     if not (details.supplier.strip() or details.lot.strip() or details.note.strip()):

@@ -10,6 +10,7 @@ from typing import Annotated, Any, Literal
 from fastapi import APIRouter, File, Form, Path, Query, Request, UploadFile
 
 from identify.errors import InputError, UsageError
+from identify.records import ClaimLevel
 from identify.report.words import minutes_text, probability_text, sentence, visible_text
 from identify.retention import parse_ladder
 from identify.workbench.case_rows import STATES, Job, QueryRow
@@ -41,19 +42,28 @@ def show_work_list(
     state: Annotated[Literal["", "open", "accepted", "rejected", "follow-up"], Query()] = "",
     text: Annotated[str, Query(max_length=100)] = "",
     page: Annotated[int, Query(ge=1, le=100_000)] = 1,
+    components: Annotated[bool, Query()] = False,
 ) -> View:
     """Queries with what the data support and what was decided, runs, and work in the background."""
-    counts = desk.case.count_queries(text=text)
-    rows = desk.case.queries(state=state, text=text, limit=PAGE_SIZE, offset=(page - 1) * PAGE_SIZE)
+    counts = desk.case.count_queries(text=text, in_runs=components)
+    rows = desk.case.queries(state=state, text=text, in_runs=components, limit=PAGE_SIZE, offset=(page - 1) * PAGE_SIZE)
     total = counts[state] if state else sum(counts.values())
     jobs = _jobs_shown(desk)
     data = {
         "counts": counts, "state": state, "text": text, "page": page, "pages": max(1, -(-total // PAGE_SIZE)),
         "queries": [query_line(row) for row in rows],
         "jobs": [job_line(job) for job in jobs],
-        "runs": [{"id": run_id, "name": name, "at": at} for run_id, _, name, at in desk.case.runs(12)],
+        "runs": [_run_line(desk, *run) for run in desk.case.runs(12)],
+        "components": components,
     }  # fmt: skip
     return View("work_list.html", "Work list", data, lambda: {"states": STATES, "is_busy": _is_busy(jobs)})
+
+
+def _run_line(desk: Desk, run_id: int, job_id: int, name: str, at: str) -> dict[str, Any]:
+    counts = desk.case.count_run(run_id)
+    levels = {level.value: counts["level"][level.value] for level in ClaimLevel if level.value in counts["level"]}
+    states = {state: counts["state"].get(state, 0) for state in STATES}
+    return {"id": run_id, "job": job_id, "name": visible_text(name), "at": at, "levels": levels, "states": states}
 
 
 def _jobs_shown(desk: Desk) -> list[Job]:
@@ -108,7 +118,13 @@ def show_jobs(desk: TheDesk, person: ThePerson) -> dict[str, Any]:
 
 
 def show_job(desk: TheDesk, person: ThePerson, request: Request, job_id: Id) -> View:
-    """One piece of background work and everything it could not use."""
+    """One piece of background work and everything it could not use.
+
+    Raises
+    ------
+    NotFound
+        If there is none.
+    """
     job = find_job(desk.case, job_id)
     if job is None:
         raise NotFound("job", found=str(job_id), expected="a known number")
@@ -117,7 +133,13 @@ def show_job(desk: TheDesk, person: ThePerson, request: Request, job_id: Id) -> 
 
 
 def cancel_job(desk: TheDesk, person: ThePerson, request: Request, job_id: Id) -> Outcome:
-    """Stop a job."""
+    """Stop a job.
+
+    Raises
+    ------
+    NotFound
+        If there is none.
+    """
     job = find_job(desk.case, job_id)
     if job is None:
         raise NotFound("job", found=str(job_id), expected="a known number")
@@ -135,7 +157,13 @@ def take_upload(
     column: Annotated[str, Form(max_length=100)] = "",
     read_as: Annotated[Literal["", "run"], Form()] = "",
 ) -> Outcome:
-    """Take files; each becomes one piece of background work."""
+    """Take files; each becomes one piece of background work.
+
+    Raises
+    ------
+    InputError
+        For no file, too many, or a ladder that cannot be read.
+    """
     given = [file for file in files if file.filename or file.size]
     if not given or len(given) > MAX_FILES:
         raise InputError("upload", found=f"{len(given)} files", expected=f"1 to {MAX_FILES} files")
@@ -162,7 +190,13 @@ def take_pasted(
     peaks: Annotated[str, Form(max_length=MAX_PASTED)] = "",
     name: Annotated[str, Form(max_length=120)] = "",
 ) -> Outcome:
-    """Take peaks as text."""
+    """Take peaks as text.
+
+    Raises
+    ------
+    UsageError
+        For no text.
+    """
     if not peaks.strip():
         raise UsageError("pasted peaks", found="nothing", expected="m/z and intensity, pair by pair")
     path = desk.new_upload()

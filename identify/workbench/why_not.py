@@ -34,7 +34,7 @@ class WhyNot:
 def explain_absence(
     asked: str, found: Identification, libraries: Sequence[SearchableLibrary], settings: Settings
 ) -> tuple[WhyNot, ...]:
-    """Reasons for each compound whose name contains what was asked, best cosine first; none when no entry has such a name.
+    """Reasons for the compound of this name, else for those whose name contains it, best cosine first; none when none does.
 
     Parameters
     ----------
@@ -58,7 +58,8 @@ def explain_absence(
                 best[key] = told
     exact = asked.strip().casefold()
     ordered = sorted(best.values(), key=lambda item: (item.name.casefold() != exact, -item.cosine, item.accession))
-    return tuple(ordered[:MAX_COMPOUNDS])
+    named = [item for item in ordered if item.name.casefold() == exact]
+    return tuple(named or ordered[:MAX_COMPOUNDS])
 
 
 def _entries_named(library: Library, asked: str) -> list[Entry]:
@@ -107,11 +108,15 @@ def _reasons_ranked(candidate: Candidate, found: Identification) -> tuple[str, .
     for part in sorted(candidate.explanation.parts, key=lambda part: part.value - theirs.get(part.label, 0.0)):
         difference = part.value - theirs.get(part.label, 0.0)
         if difference < -0.005:
-            reasons.append(f"{part.label.capitalize()}: {abs(difference):.2f} fewer log-odds than the first candidate.")
+            reasons.append(
+                f"{part.label[:1].upper()}{part.label[1:]}: {abs(difference):.2f} fewer log-odds than the first candidate."
+            )
     return (*reasons, *_conflicts(candidate.evidence))
 
 
 def _conflicts(evidence: Sequence[EvidenceItem]) -> list[str]:
     return [
-        f"{item.kind.capitalize()} conflicts: {item.reason}" for item in evidence if item.verdict is Verdict.CONFLICTS
+        f"{item.kind[:1].upper()}{item.kind[1:]} conflicts: {item.reason}"
+        for item in evidence
+        if item.verdict is Verdict.CONFLICTS
     ]
