@@ -91,7 +91,11 @@ class Peaks:
             )
         # Few, cheap reductions: thousands of entries pass here per second. NaN fails every comparison.
         if mz.size and not (
-            mz[0] > 0 and mz[-1] < np.inf and (mz[1:] > mz[:-1]).all() and 0 < intensity.min() and intensity.max() < np.inf
+            mz[0] > 0
+            and mz[-1] < np.inf
+            and (mz[1:] > mz[:-1]).all()
+            and intensity.min() > 0
+            and intensity.max() < np.inf
         ):
             raise _bad_peaks(mz, intensity)
         object.__setattr__(self, "mz", mz)
