@@ -184,9 +184,7 @@ def _beside(facts: QueryFacts, formula: FormulaFacts) -> Cell:
     excess = next_one - formula.ratio(1) * molecular
     share = excess / max(molecular, next_one)
     cell = next(
-        name
-        for limit, name in ((0.9, "alone"), (0.5, "very tall"), (0.2, "tall"), (-2.0, "usual"))
-        if share >= limit
+        name for limit, name in ((0.9, "alone"), (0.5, "very tall"), (0.2, "tall"), (-2.0, "usual")) if share >= limit
     )
     reason = f"The ion at m/z {mass + 1} is {cell} beside M."
     return Cell(BESIDE, cell, reason, f"M {molecular:.1f} %, M+1 {next_one:.1f} % of base", "13C of M, a little [M+H]+")

@@ -1,36 +1,26 @@
-"""Records → a new library file: judged one by one, rejected with counted reasons, complete or not there at all."""
+"""Records → a library: a new file, complete or not there at all, or more entries in an existing one."""
 
 from __future__ import annotations
 
-import hashlib
-from collections import Counter
-from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+import sqlite3
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import dataclass
 from datetime import datetime
 from pathlib import Path
-from typing import NamedTuple
 
 from identify import __version__
 from identify.errors import InputError
-from identify.library.drafts import Policy, judge_record
+from identify.library.drafts import Policy
 from identify.library.events import append_event
-from identify.library.insertion import Insertion
+from identify.library.intake import Progress, Stream, Tally, stream_of, take_stream
 from identify.library.licences import resolve_licences
 from identify.library.new_file import new_library_file
-from identify.library.rows import Draft
 from identify.library.schema import SCHEMA_VERSION
-from identify.readers import read_spectra
+from identify.library.store import Library
 from identify.records import EntryStatus, Rejection, SpectrumRecord
 
-Progress = Callable[[int, str], None]
-"""Called with the number of records read and the name of the source, about every 100 records."""
 Accept = Callable[["BuildReport"], None]
-OnReject = Callable[[Rejection], None]
-
-DUPLICATE = "duplicate accession"
-MAX_LISTED = 20_000
-"""Rejections listed one by one; the counts are always complete."""
-_PROGRESS_EVERY = 100
+"""Called with the report before the library takes its place; raises to prevent it."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,22 +43,6 @@ class BuildReport:
     def exit_code(self) -> int:
         """0: leaving out what the choice of licence and method excludes is what was asked for; 3: nothing was accepted."""
         return 0 if self.n_accepted else 3
-
-
-@dataclass(slots=True)
-class _Tally:
-    """Counts of one source, or of the whole build."""
-
-    n_read: int = 0
-    n_accepted: int = 0
-    reasons: Counter[str] = field(default_factory=Counter)
-    notes: Counter[str] = field(default_factory=Counter)
-
-    def add(self, other: _Tally) -> None:
-        self.n_read += other.n_read
-        self.n_accepted += other.n_accepted
-        self.reasons.update(other.reasons)
-        self.notes.update(other.notes)
 
 
 def build_library(
@@ -124,8 +98,9 @@ def build_library(
     -----
     One pass, memory bounded by one record and the pages SQLite keeps.
     """
-    streams = [_stream_of(Path(source)) for source in sources]
-    return _build(Path(path), streams, resolve_licences(licences), replace, progress, who, when, reason, status, accept)
+    policy = Policy(resolve_licences(licences), status)
+    streams = [stream_of(Path(source)) for source in sources]
+    return _build(Path(path), streams, policy, replace, progress, who, when, reason, accept)
 
 
 def build_from_records(
@@ -160,136 +135,132 @@ def build_from_records(
     UsageError, InputError, LibraryError
         As `build_library`.
     """
-    stream = [_Stream(origin, "", "", lambda _on_reject: iter(records))]
-    return _build(Path(path), stream, resolve_licences(licences), replace, None, who, when, reason, status)
-
-
-class _Stream(NamedTuple):
-    """Where records come from."""
-
-    name: str
-    sha256: str
-    folder: str
-    """Left out of the provenance of entries: the folders of one computer mean nothing years later."""
-    read: Callable[[OnReject], Iterator[SpectrumRecord]]
-
-
-def _stream_of(source: Path) -> _Stream:
-    folder = str(source.parent / "x").removesuffix("x")
-    return _Stream(source.name, _source_hash(source), folder, lambda on_reject: read_spectra(source, on_reject))
+    policy = Policy(resolve_licences(licences), status)
+    stream = Stream(origin, "", "", lambda _on_reject: iter(records))
+    return _build(Path(path), [stream], policy, replace, None, who, when, reason)
 
 
 def _build(
     path: Path,
-    streams: Sequence[_Stream],
-    licences: frozenset[str] | None,
+    streams: Sequence[Stream],
+    policy: Policy,
     replace: bool,
     progress: Progress | None,
     who: str,
     when: datetime,
     reason: str,
-    status: EntryStatus,
     accept: Accept | None = None,
 ) -> BuildReport:
-    policy, total, listed = Policy(licences, status), _Tally(), list[Rejection]()
     with new_library_file(path, replace) as connection:
         append_event(
             connection, kind="created", who=who, when=when, reason=reason,
             content={"schema": SCHEMA_VERSION, "program": f"ionwitness {__version__}"},
         )  # fmt: skip
-        event = None
-        for stream in streams:
-            insertion, tally = Insertion(connection), _Tally()
-
-            def reject(rejection: Rejection, tally: _Tally = tally) -> None:
-                tally.reasons[rejection.reason] += 1
-                if len(listed) < MAX_LISTED:
-                    listed.append(rejection)
-
-            for record in _watched(stream.read(reject), total, tally, progress, stream.name):
-                _take(record, policy, stream.folder, insertion, tally, reject)
-            tally.n_read = tally.n_accepted + tally.reasons.total()
-            total.add(tally)
-            content = {
-                "source": stream.name,
-                "sha256": stream.sha256,
-                "licences": "all" if licences is None else sorted(licences),
-                "read": tally.n_read,
-                "rejected": dict(tally.reasons),
-            }
-            event = insertion.finish(kind="imported", who=who, when=when, reason=reason, content=content)
-        if event is None or total.n_accepted == 0:
-            raise InputError(
-                "library build", where=str(path), found=_nothing(total), expected="at least one spectrum to keep",
-                hint="See the reasons; `--licence all` takes every licence.",
-            )  # fmt: skip
-        (n_compounds,) = connection.execute("SELECT count(*) FROM compound").fetchone()
-        report = _report(path, event.hash, n_compounds, total, listed)
+        report = take_streams(
+            connection, path, streams, policy, progress=progress, who=who, when=when, reason=reason
+        )  # fmt: skip
         if accept:
             accept(report)
     return report
 
 
-def _report(path: Path, fingerprint: str, n_compounds: int, total: _Tally, listed: list[Rejection]) -> BuildReport:
+def take_streams(
+    connection: sqlite3.Connection,
+    path: Path,
+    streams: Sequence[Stream],
+    policy: Policy,
+    *,
+    progress: Progress | None,
+    who: str,
+    when: datetime,
+    reason: str,
+) -> BuildReport:
+    """Report on all sources taken into an open transaction, one event each.
+
+    Parameters
+    ----------
+    connection : sqlite3.Connection
+        In a transaction.
+    path : Path
+        Of the library.
+    streams : sequence of Stream
+    policy : Policy
+    progress : callable, optional
+    who, reason : str
+    when : datetime
+
+    Returns
+    -------
+    BuildReport
+
+    Raises
+    ------
+    InputError
+        If a source cannot be read at all, or nothing was accepted.
+    UsageError
+        If nobody is named, or the time has no zone.
+    """
+    total, event = Tally(), None
+    for stream in streams:
+        tally, event = take_stream(
+            connection, stream, policy, n_before=total.n_read, progress=progress, who=who, when=when, reason=reason
+        )
+        total.add(tally)
+    if event is None or total.n_accepted == 0:
+        raise InputError(
+            "library build", where=str(path), found=_nothing(total), expected="at least one spectrum to keep",
+            hint="See the reasons; `--licence all` takes every licence.",
+        )  # fmt: skip
+    (n_compounds,) = connection.execute("SELECT count(*) FROM compound").fetchone()
     reasons, notes = dict(total.reasons.most_common()), dict(total.notes.most_common())
     return BuildReport(
-        str(path), fingerprint, total.n_read, total.n_accepted, n_compounds, reasons, notes, tuple(listed)
+        str(path), event.hash, total.n_read, total.n_accepted, n_compounds, reasons, notes, tuple(total.rejected)
     )
 
 
-def _nothing(tally: _Tally) -> str:
+def _nothing(tally: Tally) -> str:
     reasons = ", ".join(f"{count} × {reason}" for reason, count in tally.reasons.most_common(5))
     return f"nothing accepted ({reasons})" if reasons else "no spectrum"
 
 
-def _watched(
-    records: Iterator[SpectrumRecord], total: _Tally, tally: _Tally, progress: Progress | None, name: str
-) -> Iterator[SpectrumRecord]:
-    for number, record in enumerate(records):
-        if progress and number % _PROGRESS_EVERY == 0:
-            progress(total.n_read + tally.n_accepted + tally.reasons.total(), name)
-        yield record
+def add_spectra(
+    library: Library,
+    sources: Sequence[Path | str],
+    *,
+    licences: str | Sequence[str] = "free",
+    progress: Progress | None = None,
+    who: str,
+    when: datetime,
+    reason: str = "",
+    status: EntryStatus = EntryStatus.REFERENCE,
+) -> BuildReport:
+    """Report on the spectra of more sources taken into an existing library, all of them or none.
 
+    Parameters
+    ----------
+    library : Library
+        Open for writing; others wait for it to be written until all is read.
+    sources, licences, progress, who, when, reason, status
+        As for `build_library`.
 
-def _take(
-    record: SpectrumRecord, policy: Policy, folder: str, insertion: Insertion, tally: _Tally, reject: OnReject
-) -> None:
-    draft = judge_record(record, policy)
-    if isinstance(draft, Rejection):
-        reject(draft)
-        return
-    draft = _with_provenance(draft, record, folder)
-    accession = str(draft.columns["accession"])
-    if insertion.has_accession(accession):
-        found, hint = f"{accession!r} again", "The first record with it was kept."
-        where = record.source
-        reject(Rejection(where.path, where.line, DUPLICATE, found, "each accession once", hint))
-        return
-    insertion.add(draft)
-    tally.n_accepted += 1
-    tally.notes.update(draft.notes)
+    Returns
+    -------
+    BuildReport
+        `n_compounds` counts those of the whole library.
 
-
-def _with_provenance(draft: Draft, record: SpectrumRecord, folder: str) -> Draft:
-    """The draft with the file it came from, and named after it where the record has no accession."""
-    source = record.source
-    columns = {**draft.columns, "source": str(draft.columns["source"]).removeprefix(folder)}
-    if not columns["accession"]:
-        position = source.number if source.number is not None else source.line
-        name = Path(source.path).name
-        columns["accession"] = name if position is None else f"{name}#{position}"
-    return replace(draft, columns=columns)
-
-
-def _source_hash(source: Path) -> str:
-    """SHA-256 of a file; empty for a folder or what cannot be read (reading it will say so)."""
-    if not source.is_file():
-        return ""
-    try:
-        with source.open("rb") as stream:
-            return hashlib.file_digest(stream, "sha256").hexdigest()
-    except OSError:
-        return ""
+    Raises
+    ------
+    InputError, UsageError
+        As for `build_library`; nothing is changed then.
+    LibraryBusy, LibraryError
+        If the library cannot be written.
+    """
+    policy = Policy(resolve_licences(licences), status)
+    streams = [stream_of(Path(source)) for source in sources]
+    with library.writing() as connection:
+        return take_streams(
+            connection, library.path, streams, policy, progress=progress, who=who, when=when, reason=reason
+        )
 
 
 def describe_build(report: BuildReport) -> list[str]:

@@ -283,7 +283,7 @@ def _read_label(record: SpectrumRecord, formula: Formula | None) -> tuple[str, F
         except StructureError:
             return record.identity.smiles, None
         return labelled.hill, labelled
-    names = (record.identity.name, record.title.partition(";")[0], *record.identity.other_names)
+    names = dict.fromkeys((record.identity.name, record.title.partition(";")[0], *record.identity.other_names))
     label = next(filter(None, map(find_label, names)), None)
     if label is None:
         return "", formula

@@ -19,8 +19,9 @@ from urllib.parse import urljoin
 
 from identify import __version__
 from identify.errors import FetchError, UsageError
-from identify.library.build import BuildReport, Progress, build_library
+from identify.library.build import BuildReport, build_library
 from identify.library.drafts import NOT_EI, NOT_MS1, NOT_POSITIVE
+from identify.library.intake import Progress
 from identify.library.recipe import Recipe, check_address, read_recipe
 
 if TYPE_CHECKING:

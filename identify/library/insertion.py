@@ -36,11 +36,6 @@ class Insertion:
         self._hashes = hashlib.sha256()
         self.entry_ids: list[int] = []
 
-    def has_accession(self, accession: str) -> bool:
-        """Whether an entry with this accession exists, in whatever standing."""
-        row = self._connection.execute("SELECT 1 FROM entry WHERE accession = ?", (accession,)).fetchone()
-        return row is not None
-
     def add(self, draft: Draft) -> int:
         """Id of the new entry.
 
@@ -50,10 +45,8 @@ class Insertion:
             If its accession is taken.
         """
         accession = str(draft.columns["accession"])
-        if self.has_accession(accession):
-            raise LibraryConflict(
-                "accession", found=f"{quote(accession)} twice", expected="an accession of its own for every entry"
-            )
+        if self._connection.execute("SELECT 1 FROM entry WHERE accession = ?", (accession,)).fetchone():
+            raise LibraryConflict("accession", found=f"{quote(accession)} again", expected="each accession once")
         digest = draft.content_hash
         values = [draft.columns[name] for name in CONTENT_COLUMNS]
         compound = self._compound_id(draft.compound)

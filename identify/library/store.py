@@ -69,6 +69,11 @@ def open_library(
         raise
 
 
+def _marks(values: Collection[object]) -> str:
+    """One placeholder per value."""
+    return ", ".join("?" * len(values))
+
+
 def _find_event(connection: sqlite3.Connection, wanted: int | str, path: Path) -> int:
     text = str(wanted).strip().lower()
     if text.isdecimal() and len(text) < 16:
@@ -206,21 +211,33 @@ class Library:
     def state(self) -> LibraryState:
         """Fingerprint, and how many searchable entries and compounds there are."""
         with self.reading() as connection:
-            searchable = [status.value for status in SEARCHABLE]
-            marks = ", ".join("?" * len(searchable))
-            moved = self._standing
-            counts = connection.execute(
+            n_entries, n_compounds = connection.execute(
                 "SELECT count(*), count(DISTINCT compound_id) FROM entry"  # noqa: S608  (placeholders only)
-                f" WHERE event_seq <= ? AND initial_status IN ({marks})",
-                (self.last_event, *searchable),
+                f" WHERE event_seq <= ? AND initial_status IN ({_marks(SEARCHABLE)})",
+                (self.last_event, *SEARCHABLE),
             ).fetchone()
-            if moved:
-                pairs = connection.execute(
-                    "SELECT id, compound_id, initial_status FROM entry WHERE event_seq <= ?", (self.last_event,)
-                )
-                kept = [compound for entry, compound, status in pairs if moved.get(entry, status) in SEARCHABLE]
-                counts = (len(kept), len(set(kept)))
-        return LibraryState(str(self.path), self.fingerprint, *map(int, counts))
+            before, after = self._moved_compounds(connection)
+            n_entries += len(after) - len(before)
+            n_compounds += len(set(after)) - len(set(before))
+        return LibraryState(str(self.path), self.fingerprint, n_entries, n_compounds)
+
+    def _moved_compounds(self, connection: sqlite3.Connection) -> tuple[list[int], list[int]]:
+        """Compound of every searchable entry, as the entries came and as they stand, for the compounds that changed."""
+        before, after, compounds = list[int](), list[int](), set[int]()
+        moved = list(self._standing)
+        for start in range(0, len(moved), _BATCH):
+            batch = moved[start : start + _BATCH]
+            rows = connection.execute(f"SELECT compound_id FROM entry WHERE id IN ({_marks(batch)})", batch)  # noqa: S608
+            compounds.update(row[0] for row in rows)
+        for compound in compounds:
+            rows = connection.execute(
+                "SELECT id, initial_status FROM entry WHERE compound_id = ? AND event_seq <= ?",
+                (compound, self.last_event),
+            )
+            for entry, status in rows:
+                before += [compound] * (status in SEARCHABLE)
+                after += [compound] * (self._standing.get(entry, status) in SEARCHABLE)
+        return before, after
 
     def standings(self) -> dict[int, EntryStatus]:
         """Present standing of the entries that events have moved from the one they came with, by entry id."""
@@ -266,9 +283,8 @@ class Library:
             found = {entry_id: cache[entry_id] for entry_id in ids if entry_id in cache}
             for start in range(0, len(wanted), _BATCH):
                 batch = wanted[start : start + _BATCH]
-                marks = ", ".join("?" * len(batch))
                 rows = connection.execute(
-                    f"{_ENTRY_SELECT} WHERE id IN ({marks}) AND event_seq <= ?", (*batch, self.last_event)
+                    f"{_ENTRY_SELECT} WHERE id IN ({_marks(batch)}) AND event_seq <= ?", (*batch, self.last_event)
                 )
                 for row in rows:
                     found[row[0]] = self._decode(row)
@@ -296,8 +312,9 @@ class Library:
         """
         for batch in self._batches(statuses):
             with self.reading() as connection:
-                marks = ", ".join("?" * len(batch))
-                rows = connection.execute(f"{_ENTRY_SELECT} WHERE id IN ({marks}) ORDER BY id", batch).fetchall()
+                rows = connection.execute(
+                    f"{_ENTRY_SELECT} WHERE id IN ({_marks(batch)}) ORDER BY id", batch
+                ).fetchall()
                 entries = [self._decode(row) for row in rows]
             yield from entries
 
@@ -322,10 +339,9 @@ class Library:
         for start in range(0, len(ids), _BATCH):
             batch = ids[start : start + _BATCH]
             with self.reading() as connection:
-                marks = ", ".join("?" * len(batch))
                 rows = connection.execute(
                     "SELECT id, nominal_mz, nominal_intensity, lowest_mz FROM entry"  # noqa: S608
-                    f" WHERE id IN ({marks}) ORDER BY id",
+                    f" WHERE id IN ({_marks(batch)}) ORDER BY id",
                     batch,
                 ).fetchall()
             for entry_id, mz, intensity, lowest_mz in rows:

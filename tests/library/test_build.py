@@ -14,7 +14,7 @@ import pytest
 from library_builders import ETHANOL, TOLUENE, WHEN, WHO, build_record, build_records, build_test_library
 
 from identify.errors import InputError, LibraryConflict, LibraryError, UsageError
-from identify.library.build import build_from_records, build_library
+from identify.library.build import add_spectra, build_from_records, build_library
 from identify.library.connection import connect
 from identify.library.drafts import Policy, judge_record
 from identify.library.rows import Draft
@@ -285,3 +285,20 @@ def test_a_library_in_use_is_not_replaced_under_its_writer(library_path: Path) -
         writer.close()
     with open_library(library_path) as library:
         assert library.state().entries == 5
+
+
+def test_more_spectra_come_in_whole_or_not_at_all(library_path: Path, tmp_path: Path) -> None:
+    text = "Name: Butane\nFormula: C4H10\nNum Peaks: 2\n43 100\n58 12\n\n"
+    source = tmp_path / "own.msp"
+    source.write_text(text)
+    with open_library(library_path, writable=True) as library:
+        with pytest.raises(InputError, match="licence not accepted"):
+            add_spectra(library, [source], who=WHO, when=WHEN)
+        assert library.state().entries == 5
+        assert len(library.events()) == 2
+        report = add_spectra(library, [source], licences="all", who=WHO, when=WHEN, reason="own spectra")
+        assert (report.n_accepted, report.n_compounds, report.fingerprint) == (1, 5, library.fingerprint)
+        assert library.find_entries(name="Butane")[0].source == "own.msp:1"
+        with pytest.raises(InputError, match="duplicate accession"):
+            add_spectra(library, [source], licences="all", who=WHO, when=WHEN)
+        assert library.events()[-1].reason == "own spectra"
