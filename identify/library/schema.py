@@ -13,6 +13,9 @@ is no part of the state a search depends on and has a chain of hashes of its own
 from __future__ import annotations
 
 import sqlite3
+from collections.abc import Mapping
+from functools import cache
+from types import MappingProxyType
 from typing import NamedTuple
 
 APPLICATION_ID = 0x494F4E57
@@ -202,7 +205,8 @@ def schema_objects(connection: sqlite3.Connection) -> dict[str, str]:
     return {str(name): str(sql) for name, sql in rows}
 
 
-def expected_objects(version: int = SCHEMA_VERSION) -> dict[str, str]:
+@cache
+def expected_objects(version: int = SCHEMA_VERSION) -> Mapping[str, str]:
     """What `schema_objects` gives for an intact library of `version`.
 
     Examples
@@ -214,6 +218,6 @@ def expected_objects(version: int = SCHEMA_VERSION) -> dict[str, str]:
     try:
         connection.execute("BEGIN")
         apply_migrations(connection, version)
-        return schema_objects(connection)
+        return MappingProxyType(schema_objects(connection))
     finally:
         connection.close()

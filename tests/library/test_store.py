@@ -237,6 +237,16 @@ def test_nothing_written_can_be_changed_or_removed(library_path: Path, table: st
             raw.execute(statement)
 
 
+def test_a_library_whose_rules_were_taken_away_is_not_written(library_path: Path) -> None:
+    raw = sqlite3.connect(library_path)
+    raw.execute("DROP TRIGGER entry_no_update")
+    raw.close()
+    with pytest.raises(LibraryDamaged, match="found entry_no_update changed, missing or added"):
+        open_library(library_path, writable=True)
+    with open_library(library_path) as library:
+        assert library.state().entries == 5
+
+
 def test_a_network_share_is_refused_for_writing_only(library_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     mounts = library_path.parent / "mounts"
     mounts.write_text(f"/dev/sda1 / ext4 rw 0 0\nserver:/x {library_path.parent} nfs4 rw 0 0\n")
