@@ -2,6 +2,7 @@
 
 One compound per peak and one peak per compound; the order of elution must fit known retention indices and the order within a
 homologous series. Where it does not, claims are lowered, never raised: agreement among neighbours is no evidence of its own.
+(Classes, which do rest on the run as well, are named in `run_classes` and say so.)
 """
 
 from __future__ import annotations

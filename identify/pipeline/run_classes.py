@@ -13,12 +13,14 @@ alkane rule (ion series ≥ 0.93 of the signal, molecular ion present) was right
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 from identify.chem.structures import compound_classes
 from identify.errors import StructureError
 from identify.pipeline.joint import claim_class
 from identify.records import Candidate, ClaimLevel, Identification
 from identify.runs.alkanes import alkane_carbons
+from identify.runs.findings import Finding
 from identify.runs.model import Component
 from identify.settings import Settings
 
@@ -28,8 +30,76 @@ VOTE_NEEDED_OTHERWISE = 0.9
 VOTE_PROBABILITY, ALKANE_PROBABILITY = 0.95, 0.95
 """What the measurements support: rounded down."""
 ALKANE_SERIES_SHARE = 0.93
+HYDROCARBON = "hydrocarbon"
+LIBRARY_SHARE = 0.042
+"""Hydrocarbons among the 9,355 full-scan records measured: what probabilities of the library's candidates assume."""
+MIN_WITNESSES, MOST_RUN_SHARE = 10, 0.5
 MIN_COSINE = 0.6
 """Votes of entries less similar than this say nothing."""
+
+
+def name_classes(findings: Sequence[Finding], settings: Settings) -> tuple[Finding, ...]:
+    """Findings with class claims where no compound or isomer group can be claimed.
+
+    Parameters
+    ----------
+    findings : sequence of Finding
+        All of one run, seen together already.
+    settings : Settings
+
+    Returns
+    -------
+    tuple of Finding
+        As many, same order.
+
+    Notes
+    -----
+    First each component alone (`name_class`). Then, if at least `MIN_WITNESSES` components of the run stand as hydrocarbons by
+    claims of their own, the rest are judged again with the run's share of hydrocarbons in place of the library's
+    (`LIBRARY_SHARE`), never above one half: posterior odds = odds from the candidates × run odds / library odds. A claim made
+    so has a note that says it.
+    """
+    alone = [
+        replace(f, identification=name_class(f.identification, f.component, settings)) if f.identification else f
+        for f in findings
+    ]
+    judged = [f for f in alone if f.is_explained and not f.is_background]
+    witnesses = sum(1 for f in judged if _is_hydrocarbon(f))
+    if witnesses < MIN_WITNESSES:
+        return tuple(alone)
+    share = min(MOST_RUN_SHARE, (witnesses + 1.0) / (len(judged) + 2.0))
+    gain = share / (1.0 - share) * (1.0 - LIBRARY_SHARE) / LIBRARY_SHARE
+    note = f"The class rests on the run as well: {witnesses} of its {len(judged)} components with a claim are hydrocarbons."
+    return tuple(_with_run_share(f, gain, note, settings) for f in alone)
+
+
+def _is_hydrocarbon(finding: Finding) -> bool:
+    found = finding.identification
+    if found is None or not found.candidates:
+        return False
+    if found.claim.level is ClaimLevel.CLASS:
+        return any(word in found.claim.statement.lower() for word in ("hydrocarbon", "alkyl", "alkane"))
+    return HYDROCARBON in _classes(found.candidates[0])
+
+
+def _with_run_share(finding: Finding, gain: float, note: str, settings: Settings) -> Finding:
+    found = finding.identification
+    if found is None or finding.is_background or finding.is_explained or not found.candidates:
+        return finding
+    probability = min(0.999, _class_probability(found.candidates, HYDROCARBON))
+    odds = probability / (1.0 - probability) * gain
+    posterior = odds / (1.0 + odds)
+    if posterior < settings.claim_threshold or max(c.cosine for c in found.candidates) < MIN_COSINE:
+        return finding
+    claimed = claim_class(found, HYDROCARBON, posterior)
+    return replace(finding, identification=replace(claimed, notes=(*claimed.notes, note)))
+
+
+def _class_probability(candidates: Sequence[Candidate], name: str) -> float:
+    """Probability of a class from the candidates, and from their vote where the compound is not in the library."""
+    inside = sum(c.probability for c in candidates)
+    within = sum(c.probability for c in candidates if name in _classes(c))
+    return within + max(0.0, 1.0 - inside) * _votes(candidates).get(name, 0.0)
 
 
 def name_class(found: Identification, component: Component, settings: Settings) -> Identification:
@@ -49,16 +119,9 @@ def name_class(found: Identification, component: Component, settings: Settings) 
         return found
     threshold = settings.claim_threshold
     votes = _votes(found.candidates)
-    inside = sum(c.probability for c in found.candidates)
-    sums: dict[str, float] = {}
-    for candidate in found.candidates:
-        if candidate.probability > 0.0005:
-            for name in _classes(candidate):
-                sums[name] = sums.get(name, 0.0) + candidate.probability
     for name in _most_telling_first(found.candidates):
-        vote = votes.get(name, 0.0)
-        probability = sums.get(name, 0.0) + max(0.0, 1.0 - inside) * vote
-        if vote >= VOTE_NEEDED.get(name, VOTE_NEEDED_OTHERWISE):
+        probability = _class_probability(found.candidates, name)
+        if votes.get(name, 0.0) >= VOTE_NEEDED.get(name, VOTE_NEEDED_OTHERWISE):
             probability = max(probability, VOTE_PROBABILITY)
         if probability >= threshold:
             return claim_class(found, name, min(probability, 1.0))

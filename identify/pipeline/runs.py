@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 
 from identify import __version__
 from identify.errors import InputError, SpectrumError, UsageError
 from identify.pipeline.joint import settle_jointly
-from identify.pipeline.run_classes import name_class
+from identify.pipeline.run_classes import name_classes
 from identify.pipeline.search import Progress, SearchableLibrary, identify_query, make_query, open_libraries
 from identify.pipeline.shared_unknowns import share_unknowns
 from identify.readers.runs import read_run
@@ -180,13 +180,8 @@ class _Analysis:
             findings.append(self._identify(component, run, scale, first_query + component.number - 1))
         width_s = decomposition.width_scans * decomposition.scan_time_s
         settled = settle_jointly(findings, width_s, self.settings)
-        named = [
-            replace(f, identification=name_class(f.identification, f.component, self.settings))
-            if f.identification
-            else f
-            for f in settled
-        ]
-        return RunFindings(number, run, decomposition, tuple(named), scale, run.notes)
+        named = name_classes(settled, self.settings)
+        return RunFindings(number, run, decomposition, named, scale, run.notes)
 
     def _own_scale(self, components: Sequence[Component]) -> RetentionScale | None:
         ladder = find_alkane_ladder(components, alkanes_only=False) if self.options.self_calibrate else None
