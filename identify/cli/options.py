@@ -16,7 +16,8 @@ if TYPE_CHECKING:
 
     from identify.library.events import Event
 
-FILE = click.Path(path_type=Path)
+FILE = click.Path(path_type=Path, readable=False)
+"""Any path: whether it can be read is found out by who reads it, so that one bad file does not stop the others."""
 MAX_TEXT_BYTES = 16 * 2**20
 """No settings file, ladder or list is larger."""
 

@@ -64,7 +64,7 @@ def search(
     check_outputs(outputs, (*queries, *libraries))
     written = next((path for path in outputs if path), None)
     if is_recorded and written is None:
-        raise UsageError("--record", found="no result file", expected="--json, --csv or --report with it")
+        _refuse_record()
     if queries == (Path("-"),):
         report = search_pasted(_read_pasted(), libraries, settings, as_of=as_of)
     else:
@@ -74,6 +74,10 @@ def search(
     if written and is_recorded is not False:
         remember(report, written, who, is_required=bool(is_recorded))
     return code
+
+
+def _refuse_record() -> None:
+    raise UsageError("--record", found="no result file", expected="--json, --csv or --report with it")
 
 
 def remember(report: Report, result: Path, who: str, *, is_required: bool) -> None:

@@ -90,7 +90,8 @@ def read_result(path: Path) -> dict[str, Any]:
         with path.open("rb") as stream:
             data = stream.read(MAX_BYTES + 1)
     except OSError as error:
-        found = "no file" if isinstance(error, FileNotFoundError) else error.strerror or type(error).__name__
+        words = {FileNotFoundError: "no file", PermissionError: "no permission", IsADirectoryError: "a folder"}
+        found = words.get(type(error)) or error.strerror or type(error).__name__
         raise InputError("result", where=str(path), found=found, expected="a readable JSON file") from None
     hint = "Give the file that --json wrote."
     if len(data) > MAX_BYTES:

@@ -11,6 +11,8 @@ from click.testing import Result
 
 from identify.errors import InputError, LibraryConflict, LibraryError, StructureError, UsageError
 from identify.library.store import open_library
+from tests.readers.run_files import write_andi
+from tests.runs.synthetic_runs import Eluting, make_run
 
 Run = Callable[..., Result]
 
@@ -176,3 +178,25 @@ def test_an_unknown_accession_is_named(run: Run, lab: Path, command: str) -> Non
     with pytest.raises(LibraryError) as error:
         run("standard", command, "OWN-9", "--library", lab, *options)
     assert str(error.value) == f"entry in {lab}: found no 'OWN-9', expected a known accession."
+
+
+def test_a_component_of_a_run_is_proposed(run: Run, lab: Path, tmp_path: Path) -> None:
+    peaks = {43: 100.0, 58: 40.0, 42: 7.0}
+    made = make_run([Eluting(peaks, 150.0, 40_000.0)], 300, seed=1, mz_range=(35, 100))
+    edges = zip(made.first_point[:-1], made.first_point[1:], strict=True)
+    scans = [list(zip(made.mz[a:b].tolist(), made.intensity[a:b].tolist(), strict=True)) for a, b in edges]
+    path = write_andi(tmp_path / "Lauf ä 1.cdf", scans, scan_acquisition_time=made.time_s)
+    propose(run, lab, path, "--component", 1)
+    with open_library(lab) as library:
+        from identify.library.standing import get_entry
+
+        found = get_entry(library, "OWN-000001").spectrum.nominal
+    assert found.base_peak_mz == 43.0
+    assert found.intensity_at(58) / found.intensity_at(43) == pytest.approx(0.4, abs=0.03)
+    with pytest.raises(InputError) as error:
+        propose(run, lab, path, "--component", 99)
+    assert str(error.value).startswith(f"run in {path}: found ")
+    assert str(error.value).endswith(" components, expected a component 99.")
+    with pytest.raises(UsageError) as usage:
+        propose(run, lab, path, "--component", 1, "--which", "x")
+    assert str(usage.value) == "--which: found --component with it, expected one of the two."
