@@ -3,9 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 from identify.records import Candidate, Claim, ClaimLevel, Verdict
 from identify.settings import Settings
+
+if TYPE_CHECKING:
+    from identify.ranking.rank import Chances
 
 PUBLISHED_LEVELS = {
     ClaimLevel.CONFIRMED: ("1", "1"),
@@ -18,27 +22,28 @@ PUBLISHED_LEVELS = {
 """Levels of the Metabolomics Standards Initiative 2007 and of Schymanski et al. 2014 (methods.md section 6)."""
 
 
-def make_claim(candidates: Sequence[Candidate], in_library_probability: float, settings: Settings) -> Claim:
+def make_claim(candidates: Sequence[Candidate], chances: Chances | None, settings: Settings) -> Claim:
     """Strongest claim whose probability passes `settings.claim_threshold`; never `confirmed`.
 
     Parameters
     ----------
     candidates : sequence of Candidate
         Best first.
-    in_library_probability : float
+    chances : Chances or None
+        From `identify.ranking.rank.weigh_answers`; None when there is no candidate.
     settings : Settings
 
     Returns
     -------
     Claim
     """
-    if not candidates:
+    if not candidates or chances is None:
         return _claim(ClaimLevel.NO_CLAIM, "No claim: no entry of the library resembles this spectrum.", 0.0)
     best = candidates[0]
     formula = best.entry.formula_as_measured
     group = [c for c in candidates if c is best or (formula and c.entry.formula_as_measured == formula)]
     p_compound = best.probability
-    p_group = min(1.0, sum(c.probability for c in group))
+    p_group = chances.of_group(0)
     name, limit = best.entry.identity.name, settings.claim_threshold
     levels = (p_compound, p_group, p_group)
     verdicts = {item.verdict for item in best.evidence}
@@ -52,7 +57,7 @@ def make_claim(candidates: Sequence[Candidate], in_library_probability: float, s
         text = f"One of the isomers of {formula} that these data cannot tell apart ({p_group:.0%}); best match {name}."
         return _claim(ClaimLevel.ISOMER_GROUP, text, p_group, members, levels)
     text = f"No claim: the best match, {name}, reaches {p_compound:.0%}."
-    return _claim(ClaimLevel.NO_CLAIM, text, 1.0 - in_library_probability, (), levels)
+    return _claim(ClaimLevel.NO_CLAIM, text, 1.0 - float(chances.listed.sum()), (), levels)
 
 
 def _claim(

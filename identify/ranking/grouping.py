@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Sequence
 from typing import NamedTuple
 
 from identify.records import Entry, Hit
@@ -78,21 +77,3 @@ def isomer_key(entry: Entry) -> str:
 
 def _plain(name: str) -> str:
     return " ".join(name.casefold().split())
-
-
-def group_matches(matches: Sequence[Match]) -> dict[str, list[Match]]:
-    """Matches of each compound, compounds in the order of their first match.
-
-    Parameters
-    ----------
-    matches : sequence of Match
-        In the order of the index; the same entry may come only once.
-
-    Returns
-    -------
-    dict of str to list of Match
-    """
-    groups: dict[str, list[Match]] = {}
-    for match in matches:
-        groups.setdefault(compound_key(match.entry), []).append(match)
-    return groups

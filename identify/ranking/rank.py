@@ -2,18 +2,24 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
+from dataclasses import dataclass
 from typing import NamedTuple
 
+import numpy as np
+
+from identify.evidence.facts import formula_facts
+from identify.ranking.alternatives import Groups, group_isomers
 from identify.ranking.claim import make_claim
 from identify.ranking.follow_up import propose_follow_up
+from identify.ranking.model import RankingModel, default_model, explain_candidate
 from identify.ranking.shortlist import Draft
 from identify.records import (
     Candidate,
     Claim,
     EvidenceItem,
     Explanation,
+    FloatArray,
     FollowUp,
     MolecularIonEstimate,
     Query,
@@ -30,12 +36,66 @@ class Ranking(NamedTuple):
     follow_up: tuple[FollowUp, ...]
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class Chances:
+    """Probabilities of all answers to one query; they add up to 1.
+
+    Attributes
+    ----------
+    listed : array of shape (n_candidates,)
+    unlisted : array of shape (n_groups,)
+        Isomers of each group that have no entry.
+    elsewhere : float
+        Something else.
+    groups : Groups
+    """
+
+    listed: FloatArray
+    unlisted: FloatArray
+    elsewhere: float
+    groups: Groups
+
+    def of_group(self, candidate: int) -> float:
+        """Probability of the isomer group of a candidate: its members, listed and not."""
+        group = self.groups.of_candidate[candidate]
+        members = self.listed[self.groups.of_candidate == group].sum()
+        return min(1.0, float(members + self.unlisted[group]))
+
+
+def weigh_answers(drafts: Sequence[Draft], log_odds: FloatArray, model: RankingModel) -> Chances:
+    """Probabilities of each listed compound, of unlisted isomers, and of something else.
+
+    Parameters
+    ----------
+    drafts : sequence of Draft
+        At least one.
+    log_odds : array of shape (n_drafts,)
+        For each compound, before its rivals are looked at.
+    model : RankingModel
+
+    Returns
+    -------
+    Chances
+    """
+    features = np.array([draft.features for draft in drafts])
+    groups = group_isomers([draft.entry for draft in drafts], features, log_odds)
+    unlisted = model.unlisted.value(groups.unlisted) + _log_sums(log_odds, groups)
+    # An isomer without an entry can only be spoken of where the formula is known.
+    unlisted = np.where(np.array([bool(key) for key in groups.keys]), unlisted, -np.inf)
+    everything = np.concatenate([log_odds, unlisted, [float(model.elsewhere.value(groups.elsewhere))]])
+    chance = np.exp(everything - everything.max())
+    chance /= chance.sum()
+    n = len(drafts)
+    return Chances(chance[:n], chance[n:-1], float(chance[-1]), groups)
+
+
 def rank(
     query: Query,
     drafts: Sequence[Draft],
     evidence: Sequence[Sequence[EvidenceItem]],
     molecular_ion: MolecularIonEstimate,
     settings: Settings,
+    model: RankingModel | None = None,
 ) -> Ranking:
     """Candidates in their final order with probabilities, the claim and the next measurements.
 
@@ -45,43 +105,71 @@ def rank(
     drafts : sequence of Draft
         From `identify.ranking.shortlist.shortlist`.
     evidence : sequence of sequences of EvidenceItem
-        Evidence of the first drafts, in their order; drafts beyond its length have none.
+        Evidence of the drafts, in their order; a draft beyond its length has none.
     molecular_ion : MolecularIonEstimate
     settings : Settings
+    model : RankingModel, optional
+        The shipped one by default.
 
     Returns
     -------
     Ranking
-        As many candidates as drafts; probabilities are of the compound, and add up to at most 1.
+        As many candidates as drafts; probabilities are of the compound and add up to the probability that the compound is
+        in the library. The explanation of a candidate adds up to the natural logarithm of its odds.
     """
-    rows = []
-    for place, draft in enumerate(drafts):
-        items = tuple(evidence[place]) if place < len(evidence) else ()
-        parts = tuple(Explanation(item.kind, item.log_odds, item.reason) for item in items if item.log_odds)
-        told = Explanation("evidence", sum(part.value for part in parts), parts=parts)
-        rows.append((draft.match.value + told.value, draft, items, told))
-    rows.sort(key=lambda row: -row[0])
-    inside = _in_library(rows[0][0] if rows else -math.inf)
-    total = sum(math.exp(row[0] - rows[0][0]) for row in rows) if rows else 1.0
+    model = model or default_model()
+    if not drafts:
+        return Ranking((), 0.0, make_claim((), None, settings), propose_follow_up(query, (), molecular_ion))
+    items = [tuple(evidence[place]) if place < len(evidence) else () for place in range(len(drafts))]
+    told = [
+        explain_candidate(model, draft.match, found, _nominal_mass(draft), molecular_ion)
+        for draft, found in zip(drafts, items, strict=True)
+    ]
+    log_odds = np.array([explained.value for explained in told])
+    order = np.argsort(-log_odds, kind="stable")
+    drafts, items, told = [drafts[n] for n in order], [items[n] for n in order], [told[n] for n in order]
+    chances = weigh_answers(drafts, log_odds[order], model)
     candidates = tuple(
         Candidate(
-            rank=place,
+            rank=place + 1,
             entry=draft.entry,
             library=draft.library,
             aligned=draft.aligned,
             cosine=draft.cosine,
             reverse=draft.reverse,
-            evidence=items,
-            probability=inside * math.exp(value - rows[0][0]) / total,
-            explanation=Explanation("log-odds", draft.match.value + told.value, parts=(draft.match, told)),
+            evidence=items[place],
+            probability=float(chances.listed[place]),
+            explanation=_explain_odds(told[place], chances, place),
             n_entries=draft.n_entries,
         )
-        for place, (value, draft, items, told) in enumerate(rows, start=1)
+        for place, draft in enumerate(drafts)
     )
-    claim = make_claim(candidates, inside, settings)
-    return Ranking(candidates, inside, claim, propose_follow_up(query, candidates, molecular_ion))
+    claim = make_claim(candidates, chances, settings)
+    follow_up = propose_follow_up(query, candidates, molecular_ion)
+    return Ranking(candidates, float(chances.listed.sum()), claim, follow_up)
 
 
-def _in_library(best: float) -> float:
-    """Share of queries whose compound is in the library, from the log-odds of the best candidate."""
-    return 1.0 / (1.0 + math.exp(-(best - 14.0))) if best > -700 else 0.0
+def _nominal_mass(draft: Draft) -> int | None:
+    found = formula_facts(draft.entry.formula_as_measured)
+    return found.nominal_mass if found else None
+
+
+def _log_sums(log_odds: FloatArray, groups: Groups) -> FloatArray:
+    """Logarithm of the summed odds of the members of each group."""
+    top = float(log_odds.max())
+    sums = np.bincount(groups.of_candidate, np.exp(log_odds - top), minlength=len(groups.keys))
+    logs: FloatArray = np.log(np.maximum(sums, 1e-300)) + top
+    return logs
+
+
+def _explain_odds(told: Explanation, chances: Chances, place: int) -> Explanation:
+    """Natural log of the candidate's odds against all other answers: what speaks for it, less what speaks for the rest."""
+    chance = float(np.clip(chances.listed[place], 1e-12, 1 - 1e-12))
+    others = float(chances.listed.sum()) - chance
+    odds = float(np.log(chance / (1.0 - chance)))
+    detail = (
+        f"other compounds listed {others:.3g}, isomers without an entry {float(chances.unlisted.sum()):.3g}, "
+        f"something else {chances.elsewhere:.3g}"
+    )
+    against = Explanation("against all other answers", odds - told.value, detail)
+    return Explanation("log-odds", told.value + against.value, parts=(told, against))

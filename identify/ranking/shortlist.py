@@ -5,8 +5,10 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from identify.ranking.grouping import Match, group_matches
-from identify.records import AlignedPeaks, CleanSpectrum, Entry, Explanation
+from identify.ranking.features import compare_with_entries
+from identify.ranking.grouping import Match, compound_key
+from identify.ranking.model import RankingModel, default_model, explain_spectra
+from identify.records import AlignedPeaks, CleanSpectrum, Entry, Explanation, FloatArray
 from identify.settings import Settings
 from identify.spectra.align import align
 
@@ -22,6 +24,8 @@ class Draft:
     ----------
     key : str
         See `identify.ranking.grouping.compound_key`.
+    features : array of shape (n_features,)
+        Row of `identify.ranking.features.compare_with_entries`.
     match : Explanation
         Log-odds from the spectra alone, part by part.
     n_entries : int
@@ -34,11 +38,14 @@ class Draft:
     aligned: AlignedPeaks
     cosine: float
     reverse: float
+    features: FloatArray
     match: Explanation
     n_entries: int
 
 
-def shortlist(spectrum: CleanSpectrum, matches: Sequence[Match], settings: Settings) -> tuple[Draft, ...]:
+def shortlist(
+    spectrum: CleanSpectrum, matches: Sequence[Match], settings: Settings, model: RankingModel | None = None
+) -> tuple[Draft, ...]:
     """Ordered drafts, one per compound, at most the larger of `settings.top` and 25.
 
     Parameters
@@ -46,28 +53,46 @@ def shortlist(spectrum: CleanSpectrum, matches: Sequence[Match], settings: Setti
     spectrum : CleanSpectrum
         The query.
     matches : sequence of Match
-        United hits of all libraries searched, with their entries.
+        United hits of all libraries searched, with their entries; of equally good ones the first is kept.
     settings : Settings
+    model : RankingModel, optional
+        The shipped one by default.
 
     Returns
     -------
     tuple of Draft
         Best first by the log-odds of the spectra alone; empty when there is no hit.
     """
-    scored: list[tuple[float, str, Match, Explanation, int]] = []
-    for key, members in group_matches(matches).items():
-        best, explanation = max(((m, _explain_match(m)) for m in members), key=lambda pair: pair[1].value)
-        scored.append((explanation.value, key, best, explanation, len(members)))
-    scored.sort(key=lambda row: (-row[0], row[2].entry.id))
+    if not matches:
+        return ()
+    model = model or default_model()
+    entries = [match.entry for match in matches]
+    features = compare_with_entries(
+        spectrum, [entry.spectrum for entry in entries], [entry.acquisition.energy_ev for entry in entries]
+    )
+    log_odds = model.spectra.value(features)
+    best: dict[str, int] = {}
+    n_entries: dict[str, int] = {}
+    for place, entry in enumerate(entries):
+        key = compound_key(entry)
+        n_entries[key] = n_entries.get(key, 0) + 1
+        if key not in best or log_odds[place] > log_odds[best[key]]:
+            best[key] = place
+    ranked = sorted(best, key=lambda key: (-log_odds[best[key]], best[key]))
     drafts = []
-    for _, key, best, explanation, n_entries in scored[: max(settings.top, N_DRAFTS)]:
-        aligned = align(spectrum, best.entry.spectrum)
-        hit = best.hit
-        drafts.append(Draft(key, best.entry, best.library, aligned, hit.cosine, hit.reverse, explanation, n_entries))
+    for key in ranked[: max(settings.top, N_DRAFTS)]:
+        match, row = matches[best[key]], features[best[key]]
+        drafts.append(
+            Draft(
+                key,
+                match.entry,
+                match.library,
+                align(spectrum, match.entry.spectrum),
+                match.hit.cosine,
+                match.hit.reverse,
+                row,
+                explain_spectra(model, row),
+                n_entries[key],
+            )
+        )
     return tuple(drafts)
-
-
-def _explain_match(match: Match) -> Explanation:
-    cosine = Explanation("weighted cosine", 14.0 * match.hit.cosine)
-    reverse = Explanation("reverse match", 4.0 * match.hit.reverse)
-    return Explanation("spectra", cosine.value + reverse.value, parts=(cosine, reverse))

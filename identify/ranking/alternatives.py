@@ -1,0 +1,117 @@
+"""What else could the query be than one of the listed compounds: an isomer without an entry, or something else?"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from identify.evidence.facts import formula_facts
+from identify.ranking.features import NAMES
+from identify.ranking.grouping import isomer_key
+from identify.records import Entry, FloatArray
+
+FROM_BEST: Final = (
+    "cosine, plain",
+    "cosine, soft",
+    "cosine without tilt",
+    "deviation without tilt",
+    "deviation at high m/z",
+    "entry peaks missing",
+    "query peaks missing",
+    "query peaks",
+    "low energy",
+)
+"""Spectral features of the best candidate that the alternatives look at."""
+UNLISTED_NAMES: Final = (
+    "log-odds of the best isomer",
+    "lead over the next isomer",
+    "share of the best isomer",
+    "isomers listed",
+    "rings and double bonds",
+    "no rings or double bonds",
+    "heavy atoms",
+    "formula not known",
+    *FROM_BEST,
+)
+ELSEWHERE_NAMES: Final = ("log-odds of the best candidate", "lead over the next formula", *FROM_BEST)
+MOST_LEAD: Final = 6.0
+"""A lead of more than this (log-odds) is no longer looked at; also the lead of a candidate without rivals."""
+_COLUMNS: Final = [NAMES.index(name) for name in FROM_BEST]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Groups:
+    """Candidates grouped by isomers.
+
+    Attributes
+    ----------
+    of_candidate : int array of shape (n_candidates,)
+    keys : tuple of str
+        Formula as measured of each group; empty where the source gives none.
+    unlisted : array of shape (n_groups, len(UNLISTED_NAMES))
+    elsewhere : array of shape (len(ELSEWHERE_NAMES),)
+    """
+
+    of_candidate: NDArray[np.int64]
+    keys: tuple[str, ...]
+    unlisted: FloatArray
+    elsewhere: FloatArray
+
+
+def group_isomers(entries: Sequence[Entry], features: FloatArray, log_odds: FloatArray) -> Groups:
+    """Isomer groups of the candidates, with what the alternatives are judged by.
+
+    Parameters
+    ----------
+    entries : sequence of Entry
+        Best entry of each candidate; at least one.
+    features : array of shape (n_candidates, n_features)
+        Rows of `identify.ranking.features.compare_with_entries`.
+    log_odds : array of shape (n_candidates,)
+        For each compound, spectra and evidence together.
+
+    Returns
+    -------
+    Groups
+    """
+    places: dict[str, int] = {}
+    keys = [isomer_key(entry) for entry in entries]
+    of_candidate = np.array([places.setdefault(key or f"#{n}", len(places)) for n, key in enumerate(keys)])
+    rows, best_of_group = [], []
+    for group in range(len(places)):
+        members = np.flatnonzero(of_candidate == group)
+        members = members[np.argsort(-log_odds[members], kind="stable")]
+        best = int(members[0])
+        best_of_group.append(float(log_odds[best]))
+        lead = float(log_odds[best] - log_odds[members[1]]) if members.size > 1 else MOST_LEAD
+        share = 1.0 / float(np.exp(log_odds[members] - log_odds[best]).sum())
+        rows.append(
+            [
+                float(log_odds[best]),
+                min(lead, MOST_LEAD),
+                share,
+                float(np.log(members.size)),
+                *_composition(entries[best]),
+                float(not keys[best]),
+                *features[best, _COLUMNS],
+            ]
+        )
+    ranked = sorted(best_of_group, reverse=True)
+    lead = ranked[0] - ranked[1] if len(ranked) > 1 else MOST_LEAD
+    top = int(np.argmax(log_odds))
+    elsewhere = np.array([float(log_odds[top]), min(lead, MOST_LEAD), *features[top, _COLUMNS]])
+    names = tuple("" if key.startswith("#") else key for key in places)
+    return Groups(of_candidate, names, np.array(rows), elsewhere)
+
+
+def _composition(entry: Entry) -> tuple[float, float, float]:
+    """Rings plus double bonds, whether there are none, and the logarithm of the number of heavy atoms."""
+    facts = formula_facts(entry.formula_as_measured or entry.identity.formula)
+    if facts is None:
+        return 0.0, 0.0, 0.0
+    heavy = sum(count for symbol, count in facts.formula.counts if symbol not in ("H", "[2H]"))
+    return facts.saturation, float(facts.saturation < 1), float(np.log(max(heavy, 1)))

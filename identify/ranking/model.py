@@ -1,0 +1,236 @@
+"""The additive model: log-odds of each candidate, of isomers without an entry, and of something else altogether.
+
+Every answer to a query is one of
+
+- a listed compound ``c``: log-odds ``s_c`` = what the spectra say + what the evidence says;
+- an isomer of a listed compound that has no entry: ``log Σ_{c in group} exp(s_c) + u_g``. Such an isomer can give the same
+  spectrum, so it is weighed beside the listed ones, ``u_g`` says how heavily;
+- something else: ``o``.
+
+Probabilities are ``exp(log-odds)`` over the sum of all of them. Then ``P(compound) = P(in the library) · P(compound | in the
+library)`` holds as in Stein 1994, and a group is always at least as probable as each of its members. The parameters are in
+`identify.ranking.coefficients`, fitted by `tests/benchmarks/fit_ranking.py`.
+
+References
+----------
+Stein 1994, J. Am. Soc. Mass Spectrom. 5:316 (abstract read: the two-factor probability).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, fields
+from functools import cache
+from typing import Any, Final
+
+import numpy as np
+
+from identify.ranking.alternatives import ELSEWHERE_NAMES, UNLISTED_NAMES
+from identify.ranking.coefficients import COEFFICIENTS
+from identify.ranking.features import NAMES
+from identify.records import EvidenceItem, Explanation, FloatArray, MolecularIonEstimate
+
+HEADINGS: Final = {
+    "likeness": ("cosine", "reverse", "forward"),
+    "intensity ratios": ("deviation",),
+    "peaks missing": ("entry peaks missing", "query peaks missing", "strongest entry peak missing"),
+    "highest ions": ("same highest", "query goes", "entry goes"),
+    "measurement": ("entry peaks", "query peaks", "peaks in common", "low energy", "range in common"),
+}
+"""Headings under which the spectral parts are shown, with the beginnings of the feature names they take, first match wins."""
+
+LINEAR_PARTS: Final = {"spectra": NAMES, "unlisted": UNLISTED_NAMES, "elsewhere": ELSEWHERE_NAMES}
+"""Linear parts of the model with the names of their features."""
+
+MASS_FLOOR: Final = 0.02
+"""Probability taken for a nominal mass that the estimate from the query does not name."""
+
+
+@dataclass(frozen=True, slots=True)
+class Linear:
+    """A weighted sum of named features, each seen from its centre.
+
+    Attributes
+    ----------
+    constant : float
+    weights, centres : tuple of float
+        One per feature, in the order of the names they are used with.
+    """
+
+    constant: float
+    weights: tuple[float, ...]
+    centres: tuple[float, ...]
+
+    def parts(self, features: FloatArray) -> FloatArray:
+        """Contribution of each feature; the last axis is that of the features."""
+        product: FloatArray = (features - np.array(self.centres)) * np.array(self.weights)
+        return product
+
+    def value(self, features: FloatArray) -> FloatArray:
+        """Constant plus all contributions."""
+        total: FloatArray = self.constant + self.parts(features).sum(axis=-1)
+        return total
+
+
+@dataclass(frozen=True, slots=True)
+class RankingModel:
+    """All parameters of the ranking, with where they come from.
+
+    Attributes
+    ----------
+    provenance : str
+        Script, data and date.
+    spectra : Linear
+        Log-odds from the spectra alone, over `identify.ranking.features.NAMES`; 0 for a typical right entry.
+    spectra_weight : float
+        What that is worth once the evidence has spoken (both look at the same peaks in part).
+    evidence_weights : mapping of str to float
+        What the log-odds of each kind of evidence are worth beside the spectra; 1 for a kind not named.
+    mass_weight : float
+        Weight of the logarithm of the probability of the candidate's nominal mass.
+    unlisted : Linear
+        Weight of isomers without an entry, over `identify.ranking.alternatives.UNLISTED_NAMES`.
+    elsewhere : Linear
+        Log-odds of something else, over `identify.ranking.alternatives.ELSEWHERE_NAMES`.
+    same_class : float
+        Share of queries answered by something else whose compound is of the best candidate's class all the same.
+    """
+
+    provenance: str
+    spectra: Linear
+    spectra_weight: float
+    evidence_weights: Mapping[str, float]
+    mass_weight: float
+    unlisted: Linear
+    elsewhere: Linear
+    same_class: float
+
+
+def build_model(coefficients: Mapping[str, Any]) -> RankingModel:
+    """Model of a plain table, as `as_coefficients` writes it.
+
+    Parameters
+    ----------
+    coefficients : mapping
+        See `identify.ranking.coefficients`.
+
+    Returns
+    -------
+    RankingModel
+    """
+    values = dict(coefficients)
+    for name, features in LINEAR_PARTS.items():
+        table = values[name]
+        rows = [table["features"][feature] for feature in features]
+        values[name] = Linear(
+            float(table["constant"]), tuple(float(row[0]) for row in rows), tuple(float(row[1]) for row in rows)
+        )
+    return RankingModel(**values)
+
+
+def as_coefficients(model: RankingModel) -> dict[str, Any]:
+    """Plain table of a model: numbers, texts and mappings only; `build_model` reads it back."""
+    values: dict[str, Any] = {field.name: getattr(model, field.name) for field in fields(model)}
+    values["evidence_weights"] = dict(model.evidence_weights)
+    for name, features in LINEAR_PARTS.items():
+        linear: Linear = values[name]
+        rows = zip(features, linear.weights, linear.centres, strict=True)
+        values[name] = {"constant": linear.constant, "features": {feature: (w, c) for feature, w, c in rows}}
+    return values
+
+
+@cache
+def default_model() -> RankingModel:
+    """The model shipped with the package."""
+    return build_model(COEFFICIENTS)
+
+
+def explain_spectra(model: RankingModel, features: FloatArray) -> Explanation:
+    """What the spectra say for one entry, under the headings of `HEADINGS`.
+
+    Parameters
+    ----------
+    model : RankingModel
+    features : array of shape (n_features,)
+        One row of `identify.ranking.features.compare_with_entries`.
+
+    Returns
+    -------
+    Explanation
+        Its value is ``model.spectra.value(features)``.
+    """
+    values = model.spectra.parts(features)
+    grouped: dict[str, list[Explanation]] = {heading: [] for heading in HEADINGS}
+    for name, seen, value in zip(NAMES, features, values, strict=True):
+        heading = next(key for key, starts in HEADINGS.items() if name.startswith(starts))
+        grouped[heading].append(Explanation(name, float(value), f"{seen:.3g}"))
+    parts = [Explanation(heading, _total(found), parts=tuple(found)) for heading, found in grouped.items()]
+    if model.spectra.constant:
+        parts.append(Explanation("constant", model.spectra.constant))
+    return Explanation("spectra", _total(parts), parts=tuple(parts))
+
+
+def explain_candidate(
+    model: RankingModel,
+    spectra: Explanation,
+    evidence: Sequence[EvidenceItem],
+    nominal_mass: int | None,
+    molecular_ion: MolecularIonEstimate,
+) -> Explanation:
+    """Log-odds of a candidate before its rivals are looked at, part by part.
+
+    Parameters
+    ----------
+    model : RankingModel
+    spectra : Explanation
+        From `explain_spectra`.
+    evidence : sequence of EvidenceItem
+    nominal_mass : int or None
+        Of the formula as measured; None when it is not known.
+    molecular_ion : MolecularIonEstimate
+
+    Returns
+    -------
+    Explanation
+    """
+    told = tuple(
+        Explanation(item.kind, model.evidence_weights.get(item.kind, 1.0) * item.log_odds, item.reason)
+        for item in evidence
+        if item.log_odds
+    )
+    parts = [
+        scale_explanation(spectra, model.spectra_weight),
+        Explanation("evidence", _total(told), parts=told),
+    ]
+    if nominal_mass is not None and molecular_ion.estimates:
+        value = model.mass_weight * mass_log_odds(nominal_mass, molecular_ion)
+        parts.append(Explanation("nominal mass", value, f"{nominal_mass} among the masses estimated from the query"))
+    return Explanation("for this compound", _total(parts), parts=tuple(parts))
+
+
+def mass_log_odds(nominal_mass: int, molecular_ion: MolecularIonEstimate) -> float:
+    """Logarithm of the probability of a nominal mass over that of a mass nobody named.
+
+    Parameters
+    ----------
+    nominal_mass : int
+    molecular_ion : MolecularIonEstimate
+
+    Returns
+    -------
+    float
+        At least 0.
+    """
+    chance = sum(item.probability for item in molecular_ion.estimates if item.nominal_mass == nominal_mass)
+    return float(np.log(max(chance, MASS_FLOOR) / MASS_FLOOR))
+
+
+def scale_explanation(explained: Explanation, factor: float) -> Explanation:
+    """The same tree with every value multiplied by `factor`."""
+    parts = tuple(scale_explanation(part, factor) for part in explained.parts)
+    value = _total(parts) if parts else explained.value * factor
+    return Explanation(explained.label, value, explained.detail, parts)
+
+
+def _total(parts: Sequence[Explanation]) -> float:
+    return float(sum(part.value for part in parts))
