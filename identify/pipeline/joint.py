@@ -227,8 +227,9 @@ def claim_class(found: Identification, name: str, probability: float) -> Identif
     Identification
     """
     msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.CLASS]
+    shown = f"{probability:.0%}" if probability < 0.995 else "over 99%"
     claim = Claim(
-        ClaimLevel.CLASS, f"{name[:1].upper()}{name[1:]}, no single compound ({probability:.0%}).", probability,
+        ClaimLevel.CLASS, f"{name[:1].upper()}{name[1:]}, no single compound ({shown}).", probability,
         compound_probability=found.claim.compound_probability, group_probability=found.claim.group_probability,
         class_probability=probability, msi_2007=msi, schymanski_2014=schymanski,
     )  # fmt: skip

@@ -33,7 +33,8 @@ ALKANE_SERIES_SHARE = 0.93
 HYDROCARBON = "hydrocarbon"
 LIBRARY_SHARE = 0.042
 """Hydrocarbons among the 9,355 full-scan records measured: what probabilities of the library's candidates assume."""
-MIN_WITNESSES, MOST_RUN_SHARE = 10, 0.5
+MIN_WITNESSES, MOST_RUN_SHARE, MOST_FROM_RUN = 10, 0.5, 0.99
+"""A class that rests on the rest of the run is never stated with more than 99 %: the odds are rough."""
 MIN_COSINE = 0.6
 """Votes of entries less similar than this say nothing."""
 
@@ -88,7 +89,7 @@ def _with_run_share(finding: Finding, gain: float, note: str, settings: Settings
         return finding
     probability = min(0.999, _class_probability(found.candidates, HYDROCARBON))
     odds = probability / (1.0 - probability) * gain
-    posterior = odds / (1.0 + odds)
+    posterior = min(MOST_FROM_RUN, odds / (1.0 + odds))
     if posterior < settings.claim_threshold or max(c.cosine for c in found.candidates) < MIN_COSINE:
         return finding
     claimed = claim_class(found, HYDROCARBON, posterior)
