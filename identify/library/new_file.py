@@ -179,10 +179,16 @@ def hold_exclusively(path: Path) -> Iterator[None]:
     """
     connection = connect_any_version(path, writable=True)
     try:
-        with translated(path):
-            connection.execute("PRAGMA journal_mode = DELETE")
-            connection.execute("BEGIN EXCLUSIVE")
-            yield
+        try:
+            with translated(path):
+                connection.execute("PRAGMA journal_mode = DELETE")
+                connection.execute("BEGIN EXCLUSIVE")
+        except LibraryBusy:
+            raise LibraryBusy(
+                "library", where=str(path), found="another process that has it open", expected="nobody using it",
+                hint="Close what uses the library (a page, a search), then try again.",
+            ) from None  # fmt: skip
+        yield
     finally:
         connection.close()
 

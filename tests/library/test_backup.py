@@ -97,6 +97,17 @@ def test_a_library_in_use_is_not_restored_over(library_path: Path, tmp_path: Pat
     assert verify_library(library_path).is_intact
 
 
+def test_a_library_that_is_being_read_is_not_replaced_under_its_reader(library_path: Path, tmp_path: Path) -> None:
+    backup_library(library_path, tmp_path / "copy.ionlib")
+    with open_library(library_path) as reader:
+        reader.state()
+        with pytest.raises(LibraryBusy, match="found another process that has it open, expected nobody using it"):
+            restore_library(tmp_path / "copy.ionlib", library_path, replace=True)
+        assert reader.state().entries == 5
+    assert verify_library(library_path).is_intact
+    restore_library(tmp_path / "copy.ionlib", library_path, replace=True)
+
+
 # Older schema versions
 
 

@@ -278,7 +278,7 @@ def test_a_library_in_use_is_not_replaced_under_its_writer(library_path: Path) -
     writer.execute("BEGIN IMMEDIATE")
     try:
         start = time.monotonic()
-        with pytest.raises(LibraryError, match="another process writing to it"):
+        with pytest.raises(LibraryError, match="another process that has it open"):
             build_from_records(library_path, build_records()[:1], origin="x", replace=True, who=WHO, when=WHEN)
         assert time.monotonic() - start < 20
     finally:
