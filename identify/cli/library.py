@@ -54,6 +54,23 @@ def build(
 
 @library.command()
 @click.argument("path", metavar="LIB", type=FILE)
+@click.argument("sources", metavar="SOURCE...", nargs=-1, required=True, type=FILE)
+@LICENCE
+@REJECTED
+@WHO
+@WHY
+def add(path: Path, sources: tuple[Path, ...], licences: str, rejected_path: Path | None, who: str, why: str) -> int:
+    """Add the records in SOURCE... to the existing library LIB, all that can be used or, after an error, none."""
+    from identify.library.build import add_spectra
+    from identify.library.store import open_library
+
+    with open_library(path, writable=True) as opened, progress_bar("Reading records") as progress:
+        report = add_spectra(opened, sources, licences=licences, progress=progress, who=who, when=now(), reason=why)
+    return say_build(report, rejected_path)
+
+
+@library.command()
+@click.argument("path", metavar="LIB", type=FILE)
 @click.argument("recipe")
 @LICENCE
 @REPLACE
@@ -115,8 +132,9 @@ def say_build(report: BuildReport, rejected_path: Path | None) -> int:
     for line in describe_build(report):
         say(line)
     first = {item.reason: item for item in reversed(report.rejected)}
-    for item in first.values():
-        say(f"  first of these: {item.message}")
+    for reason in report.n_rejected:
+        if reason in first:
+            say(f"  the first: {first[reason].message}")
     if rejected_path:
         from identify.writers.rows_csv import write_rows
 

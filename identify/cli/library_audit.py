@@ -9,9 +9,14 @@ import click
 
 from identify.cli.options import FILE, WHO, WHY, check_outputs, now, say, say_event
 from identify.cli.progress import progress_bar
+from identify.errors import UsageError
 
 if TYPE_CHECKING:
+    from collections.abc import Collection
+
     from identify.library.audit import AuditReport, EntryAudit
+    from identify.library.store import Library
+    from identify.records import EntryStatus
 
 HEADING = (
     "accession", "name", "standing", "proposal", "evidence that it is wrong (log-odds)", "what may be wrong", "overruled",
@@ -93,6 +98,22 @@ def _rows(item: EntryAudit, standing: str) -> list[tuple[str, ...]]:
     return [(*entry, f.grade.value, f.kind, f.reason, f.observed, f.expected) for f in item.findings]
 
 
+def _under(
+    library: Library, accessions: tuple[str, ...], statuses: Collection[EntryStatus], licences: tuple[str, ...]
+) -> tuple[str, ...]:
+    """Accessions of the entries under one of the licences."""
+    from identify.library.licences import normalise_licence
+
+    wanted = {normalise_licence(name) for name in licences}
+    held = [entry for entry in library.iter_entries(statuses) if normalise_licence(entry.licence) in wanted]
+    found = tuple(entry.accession for entry in held if not accessions or entry.accession in accessions)
+    if not found:
+        raise UsageError(
+            "export", where=str(library.path), found=f"no entry under {', '.join(licences)}", expected="one"
+        )
+    return found
+
+
 @click.command()
 @click.argument("path", metavar="LIB", type=FILE)
 @click.argument("target", metavar="FILE", type=FILE)
@@ -102,6 +123,7 @@ def _rows(item: EntryAudit, standing: str) -> list[tuple[str, ...]]:
 )  # fmt: skip
 @click.option("--accession", "accessions", multiple=True, help="Entry to export (default: all in use); repeatable.")
 @click.option("--own-standards", is_flag=True, help="Export own standards only.")
+@click.option("--licence", "licences", multiple=True, help="Export entries under this licence only; repeatable.")
 @click.option("--contributor", default="", help="Contributor's code, for MassBank records.")
 @click.option(
     "--i-have-the-right", is_flag=True, help="Write licences into one file that may not be passed on together."
@@ -112,6 +134,7 @@ def export(
     file_format: str,
     accessions: tuple[str, ...],
     own_standards: bool,
+    licences: tuple[str, ...],
     contributor: str,
     i_have_the_right: bool,
 ) -> None:
@@ -123,6 +146,8 @@ def export(
     check_outputs((target,), (path,))
     statuses = frozenset({EntryStatus.OWN_STANDARD}) if own_standards else SEARCHABLE
     with open_library(path) as library:
+        if licences:
+            accessions = _under(library, accessions, statuses, licences)
         report = export_entries(
             library, target, file_format, accessions=accessions, statuses=statuses, i_have_the_right=i_have_the_right,
             contributor=contributor, when=now(),

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import importlib.util
+import json
 import shutil
 import sqlite3
 from collections.abc import Callable
@@ -12,7 +13,7 @@ from pathlib import Path
 import pytest
 from click.testing import Result
 
-from identify.errors import LibraryConflict, LibraryError, LibraryMissing, LibraryVersionError, UsageError
+from identify.errors import InputError, LibraryConflict, LibraryError, LibraryMissing, LibraryVersionError, UsageError
 from identify.library.store import open_library
 
 Run = Callable[..., Result]
@@ -22,6 +23,7 @@ RECORD_TITLE: {name}; GC-EI-Q; MS
 LICENSE: CC BY
 CH$NAME: {name}
 CH$FORMULA: C3H6O
+CH$SMILES: CC(C)=O
 AC$INSTRUMENT_TYPE: GC-EI-Q
 AC$MASS_SPECTROMETRY: MS_TYPE MS
 AC$MASS_SPECTROMETRY: ION_MODE POSITIVE
@@ -50,7 +52,7 @@ def test_a_library_is_built_of_a_folder_and_says_what_it_left_out(run: Run, tmp_
     assert result.output.splitlines()[0] == "1 of 3 records accepted, 1 compounds"
     assert "rejected 1 × duplicate accession" in result.output
     assert (
-        f"first of these: duplicate accession in {folder}/2.txt:1: found 'INVENTED-1' again, "
+        f"the first: duplicate accession in {folder}/2.txt:1: found 'INVENTED-1' again, "
         "expected each accession once. The first record with it was kept." in result.output
     )
     with out.open(encoding="utf-8", newline="") as stream:
@@ -67,6 +69,18 @@ def test_a_second_build_of_the_same_name_is_refused(run: Run, lab: Path, tmp_pat
     assert lab.read_bytes() == before
 
 
+def test_records_are_added_to_a_library_and_found(run: Run, lab: Path, tmp_path: Path) -> None:
+    (tmp_path / "1.txt").write_text(RECORD.format(number=1, name="Acetone", base=43))
+    said = run("library", "add", lab, tmp_path / "1.txt", "--who", "anna", "--why", "new release").output.splitlines()
+    assert said[0] == "1 of 1 records accepted, 420 compounds"
+    assert run("library", "info", lab).output.splitlines()[0] == f"{lab}: 432 entries of 420 compounds"
+    assert "by anna: new release" in run("library", "info", lab).output
+    with pytest.raises(InputError) as error:
+        run("library", "add", lab, tmp_path / "no.txt", "--who", "anna")
+    assert "no.txt" in str(error.value)
+    assert run("library", "info", lab).output.splitlines()[0] == f"{lab}: 432 entries of 420 compounds"
+
+
 def test_info_counts_and_lists_the_events(run: Run, lab: Path) -> None:
     lines = run("library", "info", lab).output.splitlines()
     assert lines[0] == f"{lab}: 431 entries of 420 compounds"
@@ -76,17 +90,21 @@ def test_info_counts_and_lists_the_events(run: Run, lab: Path) -> None:
     assert run("library", "info", lab, "--events", 0).output.splitlines()[-1] == "events: 2"
 
 
-def test_an_entry_set_aside_is_not_found_and_comes_back(run: Run, lab: Path, unknown: Path) -> None:
+def test_an_entry_set_aside_is_not_found_and_comes_back(run: Run, lab: Path, unknown: Path, tmp_path: Path) -> None:
+    out = tmp_path / "r.json"
+
+    def found() -> list[str]:
+        run("search", unknown, "--library", lab, "--json", out, "--no-record")
+        return [hit["accession"] for hit in json.loads(out.read_text(encoding="utf-8"))["queries"][0]["hits"]]
+
     with open_library(lab) as library:
-        acetone = [
-            entry.accession for entry in library.find_entries(name="acetone") if entry.identity.name == "acetone"
-        ]
-    run("library", "quarantine", lab, *acetone, "--why", "background of the column", "--who", "anna")
-    assert "acetone (" not in run("search", unknown, "--library", lab).output
-    for accession in acetone:
-        result = run("library", "reinstate", lab, accession, "--why", "checked again", "--who", "ben")
-        assert "reinstated by ben: checked again" in result.output
-    assert "acetone (" in run("search", unknown, "--library", lab).output
+        (acetone,) = [e.accession for e in library.find_entries(name="acetone") if e.identity.name == "acetone"]
+    assert acetone in found()
+    run("library", "quarantine", lab, acetone, "--why", "background of the column", "--who", "anna")
+    assert acetone not in found()
+    result = run("library", "reinstate", lab, acetone, "--why", "checked again", "--who", "ben")
+    assert "reinstated by ben: checked again" in result.output
+    assert acetone in found()
 
 
 def test_setting_aside_what_is_not_there_changes_nothing(run: Run, lab: Path) -> None:

@@ -106,6 +106,15 @@ def test_licences_that_exclude_each_other_are_kept_apart(run: Run, own: Path, tm
     assert said.splitlines()[0] == f"{out}: 3 spectra (msp)"
 
 
+def test_one_licence_goes_into_one_file(run: Run, own: Path, tmp_path: Path) -> None:
+    out = tmp_path / "a.msp"
+    said = run("library", "export", own, out, "--format", "msp", "--licence", "cc by-sa 4.0", "--licence", "CC0").output
+    assert said.splitlines() == [f"{out}: 2 spectra (msp)", "licences: CC BY-SA 1, CC0 1"]
+    with pytest.raises(UsageError) as error:
+        run("library", "export", own, out, "--format", "msp", "--licence", "CC BY")
+    assert str(error.value) == f"export in {own}: found no entry under CC BY, expected one."
+
+
 def test_an_export_never_overwrites_the_library(run: Run, own: Path) -> None:
     with pytest.raises(UsageError) as error:
         run("library", "export", own, own, "--format", "msp")
