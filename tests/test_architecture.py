@@ -29,7 +29,7 @@ LAYERS: dict[str, float] = {
     "pipeline": 8,
     "report": 8,
     "cli": 9,
-    "workbench": 9,
+    "workbench": 8.5,  # served by a command
 }
 OWNERS = {
     "sqlite3": ("library", "workbench"),

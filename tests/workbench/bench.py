@@ -12,12 +12,14 @@ from typing import Any
 
 import httpx
 
+import identify
 from identify.settings import Settings
 from identify.workbench.desk import Desk
 from identify.workbench.people import set_person
 from identify.workbench.server import Address, bind, make_server, open_workbench
+from identify.workbench.sessions import Sessions
 
-ROOT = Path(__file__).resolve().parent.parent.parent
+ROOT = Path(identify.__file__).resolve().parent.parent
 DEMO = ROOT / "fixtures" / "demo" / "unknowns"
 PASSWORD = "a long enough password"
 ACETONE = "15 34, 27 8, 39 4, 42 7, 43 100, 44 3, 58 38, 59 1.5"
@@ -31,6 +33,7 @@ class Bench:
     port: int
     link: str
     desk: Desk
+    sessions: Sessions
     client: httpx.Client = field(init=False)
     clients: list[httpx.Client] = field(default_factory=list)
 
@@ -113,7 +116,7 @@ def running_bench(folder: Path, *, port: int = 0) -> Iterator[Bench]:
         thread.start()
         while not server.started:
             time.sleep(0.01)
-        bench = Bench(address.port, opened.link, opened.bench.desk)
+        bench = Bench(address.port, opened.link, opened.bench.desk, opened.bench.sessions)
         try:
             yield bench
         finally:
