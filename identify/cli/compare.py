@@ -19,6 +19,7 @@ from identify.cli.options import FILE, say, say_event
 def compare(first: Path, second: Path, library: Path | None, csv_path: Path | None) -> None:
     """Say what changed from RESULT1 to RESULT2 (JSON files of `search`) and which causes can explain it."""
     from identify.pipeline.compare import compare_results, list_events_between, read_result
+    from identify.report.words import counted
 
     before, after = read_result(first), read_result(second)
     found = compare_results(before, after, (str(first), str(second)))
@@ -49,4 +50,4 @@ def compare(first: Path, second: Path, library: Path | None, csv_path: Path | No
     for title, names in (("only in the first", found.only_first), ("only in the second", found.only_second)):
         if names:
             say(f"{title}: {'; '.join(names[:20])}" + (f" and {len(names) - 20:,} more" if len(names) > 20 else ""))
-    say(f"{len(found.queries):,} queries changed, {found.n_same:,} did not")
+    say(f"{counted(len(found.queries), 'query', 'queries')} changed, {found.n_same:,} did not")

@@ -142,6 +142,7 @@ def export(
     from identify.library.export import export_entries
     from identify.library.store import SEARCHABLE, open_library
     from identify.records import EntryStatus
+    from identify.report.words import counted
 
     check_outputs((target,), (path,))
     statuses = frozenset({EntryStatus.OWN_STANDARD}) if own_standards else SEARCHABLE
@@ -152,5 +153,5 @@ def export(
             library, target, file_format, accessions=accessions, statuses=statuses, i_have_the_right=i_have_the_right,
             contributor=contributor, when=now(),
         )  # fmt: skip
-    say(f"{report.path}: {report.n_written:,} spectra ({report.file_format})")
+    say(f"{report.path}: {counted(report.n_written, 'spectrum', 'spectra')} ({report.file_format})")
     say("licences: " + ", ".join(f"{name} {n:,}" for name, n in report.licences.items()))

@@ -123,7 +123,7 @@ def affected(path: Path, accession: str | None, csv_path: Path | None) -> None:
 
         write_rows(csv_path, heading, rows)
         say(f"Written: {csv_path}")
-    say(f"{len(rows):,} recorded queries were answered with " + (accession or "entries that are now set aside"))
+    say(f"recorded queries answered with {accession or 'entries that are now set aside'}: {len(rows):,}")
     if rows:
         say_table(heading, rows)
 

@@ -229,7 +229,7 @@ def waiting(path: Path) -> None:
     with open_library(path) as library:
         entries = list_proposals(library)
         proposed = [entry_history(library, entry.accession)[0].event for entry in entries]
-    say(f"{len(entries):,} standards wait for review")
+    say(f"standards that wait for review: {len(entries):,}")
     if entries:
         say_table(
             ("accession", "name", "formula", "measured as", "proposed by", "at"),

@@ -53,7 +53,7 @@ def test_an_entry_withdrawn_between_the_two_is_the_cause(
     assert any("quarantined by anna: wrong lot" in line for line in lines)
     place = lines.index("  candidate acetone: rank 1 → not among the candidates")
     assert lines[place + 1] == "    another state of the library"
-    assert lines[-1] == "1 queries changed, 0 did not"
+    assert lines[-1] == "1 query changed, 0 did not"
     with out.open(encoding="utf-8", newline="") as stream:
         rows = list(csv.DictReader(stream))
     assert any(row["what"] == "candidate acetone" and row["after"] == "not among the candidates" for row in rows)

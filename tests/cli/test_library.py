@@ -220,7 +220,7 @@ def test_what_is_no_library_is_named(
 def test_no_query_is_affected_before_any_is_recorded(run: Run, lab: Path, tmp_path: Path) -> None:
     out = tmp_path / "betroffen.csv"
     result = run("library", "affected", lab, first_accession(lab), "--csv", out)
-    assert result.output.splitlines()[-1] == f"0 recorded queries were answered with {first_accession(lab)}"
+    assert result.output.splitlines()[-1] == f"recorded queries answered with {first_accession(lab)}: 0"
     with out.open(encoding="utf-8", newline="") as stream:
         assert next(csv.reader(stream))[0] == "entry"
 

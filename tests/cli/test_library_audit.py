@@ -85,7 +85,7 @@ def test_entries_go_out_and_come_back(run: Run, own: Path, tmp_path: Path, file_
     said = run(
         "library", "export", own, out, "--format", file_format, "--accession", "INVENTED-1", "--contributor", "LAB"
     )
-    assert said.output.splitlines()[0] == f"{out}: 1 spectra ({file_format})"
+    assert said.output.splitlines()[0] == f"{out}: 1 spectrum ({file_format})"
     assert said.output.splitlines()[1] == "licences: CC BY-SA 1"
     rejected: list[object] = []
     (record,) = read_spectra(out, rejected.append)

@@ -40,7 +40,7 @@ def test_from_proposal_to_withdrawal(run: Run, lab: Path, unknown: Path, tmp_pat
     assert "proposed by anna: new lot" in said[1]
     assert "own standard" not in found_standing(run, lab, unknown, tmp_path)
     waiting = run("standard", "waiting", "--library", lab).output.splitlines()
-    assert waiting[0] == "1 standards wait for review"
+    assert waiting[0] == "standards that wait for review: 1"
     assert waiting[2].split()[0] == "OWN-000001"
 
     with pytest.raises(LibraryConflict) as error:
@@ -97,7 +97,7 @@ def test_a_review_without_decision_changes_nothing(run: Run, lab: Path, unknown:
     with pytest.raises(UsageError) as error:
         run("standard", "review", "OWN-000001", "--library", lab, "--who", "ben", "--why", "?")
     assert str(error.value) == "review: found no decision, expected --accept or --refuse."
-    assert run("standard", "waiting", "--library", lab).output.startswith("1 standards")
+    assert run("standard", "waiting", "--library", lab).output.startswith("standards that wait for review: 1")
 
 
 def test_a_better_standard_replaces_one(run: Run, lab: Path, unknown: Path) -> None:
@@ -137,7 +137,7 @@ def test_identities_that_cannot_be_are_refused_and_nothing_is_proposed(run: Run,
     with pytest.raises(UsageError) as error:
         propose(run, lab, unknown, "--date", "yesterday")
     assert str(error.value) == "date of the measurement: found 'yesterday', expected a date like 2025-05-02."
-    assert run("standard", "waiting", "--library", lab).output.startswith("0 standards")
+    assert run("standard", "waiting", "--library", lab).output.startswith("standards that wait for review: 0")
     assert "events: 2" in run("library", "info", lab).output.splitlines()
 
 
