@@ -62,6 +62,32 @@ class Groups:
     elsewhere: FloatArray
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class Chances:
+    """Probabilities of all answers to one query; they add up to 1.
+
+    Attributes
+    ----------
+    listed : array of shape (n_candidates,)
+    unlisted : array of shape (n_groups,)
+        Isomers of each group that have no entry.
+    elsewhere : float
+        Something else.
+    groups : Groups
+    """
+
+    listed: FloatArray
+    unlisted: FloatArray
+    elsewhere: float
+    groups: Groups
+
+    def of_group(self, candidate: int) -> float:
+        """Probability of the isomer group of a candidate: its members, listed and not."""
+        group = self.groups.of_candidate[candidate]
+        members = self.listed[self.groups.of_candidate == group].sum()
+        return min(1.0, float(members + self.unlisted[group]))
+
+
 def group_isomers(entries: Sequence[Entry], features: FloatArray, log_odds: FloatArray) -> Groups:
     """Isomer groups of the candidates, with what the alternatives are judged by.
 

@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 from typing import NamedTuple
 
 import numpy as np
 
 from identify.evidence.facts import formula_facts
-from identify.ranking.alternatives import Groups, group_isomers
+from identify.ranking.alternatives import Chances, Groups, group_isomers
 from identify.ranking.claim import make_claim
 from identify.ranking.follow_up import propose_follow_up
 from identify.ranking.model import RankingModel, default_model, explain_candidate
@@ -34,32 +33,6 @@ class Ranking(NamedTuple):
     in_library_probability: float
     claim: Claim
     follow_up: tuple[FollowUp, ...]
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Chances:
-    """Probabilities of all answers to one query; they add up to 1.
-
-    Attributes
-    ----------
-    listed : array of shape (n_candidates,)
-    unlisted : array of shape (n_groups,)
-        Isomers of each group that have no entry.
-    elsewhere : float
-        Something else.
-    groups : Groups
-    """
-
-    listed: FloatArray
-    unlisted: FloatArray
-    elsewhere: float
-    groups: Groups
-
-    def of_group(self, candidate: int) -> float:
-        """Probability of the isomer group of a candidate: its members, listed and not."""
-        group = self.groups.of_candidate[candidate]
-        members = self.listed[self.groups.of_candidate == group].sum()
-        return min(1.0, float(members + self.unlisted[group]))
 
 
 def weigh_answers(drafts: Sequence[Draft], log_odds: FloatArray, model: RankingModel) -> Chances:
@@ -119,7 +92,7 @@ def rank(
     """
     model = model or default_model()
     if not drafts:
-        return Ranking((), 0.0, make_claim((), None, settings), propose_follow_up(query, (), molecular_ion))
+        return Ranking((), 0.0, make_claim((), None, model, settings), ())
     items = [tuple(evidence[place]) if place < len(evidence) else () for place in range(len(drafts))]
     told = [
         explain_candidate(model, draft.match, found, _nominal_mass(draft), molecular_ion)
@@ -144,8 +117,8 @@ def rank(
         )
         for place, draft in enumerate(drafts)
     )
-    claim = make_claim(candidates, chances, settings)
-    follow_up = propose_follow_up(query, candidates, molecular_ion)
+    claim = make_claim(candidates, chances, model, settings)
+    follow_up = propose_follow_up(query, candidates, chances)
     return Ranking(candidates, float(chances.listed.sum()), claim, follow_up)
 
 
