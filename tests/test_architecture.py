@@ -28,7 +28,7 @@ LAYERS: dict[str, float] = {
     "library": 7.5,  # builds from what readers read, exports through writers
     "pipeline": 8,
     "report": 8,
-    "cli": 9,
+    "cli": 9.5,
     "workbench": 8.5,  # served by a command
 }
 OWNERS = {
@@ -57,7 +57,7 @@ IO_MODULES = {
     "random",
 }
 LIGHT_START = {"numpy", "scipy", "rdkit", "pandas", "matchms", "numba", "jinja2", "sqlite3", "requests", "pyteomics"}
-MAX_MODULE_LINES = 460
+MAX_MODULE_LINES = 480
 MAX_FUNCTION_LINES = 60
 BANNED_NAMES = {"utils", "util", "helpers", "helper", "common", "misc", "tools"}
 
