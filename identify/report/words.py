@@ -196,7 +196,8 @@ def visible_text(text: object, limit: int = MAX_TEXT) -> str:
     'tolu⟨1B⟩[31mene'
     """
     whole = " ".join(str(text)[: 4 * limit].split())
-    shown = "".join(_visible(character) for character in whole)
+    # What is printable holds nothing hidden; nearly every text is.
+    shown = whole if whole.isprintable() else "".join(_visible(character) for character in whole)
     return shown if len(shown) <= limit else shown[: limit - 1] + "…"
 
 

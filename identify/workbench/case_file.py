@@ -125,9 +125,11 @@ class CaseFile:
         with self._lock, translated(self.path), transaction(self._connection):
             yield self._connection
 
-    def add_queries(self, job_id: int, queries: Sequence[NewQuery], *, who: str, at: str, run_id: int | None) -> int:
-        """How many queries were added; one that a job interrupted earlier has added already is left as it is."""
-        n_added = 0
+    def add_queries(
+        self, job_id: int, queries: Sequence[NewQuery], *, who: str, at: str, run_id: int | None
+    ) -> list[tuple[int, int]]:
+        """Ids of query and result of each that was added; one that a job interrupted earlier has added is left as it is."""
+        added: list[tuple[int, int]] = []
         with self.writing() as connection:
             for query in queries:
                 name, source, time_s = _describe(query.record)
@@ -137,9 +139,9 @@ class CaseFile:
                     (job_id, query.number, run_id, name, source, time_s, pack(record_to_dict(query.record))),
                 )
                 if cursor.rowcount == 1 and cursor.lastrowid is not None:
-                    _insert_result(connection, cursor.lastrowid, query.document, who, at)
-                    n_added += 1
-        return n_added
+                    query_id = cursor.lastrowid
+                    added.append((query_id, _insert_result(connection, query_id, query.document, who, at)))
+        return added
 
     def add_result(self, query_id: int, document: Mapping[str, Any], *, who: str, at: str) -> int:
         """Id of a further result of a query."""

@@ -10,6 +10,7 @@ from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass, field, replace
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import Any, TypeVar
 
 from identify.errors import IonwitnessError, LibraryError
 from identify.library.cache import load_index
@@ -20,8 +21,11 @@ from identify.settings import Settings
 from identify.workbench.case_file import CaseFile, open_case
 from identify.workbench.stored import Rebuilt, rebuild
 
-MAX_REBUILT = 300
-"""Results kept ready to show; each takes about a quarter of a megabyte."""
+MAX_REBUILT, MAX_DRAWN = 60, 400
+"""Results kept ready as records (about a quarter of a megabyte each) and as drawn pages (about a tenth)."""
+
+
+Drawn = TypeVar("Drawn")
 
 
 class NotFound(IonwitnessError):
@@ -44,6 +48,7 @@ class Desk:
     _searchable: tuple[SearchableLibrary, ...]
     _lock: threading.Lock = field(default_factory=threading.Lock)
     _rebuilt: OrderedDict[tuple[int, str], Rebuilt] = field(default_factory=OrderedDict)
+    _drawn: OrderedDict[tuple[int, str], Any] = field(default_factory=OrderedDict)
 
     def now(self) -> str:
         """UTC text of the present time."""
@@ -98,8 +103,7 @@ class Desk:
         LibraryError
             If it belongs to libraries that are not open, or there is none.
         """
-        state = ",".join(library.fingerprint for library in self.libraries)
-        key = (result_id, state)
+        key = (result_id, self._state())
         with self._lock:
             if key in self._rebuilt:
                 self._rebuilt.move_to_end(key)
@@ -110,6 +114,24 @@ class Desk:
             while len(self._rebuilt) > MAX_REBUILT:
                 self._rebuilt.popitem(last=False)
         return made
+
+    def keep_drawn(self, result_id: int, make: Callable[[], Drawn]) -> Drawn:
+        """What `make` made of a result, kept until a library changes."""
+        key = (result_id, self._state())
+        with self._lock:
+            if key in self._drawn:
+                self._drawn.move_to_end(key)
+                kept: Drawn = self._drawn[key]
+                return kept
+        made = make()
+        with self._lock:
+            self._drawn[key] = made
+            while len(self._drawn) > MAX_DRAWN:
+                self._drawn.popitem(last=False)
+        return made
+
+    def _state(self) -> str:
+        return ",".join(library.fingerprint for library in self.libraries)
 
     def new_upload(self) -> Path:
         """Path of a file for an upload, with a name nobody can guess or choose."""

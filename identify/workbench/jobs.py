@@ -19,12 +19,15 @@ from identify.report.words import counted
 from identify.settings import Settings
 from identify.workbench.case_rows import Job, NewQuery
 from identify.workbench.desk import Desk
+from identify.workbench.drawn_query import draw_query
 from identify.workbench.intake_process import RUN_LIMITS, IntakeProcess, Limits
 from identify.workbench.job_list import add_job, finish_job, next_job, report_progress, requeue_jobs
 from identify.workbench.record_json import record_from_dict, rejection_from_dict
 from identify.workbench.stored import result_document, settings_to_text
 
 _LOG = logging.getLogger(__name__)
+DRAWN_AHEAD = 20
+"""Queries of one upload whose pages are drawn before somebody asks."""
 BATCH = 10
 """Results written in one transaction."""
 
@@ -174,7 +177,10 @@ class JobRunner:
         return f"{counted(n_found, 'query', 'queries')} identified{left_out}"
 
     def _keep(self, job: Job, batch: list[NewQuery], number: int) -> None:
-        self._desk.case.add_queries(job.id, batch, who=job.who, at=self._desk.now(), run_id=None)
+        added = self._desk.case.add_queries(job.id, batch, who=job.who, at=self._desk.now(), run_id=None)
+        if number <= DRAWN_AHEAD:
+            for query_id, result_id in added:
+                draw_query(self._desk, query_id, result_id)
         report_progress(self._desk.case, job.id, number, None, f"{counted(number, 'spectrum', 'spectra')} read")
         batch.clear()
 

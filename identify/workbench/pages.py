@@ -5,7 +5,6 @@ from __future__ import annotations
 import functools
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
-from functools import cache
 from typing import TYPE_CHECKING, Annotated, Any
 
 from fastapi import Depends, Request
@@ -13,13 +12,12 @@ from fastapi.responses import HTMLResponse, JSONResponse, RedirectResponse, Resp
 
 from identify import __version__
 from identify.errors import IonwitnessError
-from identify.report.words import visible_text
 from identify.workbench.desk import Desk, Forbidden
 from identify.workbench.jobs import JobRunner
+from identify.workbench.rendering import environment
 from identify.workbench.sessions import Person, Sessions
 
 if TYPE_CHECKING:
-    import jinja2
     from fastapi import APIRouter
 
 
@@ -30,9 +28,11 @@ class View:
     template: str
     title: str
     data: Mapping[str, Any]
-    """JSON values: all of the JSON twin."""
+    """JSON values of the JSON twin, those the page shows too."""
     draw: Callable[[], Mapping[str, Any]] = field(default=dict)
     """Makes what only the page needs (drawings, texts); not called for the twin."""
+    more: Callable[[], Mapping[str, Any]] = field(default=dict)
+    """Makes what only the twin needs; not called for the page."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,24 +120,6 @@ NAVIGATION = (
 )
 
 
-@cache
-def environment() -> jinja2.Environment:
-    """Templates of the workbench, which may use those of the report."""
-    import jinja2
-
-    loaders = [
-        jinja2.PackageLoader("identify.workbench", "templates"),
-        jinja2.PackageLoader("identify.report", "templates"),
-    ]
-    made = jinja2.Environment(
-        loader=jinja2.ChoiceLoader(loaders), autoescape=True, undefined=jinja2.StrictUndefined, trim_blocks=True,
-        lstrip_blocks=True,
-    )  # fmt: skip
-    made.filters["visible"] = visible_text
-    made.filters["day"] = lambda text: text[:16].replace("T", " ") if text else ""
-    return made
-
-
 def render(request: Request, view: View, status: int = 200) -> HTMLResponse:
     """The page of a view.
 
@@ -191,7 +173,8 @@ def add_view(pages: APIRouter, twins: APIRouter, path: str, builder: Callable[..
 
     @functools.wraps(builder)
     def data(*args: Any, **kwargs: Any) -> Response:
-        return JSONResponse(dict(builder(*args, **kwargs).data))
+        view = builder(*args, **kwargs)
+        return JSONResponse({**view.data, **view.more()})
 
     # Their annotations are the builder's, which say View.
     pages.add_api_route(path, page, methods=["GET"], response_model=None, name=f"page {path}")

@@ -9,7 +9,7 @@ from typing import Annotated, Any
 from fastapi import APIRouter, Path, Query, Request
 
 from identify.chem.formula import parse_formula
-from identify.errors import FormulaError, UsageError, quote
+from identify.errors import FormulaError, LibraryDamaged, LibraryError, UsageError, quote
 from identify.index import search_index
 from identify.library.standing import ALL_STATUSES, entry_history
 from identify.library.store import Library
@@ -145,9 +145,7 @@ def show_entry(desk: TheDesk, person: ThePerson, request: Request, library_numbe
         If there is none.
     """
     library = desk.library(library_number)
-    if entry_id not in library.entry_ids(ALL_STATUSES):
-        raise NotFound("entry", found=str(entry_id), expected=f"an entry of {library.path.name}")
-    (entry,) = library.get_entries([entry_id])
+    entry = find_entry(library, entry_id)
     history = [
         {"seq": item.event.seq, "at": item.event.at, "who": item.event.who, "kind": item.event.kind,
          "reason": visible_text(item.event.reason, 2000), "status": item.status.value, "hash": item.event.hash}
@@ -164,6 +162,31 @@ def show_entry(desk: TheDesk, person: ThePerson, request: Request, library_numbe
         "history": history,
     }
     return View("entry.html", line["name"], data, lambda: _draw(entry))
+
+
+def find_entry(library: Library, entry_id: int) -> Entry:
+    """Entry by its id, whatever its standing.
+
+    Parameters
+    ----------
+    library : Library
+    entry_id : int
+
+    Returns
+    -------
+    Entry
+
+    Raises
+    ------
+    NotFound
+        If there is none.
+    """
+    try:
+        return library.get_entries([entry_id])[0]
+    except LibraryDamaged:
+        raise
+    except LibraryError:
+        raise NotFound("entry", found=str(entry_id), expected=f"an entry of {library.path.name}") from None
 
 
 def _draw(entry: Entry) -> dict[str, Any]:

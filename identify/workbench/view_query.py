@@ -10,12 +10,12 @@ from fastapi import APIRouter, Form, Path, Query, Request
 
 from identify.errors import UsageError, quote
 from identify.records import Candidate, ClaimLevel, EntryStatus, Identification
-from identify.report.context import build_page
-from identify.report.words import probability_text, visible_text
+from identify.report.words import visible_text
 from identify.settings import CleaningSettings
 from identify.workbench.case_rows import Decision, QueryRow
 from identify.workbench.decisions import decide, list_decisions
 from identify.workbench.desk import Desk, NotFound
+from identify.workbench.drawn_query import draw_query
 from identify.workbench.jobs import identify_record
 from identify.workbench.pages import Outcome, TheDesk, ThePerson, View, add_action, add_view
 from identify.workbench.record_json import record_to_dict
@@ -25,7 +25,6 @@ from identify.workbench.view_work_list import query_line
 from identify.workbench.why_not import WhyNot, explain_absence
 
 Id = Annotated[int, Path(ge=1, le=2**40)]
-N_WITH_STANDARDS = 5
 LEVELS = tuple(level for level in ClaimLevel if level is not ClaimLevel.NO_CLAIM)
 
 
@@ -86,8 +85,6 @@ def show_query(
     line = query_line(row)
     data = {
         "query": line,
-        "record": record_to_dict(desk.case.record(query_id)),
-        "result": desk.case.document(result_id),
         "results": [{"id": item, "made_at": made_at, "who": who} for item, made_at, who in results],
         "decisions": [asdict(item) for item in decisions],
         "why_not": {"asked": asked, "answers": [_absence(item) for item in absent]},
@@ -98,7 +95,10 @@ def show_query(
     def draw() -> dict[str, Any]:
         return _draw(desk, row, result_id, decisions, absent)
 
-    return View("query.page.html", line["name"], data, draw)
+    def more() -> dict[str, Any]:
+        return {"record": record_to_dict(desk.case.record(query_id)), "result": desk.case.document(result_id)}
+
+    return View("query.page.html", line["name"], data, draw, more)
 
 
 def _explain(desk: Desk, query_id: int, result_id: int, asked: str) -> tuple[WhyNot, ...]:
@@ -117,69 +117,16 @@ def _absence(item: WhyNot) -> dict[str, Any]:
 def _draw(
     desk: Desk, row: QueryRow, result_id: int, decisions: list[Decision], absent: tuple[WhyNot, ...]
 ) -> dict[str, Any]:
-    shown = desk.shown_result(row.id, result_id)
-    found = shown.identification
-    page = build_page(shown.report)
-    document = desk.case.document(result_id)
-    settings = settings_of(document)
     return {
-        "page": page,
-        "shown": page.queries[0],
-        "changes": shown.changes,
+        "drawn": draw_query(desk, row.id, result_id),
         "is_latest": result_id == row.result_id,
         "result_id": result_id,
-        "made_with": [state["fingerprint"][:16] for state in document["libraries"]],
-        "is_newer_library": [state["fingerprint"] for state in document["libraries"]]
-        != [library.fingerprint for library in desk.libraries],
         "seen": decisions[-1].seq if decisions else 0,
         "decisions": decisions,
         "absent": absent,
-        "cleaning": settings.cleaning,
-        "choices": [_choice(candidate) for candidate in found.candidates],
-        "entries": {c.rank: entry_address(desk, c) for c in found.candidates},
         "levels": LEVELS,
-        "claimed": found.claim.level,
-        "standards": _standards(desk, found),
         "status": _status(row),
     }
-
-
-def _choice(candidate: Candidate) -> dict[str, Any]:
-    name = visible_text(candidate.entry.identity.name) or candidate.entry.accession
-    return {"rank": candidate.rank, "text": f"{candidate.rank}. {name}, {probability_text(candidate.probability)}"}
-
-
-def entry_address(desk: Desk, candidate: Candidate) -> str:
-    """Address of the page of a candidate's entry.
-
-    Parameters
-    ----------
-    desk : Desk
-    candidate : Candidate
-
-    Returns
-    -------
-    str
-    """
-    paths = [str(library.path) for library in desk.libraries]
-    number = paths.index(candidate.library) + 1 if candidate.library in paths else 1
-    return f"/library/{number}/entries/{candidate.entry.id}"
-
-
-def _standards(desk: Desk, found: Identification) -> list[dict[str, Any]]:
-    """Own standards of the first candidates: what a confirmation can rest on."""
-    told = []
-    for candidate in found.candidates[:N_WITH_STANDARDS]:
-        for library in desk.libraries:
-            if str(library.path) != candidate.library:
-                continue
-            own = library.find_entries(
-                compound_id=candidate.entry.compound_id, statuses={EntryStatus.OWN_STANDARD}, limit=20
-            )
-            told += [
-                {"accession": e.accession, "name": visible_text(e.identity.name), "rank": candidate.rank} for e in own
-            ]
-    return told
 
 
 def _status(row: QueryRow) -> str:

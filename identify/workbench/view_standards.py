@@ -22,7 +22,7 @@ from identify.records import Entry, EntryStatus
 from identify.report.words import file_name, visible_text
 from identify.workbench.desk import Desk
 from identify.workbench.pages import Outcome, TheDesk, ThePerson, TheReviewer, View, add_action, add_view
-from identify.workbench.view_library import audit_lines, entry_line
+from identify.workbench.view_library import audit_lines, entry_line, find_entry
 from identify.workbench.view_query import find_query
 from identify.workbench.view_work_list import query_line
 
@@ -169,4 +169,4 @@ def withdraw(
 
 
 def _accession(desk: Desk, library_number: int, entry_id: int) -> str:
-    return desk.library(library_number).get_entries([entry_id])[0].accession
+    return find_entry(desk.library(library_number), entry_id).accession

@@ -12,7 +12,7 @@ from identify.pipeline.search import SearchableLibrary
 from identify.records import Candidate, Entry, EvidenceItem, Identification, Verdict
 from identify.report.words import probability_text, score_text, visible_text
 from identify.settings import Settings
-from identify.similarity.pair import score_pair
+from identify.similarity.pair import PairScores, score_pair
 
 MAX_COMPOUNDS = 5
 
@@ -49,24 +49,28 @@ def explain_absence(
     tuple of WhyNot
     """
     ranked = {(c.library, c.entry.compound_id): c for c in found.candidates}
-    best: dict[tuple[str, int], WhyNot] = {}
+    best: dict[tuple[str, int], tuple[float, Entry, PairScores]] = {}
     for item in libraries:
         for entry in _entries_named(item.library, asked):
             key = (item.state.path, entry.compound_id)
-            told = _explain(entry, found, settings, ranked.get(key))
-            if key not in best or told.cosine > best[key].cosine:
-                best[key] = told
+            pair = score_pair(found.query.spectrum, entry.spectrum, settings)
+            if key not in best or pair.cosine > best[key][0]:
+                best[key] = (pair.cosine, entry, pair)
     exact = asked.strip().casefold()
-    ordered = sorted(best.values(), key=lambda item: (item.name.casefold() != exact, -item.cosine, item.accession))
-    named = [item for item in ordered if item.name.casefold() == exact]
-    return tuple(named or ordered[:MAX_COMPOUNDS])
+    named = {key: row for key, row in best.items() if row[1].identity.name.casefold() == exact}
+    ordered = sorted((named or best).items(), key=lambda item: (-item[1][0], item[1][1].accession))
+    return tuple(
+        _explain(entry, pair, found, settings, ranked.get(key)) for key, (_, entry, pair) in ordered[:MAX_COMPOUNDS]
+    )
 
 
 def _entries_named(library: Library, asked: str) -> list[Entry]:
     return library.find_entries(name=asked.strip(), statuses=ALL_STATUSES, limit=60)
 
 
-def _explain(entry: Entry, found: Identification, settings: Settings, candidate: Candidate | None) -> WhyNot:
+def _explain(
+    entry: Entry, pair: PairScores, found: Identification, settings: Settings, candidate: Candidate | None
+) -> WhyNot:
     name = visible_text(entry.identity.name)
     if candidate is not None:
         reasons = _reasons_ranked(candidate, found)
@@ -79,7 +83,6 @@ def _explain(entry: Entry, found: Identification, settings: Settings, candidate:
             candidate.reverse,
             candidate.evidence,
         )
-    pair = score_pair(found.query.spectrum, entry.spectrum, settings)
     evidence = gather_evidence(found.query, entry, pair.aligned, settings)
     told: list[str] = []
     if entry.status not in SEARCHABLE:

@@ -67,7 +67,7 @@ def test_a_job_done_twice_adds_its_queries_once(case: CaseFile) -> None:
     (row,) = case.queries()
     added = case.add_queries(row.job_id, [NewQuery(1, record(), DOCUMENT), NewQuery(2, record("peak 2"), DOCUMENT)],
                              who="Ada", at=AT, run_id=None)  # fmt: skip
-    assert added == 1
+    assert [query_id for query_id, _ in added] == [2]
     assert [item.name for item in case.queries()] == ["peak 1", "peak 2"]
     item = Rejection("a.txt", 3, "unusable", "x", "y")
     case.add_rejections(row.job_id, [item])

@@ -1,0 +1,29 @@
+"""Templates of the workbench and of the report, one environment."""
+
+from __future__ import annotations
+
+from functools import cache
+from typing import TYPE_CHECKING
+
+from identify.report.words import visible_text
+
+if TYPE_CHECKING:
+    import jinja2
+
+
+@cache
+def environment() -> jinja2.Environment:
+    """Templates of the workbench, which may use those of the report."""
+    import jinja2
+
+    loaders = [
+        jinja2.PackageLoader("identify.workbench", "templates"),
+        jinja2.PackageLoader("identify.report", "templates"),
+    ]
+    made = jinja2.Environment(
+        loader=jinja2.ChoiceLoader(loaders), autoescape=True, undefined=jinja2.StrictUndefined, trim_blocks=True,
+        lstrip_blocks=True,
+    )  # fmt: skip
+    made.filters["visible"] = visible_text
+    made.filters["day"] = lambda text: text[:16].replace("T", " ") if text else ""
+    return made
