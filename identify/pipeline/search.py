@@ -13,7 +13,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import ExitStack, contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from identify.errors import SpectrumError, UsageError
@@ -28,6 +28,7 @@ from identify.ranking.grouping import Match
 from identify.ranking.rank import rank
 from identify.ranking.shortlist import shortlist
 from identify.records import (
+    Candidate,
     Entry,
     EntryStatus,
     Hit,
@@ -38,6 +39,7 @@ from identify.records import (
     SpectrumRecord,
 )
 from identify.settings import Settings
+from identify.similarity.pair import score_pair
 from identify.spectra.cleaning import clean_spectrum
 
 Progress = Callable[[int, str], None]
@@ -119,9 +121,24 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
         molecular_ion=molecular_ion,
         in_library_probability=ranking.in_library_probability,
         claim=ranking.claim,
-        candidates=ranking.candidates[: settings.top],
+        candidates=tuple(_score_accurately(query, c, settings) for c in ranking.candidates[: settings.top]),
         follow_up=ranking.follow_up,
     )
+
+
+def _score_accurately(query: Query, candidate: Candidate, settings: Settings) -> Candidate:
+    """The candidate with scores on accurate m/z where both spectra carry it, and a note where only one does."""
+    entry = candidate.entry.spectrum
+    if query.spectrum.accurate is None and entry.accurate is None:
+        return candidate
+    pair = score_pair(query.spectrum, entry, settings)
+    if not pair.is_accurate:
+        return replace(candidate, notes=(*candidate.notes, pair.note))
+    note = (
+        f"Scores on accurate m/z ({settings.tolerance_ppm:g} ppm or {settings.tolerance_da:g} Da); "
+        f"at nominal m/z cosine {candidate.cosine:.3f}, reverse {candidate.reverse:.3f}."
+    )
+    return replace(candidate, cosine=pair.cosine, reverse=pair.reverse, notes=(*candidate.notes, note))
 
 
 def _find_matches(query: Query, libraries: Sequence[SearchableLibrary], settings: Settings) -> list[Match]:
