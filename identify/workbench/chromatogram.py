@@ -12,6 +12,8 @@ WIDTH, HEIGHT = 960.0, 300.0
 LEFT, RIGHT, TOP, BOTTOM = 12.0, 12.0, 22.0, 44.0
 SMALL_TYPE, LARGE_TYPE = 13.0, 30.0
 N_COLUMNS = 900
+LABELLED_FROM = 0.015
+"""Components below this share of the upper edge are marked, but not numbered."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,7 +69,9 @@ def chromatogram_svg(
         *(_mark(m, across, up, top) for m in shown),
     ]
     labels = [
-        Label(str(m.number), across(m.time_s), up(min(m.height, top))) for m in sorted(shown, key=lambda m: -m.height)
+        Label(str(m.number), across(m.time_s), up(min(m.height, top)))
+        for m in sorted(shown, key=lambda m: -m.height)
+        if m.height > LABELLED_FROM * top
     ]
     frame = Box(LEFT, 0.0, WIDTH - RIGHT, HEIGHT - BOTTOM)
     placed = place_labels(labels[:60], [], frame, size=SMALL_TYPE, large_size=LARGE_TYPE, n_large=6, n_fine=40)

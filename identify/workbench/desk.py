@@ -17,11 +17,12 @@ from identify.library.cache import load_index
 from identify.library.events import format_time
 from identify.library.store import Library, open_library
 from identify.pipeline.search import SearchableLibrary, open_libraries
+from identify.records import Entry, EntryStatus
 from identify.settings import Settings
 from identify.workbench.case_file import CaseFile, open_case
 from identify.workbench.stored import Rebuilt, rebuild
 
-MAX_REBUILT, MAX_DRAWN = 60, 400
+MAX_REBUILT, MAX_DRAWN = 200, 400
 """Results kept ready as records (about a quarter of a megabyte each) and as drawn pages (about a tenth)."""
 
 
@@ -48,6 +49,7 @@ class Desk:
     _searchable: tuple[SearchableLibrary, ...]
     _lock: threading.Lock = field(default_factory=threading.Lock)
     _rebuilt: OrderedDict[tuple[int, str], Rebuilt] = field(default_factory=OrderedDict)
+    _standing: dict[tuple[int, EntryStatus], tuple[str, list[int]]] = field(default_factory=dict)
     _drawn: OrderedDict[tuple[int, str], Any] = field(default_factory=OrderedDict)
 
     def now(self) -> str:
@@ -129,6 +131,16 @@ class Desk:
             while len(self._drawn) > MAX_DRAWN:
                 self._drawn.popitem(last=False)
         return made
+
+    def entries_with(self, number: int, status: EntryStatus) -> list[Entry]:
+        """Entries of one standing in a library; which they are is looked up once for each state of the library."""
+        library = self.library(number)
+        fingerprint = library.fingerprint
+        known, ids = self._standing.get((number, status), ("", []))
+        if known != fingerprint:
+            ids = library.entry_ids({status})
+            self._standing[number, status] = (fingerprint, ids)
+        return library.get_entries(ids)
 
     def _state(self) -> str:
         return ",".join(library.fingerprint for library in self.libraries)

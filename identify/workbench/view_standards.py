@@ -11,7 +11,6 @@ from identify.errors import UsageError
 from identify.library.identities import resolve_identity
 from identify.library.standards import (
     StandardDetails,
-    list_proposals,
     propose_standard,
     read_standard_details,
     review_standard,
@@ -49,8 +48,10 @@ def show_standards(
     """Standards that wait for review, those in use, and the form to propose one from a query."""
     waiting, in_use = [], []
     for number, library in enumerate(desk.libraries, start=1):
-        waiting += [_proposal(desk, number, entry, person.name) for entry in list_proposals(library)]
-        own = library.get_entries(library.entry_ids({EntryStatus.OWN_STANDARD}))
+        waiting += [
+            _proposal(desk, number, entry, person.name) for entry in desk.entries_with(number, EntryStatus.PROPOSED)
+        ]
+        own = desk.entries_with(number, EntryStatus.OWN_STANDARD)
         in_use += [{**entry_line(number, entry), **_came(library, entry)} for entry in own]
     row = find_query(desk, query) if query is not None else None
     data = {

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import html
 import re
 from html.parser import HTMLParser
 
@@ -85,13 +86,11 @@ def test_a_page_is_sound(used_bench: Bench, path: str) -> None:
 
 def test_the_page_and_its_twin_say_the_same(used_bench: Bench) -> None:
     data = used_bench.query(3)
-    page = used_bench.client.get("/queries/3").text
+    page = html.unescape(used_bench.client.get("/queries/3").text)
     hits = data["result"]["queries"][0]["hits"]
     for hit in hits[:5]:
         assert hit["name"] in page
     assert data["query"]["statement"] in page
-    shown = [text for text in re.findall(r"\d+/?", page) if text]
-    assert shown
     # The tree of the first candidate shows the value that the twin gives, to two decimals.
     assert f"{hits[0]['explanation']['value']:+.2f}" in page
 
