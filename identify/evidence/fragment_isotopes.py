@@ -17,6 +17,8 @@ SOURCE = (
 LEAST = 8.0
 """Relative intensity (% of base) of a fragment whose cluster is worth a fit."""
 MOST_FITS = 3
+LOWEST, CLOSE_FIT, PURE = 80, 1.5, 0.85
+"""A fragment below m/z 80, one fitted loosely, or one mixed with its own [M ± H] neighbours is too easily imitated by chance."""
 
 
 @lru_cache(maxsize=64)
@@ -48,16 +50,20 @@ def find_halogen_clusters(facts: QueryFacts) -> tuple[ClusterFit, ...]:
 
 
 def _convinces(fit: ClusterFit, facts: QueryFacts) -> bool:
-    """Two halogens or more (three peaks in proportion), or one in a cluster that nothing but its own isotopes surrounds.
+    """Two halogens or more with the peak at +4 seen, or one in a cluster with its 13C peaks that no other ion surrounds.
 
-    Alkyl fragments such as m/z 69 and 71 or 97 and 99 look like one chlorine or bromine; they never stand alone.
+    Alkyl ions (69 and 71, 97 and 99), aryl ions (77 and 79) and silyl ions (73 and 75) look like chlorine or bromine; they have
+    no peak at +4 in proportion and never stand alone.
     """
     if fit.reason or not {"Cl", "Br"} & set(fit.supported):
         return False
+    if fit.mz < LOWEST or fit.misfit > CLOSE_FIT or fit.parts[2] < PURE:
+        return False
     if fit.count("Cl") + fit.count("Br") >= 2:
-        return True
+        return facts.at(fit.mz + 4) > 0
     around = max(facts.at(fit.mz + offset) for offset in (-16, -15, -14, -13, -12, -4, -3, 4, 5, 12, 13, 14, 15, 16))
-    return fit.mz >= 90 and around < 0.1 * facts.at(fit.mz)
+    isotopes = facts.at(fit.mz + 1) > 0 and facts.at(fit.mz + 3) > 0
+    return isotopes and around < 0.1 * facts.at(fit.mz)
 
 
 def check_fragment_halogens(facts: QueryFacts, formula: FormulaFacts | None) -> Finding:

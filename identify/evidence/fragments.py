@@ -20,7 +20,7 @@ SOURCE = (
 BACKGROUND: dict[int, str] = {
     18: "water", 28: "air", 32: "air", 40: "argon", 44: "carbon dioxide",
     73: "siloxane", 147: "siloxane", 207: "siloxane", 221: "siloxane", 267: "siloxane", 281: "siloxane", 295: "siloxane",
-    341: "siloxane", 355: "siloxane", 429: "siloxane", 149: "phthalate", 167: "phthalate", 279: "phthalate",
+    341: "siloxane", 355: "siloxane", 429: "siloxane", 149: "phthalate",
 }  # fmt: skip
 """Known background of gas chromatography (`standards.md` 6, contaminant table)."""
 

@@ -18,6 +18,8 @@ LEVELS = ((0.5, "absent"), (5.0, "weak"), (25.0, "medium"), (float("inf"), "stro
 RANK = {name: place for place, (_, name) in enumerate(LEVELS)}
 IMPROBABLE_LOSSES = (4, 5, 6, 7, 8, 9, 10, 11, 12, 13, 21, 22, 23, 24, 25, 37, 38)
 """McLafferty & Turecek (from memory), without 14 and 33: on the open records 33 is lost in 7 % of spectra."""
+HALOGEN_LOSSES = {"Cl": (37, 38), "F": (21, 22), "Br": (), "B": (9, 10, 11, 12, 13)}
+"""Losses that halogens or boron make probable: Cl + H2 and HCl + H2, HF + H and HF + H2, BH."""
 LOSS_SOURCE = (
     "Improbable losses 4–13, 21–25, 37, 38: McLafferty & Turecek, Interpretation of Mass Spectra (from memory); 33 left out "
     "because open records show it; weighed on open EI records"
@@ -196,7 +198,7 @@ def check_ions_above(facts: QueryFacts, formula: FormulaFacts | None, entry: Ent
             Verdict.INCONCLUSIVE,
             f"m/z {mz} lies above M, but the entry's own spectrum has such ions too.",
         )
-    elif mz in BACKGROUND:
+    elif BACKGROUND.get(mz) == "siloxane" and size != "strong":
         verdict, reason = Verdict.INCONCLUSIVE, f"m/z {mz} lies above M and is known background ({BACKGROUND[mz]})."
     elif size == "trace":
         verdict, reason = Verdict.INCONCLUSIVE, f"A trace at m/z {mz} lies above M; background would explain it."
@@ -233,7 +235,10 @@ def improbable_loss(dense: tuple[float, ...], formula: FormulaFacts) -> tuple[fl
     mass = formula.nominal_mass
     carbon = CARBON_13 * formula.carbons + formula.ratio(1) * 0.3
     worst, lost = 0.0, 0
+    excused = {loss for symbol, losses in HALOGEN_LOSSES.items() if formula.formula.count(symbol) for loss in losses}
     for loss in IMPROBABLE_LOSSES:
+        if loss in excused:
+            continue
         mz = mass - loss
         if 1 <= mz < len(dense) and dense[mz] > worst:
             left = dense[mz] - 1.2 * carbon * dense[mz - 1]

@@ -114,7 +114,7 @@ def check_isotope_pattern(facts: QueryFacts, formula: FormulaFacts | None) -> Fi
         return not_assessed(PATTERN, "Isotope peaks this weak are not recorded in the query.")
     offset = max(range(2, max(formula.last_offset, 2) + 1), key=formula.ratio)
     predicted, seen = parts.predicted(formula, offset), facts.at(mass + offset)
-    sigma = math.hypot(0.12 * predicted, 0.02 * height, 0.5 * facts.floor, 0.3)
+    sigma = math.hypot(0.12 * predicted, 0.008 * height, 0.5 * facts.floor, 0.3)
     deviation = (seen - predicted) / sigma
     family = "halogen" if heavy > 0.25 else "sulfur or silicon" if heavy > 0.035 else "none"
     side = "low" if deviation < -3 else "ok" if deviation <= 3 else "high"

@@ -1,8 +1,8 @@
 """Measured log-odds of each cell of each check (see `identify.evidence.finding`).
 
 Fitted on the open EI records (MassBank release 2025.05.1, 60–80 eV or unstated, unlabelled)
-by `tests/benchmarks/fit_evidence.py weights`: 2,510 queries; right: the best other entry of the query's compound;
-wrong: the three most similar entries of another formula as measured. For `ions missing in the query` and `ions only in the
+by `tests/benchmarks/fit_evidence.py weights`: 2,510 queries. Right: the best other entry of the compound;
+wrong: the three most similar entries of another formula. For `ions missing in the query` and `ions only in the
 query` at equal cosine similarity. The comment gives how many right and wrong candidates fell into the cell.
 """
 
@@ -47,20 +47,20 @@ LOG_ODDS: dict[str, dict[str, float]] = {
     },
     "isotope pattern": {
         "halogen, high": -0.39,  # 6 right, 10 wrong
-        "halogen, low": -1.48,  # 5 right, 26 wrong
-        "halogen, ok": 2.21,  # 107 right, 11 wrong
-        "none, high": -1.91,  # 5 right, 40 wrong
-        "none, low": 0.43,  # 2 right, 1 wrong
-        "none, ok": 0.43,  # 908 right, 582 wrong
-        "sulfur or silicon, high": -0.50,  # 8 right, 14 wrong
-        "sulfur or silicon, low": -0.13,  # 7 right, 8 wrong
-        "sulfur or silicon, ok": 0.94,  # 217 right, 82 wrong
+        "halogen, low": -1.50,  # 5 right, 27 wrong
+        "halogen, ok": 2.27,  # 107 right, 10 wrong
+        "none, high": -2.37,  # 6 right, 73 wrong
+        "none, low": -0.01,  # 4 right, 4 wrong
+        "none, ok": 0.49,  # 905 right, 546 wrong
+        "sulfur or silicon, high": -0.58,  # 8 right, 16 wrong
+        "sulfur or silicon, low": -0.54,  # 15 right, 27 wrong
+        "sulfur or silicon, ok": 1.18,  # 209 right, 63 wrong
     },
     "halogens in fragments": {
-        "agrees": 0.92,  # 71 right, 27 wrong
-        "formula only": -0.47,  # 51 right, 82 wrong
-        "has too few": -1.40,  # 2 right, 12 wrong
-        "lacks them": -0.58,  # 38 right, 69 wrong
+        "agrees": 0.90,  # 55 right, 21 wrong
+        "formula only": -0.27,  # 69 right, 90 wrong
+        "has too few": -5.04,  # 0 right, 10 wrong
+        "lacks them": -2.26,  # 2 right, 26 wrong
     },
     "carbon count": {
         "narrow, excess": -2.21,  # 5 right, 53 wrong
@@ -76,13 +76,13 @@ LOG_ODDS: dict[str, dict[str, float]] = {
         "wide, within": 0.11,  # 330 right, 292 wrong
     },
     "losses from M": {
-        "none": 0.15,  # 2023 right, 1720 wrong
-        "some": -1.64,  # 23 right, 123 wrong
-        "some, entry too": 0.71,  # 90 right, 43 wrong
-        "strong": -1.83,  # 12 right, 81 wrong
-        "strong, entry too": 0.65,  # 37 right, 18 wrong
-        "trace": -0.60,  # 81 right, 147 wrong
-        "trace, entry too": 0.58,  # 120 right, 66 wrong
+        "none": 0.16,  # 2043 right, 1731 wrong
+        "some": -1.69,  # 22 right, 125 wrong
+        "some, entry too": 0.71,  # 83 right, 39 wrong
+        "strong": -1.97,  # 10 right, 78 wrong
+        "strong, entry too": 0.51,  # 26 right, 15 wrong
+        "trace": -0.61,  # 79 right, 145 wrong
+        "trace, entry too": 0.61,  # 123 right, 65 wrong
     },
     "ions above M": {
         "none": 0.33,  # 2369 right, 1690 wrong
@@ -119,10 +119,10 @@ LOG_ODDS: dict[str, dict[str, float]] = {
         "some": -0.43,  # 261 right, 881 wrong
     },
     "ions only in the query": {
-        "few": 0.12,  # 283 right, 280 wrong
-        "many": -0.42,  # 142 right, 692 wrong
+        "few": 0.13,  # 283 right, 278 wrong
+        "many": -0.41,  # 143 right, 694 wrong
         "many, foreign": -2.15,  # 9 right, 226 wrong
-        "none": 0.55,  # 1826 right, 459 wrong
+        "none": 0.55,  # 1825 right, 458 wrong
         "some": -0.20,  # 246 right, 684 wrong
         "some, foreign": -1.97,  # 4 right, 146 wrong
     },

@@ -27,6 +27,9 @@ ROOT = Path(__file__).resolve().parents[2]
 ARCHIVE = ROOT.parent / "shared" / "data" / "massbank-2025.05.1-ei.zip"
 CACHE = Path(tempfile.gettempdir()) / "ionwitness-benchmark" / "open-records.ionlib"
 MAX_MZ = 1200
+ROOM = ROOT / "identify" / "evidence"
+PROVENANCE = "Fitted on the open EI records (MassBank release 2025.05.1, 60–80 eV or unstated, unlabelled)"
+SEED = 20250501
 
 
 def load_entries(library: Path = CACHE) -> list[Entry]:

@@ -2,7 +2,7 @@
 
     python tests/benchmarks/fit_evidence.py carbons          identify/evidence/carbon_errors.py
     python tests/benchmarks/fit_evidence.py weights          identify/evidence/weights.py
-    python tests/benchmarks/fit_evidence.py molecular-ion    identify/evidence/molecular_ion_model.json
+    python tests/benchmarks/fit_evidence.py classes          identify/evidence/class_model.py
 
 Only coefficients and quantiles are written, no spectrum and no accession.
 """
@@ -14,21 +14,22 @@ import sys
 from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass
-from pathlib import Path
 
 import numpy as np
-from evidence_data import OpenRecords, as_query, load_open_records
+from evidence_data import PROVENANCE, ROOM, SEED, OpenRecords, as_query, load_open_records
+from numpy.typing import NDArray
 
+from identify.chem.structures import compound_classes
+from identify.errors import StructureError
 from identify.evidence.carbon_errors import CarbonErrors
+from identify.evidence.class_ions import RULES
+from identify.evidence.classes import MAX_NEIGHBOURS, met_rules, vote_shares
 from identify.evidence.facts import build_query_facts, formula_facts, spectrum_facts
 from identify.evidence.fragments import EXTRA, MISSING
 from identify.evidence.gather import examine
 from identify.evidence.isotopes import CARBON_13, take_apart
 from identify.settings import Settings
 from identify.spectra.align import align
-
-ROOM = Path(__file__).resolve().parents[2] / "identify" / "evidence"
-PROVENANCE = "Fitted on the open EI records (MassBank release 2025.05.1, 60–80 eV or unstated, unlabelled)"
 
 KNOTS = {"sector": (14.0, 30.0, 60.0, 98.0), "narrow": (10.0, 40.0)}
 """Intensities of M (% of base) at which quantiles are taken; the first is the floor below which M+1 does not vote."""
@@ -138,7 +139,6 @@ class Judged:
 
 N_WRONG = 3
 MAX_QUERIES_PER_COMPOUND = 2
-SEED = 20250501
 
 
 def judge_candidates(records: OpenRecords) -> Iterator[Judged]:
@@ -259,5 +259,113 @@ def fit_weights(records: OpenRecords) -> None:
     (ROOM / "weights.py").write_text("\n".join([*lines, "}", ""]), encoding="utf-8")
 
 
+def class_rows(
+    records: OpenRecords, count: int, seed: int = SEED
+) -> list[tuple[bool, float, float, frozenset[str], str]]:
+    """Is it of the class, share of votes, best cosine, rules met, class: one row per query and class in question."""
+    rng = np.random.default_rng(seed)
+    first = {int(records.compounds[place]): place for place in rng.permutation(len(records.entries)).tolist()}
+    usable = [place for place in first.values() if records.entries[place].identity.smiles]
+    rows = []
+    for place in usable[:count]:
+        entry = records.entries[place]
+        try:
+            own = set(compound_classes(entry.identity.smiles))
+        except StructureError:
+            continue
+        near = records.nearest(place, MAX_NEIGHBOURS, without_compound=True)
+        shares, _ = vote_shares([(records.entries[other], cosine) for other, cosine in near])
+        best = max((cosine for _, cosine in near), default=0.0)
+        met = met_rules(spectrum_facts(entry.spectrum, entry.acquisition))
+        names = {rule.compound_class for rule in met}
+        for name in sorted(set(shares) | names):
+            texts = frozenset(f"{rule.compound_class}: {rule.text}" for rule in met if rule.compound_class == name)
+            rows.append((name in own, shares.get(name, 0.0), best, texts, name))
+    return rows
+
+
+def rule_ratios(records: OpenRecords, count: int, seed: int = SEED) -> dict[str, tuple[float, int, int]]:
+    """ln ratio of how often each rule is met within its class and outside, with the numbers of spectra that met it."""
+    rng = np.random.default_rng(seed)
+    inside, outside = Counter[str](), Counter[str]()
+    members, others = Counter[str](), Counter[str]()
+    texts = {f"{rule.compound_class}: {rule.text}": rule.compound_class for rule in RULES}
+    for place in rng.permutation(len(records.entries))[:count].tolist():
+        entry = records.entries[place]
+        try:
+            own = set(compound_classes(entry.identity.smiles)) if entry.identity.smiles else set()
+        except StructureError:
+            continue
+        if not own:
+            continue
+        if "TMS" in entry.measured_as:
+            own.add("TMS derivative")
+        met = {
+            f"{rule.compound_class}: {rule.text}"
+            for rule in met_rules(spectrum_facts(entry.spectrum, entry.acquisition))
+        }
+        for text, name in texts.items():
+            (members if name in own else others)[text] += 1
+            (inside if name in own else outside)[text] += text in met
+    return {
+        text: (
+            math.log(((inside[text] + 0.5) / (members[text] + 1)) / ((outside[text] + 0.5) / (others[text] + 1))),
+            inside[text],
+            outside[text],
+        )
+        for text in texts
+    }
+
+
+def fit_logistic(design: NDArray[np.float64], truth: NDArray[np.float64], ridge: float = 1.0) -> NDArray[np.float64]:
+    """Coefficients of a logistic regression by Newton's method with a ridge."""
+    beta = np.zeros(design.shape[1])
+    for _ in range(50):
+        chance = 1.0 / (1.0 + np.exp(-design @ beta))
+        curvature = design.T @ (design * (chance * (1 - chance))[:, None]) + ridge * np.eye(design.shape[1])
+        beta += np.linalg.solve(curvature, design.T @ (truth - chance) - ridge * beta)
+    return beta
+
+
+def class_design(
+    rows: list[tuple[bool, float, float, frozenset[str], str]], ratios: dict[str, float]
+) -> NDArray[np.float64]:
+    """Columns of `identify.evidence.classes.class_probability`."""
+    share = np.clip([row[1] for row in rows], 0.01, 0.99)
+    ions = [max((ratios.get(text, 0.0) for text in row[3]), default=0.0) for row in rows]
+    return np.stack([np.ones(len(rows)), np.log(share / (1 - share)), [row[2] for row in rows], ions], axis=1)
+
+
+def fit_classes(records: OpenRecords) -> None:
+    """Write the calibration of class votes and the worth of characteristic ions."""
+    ratios = rule_ratios(records, 6000)
+    rows = class_rows(records, 1500)
+    values = {text: max(ratio, 0.0) for text, (ratio, _, _) in ratios.items()}
+    beta = fit_logistic(class_design(rows, values), np.array([row[0] for row in rows], float))
+    lines = [
+        '"""Calibration of class votes and worth of characteristic ions.',
+        "",
+        f"{PROVENANCE}",
+        "by `tests/benchmarks/fit_evidence.py classes`, the compound removed from the library.",
+        '"""',
+        "",
+        "from __future__ import annotations",
+        "",
+        f"CALIBRATION = ({', '.join(f'{value:.3f}' for value in beta)})",
+        '"""Constant, logit of the share of votes, best cosine, ln ratio of characteristic ions."""',
+        "RULE_LOG_RATIO: dict[str, float] = {",
+        *(
+            f'    "{text}": {max(ratio, 0.0):.2f},  # met by {a} of the class, {b} others'
+            for text, (ratio, a, b) in ratios.items()
+        ),
+        "}",
+        '"""ln of how much more often spectra of the class meet the rule; 0 for a rule that does not help."""',
+        "",
+    ]
+    (ROOM / "class_model.py").write_text("\n".join(lines), encoding="utf-8")
+
+
+TASKS = {"carbons": fit_carbons, "weights": fit_weights, "classes": fit_classes}
+
 if __name__ == "__main__":
-    {"carbons": fit_carbons, "weights": fit_weights}[sys.argv[1]](load_open_records())
+    TASKS[sys.argv[1]](load_open_records())
