@@ -136,6 +136,8 @@ def _claim_group(
     names = tuple(candidate.entry.identity.name for candidate in named)
     unlisted, more = _count_unlisted(members)
     text = f"One of the isomers of {formula} ({percent(levels[1])}): {'; '.join(names)}"
+    if len(members) == 1 and unlisted == 0:
+        text += ", the only one of its kind; isomers of another kind are not excluded"
     if unlisted:
         text += f"; or one of {more}{unlisted} without an entry here"
     return _claim(ClaimLevel.ISOMER_GROUP, f"{text}.", levels[1], names, levels, unlisted=unlisted)
