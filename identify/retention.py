@@ -16,6 +16,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from identify.errors import FormatError, InputError, quote
+from identify.records import Entry
 
 LOWEST_INDEX = 100.0
 HIGHEST_INDEX = 6000.0
@@ -343,3 +344,40 @@ def out_of_order(series: Sequence[tuple[int, float]]) -> tuple[int, ...]:
     rest = [index - slope * length for length, index in series]
     middle = sorted(rest)[len(rest) // 2]
     return tuple(place for place, value in enumerate(rest) if abs(value - middle) > SERIES_LIMIT)
+
+
+def find_suspect_indices(entries: Iterable[Entry]) -> dict[int, str]:
+    """Entries of a library whose retention index should not be used, with the reason.
+
+    Parameters
+    ----------
+    entries : iterable of Entry
+
+    Returns
+    -------
+    dict of int to str
+        By entry id. Entries without an index are not listed.
+
+    Notes
+    -----
+    Besides single values (`doubt_about_index`), homologues are compared: entries whose SMILES differ in the length of carbon
+    chains only, measured as the same derivative on the same phase class, must rise by about 100 units for each CH2.
+    """
+    suspects: dict[int, str] = {}
+    series: dict[tuple[str, str, str], list[tuple[int, float, int]]] = {}
+    for entry in entries:
+        retention = entry.retention
+        if retention.index is None:
+            continue
+        doubt = doubt_about_index(retention.index, retention.time_s)
+        if doubt:
+            suspects[entry.id] = doubt
+            continue
+        key, length = series_key(entry.identity.smiles)
+        phase = retention.phase or phase_class(retention.column)
+        if key and phase:
+            series.setdefault((key, phase, entry.measured_as), []).append((length, retention.index, entry.id))
+    for members in series.values():
+        for place in out_of_order([(length, index) for length, index, _ in members]):
+            suspects[members[place][2]] = "the index is out of order within its homologous series"
+    return suspects

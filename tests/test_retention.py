@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
 from identify.errors import FormatError, InputError
+from identify.records import Entry, Retention
 from identify.retention import (
     build_ladder,
     doubt_about_index,
+    find_suspect_indices,
     kovats_index,
     linear_index,
     out_of_order,
@@ -17,6 +21,7 @@ from identify.retention import (
     phase_class,
     series_key,
 )
+from tests.builders import build_entry
 
 HARRIS = build_ladder([(8, 14.3), (9, 18.5)])
 WIDE = build_ladder([(10, 8.0), (12, 11.0)])
@@ -146,3 +151,25 @@ def test_open_indices_of_straight_chain_phthalates_raise_no_alarm() -> None:
     """
     assert out_of_order([(2, 1451.7), (4, 1587.3), (8, 1953.0)]) == ()
     assert out_of_order([(2, 1451.7), (4, 1587.3), (8, 1953.0), (16, 2504.0)]) == ()
+
+
+def test_suspect_indices_of_a_library_are_listed_with_their_reason() -> None:
+    def entry(
+        number: int, smiles: str, index: float | None, time_s: float | None = None, column: str = "DB-5"
+    ) -> Entry:
+        plain = build_entry(smiles, {43: 1.0}, entry_id=number, smiles=smiles)
+        return replace(plain, retention=Retention(time_s, index, "", column))
+
+    entries = [
+        *(entry(n, "C" * n + "O", 100.0 * n + 270.0) for n in range(4, 10)),
+        entry(20, "C" * 10 + "O", 900.0),
+        entry(21, "C" * 11 + "O", 900.0, column="DB-WAX"),
+        entry(22, "CCO", 0.0),
+        entry(23, "CCO", 910.38, 910.38),
+        entry(24, "CCO", None),
+    ]
+    assert find_suspect_indices(entries) == {
+        20: "the index is out of order within its homologous series",
+        22: "the index is 0",
+        23: "the index equals the retention time",
+    }
