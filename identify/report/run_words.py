@@ -168,8 +168,8 @@ def follow_up_plans(runs: Sequence[RunFindings]) -> tuple[Plan, ...]:
                 ranked.append((weight, Plan(run.number, finding.component.number, _minutes(finding), plan)))
     ranked.sort(key=lambda pair: -pair[0])
     chosen: dict[str, Plan] = {}
-    for _, plan in ranked:
-        chosen.setdefault(plan.plan.action, plan)
+    for _, proposed in ranked:
+        chosen.setdefault(proposed.plan.action, proposed)
         if len(chosen) == MAX_PLANS:
             break
     return tuple(chosen.values())

@@ -8,16 +8,20 @@ same way on four folds of compounds and measures on the fifth.
 
 from __future__ import annotations
 
+import pprint
 import tempfile
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from datetime import UTC, datetime
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
-from ranking_data import ABSENT_SHARE, Benchmark
+from ranking_data import ABSENT_SHARE, N_FOLDS, Benchmark, load_benchmark
 from ranking_fit import Alternatives, fit_choice
 
+from identify.chem.structures import compound_classes
+from identify.errors import StructureError
 from identify.evidence.facts import build_query_facts, formula_facts
 from identify.evidence.gather import gather_evidence
 from identify.evidence.molecular_ion import estimate_molecular_ion
@@ -25,13 +29,14 @@ from identify.index import SearchIndex
 from identify.ranking.alternatives import ELSEWHERE_NAMES, UNLISTED_NAMES, group_isomers
 from identify.ranking.features import compare_with_entries
 from identify.ranking.grouping import compound_key
-from identify.ranking.model import Linear, RankingModel, mass_log_odds
+from identify.ranking.model import Linear, RankingModel, as_coefficients, mass_log_odds
 from identify.ranking.shortlist import shortlist
 from identify.settings import Settings
 
 ROOM = Path(__file__).resolve().parents[2] / "identify" / "ranking"
 SCRATCH = Path(tempfile.gettempdir()) / "ionwitness-benchmark"
 RIDGE_SPECTRA, RIDGE_REST = 5.0, 2.0
+PROVENANCE = "tests/benchmarks/fit_ranking.py on the open EI records (MassBank release 2025.05.1), by compound"
 Floats = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
@@ -60,6 +65,8 @@ class Trial:
     right: Mask
     isomer: Mask
     """Drafts that are isomers of the answer."""
+    place: int
+    """Place of the query among the records."""
 
 
 def collect_entry_rows(bench: Benchmark, index: SearchIndex, settings: Settings, places: Sequence[int]) -> EntryRows:
@@ -102,7 +109,12 @@ def spectra_only(linear: Linear) -> RankingModel:
     return RankingModel("", linear, 1.0, {}, 0.0, silent_u, silent_e, 0.0)
 
 
-KINDS: list[str] = []
+KINDS = (
+    "molecular ion", "isotope pattern", "halogens in fragments", "carbon count", "losses from M", "ions above M",
+    "nitrogen rule and rings", "intensity explained", "ions missing in the query", "ions only in the query", "accurate mass",
+    "retention index",
+)  # fmt: skip
+"""Kinds of evidence weighed, in the order of the columns."""
 
 
 def collect_trials(
@@ -115,20 +127,21 @@ def collect_trials(
         own, key = bench.entries[place].id, bench.keys[place]
         asked = bench.query(place)
         matches = bench.find(index, asked, settings, (own,))
+        facts, seen = build_query_facts(asked), {}
         for absent in (False, True):
             kept = [match for match in matches if not absent or bench.key_of[match.entry.id] != key]
+            drafts = shortlist(asked.spectrum, kept, settings, model)
+            for draft in drafts:
+                if draft.entry.id not in seen:
+                    seen[draft.entry.id] = gather_evidence(asked, draft.entry, draft.aligned, settings, facts)
             share = ABSENT_SHARE if absent else 1 - ABSENT_SHARE
-            trials.append(_trial(bench, place, asked, shortlist(asked.spectrum, kept, settings, model), weight * share))
+            trials.append(_trial(bench, place, asked, drafts, seen, weight * share))
     return trials
 
 
-def _trial(bench, place, asked, drafts, weight) -> Trial:  # type: ignore[no-untyped-def]
-    settings = Settings()
+def _trial(bench, place, asked, drafts, seen, weight) -> Trial:  # type: ignore[no-untyped-def]
     ion = estimate_molecular_ion(asked.spectrum, [(draft.entry, draft.cosine) for draft in drafts])
-    facts = build_query_facts(asked)
-    items = [gather_evidence(asked, draft.entry, draft.aligned, settings, facts) for draft in drafts]
-    if not KINDS:
-        KINDS.extend(item.kind for item in items[0])
+    items = [seen[draft.entry.id] for draft in drafts]
     mass = []
     for draft in drafts:
         found = formula_facts(draft.entry.formula_as_measured)
@@ -138,11 +151,12 @@ def _trial(bench, place, asked, drafts, weight) -> Trial:  # type: ignore[no-unt
         bench.fold[bench.keys[place]],
         weight,
         np.array([draft.features for draft in drafts]),
-        np.array([[item.log_odds for item in row] for row in items]),
+        np.array([[{item.kind: item.log_odds for item in row}.get(kind, 0.0) for kind in KINDS] for row in items]),
         np.array(mass),
         [draft.entry.id for draft in drafts],
         np.array([compound_key(draft.entry) == bench.keys[place] for draft in drafts]),
         np.array([is_isomer(draft.entry, truth) for draft in drafts]),
+        place,
     )
 
 
@@ -199,19 +213,40 @@ def fit_model(bench: Benchmark, rows: EntryRows, trials: Sequence[Trial], folds:
         alt.phi, phi_mean, phi_spread = _standardised(alt.phi)
         alt.z, z_mean, z_spread = _standardised(alt.z)
         nw, nb, nd = alt.x.shape[1], alt.phi.shape[1], alt.z.shape[1]
-        ridge = np.r_[0.1, np.full(nw - 1, RIDGE_REST), 0.0, np.full(nb - 1, RIDGE_REST), 0.0, np.full(nd - 1, RIDGE_REST)]
+        ridge = np.r_[
+            0.1, np.full(nw - 1, RIDGE_REST), 0.0, np.full(nb - 1, RIDGE_REST), 0.0, np.full(nd - 1, RIDGE_REST)
+        ]
         theta = alt.fit(ridge, np.r_[w, np.zeros(nb + nd)])
         w, b, d = theta[:nw], theta[nw : nw + nb], theta[nw + nb :]
     return RankingModel(
-        provenance="",
+        provenance=PROVENANCE,
         spectra=spectra,
         spectra_weight=float(w[0]),
         evidence_weights=dict(zip(KINDS, w[1:-1].tolist(), strict=True)),
         mass_weight=float(w[-1]),
         unlisted=Linear(float(b[0]), tuple((b[1:] / phi_spread).tolist()), tuple(phi_mean.tolist())),
         elsewhere=Linear(float(d[0]), tuple((d[1:] / z_spread).tolist()), tuple(z_mean.tolist())),
-        same_class=0.0,
+        same_class=_same_class(bench, used, spectra, w),
     )
+
+
+def _same_class(bench: Benchmark, trials: Sequence[Trial], spectra: Linear, w: Floats) -> float:
+    """Share of queries without a listed compound or isomer whose compound has the best candidate's most telling class."""
+    hits: list[bool] = []
+    for trial in trials:
+        if trial.right.any() or trial.isomer.any():
+            continue
+        log_odds = np.column_stack([spectra.value(trial.features), trial.evidence, trial.mass]) @ w
+        best = _classes(bench.by_id[trial.entries[int(np.argmax(log_odds))]].identity.smiles)
+        hits.append(bool(best) and best[0] in _classes(bench.entries[trial.place].identity.smiles))
+    return float(np.mean(hits)) if hits else 0.0
+
+
+def _classes(smiles: str) -> tuple[str, ...]:
+    try:
+        return compound_classes(smiles) if smiles else ()
+    except StructureError:
+        return ()
 
 
 def collect(bench: Benchmark, settings: Settings) -> tuple[EntryRows, list[Trial]]:
@@ -219,5 +254,39 @@ def collect(bench: Benchmark, settings: Settings) -> tuple[EntryRows, list[Trial
     index = bench.build_index(settings)
     places = bench.queries + bench.extra
     rows = collect_entry_rows(bench, index, settings, places)
-    model = spectra_only(fit_spectra(rows, range(5)))
+    model = spectra_only(fit_spectra(rows, range(N_FOLDS)))
     return rows, collect_trials(bench, index, settings, places, model)
+
+
+def write_coefficients(model: RankingModel, path: Path) -> None:
+    """The module of numbers that the package ships."""
+    table = pprint.pformat(_rounded(as_coefficients(model)), width=110, sort_dicts=False)
+    path.write_text(
+        '"""Coefficients of the ranking, written by `tests/benchmarks/fit_ranking.py`; not edited by hand.\n\n'
+        'Each feature has its weight and its centre.\n"""\n\n'
+        "from __future__ import annotations\n\nfrom typing import Any, Final\n\n"
+        f"COEFFICIENTS: Final[dict[str, Any]] = {table}\n",
+        encoding="utf-8",
+    )
+
+
+def _rounded(value):  # type: ignore[no-untyped-def]
+    """Numbers with five significant digits."""
+    if isinstance(value, dict):
+        return {key: _rounded(item) for key, item in value.items()}
+    if isinstance(value, tuple):
+        return tuple(_rounded(item) for item in value)
+    return float(f"{value:.5g}") if isinstance(value, float) else value
+
+
+def main() -> None:
+    """Fit on all compounds and write the coefficients."""
+    bench = load_benchmark()
+    rows, trials = collect(bench, Settings())
+    model = fit_model(bench, rows, trials, range(N_FOLDS))
+    dated = f"{PROVENANCE}; {len(bench.fold)} compounds, {len(trials)} trials; {datetime.now(UTC):%Y-%m-%d}"
+    write_coefficients(replace(model, provenance=dated), ROOM / "coefficients.py")
+
+
+if __name__ == "__main__":
+    main()

@@ -26,8 +26,11 @@ SEED = 20250501
 
 
 def same_form(a: Entry, b: Entry) -> bool:
-    """Measured as the same derivative, as far as the sources say."""
-    return a.measured_as == b.measured_as or "n " in (a.measured_as[:2], b.measured_as[:2])
+    """Measured as the same derivative, as far as the sources say (`n TMS` fits any number of TMS groups)."""
+    if a.measured_as == b.measured_as:
+        return True
+    (n_a, _, group_a), (n_b, _, group_b) = (x.measured_as.rpartition(" ") for x in (a, b))
+    return bool(group_a) and group_a == group_b and "n" in (n_a, n_b)
 
 
 @dataclass(eq=False)

@@ -17,6 +17,8 @@ from scipy.optimize import minimize
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
+LOW = -1e30
+"""Log-odds of what cannot be."""
 
 
 def fit_choice(x: Floats, query: Ints, right: NDArray[np.bool_], weight: Floats, ridge: float) -> Floats:
@@ -42,7 +44,8 @@ class Alternatives:
     Attributes
     ----------
     x, group, query, right : candidates: features, group (global number), query, whether it is the answer
-    phi, group_query, group_right : groups: features, query, whether the answer is an isomer of it without an entry
+    phi, group_query, group_right, known : groups: features, query, whether the answer is an isomer of it without an entry,
+        whether its formula is known (an isomer without an entry can only be spoken of then)
     z, else_right, weight : queries: features, whether the answer is something else, weight
     """
 
@@ -53,6 +56,7 @@ class Alternatives:
     phi: Floats
     group_query: Ints
     group_right: NDArray[np.bool_]
+    known: NDArray[np.bool_]
     z: Floats
     else_right: NDArray[np.bool_]
     weight: Floats
@@ -65,7 +69,8 @@ class Alternatives:
         np.maximum.at(top, self.group, s)
         e = np.exp(s - top[self.group])
         whole = np.bincount(self.group, e, minlength=n)
-        return s, np.log(whole) + top + self.phi @ b, self.z @ d, e / whole[self.group]
+        unlisted = np.where(self.known, np.log(whole) + top + self.phi @ b, LOW)
+        return s, unlisted, self.z @ d, e / whole[self.group]
 
     def probabilities(self, w: Floats, b: Floats, d: Floats) -> tuple[Floats, Floats, Floats]:
         """Probabilities of candidates, of unlisted isomers of each group, and of something else."""
@@ -88,9 +93,8 @@ class Alternatives:
         w, b, d = theta[:nw], theta[nw : nw + nb], theta[nw + nb :]
         s, a, o, share = self.scores(w, b, d)
         norm = self._log_norm(s, a, o)
-        low = -1e30
         good = self._log_norm(
-            np.where(self.right, s, low), np.where(self.group_right, a, low), np.where(self.else_right, o, low)
+            np.where(self.right, s, LOW), np.where(self.group_right, a, LOW), np.where(self.else_right, o, LOW)
         )
         value = -(self.weight * (good - norm)).sum() + 0.5 * (ridge * theta * theta).sum()
         g = good
