@@ -1,0 +1,47 @@
+from __future__ import annotations
+
+import numpy as np
+import pytest
+
+from identify.ranking.coefficients import COEFFICIENTS
+from identify.ranking.features import NAMES
+from identify.ranking.model import HEADINGS, as_coefficients, build_model, default_model, explain_spectra, mass_log_odds
+from identify.records import MassEstimate, MolecularIonEstimate
+
+
+def test_the_shipped_model_says_where_it_comes_from() -> None:
+    provenance = default_model().provenance
+    assert "fit_ranking.py" in provenance and "2025.05.1" in provenance
+
+
+def test_a_model_survives_its_table() -> None:
+    assert as_coefficients(build_model(as_coefficients(default_model()))) == as_coefficients(default_model())
+    assert default_model().provenance == COEFFICIENTS["provenance"]
+
+
+def test_a_table_that_lacks_a_feature_is_refused() -> None:
+    broken = as_coefficients(default_model())
+    broken["spectra"] = {"constant": 0.0, "features": {}}
+    with pytest.raises(KeyError):
+        build_model(broken)
+
+
+def test_the_explanation_of_the_spectra_is_their_log_odds() -> None:
+    model = default_model()
+    row = np.random.default_rng(4).uniform(0, 1, len(NAMES))
+    assert explain_spectra(model, row).value == pytest.approx(float(model.spectra.value(row)))
+
+
+def test_every_feature_is_shown_under_one_heading_and_no_name_counts_records() -> None:
+    shown = [
+        part.label for heading in explain_spectra(default_model(), np.zeros(len(NAMES))).parts for part in heading.parts
+    ]
+    assert sorted(shown) == sorted(NAMES)
+    assert set(HEADINGS) == {part.label for part in explain_spectra(default_model(), np.zeros(len(NAMES))).parts}
+    assert not [name for name in NAMES if "record" in name or "replicate" in name or "entries" in name]
+
+
+def test_the_likelier_mass_weighs_more_and_an_unnamed_one_nothing() -> None:
+    ion = MolecularIonEstimate((MassEstimate(106, 0.8, ()), MassEstimate(120, 0.1, ())), 0.1)
+    assert mass_log_odds(106, ion) == pytest.approx(np.log(40.0))
+    assert mass_log_odds(106, ion) > mass_log_odds(120, ion) > mass_log_odds(99, ion) == 0.0
