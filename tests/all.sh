@@ -18,4 +18,4 @@ export OMP_NUM_THREADS=1
 "$venv/bin/ruff" check .
 "$venv/bin/ruff" format --check --quiet .
 "$venv/bin/mypy"
-"$venv/bin/python" -m pytest --numprocesses "${IONWITNESS_TEST_WORKERS:-2}" --dist loadgroup "$@"
+"$venv/bin/python" -m pytest --numprocesses "${IONWITNESS_TEST_WORKERS:-2}" --dist loadgroup -m "not long" "$@"

@@ -72,14 +72,17 @@ class MassProblem:
 
     @cached_property
     def raw_pad(self) -> FloatArray:
+        """`relative` on the padded axis."""
         return padded(self.relative)
 
     @cached_property
     def pad(self) -> FloatArray:
+        """`corrected` on the padded axis."""
         return padded(self.corrected)
 
     @cached_property
     def tops(self) -> IntArray:
+        """`highest_ions` of the query, shape (4,)."""
         result: IntArray = highest_ions(self.corrected[None, :])[0]
         return result
 

@@ -28,7 +28,7 @@ from identify.settings import Weighting
 
 WORK = Path(__file__).with_name("faulty_work.py")
 ROOT = Path(__file__).resolve().parents[2]
-MOMENTS = [3, pytest.param(70, marks=pytest.mark.slow)]
+MOMENTS = [3, pytest.param(70, marks=pytest.mark.long)]
 """Kills per test: three tests of 70 are the 200 random moments."""
 
 
