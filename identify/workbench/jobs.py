@@ -52,6 +52,7 @@ class JobRunner:
         self._desk = desk
         self._limits, self._run_limits = limits or Limits(), run_limits
         self._work = threading.Condition()
+        self._identifying = threading.Lock()
         self._is_over = False
         self._cancelled: set[int] = set()
         self._processes: dict[int, IntakeProcess] = {}
@@ -186,7 +187,9 @@ class JobRunner:
 
     def _identify_one(self, record: SpectrumRecord, number: int, rejected: list[Rejection]) -> NewQuery | None:
         try:
-            document = identify_record(self._desk, record, number)
+            # Two at once would gain nothing in one process, and keep the pages waiting twice as often.
+            with self._identifying:
+                document = identify_record(self._desk, record, number)
         except SpectrumError as error:
             source = record.source
             rejected.append(

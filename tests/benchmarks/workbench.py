@@ -81,6 +81,10 @@ class Person(threading.Thread):
         while len(mine) < len(self.texts):
             told = self.client.get("/api/work-list", params={"text": f"{self.name} "}).json()
             mine = {row["id"]: row["result_id"] for row in told["queries"]}
+            failed = [job for job in told["jobs"] if job["state"] == "failed"]
+            if failed:
+                self.faults.append(f"job: {failed[0]['message'][:200]}")
+                return
             self.look()
         for query, result in mine.items():
             self.look(query)

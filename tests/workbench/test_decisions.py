@@ -19,7 +19,7 @@ def toluene_like(bench: Bench) -> int:
 
 def test_an_acceptance_names_candidate_level_and_entry(bench: Bench, toluene_like: int) -> None:
     hit = bench.query(toluene_like)["result"]["queries"][0]["hits"][0]
-    answer = bench.decide(toluene_like, kind="accept", level="class", candidate=1)
+    answer = bench.decide(toluene_like, kind="accept", level="class", candidate=1, note="terpenes by smell")
     assert answer.status_code == 201
     made = answer.json()["decision"]
     assert (made["compound"], made["accession"], made["who"], made["level"]) == (

@@ -10,6 +10,7 @@ import jsonschema
 import pytest
 from bench import Bench
 
+from identify.report.words import signed_text
 from identify.writers.results_json import load_schema
 
 PAGES = (
@@ -92,7 +93,7 @@ def test_the_page_and_its_twin_say_the_same(used_bench: Bench) -> None:
         assert hit["name"] in page
     assert data["query"]["statement"] in page
     # The tree of the first candidate shows the value that the twin gives, to two decimals.
-    assert f"{hits[0]['explanation']['value']:+.2f}" in page
+    assert signed_text(hits[0]["explanation"]["value"]) in page
 
 
 def test_a_result_is_kept_as_the_result_contract(used_bench: Bench) -> None:
