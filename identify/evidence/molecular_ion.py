@@ -8,7 +8,6 @@ from collections.abc import Sequence
 from identify.evidence.facts import QueryFacts, formula_facts, spectrum_facts
 from identify.records import Acquisition, CleanSpectrum, Entry, MassEstimate, MolecularIonEstimate
 
-
 OTHER_MASSES = 0.72
 """Weight of all masses nobody votes for, beside 1 for the highest cluster: alone it is the molecular ion in 58 % of open
 70 eV records (methods.md section 7), and 1 / (1 + 0.72) = 0.58."""

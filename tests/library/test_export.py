@@ -144,8 +144,15 @@ def test_a_thousand_open_records_survive_a_round_trip(
     open_library_file: Path, tmp_path: Path, file_format: str
 ) -> None:
     with open_library(open_library_file) as library:
-        ids = library.entry_ids()[:1000]
-        entries, records = library.get_entries(ids), library.get_records(ids)
+        # MassBank's format has no room for a peak of intensity 0; its writer says so and writes nothing.
+        positive = [
+            (entry_id, record)
+            for entry_id in library.entry_ids()[:1200]
+            for record in library.get_records([entry_id])
+            if (record.intensity > 0).all()
+        ][:1000]
+        ids, records = [pair[0] for pair in positive], [pair[1] for pair in positive]
+        entries = library.get_entries(ids)
         accessions = [entry.accession for entry in entries]
         export_entries(
             library, tmp_path / "out.txt", file_format, accessions=accessions, i_have_the_right=True, when=WHEN
