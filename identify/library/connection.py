@@ -128,7 +128,7 @@ def connect(path: Path, *, writable: bool, busy_timeout_s: float = BUSY_TIMEOUT_
         with translated(path):
             version = read_version(connection, path)
         if version != SCHEMA_VERSION:
-            raise _wrong_version(path, version)
+            raise wrong_version(path, version)
         if writable:
             with translated(path):
                 _check_rules(connection, path)
@@ -207,7 +207,8 @@ def read_version(connection: sqlite3.Connection, path: Path) -> int:
     return int(version)
 
 
-def _wrong_version(path: Path, version: int) -> LibraryVersionError:
+def wrong_version(path: Path, version: int) -> LibraryVersionError:
+    """The refusal of a library of another schema version, with what to do about it."""
     newer = version > SCHEMA_VERSION
     hint = (
         "Update ionwitness to open it."

@@ -13,7 +13,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from identify.errors import LibraryDamaged
-from identify.library.connection import connect_any_version, read_version, translated
+from identify.library.connection import connect_any_version, read_version, translated, wrong_version
 from identify.library.events import Event, find_chain_fault, read_events, sha256_of
 from identify.library.insertion import digest_of
 from identify.library.reported import find_reported_fault
@@ -94,6 +94,8 @@ def verify_library(path: Path | str, *, progress: Progress | None = None) -> Ver
     try:
         with translated(path):
             version = read_version(connection, path)
+            if version > SCHEMA_VERSION:
+                raise wrong_version(path, version)
             for problem in _find_problems(connection, version, progress):
                 problems.append(problem)
                 if len(problems) >= MAX_PROBLEMS:
