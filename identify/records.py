@@ -17,19 +17,13 @@ from types import MappingProxyType
 from typing import Any
 
 import numpy as np
-from numpy.typing import ArrayLike, NDArray
 
-from identify.errors import InputError, SpectrumError
+from identify.errors import InputError
+from identify.peaks import FloatArray as FloatArray
+from identify.peaks import Peaks as Peaks
+from identify.peaks import read_only as read_only
 
-FloatArray = NDArray[np.float64]
 EMPTY: Mapping[str, str] = MappingProxyType({})
-
-
-def read_only(values: ArrayLike) -> FloatArray:
-    """Float64 copy of `values`, shape ``(n,)``, that nobody can write to."""
-    array = np.array(values, dtype=np.float64).reshape(-1)
-    array.setflags(write=False)
-    return array
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,72 +55,6 @@ class Rejection:
         """The whole sentence, in the form that all errors share."""
         where = str(Source(self.source, self.line)) if self.source else ""
         return InputError(self.reason, where=where, found=self.found, expected=self.expected, hint=self.hint).message
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Peaks:
-    """A usable peak list.
-
-    Parameters
-    ----------
-    mz : array_like of shape (n_peaks,)
-        m/z, finite, positive, strictly increasing.
-    intensity : array_like of shape (n_peaks,)
-        Intensity in any linear unit, finite, positive.
-
-    Raises
-    ------
-    SpectrumError
-        If an invariant does not hold.
-    """
-
-    mz: FloatArray
-    intensity: FloatArray
-
-    def __post_init__(self) -> None:
-        mz, intensity = read_only(self.mz), read_only(self.intensity)
-        if mz.shape != intensity.shape:
-            raise SpectrumError(
-                "peak list", found=f"{mz.size} m/z and {intensity.size} intensities", expected="as many"
-            )
-        # Few, cheap reductions: thousands of entries pass here per second. NaN fails every comparison.
-        if mz.size and not (
-            mz[0] > 0
-            and mz[-1] < np.inf
-            and (mz[1:] > mz[:-1]).all()
-            and intensity.min() > 0
-            and intensity.max() < np.inf
-        ):
-            raise _bad_peaks(mz, intensity)
-        object.__setattr__(self, "mz", mz)
-        object.__setattr__(self, "intensity", intensity)
-
-    def __len__(self) -> int:
-        return int(self.mz.size)
-
-    @property
-    def base_peak_mz(self) -> float:
-        """m/z of the most intense peak (the lowest one on a tie)."""
-        return float(self.mz[int(np.argmax(self.intensity))])
-
-    @property
-    def relative(self) -> FloatArray:
-        """Intensities with the base peak at 100."""
-        return self.intensity * (100.0 / self.intensity.max()) if self.intensity.size else self.intensity
-
-    def intensity_at(self, nominal_mz: int) -> float:
-        """Intensity at an integer m/z of a nominal peak list; 0 where there is no peak."""
-        position = int(np.searchsorted(self.mz, nominal_mz))
-        found = position < self.mz.size and self.mz[position] == nominal_mz
-        return float(self.intensity[position]) if found else 0.0
-
-
-def _bad_peaks(mz: FloatArray, intensity: FloatArray) -> SpectrumError:
-    if not (np.isfinite(mz).all() and np.isfinite(intensity).all()):
-        return SpectrumError("peak list", found="a value that is not finite", expected="finite numbers")
-    if (intensity <= 0).any():
-        return SpectrumError("peak list", found="an intensity ≤ 0", expected="positive intensities")
-    return SpectrumError("peak list", found="m/z out of order", expected="positive, increasing m/z")
 
 
 @dataclass(frozen=True, slots=True)
@@ -370,6 +298,61 @@ class MolecularIonEstimate:
     """Which estimators agree, in words."""
 
 
+@dataclass(frozen=True, slots=True)
+class Part:
+    """One entry's part in the explanation of a query: its share of the explained ion current, in [0, 1]."""
+
+    name: str
+    accession: str
+    share: float
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Purity:
+    """Is the query one compound? What it is made of, as far as library entries explain it.
+
+    `agrees`: one entry explains it; `conflicts`: a second one is needed; `inconclusive`: the entries explain too little.
+    """
+
+    verdict: Verdict
+    reason: str
+    parts: tuple[Part, ...] = ()
+    """Largest first."""
+    explained_share: float = 0.0
+    """Share of the query's intensity that the parts explain, in [0, 1]."""
+    misfit: tuple[float, ...] = ()
+    """Relative misfit with the best one, two and three entries."""
+    residual: Peaks | None = None
+    """What is left, in percent of the query's base peak, fit to be searched as a query; None when nothing notable is."""
+    background: tuple[str, ...] = ()
+    """Known background named among the residual ions."""
+
+
+@dataclass(frozen=True, slots=True)
+class ClassEvidence:
+    """A class or substructure the query may have, with probability in [0, 1], calibrated with the compound removed."""
+
+    name: str
+    probability: float
+    neighbours: tuple[str, ...] = ()
+    """Nearest entries of this class that voted for it."""
+    ions: tuple[str, ...] = ()
+    """Characteristic ions met, with their source."""
+
+
+@dataclass(frozen=True, slots=True)
+class Analogue:
+    """An entry whose spectrum becomes the query's when its fragments are shifted by a mass difference."""
+
+    name: str
+    accession: str
+    shift: int
+    """Query minus analogue, in Da."""
+    text: str
+    """The difference in words, such as "plus CH2"."""
+    score: float
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Candidate:
     """A compound proposed for a query: its best entry, exact scores, evidence, probability and the reason for each."""
@@ -440,6 +423,12 @@ class Identification:
     candidates: tuple[Candidate, ...]
     follow_up: tuple[FollowUp, ...] = ()
     notes: tuple[str, ...] = ()
+    purity: Purity | None = None
+    """None when not assessed, for a result of an older version."""
+    classes: tuple[ClassEvidence, ...] = ()
+    """Most probable first; looked for where no compound or isomer group can be claimed."""
+    analogues: tuple[Analogue, ...] = ()
+    """Best first; looked for where no compound or isomer group can be claimed."""
 
 
 @dataclass(frozen=True, slots=True)

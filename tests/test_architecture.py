@@ -13,6 +13,7 @@ PACKAGE = Path(__file__).resolve().parent.parent / "identify"
 
 LAYERS: dict[str, float] = {
     "errors": 0,
+    "peaks": 0.5,  # the lowest noun, offered by records
     "records": 1,
     "settings": 1,
     "chem": 2,

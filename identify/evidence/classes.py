@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections import defaultdict
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 from identify.chem.structures import compound_classes
 from identify.errors import StructureError
@@ -13,7 +12,7 @@ from identify.evidence.class_ions import RULES, ClassRule
 from identify.evidence.class_model import CALIBRATION, RULE_LOG_RATIO
 from identify.evidence.facts import QueryFacts
 from identify.evidence.shifted import ShiftedMatch
-from identify.records import Entry
+from identify.records import Analogue, ClassEvidence, Entry
 
 MAX_NEIGHBOURS = 20
 NEIGHBOUR_POWER = 8
@@ -28,37 +27,6 @@ SHIFTS = {
     -78: "hydrogen for bromine", 114: "plus tert-butyldimethylsilyl (for hydrogen)",
 }  # fmt: skip
 """Formula changes usually behind a mass difference; several can share a nominal one."""
-
-
-@dataclass(frozen=True, slots=True)
-class ClassEvidence:
-    """One class the query may belong to.
-
-    Attributes
-    ----------
-    name : str
-    probability : float
-        Calibrated on open records with the compound removed.
-    neighbours : tuple of str
-        Nearest entries of this class that voted for it.
-    ions : tuple of str
-        Characteristic ions met, with their source.
-    """
-
-    name: str
-    probability: float
-    neighbours: tuple[str, ...]
-    ions: tuple[str, ...]
-
-
-@dataclass(frozen=True, slots=True)
-class Analogue:
-    """A library entry whose spectrum becomes the query's when its fragments are shifted by a mass difference."""
-
-    entry: Entry
-    shift: int
-    text: str
-    score: float
 
 
 def met_rules(facts: QueryFacts) -> tuple[ClassRule, ...]:
@@ -212,4 +180,13 @@ def find_analogues(matches: Sequence[ShiftedMatch], count: int = 5) -> tuple[Ana
         In words like 'plus CH2'.
     """
     ranked = sorted(matches, key=lambda match: -match.score)[:count]
-    return tuple(Analogue(match.entry, match.shift, describe_shift(match.shift), match.score) for match in ranked)
+    return tuple(
+        Analogue(
+            match.entry.identity.name or match.entry.accession,
+            match.entry.accession,
+            match.shift,
+            describe_shift(match.shift),
+            match.score,
+        )
+        for match in ranked
+    )

@@ -9,6 +9,8 @@ from identify.records import Verdict
 FORMULA_RULES = "nitrogen rule and rings"
 EXPLAINED = "intensity explained"
 
+LEAST_INTENSITY = 20.0
+"""Summed relative intensity below which nothing is judged."""
 RULES_SOURCE = (
     "Nitrogen rule; rings plus double bonds after Bright & Chen, J. Chem. Educ. 1983, 60, 557; "
     "weighed on open EI records"
@@ -80,19 +82,10 @@ def _count(nitrogens: int) -> str:
 
 
 def _even_share(facts: QueryFacts, mass: int) -> float | None:
-    even = odd = 0.0
-    previous = 0.0
-    for mz in range(40, min(mass - 3, len(facts.dense))):
-        value = facts.dense[mz]
-        left = value - previous * mz * 0.00085
-        previous = value
-        if left > 0:
-            if mz % 2:
-                odd += left
-            else:
-                even += left
-    total = even + odd
-    return even / total if total >= 20.0 else None
+    even_sums, odd_sums = facts.even_odd
+    stop = min(max(mass - 3, 0), len(even_sums) - 1)
+    even, odd = even_sums[stop], odd_sums[stop]
+    return even / (even + odd) if even + odd >= LEAST_INTENSITY else None
 
 
 def check_explained(facts: QueryFacts, formula: FormulaFacts | None) -> Finding:
@@ -114,17 +107,16 @@ def check_explained(facts: QueryFacts, formula: FormulaFacts | None) -> Finding:
     total = missed = 0.0
     unexplained: list[tuple[float, int]] = []
     dense, reachable = facts.dense, formula.reachable
-    for mz in range(1, min(mass + 1, len(dense))):
-        value = dense[mz]
-        if value <= 0.0:
-            continue
+    for mz, value in facts.peaks:
+        if mz > mass:
+            break
         total += value
         if not reachable[mz]:
-            left = value - 1.3 * (formula.ratio(1) * dense[mz - 1] + formula.ratio(2) * dense[mz - 2 if mz > 1 else 0])
+            left = value - 1.3 * (formula.ratio(1) * dense[mz - 1] + formula.ratio(2) * dense[max(mz - 2, 0)])
             if left > 0:
                 missed += left
                 unexplained.append((left, mz))
-    if total < 20.0:
+    if total < LEAST_INTENSITY:
         return not_assessed(EXPLAINED, "Almost nothing of the query lies at or below M.")
     share = 100.0 * missed / total
     size = next(

@@ -24,6 +24,10 @@ HEADROOM = 16
 LAST_OFFSET = 14
 """Isotope patterns are kept from M to M + 14, and four places below M (10B, selenium and metals)."""
 FIRST_OFFSET = -4
+CARBON_13_PER_DA = 0.00085
+"""13C of a peak per dalton of its mass: about one carbon for each 13 Da."""
+LEAST_FRAGMENT = 40
+"""Fragments below this m/z say little about nitrogen."""
 MAX_GROUPS = 12
 """Derivative groups tried when their number is unknown (`n TMS`)."""
 
@@ -36,8 +40,8 @@ class QueryFacts:
     ----------
     dense : tuple of float
         Relative intensity (base peak = 100) at every integer m/z from 0 to `top_mz` + `HEADROOM`.
-    array : ndarray
-        The same numbers as an array.
+    peaks : tuple of (int, float)
+        m/z and relative intensity of the peaks, by m/z.
     total : float
         Sum of `dense`.
     lowest_mz, top_mz : int
@@ -52,6 +56,8 @@ class QueryFacts:
         m/z whose intensity is clipped, as far as the spectrum shows it.
     instrument_class : str
         `sector`, `quadrupole`, `trap`, `time-of-flight`, `high-resolution` or `unknown`.
+    even_odd : tuple of two tuples of float
+        Intensity at even and at odd m/z from 40 up to below each m/z, the 13C of the peak below taken away.
     accurate_ions : tuple of (m/z, relative intensity)
         Main ions with accurate m/z; empty for a nominal-mass query.
     recalibration : Recalibration or None
@@ -59,7 +65,7 @@ class QueryFacts:
     """
 
     dense: tuple[float, ...]
-    array: FloatArray
+    peaks: tuple[tuple[int, float], ...]
     total: float
     lowest_mz: int
     top_mz: int
@@ -68,6 +74,7 @@ class QueryFacts:
     has_isotope_peaks: bool
     saturated: tuple[int, ...]
     instrument_class: str
+    even_odd: tuple[tuple[float, ...], tuple[float, ...]]
     accurate_ions: tuple[tuple[float, float], ...] = ()
     recalibration: Recalibration | None = None
 
@@ -252,7 +259,7 @@ def spectrum_facts(spectrum: CleanSpectrum, acquisition: Acquisition) -> QueryFa
     highest = acquisition.highest_mz
     return QueryFacts(
         dense=tuple(array.tolist()),
-        array=array,
+        peaks=tuple(zip(mz.tolist(), relative.tolist(), strict=True)),
         total=float(array.sum()),
         lowest_mz=spectrum.lowest_mz,
         top_mz=top,
@@ -261,9 +268,22 @@ def spectrum_facts(spectrum: CleanSpectrum, acquisition: Acquisition) -> QueryFa
         has_isotope_peaks=_has_isotope_peaks(array),
         saturated=_saturated(mz, relative),
         instrument_class=instrument_class(acquisition),
+        even_odd=_running_parity(array),
         accurate_ions=choose_ions(spectrum.accurate) if spectrum.accurate is not None else (),
         recalibration=find_recalibration(spectrum.accurate) if spectrum.accurate is not None else None,
     )
+
+
+def _running_parity(array: FloatArray) -> tuple[tuple[float, ...], tuple[float, ...]]:
+    axis = np.arange(array.size)
+    left = array.copy()
+    left[1:] -= array[:-1] * axis[1:] * CARBON_13_PER_DA
+    left = np.where(axis >= LEAST_FRAGMENT, np.maximum(left, 0.0), 0.0)
+    sums = []
+    for parity in (0, 1):
+        running = np.concatenate([[0.0], np.cumsum(np.where(axis % 2 == parity, left, 0.0))])
+        sums.append(tuple(running.tolist()))
+    return sums[0], sums[1]
 
 
 def _has_isotope_peaks(array: FloatArray) -> bool:

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from identify.evidence.facts import FormulaFacts, QueryFacts
 from identify.evidence.finding import Finding, not_assessed
-from identify.records import AlignedPeaks, Verdict
+from identify.records import AlignedPeaks, FloatArray, Verdict
 
 MISSING = "ions missing in the query"
 EXTRA = "ions only in the query"
@@ -40,11 +41,10 @@ def check_missing_ions(facts: QueryFacts, aligned: AlignedPeaks) -> Finding:
     """
     if not aligned.mz.size or not aligned.entry.any():
         return not_assessed(MISSING, "There is no m/z range that both spectra cover.")
-    absent = (aligned.query <= 0.1 * aligned.entry) & (aligned.entry >= np.maximum(NOTABLE, 2.0 * facts.floor))
-    weight = aligned.entry * aligned.mz
-    total = float(weight.sum())
-    share = float(weight[absent].sum()) / total if total else 0.0
-    named = _named(aligned.mz[absent], aligned.entry[absent])
+    absent = np.flatnonzero((aligned.query <= 0.1 * aligned.entry) & (aligned.entry >= max(NOTABLE, 2.0 * facts.floor)))
+    lost = _strongest(aligned.mz, aligned.entry, absent)
+    share = sum(mz * value for mz, value in lost) / float(aligned.entry @ aligned.mz)
+    named = _list([mz for mz, _ in lost])
     size = next(word for edge, word in ((1e-9, "none"), (0.05, "few"), (0.2, "some"), (2.0, "many")) if share <= edge)
     if size == "none":
         verdict, reason = Verdict.AGREES, "Every notable ion of the entry is in the query."
@@ -80,17 +80,13 @@ def check_extra_ions(facts: QueryFacts, aligned: AlignedPeaks, formula: FormulaF
     """
     if not aligned.mz.size or not aligned.query.any():
         return not_assessed(EXTRA, "There is no m/z range that both spectra cover.")
-    extra = (aligned.entry <= 0.1 * aligned.query) & (aligned.query >= NOTABLE)
-    known = np.array([int(mz) in BACKGROUND for mz in aligned.mz.tolist()], dtype=bool)
-    counted = extra & ~known
-    weight = aligned.query * aligned.mz
-    total = float(weight.sum())
-    share = float(weight[counted].sum()) / total if total else 0.0
-    foreign = [
-        int(mz) for mz in aligned.mz[counted].tolist() if formula is not None and not _reachable(formula, int(mz))
-    ]
-    named = _named(aligned.mz[counted], aligned.query[counted])
-    background = sorted({BACKGROUND[int(mz)] for mz in aligned.mz[extra & known].tolist()})
+    extra = np.flatnonzero((aligned.entry <= 0.1 * aligned.query) & (aligned.query >= NOTABLE))
+    found = _strongest(aligned.mz, aligned.query, extra)
+    counted = [(mz, value) for mz, value in found if mz not in BACKGROUND]
+    share = sum(mz * value for mz, value in counted) / float(aligned.query @ aligned.mz)
+    foreign = sorted(mz for mz, _ in counted if formula is not None and not _reachable(formula, mz))
+    named = _list([mz for mz, _ in counted])
+    background = sorted({BACKGROUND[mz] for mz, _ in found if mz in BACKGROUND})
     size = next(word for edge, word in ((1e-9, "none"), (0.05, "few"), (0.2, "some"), (2.0, "many")) if share <= edge)
     cell = size + (", foreign" if foreign and size in ("some", "many") else "")
     aside = f" Named background left aside: {', '.join(background)}." if background else ""
@@ -120,11 +116,10 @@ def _reachable(formula: FormulaFacts, mz: int) -> bool:
     return any(0 < place < reachable.size and bool(reachable[place]) for place in (mz, mz - 1, mz - 2))
 
 
-def _named(
-    mz: np.ndarray[tuple[int, ...], np.dtype[np.float64]], intensity: np.ndarray[tuple[int, ...], np.dtype[np.float64]]
-) -> str:
-    order = np.argsort(-intensity, kind="stable")[:5]
-    return _list([int(value) for value in mz[order].tolist()])
+def _strongest(mz: FloatArray, intensity: FloatArray, places: NDArray[np.intp]) -> list[tuple[int, float]]:
+    """The chosen peaks, strongest first."""
+    chosen = zip(mz[places].tolist(), intensity[places].tolist(), strict=True)
+    return sorted(((int(place), value) for place, value in chosen), key=lambda peak: -peak[1])
 
 
 def _list(values: list[int]) -> str:

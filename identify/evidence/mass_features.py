@@ -264,7 +264,7 @@ def _loss_similarities(problem: MassProblem) -> tuple[FloatArray, FloatArray]:
     picked = table.relative[np.arange(len(table.masses))[:, None], np.where(inside, fragment, 0)]
     rows = np.sqrt(np.where(inside, picked, 0.0))
     totals = table.relative.sum(axis=1)
-    product = query @ rows.T
+    product = np.einsum("ml,nl->mn", query, rows)  # too small for threads of a linear-algebra library to pay
     lengths = np.sqrt((query**2).sum(axis=1))[:, None] * np.sqrt((rows**2).sum(axis=1))[None, :]
     whole = np.sqrt(float(problem.relative.sum())) * np.sqrt(totals)[None, :]
     return product / np.maximum(lengths, 1e-6), product / np.maximum(whole, 1e-6)

@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
 from identify.evidence.fragments import BACKGROUND
-from identify.records import CleaningStep, CleanSpectrum, Entry, FloatArray, Peaks, Verdict
+from identify.records import CleanSpectrum, Entry, FloatArray, Part, Peaks, Purity, Verdict
 
 MAX_ENTRIES = 30
 """Entries of the hit list that are tried; a co-eluting compound below them is found by searching the residual spectrum."""
@@ -20,44 +19,6 @@ MOST_ALIKE = 0.75
 """Entries more alike than this (cosine of the weighted spectra) are one shape measured twice, not two compounds."""
 NOTABLE_RESIDUAL = 2.0
 """Residual peaks below this percentage of the base peak are not offered as a new query."""
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Part:
-    """One entry's part in the explanation: its share of the explained ion current, ions below the common range included."""
-
-    entry: Entry
-    share: float
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Purity:
-    """What the query is made of, as far as the hit list explains it.
-
-    Attributes
-    ----------
-    verdict : Verdict
-        `agrees`: one compound explains it; `conflicts`: a second one is needed; `inconclusive`: the hit list explains too little.
-    reason : str
-    parts : tuple of Part
-        Largest first.
-    explained_share : float
-        Share of the query's intensity that the parts explain, in [0, 1].
-    misfit : tuple of float
-        Relative misfit with the best one, two and three entries.
-    residual : CleanSpectrum or None
-        What is left, as a new query; None when nothing notable is.
-    background : tuple of str
-        Known background named among the residual ions.
-    """
-
-    verdict: Verdict
-    reason: str
-    parts: tuple[Part, ...]
-    explained_share: float
-    misfit: tuple[float, ...]
-    residual: CleanSpectrum | None
-    background: tuple[str, ...]
 
 
 def judge_purity(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> Purity:
@@ -84,7 +45,7 @@ def judge_purity(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> Purity:
     """
     usable = [entry for entry in entries[:MAX_ENTRIES] if len(entry.spectrum.nominal)]
     if not len(spectrum.nominal) or not usable:
-        return Purity(Verdict.NOT_ASSESSED, "There is no hit to explain the query with.", (), 0.0, (), None, ())
+        return Purity(Verdict.NOT_ASSESSED, "There is no hit to explain the query with.")
     query, matrix, axis = _common_axis(spectrum, usable)
     weight = axis / (query + 1.0)
     gram = (matrix * weight) @ matrix.T
@@ -94,7 +55,7 @@ def judge_purity(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> Purity:
     amounts = _solve(gram, target, chosen)
     fitted = amounts @ matrix[list(chosen)]
     explained = float(np.minimum(fitted, query).sum() / query.sum())
-    return _describe(spectrum, usable, chosen, amounts, query - fitted, axis, explained, misfits)
+    return _describe(usable, chosen, amounts, query - fitted, axis, explained, misfits)
 
 
 def _common_axis(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> tuple[FloatArray, FloatArray, FloatArray]:
@@ -179,7 +140,6 @@ def _best_triple(
 
 
 def _describe(
-    spectrum: CleanSpectrum,
     entries: Sequence[Entry],
     chosen: tuple[int, ...],
     amounts: FloatArray,
@@ -192,14 +152,12 @@ def _describe(
     shares = currents / currents.sum() if currents.sum() > 0 else currents
     parts = tuple(
         sorted(
-            (Part(entries[place], float(share)) for place, share in zip(chosen, shares, strict=True)),
+            (_part(entries[place], float(share)) for place, share in zip(chosen, shares, strict=True)),
             key=lambda part: -part.share,
         )
     )
-    residual, background = _residual(spectrum, left, axis)
-    names = " and ".join(
-        f"{part.entry.identity.name or part.entry.accession} ({100 * part.share:.0f} %)" for part in parts
-    )
+    residual, background = _residual(left, axis)
+    names = " and ".join(f"{part.name} ({100 * part.share:.0f} %)" for part in parts)
     if len(parts) > 1:
         verdict, reason = (
             Verdict.CONFLICTS,
@@ -216,20 +174,15 @@ def _describe(
     return Purity(verdict, reason, parts, explained, misfits, residual, background)
 
 
-def _residual(
-    spectrum: CleanSpectrum, left: FloatArray, axis: FloatArray
-) -> tuple[CleanSpectrum | None, tuple[str, ...]]:
+def _part(entry: Entry, share: float) -> Part:
+    return Part(entry.identity.name or entry.accession, entry.accession, share)
+
+
+def _residual(left: FloatArray, axis: FloatArray) -> tuple[Peaks | None, tuple[str, ...]]:
     notable = left >= NOTABLE_RESIDUAL
     known = np.array([int(mz) in BACKGROUND for mz in axis.tolist()], dtype=bool)
     named = tuple(sorted({BACKGROUND[int(mz)] for mz in axis[notable & known].tolist()}))
     kept = notable & ~known
     if np.count_nonzero(kept) < 3:
         return None, named
-    step = CleaningStep(
-        "subtract explained entries",
-        "what the entries named do not explain, as a query of its own",
-        len(spectrum.nominal),
-        int(np.count_nonzero(kept)),
-    )
-    peaks = Peaks(axis[kept], left[kept])
-    return CleanSpectrum(peaks, None, spectrum.lowest_mz, (*spectrum.steps, step)), named
+    return Peaks(axis[kept], left[kept]), named

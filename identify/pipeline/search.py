@@ -3,7 +3,7 @@
 ::
 
     open_libraries → read → per query: clean → search every index → fetch entries → shortlist (one draft per compound)
-        → evidence → rank (probability, claim, follow-up) → Identification
+        → evidence, purity → rank (probability, claim, follow-up) → classes and analogues of the unnamed → Identification
 
 This is the main path of the program. `identify.pipeline.files` puts files before it and a `Report` behind it,
 `identify.pipeline.batch` runs it on all cores, `identify.pipeline.runs` adds the way from a run to queries.
@@ -24,11 +24,13 @@ from identify.index import SearchIndex, search_index
 from identify.index.union import merge_hits
 from identify.library.cache import load_index
 from identify.library.store import Library, open_library
+from identify.pipeline.query_nature import describe_unnamed, judge_parts
 from identify.ranking.grouping import Match
 from identify.ranking.rank import rank
 from identify.ranking.shortlist import shortlist
 from identify.records import (
     Candidate,
+    CleanSpectrum,
     Entry,
     EntryStatus,
     Hit,
@@ -111,11 +113,19 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
     Identification
         At most `settings.top` candidates, best first; none when no entry shares a peak.
     """
-    drafts = shortlist(query.spectrum, _find_matches(query, libraries, settings), settings)
-    molecular_ion = estimate_molecular_ion(query.spectrum, [(draft.entry, draft.cosine) for draft in drafts])
+
+    def find(spectrum: CleanSpectrum) -> list[Match]:
+        return _find_matches(spectrum, libraries, settings)
+
+    matches = find(query.spectrum)
+    drafts = shortlist(query.spectrum, matches, settings)
+    neighbours = [(draft.entry, draft.cosine) for draft in drafts]
+    molecular_ion = estimate_molecular_ion(query.spectrum, neighbours)
     facts = build_query_facts(query)
     evidence = [gather_evidence(query, draft.entry, draft.aligned, settings, facts) for draft in drafts]
-    ranking = rank(query, drafts, evidence, molecular_ion, settings)
+    purity = judge_parts(query.spectrum, drafts, matches, find)
+    ranking = rank(query, drafts, evidence, molecular_ion, settings, purity=purity)
+    classes, analogues = describe_unnamed(query, facts, ranking.claim, purity, molecular_ion, neighbours)
     return Identification(
         query=query,
         molecular_ion=molecular_ion,
@@ -123,6 +133,9 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
         claim=ranking.claim,
         candidates=tuple(_score_accurately(query, c, settings) for c in ranking.candidates[: settings.top]),
         follow_up=ranking.follow_up,
+        purity=purity,
+        classes=classes,
+        analogues=analogues,
     )
 
 
@@ -141,12 +154,12 @@ def _score_accurately(query: Query, candidate: Candidate, settings: Settings) ->
     return replace(candidate, cosine=pair.cosine, reverse=pair.reverse, notes=(*candidate.notes, note))
 
 
-def _find_matches(query: Query, libraries: Sequence[SearchableLibrary], settings: Settings) -> list[Match]:
+def _find_matches(spectrum: CleanSpectrum, libraries: Sequence[SearchableLibrary], settings: Settings) -> list[Match]:
     """The best hits over all libraries with their entries; of equal ones own standards first, if the settings say so."""
     found: list[Sequence[Hit]] = []
     entries: list[dict[int, Entry]] = []
     for searchable in libraries:
-        hits = search_index(searchable.index, query.spectrum, settings.search_depth)
+        hits = search_index(searchable.index, spectrum, settings.search_depth)
         found.append(hits)
         entries.append({entry.id: entry for entry in searchable.library.get_entries([hit.entry_id for hit in hits])})
     own = [[key for key, entry in held.items() if entry.status is EntryStatus.OWN_STANDARD] for held in entries]

@@ -10,7 +10,7 @@ from identify.chem.structures import compound_classes
 from identify.errors import StructureError
 from identify.ranking.alternatives import Chances
 from identify.ranking.model import RankingModel
-from identify.records import Candidate, Claim, ClaimLevel, Verdict
+from identify.records import Candidate, Claim, ClaimLevel, Purity, Verdict
 from identify.settings import Settings
 
 PUBLISHED_LEVELS: Final = {
@@ -71,7 +71,11 @@ def percent(probability: float) -> str:
 
 
 def make_claim(
-    candidates: Sequence[Candidate], chances: Chances | None, model: RankingModel, settings: Settings
+    candidates: Sequence[Candidate],
+    chances: Chances | None,
+    model: RankingModel,
+    settings: Settings,
+    purity: Purity | None = None,
 ) -> Claim:
     """Strongest claim whose probability passes `settings.claim_threshold`; never `confirmed`.
 
@@ -83,6 +87,8 @@ def make_claim(
         From `identify.ranking.rank.weigh_answers`; None when there is no candidate.
     model : RankingModel
     settings : Settings
+    purity : Purity, optional
+        Where several entries are needed to explain the query, nothing is claimed about a single compound.
 
     Returns
     -------
@@ -97,6 +103,8 @@ def make_claim(
     group_key = chances.groups.keys[chances.groups.of_candidate[0]]
     class_name, class_chance = _likeliest_class(candidates, chances, model, limit)
     levels = (best.probability, chances.of_group(0), class_chance)
+    if purity is not None and purity.verdict is Verdict.CONFLICTS:
+        return _hold_back(purity, levels)
     if levels[0] >= limit:
         return _claim_compound(best, levels)
     if levels[1] >= limit and group_key:
@@ -110,6 +118,17 @@ def make_claim(
     else:
         text = f"No claim: the best match, {name}, reaches {percent(levels[0])} only."
     return _claim(ClaimLevel.NO_CLAIM, text, absent, (), levels)
+
+
+def _hold_back(purity: Purity, levels: tuple[float, float, float]) -> Claim:
+    """No claim on a mixture: the probabilities of the levels suppose that the query is one compound."""
+    number = {2: "two", 3: "three"}.get(len(purity.parts), "several")
+    names = " and ".join(f"{part.name} ({percent(part.share)} of the signal)" for part in purity.parts)
+    text = (
+        f"No claim: {number} compounds together explain this spectrum far better than one: {names}. "
+        "All probabilities suppose a single compound; take a cleaner spectrum or search what is left over."
+    )
+    return _claim(ClaimLevel.NO_CLAIM, text, 1.0 - levels[0], tuple(part.name for part in purity.parts), levels)
 
 
 def _claim_compound(best: Candidate, levels: tuple[float, float, float]) -> Claim:

@@ -21,6 +21,7 @@ from identify.records import (
     FloatArray,
     FollowUp,
     MolecularIonEstimate,
+    Purity,
     Query,
 )
 from identify.settings import Settings
@@ -69,6 +70,8 @@ def rank(
     molecular_ion: MolecularIonEstimate,
     settings: Settings,
     model: RankingModel | None = None,
+    *,
+    purity: Purity | None = None,
 ) -> Ranking:
     """Candidates in their final order with probabilities, the claim and the next measurements.
 
@@ -83,6 +86,8 @@ def rank(
     settings : Settings
     model : RankingModel, optional
         The shipped one by default.
+    purity : Purity, optional
+        A query that is no single compound gets no claim on one.
 
     Returns
     -------
@@ -117,7 +122,7 @@ def rank(
         )
         for place, draft in enumerate(drafts)
     )
-    claim = make_claim(candidates, chances, model, settings)
+    claim = make_claim(candidates, chances, model, settings, purity)
     follow_up = propose_follow_up(query, candidates, chances)
     return Ranking(candidates, float(chances.listed.sum()), claim, follow_up)
 

@@ -182,7 +182,7 @@ def show_purity(records: OpenRecords, count: int = 600) -> None:
             int(records.compounds[place])
             for place in hits
             for part in purity.parts
-            if part.entry is records.entries[place]
+            if part.accession == records.entries[place].accession
         }
         both = {int(records.compounds[first]), int(records.compounds[second])} <= named
         found[share].append((purity.verdict is Verdict.CONFLICTS, both))

@@ -120,4 +120,4 @@ def test_case_purity_names_the_parts(path: Path) -> None:
     entries = [make_entry(candidate, number) for number, candidate in enumerate(case["candidate"], start=1)]
     purity = judge_purity(make_query(case["query"]).spectrum, entries)
     assert purity.verdict.value == case["purity"]["verdict"], purity.reason
-    assert [part.entry.identity.name for part in purity.parts] == case["purity"]["parts"]
+    assert [part.name for part in purity.parts] == case["purity"]["parts"]

@@ -7,12 +7,13 @@ import pytest
 
 from identify.evidence.mass_features import (
     MassProblem,
+    all_features,
     correct_for_carbon,
     dense_of,
     highest_ions,
     neighbour_features,
 )
-from identify.evidence.mass_model import Trees, softmax
+from identify.evidence.mass_model import Trees, load_model, softmax
 from identify.evidence.molecular_ion import estimate_molecular_ion
 from identify.evidence.shifted import SPAN, build_shift_table, match_shifted
 
@@ -107,6 +108,16 @@ def test_entries_without_a_mass_do_not_vote(build) -> None:
     assert table.entries == ()
     problem = MassProblem(dense_of(build.spectrum(STEARATE)), table)
     assert all((column == 0).all() for column in neighbour_features(problem).values())
+
+
+def test_features_are_those_the_model_was_fitted_on(build) -> None:
+    table = build_shift_table(build.spectrum(STEARATE), [(build.entry(PALMITATE, "C17H34O2"), 0.9)], 5)
+    problem = MassProblem(dense_of(build.spectrum(STEARATE)), table)
+    matrix, groups = all_features(problem)
+    assert tuple(name for group in groups.values() for name in group) == load_model().names
+    assert np.isfinite(matrix).all()
+    assert 298 in problem.masses
+    assert 270 in problem.masses, "a mass that a neighbour has is proposed unless it lies far below the top"
 
 
 def test_carbon_13_is_taken_away_before_the_top_is_read() -> None:

@@ -46,7 +46,7 @@ def entries(build):
 def test_two_compounds_are_found_with_their_shares(build, entries, share: float) -> None:
     outcome = judge_purity(build.spectrum(mix((NAPHTHALENE, 1 - share), (DODECANE, share))), entries)
     assert outcome.verdict is Verdict.CONFLICTS
-    shares = {part.entry.identity.name: part.share for part in outcome.parts}
+    shares = {part.name: part.share for part in outcome.parts}
     assert shares == pytest.approx({"naphthalene": 1 - share, "dodecane": share}, abs=0.01)
     assert outcome.explained_share > 0.98
     assert outcome.residual is None
@@ -54,7 +54,7 @@ def test_two_compounds_are_found_with_their_shares(build, entries, share: float)
 
 def test_three_compounds_are_found(build, entries) -> None:
     outcome = judge_purity(build.spectrum(mix((NAPHTHALENE, 0.4), (DODECANE, 0.35), (PHENOL, 0.25))), entries)
-    assert {part.entry.identity.name for part in outcome.parts} == {"naphthalene", "dodecane", "phenol"}
+    assert {part.name for part in outcome.parts} == {"naphthalene", "dodecane", "phenol"}
 
 
 def test_pure_spectrum_needs_no_second_entry(build, entries) -> None:
@@ -66,7 +66,7 @@ def test_pure_spectrum_needs_no_second_entry(build, entries) -> None:
     }
     outcome = judge_purity(build.spectrum(noisy), entries)
     assert outcome.verdict is Verdict.AGREES
-    assert [part.entry.identity.name for part in outcome.parts] == ["naphthalene"]
+    assert [part.name for part in outcome.parts] == ["naphthalene"]
 
 
 def test_same_shape_twice_is_no_mixture(build) -> None:
@@ -80,9 +80,8 @@ def test_unknown_second_compound_is_left_as_a_new_query(build, entries) -> None:
     query = mix((NAPHTHALENE, 0.5), (PHENOL, 0.5))
     outcome = judge_purity(build.spectrum(query), entries[:2])
     assert outcome.residual is not None
-    left = set(outcome.residual.nominal.mz.astype(int).tolist())
+    left = set(outcome.residual.mz.astype(int).tolist())
     assert {94, 66, 65} <= left
-    assert outcome.residual.steps[-1].step == "subtract explained entries"
 
 
 def test_background_is_named_not_offered(build, entries) -> None:

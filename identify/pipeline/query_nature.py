@@ -1,0 +1,111 @@
+"""What is the query itself: one compound or several, and of which class when no entry names it?"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+
+from identify.evidence.classes import find_analogues, find_classes
+from identify.evidence.facts import QueryFacts
+from identify.evidence.purity import MAX_ENTRIES, judge_purity
+from identify.evidence.shifted import match_shifted
+from identify.ranking.grouping import Match, compound_key
+from identify.ranking.shortlist import Draft
+from identify.records import (
+    Analogue,
+    Claim,
+    ClaimLevel,
+    ClassEvidence,
+    CleanSpectrum,
+    Entry,
+    MolecularIonEstimate,
+    Purity,
+    Query,
+    Verdict,
+)
+
+N_DRAFTS = 18
+"""Compounds of the shortlist tried as parts; the rest of `MAX_ENTRIES` are those that the query contains best."""
+N_OF_RESIDUAL = 8
+"""Compounds found by searching the residual that are tried as further parts."""
+LITTLE_EXPLAINED = 0.85
+"""Below this explained share a residual is searched for a second compound."""
+SURE_MASS = 0.8
+"""From this probability on, the molecular mass fixes the mass difference to an analogue."""
+LEAST_ALIKE = 0.5
+"""An analogue is at least this similar after shifting."""
+N_ANALOGUES = 3
+UNNAMED = frozenset({ClaimLevel.NO_CLAIM, ClaimLevel.CLASS})
+
+Search = Callable[[CleanSpectrum], Sequence[Match]]
+
+
+def judge_parts(spectrum: CleanSpectrum, drafts: Sequence[Draft], matches: Sequence[Match], search: Search) -> Purity:
+    """Whether one compound explains the query or several, tried with the hits and with hits of what they leave over.
+
+    Parameters
+    ----------
+    spectrum : CleanSpectrum
+        The query.
+    drafts : sequence of Draft
+        Shortlist, best first.
+    matches : sequence of Match
+        All hits with their entries.
+    search : callable
+        Hits of another spectrum; called at most once, with the residual where the hits leave much unexplained.
+
+    Returns
+    -------
+    Purity
+    """
+    tried = {draft.key: draft.entry for draft in drafts[:N_DRAFTS]}
+    for match in sorted(matches, key=lambda match: -match.hit.reverse):
+        if len(tried) == MAX_ENTRIES - N_OF_RESIDUAL:
+            break
+        tried.setdefault(compound_key(match.entry), match.entry)
+    purity = judge_purity(spectrum, list(tried.values()))
+    if purity.residual is None or purity.explained_share >= LITTLE_EXPLAINED:
+        return purity
+    left = CleanSpectrum(purity.residual, None, spectrum.lowest_mz)
+    for match in sorted(search(left), key=lambda match: -match.hit.cosine):
+        if len(tried) == MAX_ENTRIES:
+            break
+        tried.setdefault(compound_key(match.entry), match.entry)
+    return judge_purity(spectrum, list(tried.values()))
+
+
+def describe_unnamed(
+    query: Query,
+    facts: QueryFacts,
+    claim: Claim,
+    purity: Purity,
+    molecular_ion: MolecularIonEstimate,
+    neighbours: Sequence[tuple[Entry, float]],
+) -> tuple[tuple[ClassEvidence, ...], tuple[Analogue, ...]]:
+    """Classes and analogues of a query for which no compound or isomer group is claimed; none for the others.
+
+    Parameters
+    ----------
+    query : Query
+    facts : QueryFacts
+    claim : Claim
+    purity : Purity
+        Of a mixture only classes are given: its fragments belong to several molecules.
+    molecular_ion : MolecularIonEstimate
+    neighbours : sequence of (Entry, cosine in [0, 1])
+        Best first.
+
+    Returns
+    -------
+    classes : tuple of ClassEvidence
+    analogues : tuple of Analogue
+        At most `N_ANALOGUES`.
+    """
+    if claim.level not in UNNAMED or not neighbours:
+        return (), ()
+    classes = find_classes(facts, neighbours)
+    if purity.verdict is Verdict.CONFLICTS:
+        return classes, ()
+    best = molecular_ion.estimates[0] if molecular_ion.estimates else None
+    mass = best.nominal_mass if best and best.probability >= SURE_MASS else None
+    matches = match_shifted(query.spectrum, neighbours, mass=mass)
+    return classes, find_analogues([match for match in matches if match.score >= LEAST_ALIKE], N_ANALOGUES)
