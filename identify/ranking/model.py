@@ -39,6 +39,16 @@ HEADINGS: Final = {
 }
 """Headings under which the spectral parts are shown, with the beginnings of the feature names they take, first match wins."""
 
+_PLACES: Final = {
+    heading: tuple(
+        place
+        for place, name in enumerate(NAMES)
+        if heading == next(key for key, starts in HEADINGS.items() if name.startswith(starts))
+    )
+    for heading in HEADINGS
+}
+"""Columns of `NAMES` under each heading."""
+
 LINEAR_PARTS: Final = {"spectra": NAMES, "unlisted": UNLISTED_NAMES, "elsewhere": ELSEWHERE_NAMES}
 """Linear parts of the model with the names of their features."""
 
@@ -145,7 +155,7 @@ def default_model() -> RankingModel:
     return build_model(COEFFICIENTS)
 
 
-def explain_spectra(model: RankingModel, features: FloatArray) -> Explanation:
+def explain_spectra(model: RankingModel, features: FloatArray, weight: float = 1.0) -> Explanation:
     """What the spectra say for one entry, under the headings of `HEADINGS`.
 
     Parameters
@@ -153,20 +163,22 @@ def explain_spectra(model: RankingModel, features: FloatArray) -> Explanation:
     model : RankingModel
     features : array of shape (n_features,)
         One row of `identify.ranking.features.compare_with_entries`.
+    weight : float
+        Factor on every part: `RankingModel.spectra_weight` where evidence speaks beside the spectra.
 
     Returns
     -------
     Explanation
-        Its value is ``model.spectra.value(features)``.
+        Its value is ``weight * model.spectra.value(features)``.
     """
-    values = model.spectra.parts(features)
-    grouped: dict[str, list[Explanation]] = {heading: [] for heading in HEADINGS}
-    for name, seen, value in zip(NAMES, features, values, strict=True):
-        heading = next(key for key, starts in HEADINGS.items() if name.startswith(starts))
-        grouped[heading].append(Explanation(name, float(value), f"{seen:.3g}"))
-    parts = [Explanation(heading, _total(found), parts=tuple(found)) for heading, found in grouped.items()]
+    values = (model.spectra.parts(features) * weight).tolist()
+    seen = features.tolist()
+    parts = []
+    for heading, places in _PLACES.items():
+        found = tuple(Explanation(NAMES[place], values[place], f"{seen[place]:.3g}") for place in places)
+        parts.append(Explanation(heading, _total(found), parts=found))
     if model.spectra.constant:
-        parts.append(Explanation("constant", model.spectra.constant))
+        parts.append(Explanation("constant", model.spectra.constant * weight))
     return Explanation("spectra", _total(parts), parts=tuple(parts))
 
 
@@ -183,7 +195,7 @@ def explain_candidate(
     ----------
     model : RankingModel
     spectra : Explanation
-        From `explain_spectra`.
+        From `explain_spectra`, weighed with `RankingModel.spectra_weight`.
     evidence : sequence of EvidenceItem
     nominal_mass : int or None
         Of the formula as measured; None when it is not known.
@@ -198,10 +210,7 @@ def explain_candidate(
         for item in evidence
         if item.log_odds
     )
-    parts = [
-        scale_explanation(spectra, model.spectra_weight),
-        Explanation("evidence", _total(told), parts=told),
-    ]
+    parts = [spectra, Explanation("evidence", _total(told), parts=told)]
     if nominal_mass is not None and molecular_ion.estimates:
         value = model.mass_weight * mass_log_odds(nominal_mass, molecular_ion)
         parts.append(Explanation("nominal mass", value, f"{nominal_mass} among the masses estimated from the query"))
@@ -223,13 +232,6 @@ def mass_log_odds(nominal_mass: int, molecular_ion: MolecularIonEstimate) -> flo
     """
     chance = sum(item.probability for item in molecular_ion.estimates if item.nominal_mass == nominal_mass)
     return float(np.log(max(chance, MASS_FLOOR) / MASS_FLOOR))
-
-
-def scale_explanation(explained: Explanation, factor: float) -> Explanation:
-    """The same tree with every value multiplied by `factor`."""
-    parts = tuple(scale_explanation(part, factor) for part in explained.parts)
-    value = _total(parts) if parts else explained.value * factor
-    return Explanation(explained.label, value, explained.detail, parts)
 
 
 def _total(parts: Sequence[Explanation]) -> float:

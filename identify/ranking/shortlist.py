@@ -27,7 +27,7 @@ class Draft:
     features : array of shape (n_features,)
         Row of `identify.ranking.features.compare_with_entries`.
     match : Explanation
-        Log-odds from the spectra alone, part by part.
+        Log-odds from the spectra as they count beside the evidence, part by part.
     n_entries : int
         Entries of this compound among the hits; shown, never used.
     """
@@ -91,7 +91,7 @@ def shortlist(
                 match.hit.cosine,
                 match.hit.reverse,
                 row,
-                explain_spectra(model, row),
+                explain_spectra(model, row, model.spectra_weight),
                 n_entries[key],
             )
         )
