@@ -12,6 +12,7 @@ from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
+from numpy.typing import NDArray
 
 from identify.chem.formula import Formula
 from identify.chem.isotopes import isotope_pattern
@@ -30,6 +31,8 @@ DECISIVE, OPEN = 12.0, 4.0
 """Differences in misfit (chi squared) beyond which an element is decided, and below which compositions count as equally good."""
 ROUNDS = 20
 """Rounds of coordinate descent; the systems are nearly triangular, so that few are needed."""
+REACH = range(-8, ABOVE - min(SHIFTS) + 1)
+"""Offsets at which patterns are worked out: from the lightest tin, through all that a shift can move into the cluster."""
 GOOD_FIT = 4.0
 """Misfit per degree of freedom above which no composition explains the cluster."""
 
@@ -82,26 +85,75 @@ def _compositions() -> Iterable[dict[str, int]]:
             yield {element: 1, **other}
 
 
-@lru_cache(maxsize=1200)
-def _patterns(mz: int) -> tuple[tuple[tuple[tuple[str, int], ...], ...], FloatArray]:
-    """Compositions that fit under a mass, and their design matrices of shape (n, offsets, shifts)."""
-    kept: list[tuple[tuple[str, int], ...]] = []
-    rows: list[FloatArray] = []
-    for composition in _compositions():
-        heavy = Formula.from_counts({symbol: count for symbol, count in composition.items() if count})
-        rest = mz - heavy.nominal_mass
-        if rest < 0:
-            continue
-        for share in (0.5, 0.9):  # part of the rest that is carbon with its hydrogens (13 Da a carbon)
-            carbon = round(share * rest / 13.0)
-            if carbon == 0 and share > 0.6:
-                continue
-            pattern = isotope_pattern(heavy + Formula.from_counts({"C": carbon}) if carbon else heavy)
-            kept.append(tuple((symbol, count) for symbol, count in composition.items() if count))
-            rows.append(
-                np.array([[pattern.at(offset - shift) for shift in SHIFTS] for offset in range(-BELOW, ABOVE + 1)])
-            )
-    return tuple(kept), np.stack(rows)
+@dataclass(frozen=True, slots=True, eq=False)
+class _Designs:
+    """Compositions that fit under a mass, and what their fits need.
+
+    Attributes
+    ----------
+    names : tuple of compositions
+    matrix : array of shape (n, offsets, shifts)
+        Pattern of each composition at each shift.
+    penalty : array of shape (n,)
+        Misfit that a composition must save to be preferred to a simpler one.
+    has : bool array of shape (elements of `LOOKED_FOR`, n)
+    """
+
+    names: tuple[tuple[tuple[str, int], ...], ...]
+    matrix: FloatArray
+    penalty: FloatArray
+    has: NDArray[np.bool_]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Compositions:
+    """All compositions tried: nominal mass, pattern at the offsets `REACH`, penalty and elements of each (see `_Designs`)."""
+
+    names: tuple[tuple[tuple[str, int], ...], ...]
+    masses: NDArray[np.int64]
+    patterns: FloatArray
+    penalty: FloatArray
+    has: NDArray[np.bool_]
+
+
+@lru_cache(maxsize=1)
+def _all_compositions() -> _Compositions:
+    names = tuple(tuple((symbol, count) for symbol, count in found.items() if count) for found in _compositions())
+    patterns = [isotope_pattern(Formula.from_counts(dict(name))) for name in names]
+    return _Compositions(
+        names,
+        np.array([pattern.nominal_mass for pattern in patterns]),
+        np.array([[pattern.at(offset) for offset in REACH] for pattern in patterns]),
+        np.array([2.0 * sum(1 + 0.2 * count for _, count in name) for name in names]),
+        np.array([[element in dict(name) for name in names] for element in LOOKED_FOR]),
+    )
+
+
+def _carbon_patterns(counts: NDArray[np.int64]) -> FloatArray:
+    """Binomial 13C patterns of numbers of carbons, shape (n, len(REACH)), relative to the all-light peak."""
+    carbon_13 = isotope_pattern(Formula((("C", 1),))).at(1)
+    columns = [np.ones(counts.size)]
+    for number in range(1, len(REACH)):
+        columns.append(columns[-1] * carbon_13 * np.maximum(counts - number + 1, 0) / number)
+    return np.stack(columns, axis=1)
+
+
+@lru_cache(maxsize=64)
+def _designs(mz: int) -> _Designs:
+    """What the compositions below a mass predict, each with half and with nine tenths of the rest as carbon."""
+    tried = _all_compositions()
+    rows = np.repeat(np.flatnonzero(tried.masses <= mz), 2)
+    share = np.tile([0.5, 0.9], rows.size // 2)  # part of the rest that is carbon with its hydrogens (13 Da a carbon)
+    carbons = np.rint(share * (mz - tried.masses[rows]) / 13.0).astype(np.int64)
+    kept = (carbons > 0) | (share < 0.6)
+    rows, carbons = rows[kept], carbons[kept]
+    pattern, light = np.zeros((rows.size, len(REACH))), tried.patterns[rows]
+    for number, fraction in enumerate(_carbon_patterns(carbons).T):
+        pattern[:, number:] += light[:, : len(REACH) - number] * fraction[:, None]
+    pattern /= pattern[:, [-REACH[0]]]
+    place = np.arange(-BELOW, ABOVE + 1)[:, None] - np.array(SHIFTS) - REACH[0]
+    names = tuple(tried.names[row] for row in rows.tolist())
+    return _Designs(names, pattern[:, place], tried.penalty[rows], tried.has[:, rows])
 
 
 def fit_cluster(facts: QueryFacts, mz: int) -> ClusterFit:
@@ -130,15 +182,15 @@ def fit_cluster(facts: QueryFacts, mz: int) -> ClusterFit:
     tallest = float(observed[BELOW - 2 :].max(initial=0.0))
     if tallest < max(3.0 * facts.floor, 1.0):
         return _undecided(mz, "The cluster is too weak for its isotope peaks to be recorded.")
-    names, design = _patterns(mz)
+    designs = _designs(mz)
     unseen = np.where(
         observed > 0, 0.5 * facts.floor, facts.floor
     )  # a peak not recorded may have been just below the floor
     sigma = np.hypot(RELATIVE_ERROR * observed, np.maximum(NOISE_PERCENT / 100.0 * tallest, unseen))
-    amounts, misfits, degrees = _fit_all(design, observed, sigma)
+    amounts, misfits, degrees = _fit_all(designs.matrix, observed, sigma)
     if not np.isfinite(misfits).any():
         return _undecided(mz, "No ion of the cluster stands at this mass.")
-    return _decide(mz, names, amounts, misfits, degrees)
+    return _decide(mz, designs, amounts, misfits, degrees)
 
 
 def _fit_all(design: FloatArray, observed: FloatArray, sigma: FloatArray) -> tuple[FloatArray, FloatArray, int]:
@@ -162,31 +214,28 @@ def _fit_all(design: FloatArray, observed: FloatArray, sigma: FloatArray) -> tup
 
 def _descend(gram: FloatArray, target: FloatArray) -> FloatArray:
     """Non-negative least squares for many small systems at once: cyclic coordinate descent."""
-    amounts = np.zeros_like(target)
-    columns = [np.ascontiguousarray(gram[:, shift]) for shift in range(len(SHIFTS))]
-    inverse = [1.0 / gram[:, shift, shift] for shift in range(len(SHIFTS))]
+    rows, wanted = np.ascontiguousarray(gram.transpose(1, 2, 0)), np.ascontiguousarray(target.T)
+    amounts = np.zeros_like(wanted)  # systems along the last axis, so that numpy works on long rows
+    inverse = [1.0 / rows[shift, shift] for shift in range(len(SHIFTS))]
     for _ in range(ROUNDS):
-        for shift, column in enumerate(columns):
-            rest = target[:, shift] - (column * amounts).sum(axis=1)
-            amounts[:, shift] = np.maximum(amounts[:, shift] + rest * inverse[shift], 0.0)
-    return amounts
+        for shift, row in enumerate(rows):
+            rest = wanted[shift] - (row * amounts).sum(axis=0)
+            amounts[shift] = np.maximum(amounts[shift] + rest * inverse[shift], 0.0)
+    return amounts.T
 
 
-def _decide(
-    mz: int, names: tuple[tuple[tuple[str, int], ...], ...], amounts: FloatArray, misfits: FloatArray, degrees: int
-) -> ClusterFit:
-    simple = misfits + np.array([2.0 * sum(1 + 0.2 * count for _, count in composition) for composition in names])
-    best = int(np.argmin(simple))
+def _decide(mz: int, designs: _Designs, amounts: FloatArray, misfits: FloatArray, degrees: int) -> ClusterFit:
+    best = int(np.argmin(misfits + designs.penalty))
+    composition = designs.names[best]
     misfit = float(misfits[best]) / degrees
     total = float(amounts[best].sum())
     parts = tuple(float(value) / total for value in amounts[best]) if total > 0 else (0.0,) * len(SHIFTS)
     if misfit > GOOD_FIT:
         reason = "No composition of the elements tried fits the cluster; it may hold more than one compound."
-        return ClusterFit(mz, names[best], (), (), LOOKED_FOR, misfit, parts, reason)
+        return ClusterFit(mz, composition, (), (), LOOKED_FOR, misfit, parts, reason)
     supported, excluded, undecided = [], [], []
     scale = max(misfit, 1.0)
-    for element in LOOKED_FOR:
-        has = np.array([any(symbol == element for symbol, _ in composition) for composition in names])
+    for element, has in zip(LOOKED_FOR, designs.has, strict=True):
         with_it = float(misfits[has].min(initial=np.inf))
         without = float(misfits[~has].min(initial=np.inf))
         if with_it - without > DECISIVE * scale:
@@ -195,7 +244,7 @@ def _decide(
             supported.append(element)
         else:
             undecided.append(element)
-    return ClusterFit(mz, names[best], tuple(supported), tuple(excluded), tuple(undecided), misfit, parts)
+    return ClusterFit(mz, composition, tuple(supported), tuple(excluded), tuple(undecided), misfit, parts)
 
 
 def _undecided(mz: int, reason: str) -> ClusterFit:
