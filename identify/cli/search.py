@@ -8,14 +8,15 @@ from typing import TYPE_CHECKING
 
 import click
 
-from identify.cli.options import FILE, MAX_TEXT_BYTES, WHO, check_outputs, now, read_text
+from identify.cli.options import FILE, MAX_TEXT_BYTES, WHO, check_outputs, now, read_text, say
 from identify.cli.progress import progress_bar
 from identify.errors import InputError, UsageError
 
 if TYPE_CHECKING:
-    from collections.abc import Callable
+    from collections.abc import Callable, Sequence
 
     from identify.records import Report
+    from identify.settings import Settings
 
 __all__ = ["FILE", "deliver", "progress_bar", "read_settings", "search"]
 
@@ -39,6 +40,10 @@ __all__ = ["FILE", "deliver", "progress_bar", "read_settings", "search"]
     "--record/--no-record", "is_recorded", default=None,
     help="Remember in the library which entries answered (default: when a result file is written and the library allows).",
 )  # fmt: skip
+@click.option(
+    "--why-not", "why_not", metavar="COMPOUND",
+    help="Say why this compound (name, InChIKey or SMILES) is not the answer to each query.",
+)  # fmt: skip
 @WHO
 def search(
     queries: tuple[Path, ...],
@@ -51,6 +56,7 @@ def search(
     prefer_own: bool | None,
     as_of: tuple[str, ...],
     is_recorded: bool | None,
+    why_not: str | None,
     who: str,
 ) -> int:
     """Identify every spectrum in QUERIES (files, folders, archives, or - for pasted peaks)."""
@@ -71,9 +77,42 @@ def search(
         with progress_bar("Identifying") as progress:
             report = search_files(queries, libraries, settings, progress, as_of=as_of)
     code = deliver(report, json_path, csv_path, html_path)
+    if why_not:
+        say_why_not(why_not, report, libraries, settings, as_of)
     if written and is_recorded is not False:
         remember(report, written, who, is_required=bool(is_recorded))
     return code
+
+
+def say_why_not(
+    asked: str, report: Report, libraries: Sequence[Path], settings: Settings, as_of: Sequence[str]
+) -> None:
+    """Nothing comes out; for each query it is said why a compound is not the answer.
+
+    Parameters
+    ----------
+    asked : str
+        Name or part of it, InChIKey, or SMILES.
+    report : Report
+    libraries : sequence of Path
+    settings : Settings
+    as_of : sequence of str
+    """
+    from identify.pipeline.why_not import explain_report, explain_without_entry
+
+    told = explain_report(asked, report, libraries, settings, as_of=as_of)
+    for found, answers in zip(report.identifications, told, strict=True):
+        click.echo()
+        say(f"Why not {asked}? Query {found.query.record.title or found.query.id}")
+        for answer in answers:
+            say(f"  {answer.name} ({answer.accession})")
+            for reason in answer.reasons:
+                say(f"    {reason}")
+        if not answers:
+            say("  No entry of the libraries searched is this compound.")
+            without = explain_without_entry(asked, found)
+            if without:
+                say(f"  {without}")
 
 
 def _refuse_record() -> None:
