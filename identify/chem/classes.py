@@ -2,21 +2,36 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from functools import lru_cache
 from typing import TYPE_CHECKING
 
 from identify.chem.class_table import PATTERNS, WHOLE
-from identify.chem.molecules import plain_mol
+from identify.chem.molecules import atoms_of, bonds_of, plain_mol
 
 if TYPE_CHECKING:
     from rdkit.Chem import Mol
 
 
 @lru_cache(maxsize=1)
-def _patterns() -> tuple[tuple[str, Mol], ...]:
+def _patterns() -> tuple[tuple[str, Mol, frozenset[int]], ...]:
+    """Name, pattern, and the elements (atomic numbers) without which it cannot match."""
     from rdkit import Chem
 
-    return tuple((name, Chem.MolFromSmarts(smarts)) for name, smarts in PATTERNS)
+    read = [(name, Chem.MolFromSmarts(smarts)) for name, smarts in PATTERNS]
+    # A pattern atom that may be one of several elements has atomic number 0.
+    return tuple((name, pattern, frozenset(_count_elements(pattern)) - {0}) for name, pattern in read)
+
+
+@lru_cache(maxsize=512)
+def _patterns_of(elements: frozenset[int]) -> tuple[tuple[str, Mol], ...]:
+    """Names and patterns that a compound of these elements can match; most compounds need not be tried for most patterns."""
+    return tuple((name, pattern) for name, pattern, needed in _patterns() if needed <= elements)
+
+
+def _count_elements(mol: Mol) -> Counter[int]:
+    """Atoms of each atomic number."""
+    return Counter(atom.GetAtomicNum() for atom in atoms_of(mol))
 
 
 @lru_cache(maxsize=16384)
@@ -46,21 +61,22 @@ def compound_classes(smiles: str) -> tuple[str, ...]:
     ('fatty acid methyl ester', 'ester')
     """
     mol = plain_mol(smiles)
-    elements = {atom.GetAtomicNum() for atom in mol.GetAtoms()}
-    if 6 in elements and elements <= {1, 6}:
-        return _hydrocarbon_classes(mol)
-    names = [name for name, pattern in _patterns() if mol.HasSubstructMatch(pattern) and _fills(mol, name, pattern)]
-    if _is_terpenoid(mol):
+    elements = _count_elements(mol)
+    if 6 in elements and set(elements) <= {1, 6}:
+        return _hydrocarbon_classes(mol, elements)
+    usable = _patterns_of(frozenset(elements))
+    names = [name for name, pattern in usable if mol.HasSubstructMatch(pattern) and _fills(mol, name, pattern)]
+    if _is_terpenoid(mol, elements):
         names.insert(0, "terpenoid")
     return tuple(dict.fromkeys(names))
 
 
-def _hydrocarbon_classes(mol: Mol) -> tuple[str, ...]:
+def _hydrocarbon_classes(mol: Mol, elements: Counter[int]) -> tuple[str, ...]:
     """Classes of a compound of carbon and hydrogen alone."""
     from rdkit.Chem import BondType
 
     rings = mol.GetRingInfo()
-    atoms, bonds = list(mol.GetAtoms()), list(mol.GetBonds())
+    atoms, bonds = atoms_of(mol), bonds_of(mol)
     aromatic = [ring for ring in rings.AtomRings() if all(mol.GetAtomWithIdx(i).GetIsAromatic() for i in ring)]
     has_double = any(bond.GetBondType() == BondType.DOUBLE for bond in bonds)
     has_triple = any(bond.GetBondType() == BondType.TRIPLE for bond in bonds)
@@ -75,7 +91,7 @@ def _hydrocarbon_classes(mol: Mol) -> tuple[str, ...]:
         names.append("alkylbenzene")
     if _largest_fused_aromatic(mol) > 1:
         names.append("polycyclic aromatic hydrocarbon")
-    if (n_rings or not is_saturated) and _is_terpenoid(mol):
+    if (n_rings or not is_saturated) and _is_terpenoid(mol, elements):
         names.append("terpene")
     names += ["alkene"] * has_double + ["alkyne"] * has_triple + ["aromatic hydrocarbon"] * bool(aromatic)
     return (*names, "hydrocarbon")
@@ -103,10 +119,10 @@ def _fills(mol: Mol, name: str, pattern: Mol) -> bool:
     if name not in WHOLE:
         return True
     match = mol.GetSubstructMatch(pattern)
-    return all(atom.GetAtomicNum() == 6 for atom in mol.GetAtoms() if atom.GetIdx() not in match)
+    return all(atom.GetAtomicNum() == 6 for atom in atoms_of(mol) if atom.GetIdx() not in match)
 
 
-def _is_terpenoid(mol: Mol) -> bool:
+def _is_terpenoid(mol: Mol, elements: Counter[int]) -> bool:
     """Whether 10, 15 or 20 carbons in one piece can be cut into isoprene frames; nothing but C, H and up to two O.
 
     The isoprene rule (Ruzicka, Experientia 1953, 9, 357; from memory), aromatic compounds left out. Synthetic compounds may
@@ -114,10 +130,9 @@ def _is_terpenoid(mol: Mol) -> bool:
     """
     from rdkit import Chem
 
-    kinds = [atom.GetAtomicNum() for atom in mol.GetAtoms()]
-    if kinds.count(6) not in (10, 15, 20) or set(kinds) - {1, 6, 8} or kinds.count(8) > 2:
+    if elements[6] not in (10, 15, 20) or set(elements) - {1, 6, 8} or elements[8] > 2:
         return False
-    if any(atom.GetIsAromatic() for atom in mol.GetAtoms()):
+    if any(atom.GetIsAromatic() for atom in atoms_of(mol)):
         return False
     carbons = Chem.DeleteSubstructs(mol, Chem.MolFromSmarts("[!#6]"))
     if len(Chem.GetMolFrags(carbons)) != 1:

@@ -10,13 +10,14 @@ and so are tautomers of azoles.
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import lru_cache
 from itertools import chain
 from typing import TYPE_CHECKING, Any, Final
 
-from identify.chem.molecules import plain_mol
+from identify.chem.molecules import atoms_of, bonds_of, plain_mol
 from identify.chem.structures import connectivity_block, inchikey_of
 from identify.errors import UsageError
 
@@ -31,6 +32,8 @@ MAX_HEAVY_ATOMS: Final = 60
 TRIES_PER_ISOMER: Final = 6
 """Structures looked at per isomer of the limit (and 100 more): most moves of a crowded molecule change its groups."""
 _HALOGENS: Final = frozenset({"F", "Cl", "Br", "I"})
+_CARBON_KINDS: Final = frozenset({"a", "u", "s"})
+"""Aromatic, unsaturated, saturated carbon, as `_signature` sees it."""
 _MARK: Final = 99
 """Isotope number that marks where a detached group was bound."""
 
@@ -179,12 +182,12 @@ def _sources(mol: Mol) -> Iterator[tuple[int, int, list[int]]]:
     from rdkit import Chem
 
     ranks = list(Chem.CanonicalRankAtoms(mol, breakTies=False))
-    atoms = list(mol.GetAtoms())
+    atoms = atoms_of(mol)
     with_h = [atom.GetIdx() for atom in atoms if atom.GetAtomicNum() == 6 and atom.GetTotalNumHs()]
     aromatic = [index for index in with_h if atoms[index].GetIsAromatic()]
     saturated = [index for index in with_h if _is_saturated(atoms[index])]
     done: set[tuple[int, int]] = set()
-    for bond in mol.GetBonds():
+    for bond in bonds_of(mol):
         if bond.IsInRing() or bond.GetBondTypeAsDouble() != 1.0:
             continue
         for anchor, moved in ((bond.GetBeginAtom(), bond.GetEndAtom()), (bond.GetEndAtom(), bond.GetBeginAtom())):
@@ -204,7 +207,7 @@ def _shifted_bonds(mol: Mol) -> Iterator[str]:
     """Canonical SMILES with one double bond moved by one place: a=b–c to a–b=c."""
     from rdkit import Chem
 
-    for bond in mol.GetBonds():
+    for bond in bonds_of(mol):
         ends = (bond.GetBeginAtom(), bond.GetEndAtom())
         if bond.GetBondTypeAsDouble() != 2.0 or any(end.GetAtomicNum() != 6 for end in ends):
             continue
@@ -237,40 +240,45 @@ def _side(mol: Mol, start: int, without: int) -> set[int]:
     return side
 
 
-def _signature(mol: Mol) -> tuple[tuple[object, ...], ...]:
+def _signature(mol: Mol) -> Counter[tuple[object, ...]]:
     """Functional groups of a structure, each with its kind: heteroatoms, carbons that hold several or by multiple bonds, C=C.
 
     What a group sees of a neighbour is aromatic (a), unsaturated (u) or saturated (s) carbon, or the element.
     """
-    atoms = list(mol.GetAtoms())
-    bonds = [(b.GetBeginAtomIdx(), b.GetEndAtomIdx(), b.GetBondTypeAsDouble(), b.IsInRing()) for b in mol.GetBonds()]
-    near: list[list[tuple[float, int]]] = [[] for _ in atoms]
+    atoms, bonds = atoms_of(mol), bonds_of(mol)
     kinds = ["s" if atom.GetAtomicNum() == 6 else str(atom.GetSymbol()) for atom in atoms]
-    for begin, end, order, _ in bonds:
+    carbons = [index for index, kind in enumerate(kinds) if kind == "s"]
+    near: list[list[tuple[float, int]]] = [[] for _ in atoms]
+    multiple: list[tuple[int, int, float, Any]] = []
+    for bond in bonds:
+        begin, end, order = bond.GetBeginAtomIdx(), bond.GetEndAtomIdx(), bond.GetBondTypeAsDouble()
         near[begin].append((order, end))
         near[end].append((order, begin))
-    carbons = [index for index, kind in enumerate(kinds) if kind == "s"]
-    for index in carbons:
-        if any(order != 1.0 for order, _ in near[index]):
-            kinds[index] = "a" if atoms[index].GetIsAromatic() else "u"
+        if order != 1.0:
+            multiple.append((begin, end, order, bond))
+            for index in (begin, end):
+                if kinds[index] == "s":
+                    kinds[index] = "a" if atoms[index].GetIsAromatic() else "u"
     groups: list[tuple[object, ...]] = []
     for index, kind in enumerate(kinds):
-        if kind not in ("a", "u", "s"):
+        if kind not in _CARBON_KINDS:
             atom, around = atoms[index], sorted((order, kinds[other]) for order, other in near[index])
             groups.append((kind, atom.GetTotalNumHs(), atom.GetFormalCharge(), tuple(around)))
     for index in carbons:
-        around = sorted((order, kinds[other]) for order, other in near[index])
-        hetero = tuple(entry for entry in around if entry[1] not in ("a", "u", "s"))
+        hetero = tuple(
+            sorted((order, kinds[other]) for order, other in near[index] if kinds[other] not in _CARBON_KINDS)
+        )
         if not hetero or kinds[index] == "a":
             continue
         if any(order > 1 for order, _ in hetero):
             is_end = len(hetero) == 1 and atoms[index].GetTotalNumHs() > 0
-            groups.append(("C", is_end, hetero, tuple(kind for _, kind in around if kind in ("a", "u"))))
+            around = sorted((order, kinds[other]) for order, other in near[index] if kinds[other] in ("a", "u"))
+            groups.append(("C", is_end, hetero, tuple(kind for _, kind in around)))
         elif len(hetero) > 1 and any(kind not in _HALOGENS for _, kind in hetero):  # acetals and their like
             groups.append(("C", hetero))
-    for begin, end, order, in_ring in bonds:
+    for begin, end, order, bond in multiple:
         if order in (2.0, 3.0) and kinds[begin] == kinds[end] == "u":
             ends = near[begin] + near[end]
             beside = sorted(kinds[other] for _, other in ends if other not in (begin, end) and kinds[other] != "s")
-            groups.append(("CC", order, in_ring, tuple(beside)))
-    return tuple(sorted(groups, key=repr))
+            groups.append(("CC", order, bond.IsInRing(), tuple(beside)))
+    return Counter(groups)

@@ -20,6 +20,34 @@ MAX_ATOMS: Final = 300
 """Most atoms (hydrogens not counted) of a structure."""
 
 
+def atoms_of(mol: Mol) -> list[Any]:
+    """Atoms in order of their index: several times faster than iterating over rdkit's own sequence.
+
+    Parameters
+    ----------
+    mol : rdkit.Chem.Mol
+
+    Returns
+    -------
+    list of rdkit.Chem.Atom
+    """
+    return [mol.GetAtomWithIdx(place) for place in range(mol.GetNumAtoms())]
+
+
+def bonds_of(mol: Mol) -> list[Any]:
+    """Bonds in order of their index (see `atoms_of`).
+
+    Parameters
+    ----------
+    mol : rdkit.Chem.Mol
+
+    Returns
+    -------
+    list of rdkit.Chem.Bond
+    """
+    return [mol.GetBondWithIdx(place) for place in range(mol.GetNumBonds())]
+
+
 def checked(mol: Any, text: str) -> Mol:
     """A molecule that rdkit made and that is within bounds.
 
@@ -45,7 +73,7 @@ def checked(mol: Any, text: str) -> Mol:
         raise StructureError(
             "structure", found=f"{mol.GetNumHeavyAtoms()} atoms in {quote(text)}", expected=f"1 to {MAX_ATOMS} atoms"
         )
-    if any(atom.GetAtomicNum() == 0 for atom in mol.GetAtoms()):
+    if any(atom.GetAtomicNum() == 0 for atom in atoms_of(mol)):
         raise StructureError("structure", found=f"a placeholder atom in {quote(text)}", expected="elements only")
     known: Mol = mol
     return known
@@ -95,10 +123,11 @@ def plain_mol(smiles: str) -> Mol:
     """
     from rdkit import Chem, rdBase
 
-    mol = Chem.RWMol(read_mol(smiles))
-    if not any(atom.GetIsotope() for atom in mol.GetAtoms()):
-        return mol.GetMol()
-    for atom in mol.GetAtoms():
+    read = read_mol(smiles)
+    if not any(atom.GetIsotope() for atom in atoms_of(read)):
+        return read
+    mol = Chem.RWMol(read)
+    for atom in atoms_of(mol):
         atom.SetIsotope(0)
     with rdBase.BlockLogs():
         return Chem.RemoveHs(mol.GetMol())
