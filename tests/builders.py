@@ -16,9 +16,11 @@ import numpy as np
 from identify.records import (
     Acquisition,
     AlignedPeaks,
+    Analogue,
     Candidate,
     Claim,
     ClaimLevel,
+    ClassEvidence,
     CleaningStep,
     CleanSpectrum,
     Entry,
@@ -31,7 +33,9 @@ from identify.records import (
     LibraryState,
     MassEstimate,
     MolecularIonEstimate,
+    Part,
     Peaks,
+    Purity,
     Query,
     Rejection,
     Report,
@@ -405,6 +409,17 @@ def build_open_identification(query_id: str = "q3") -> Identification:
                      0.2),
         ),
         ("The query may hold column bleed (m/z 207, 281) that its pattern was too weak to remove.",),
+        Purity(
+            Verdict.CONFLICTS,
+            "Two entries together explain the query far better than one.",
+            (Part("Ethyl hexanoate", "T002", 0.64), Part("Phenol", "T003", 0.36)),
+            0.81,
+            (0.4, 0.05),
+            Peaks([94.0, 105.0, 120.0], [8.0, 40.0, 5.5]),
+            ("siloxane",),
+        ),
+        (ClassEvidence("ester", 0.71, ("Ethyl hexanoate",), ("rearrangement ion 88 with 101 (common practice)",)),),
+        (Analogue("Ethyl hexanoate", "T002", 14, "plus CH2", 0.83),),
     )  # fmt: skip
 
 

@@ -35,6 +35,7 @@ from identify.report.contexts import (
     RejectionRow,
     SummaryRow,
 )
+from identify.report.nature import nature_sentences, purity_sentences
 from identify.report.plots import MassMark, probability_bar_svg, spectrum_svg
 from identify.report.structures import StructureSheet
 from identify.report.words import (
@@ -149,6 +150,8 @@ def _query(
         spectrum=_spectrum(found, name, anchor),
         masses=_masses(found.molecular_ion),
         mass_agreement=sentence(found.molecular_ion.agreement),
+        purity=purity_sentences(found),
+        nature=nature_sentences(found),
         candidates=table,
         details=tuple(
             build_candidate_detail(candidate, row, name, sources)

@@ -172,6 +172,10 @@ class QueryContext:
     spectrum: Figure
     masses: tuple[MassRow, ...]
     mass_agreement: str
+    purity: tuple[str, ...]
+    """Whether it is one compound, in sentences."""
+    nature: tuple[str, ...]
+    """Classes and analogues, in sentences."""
     candidates: CandidateTable
     details: tuple[CandidateDetail, ...]
     further: CandidateTable

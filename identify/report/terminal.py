@@ -4,9 +4,11 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from identify.records import Candidate, FollowUp, Identification, Rejection, Report, Verdict
+from identify.report.nature import nature_sentences, purity_sentences
 from identify.report.words import (
     CAUTIONS,
     NO_BREAK,
@@ -100,6 +102,8 @@ def _print_identification(
     _print(console, f"{name} ({', '.join(facts)})", style="underline")
     _print(console, sentence(found.claim.statement), style="bold", indent=2)
     _print(console, _levels_text(found), indent=2)
+    for text in _nature_texts(found):
+        _print(console, text, indent=2, hanging=2)
     if found.candidates:
         table = _candidate_table(found.candidates[:candidates_shown], console, marks)
         console.print(Padding(table, (0, 0, 0, 2), expand=False))
@@ -111,6 +115,15 @@ def _print_identification(
     for note in found.notes:
         _print(console, f"Note: {sentence(note)}", indent=2, hanging=6)
     console.print()
+
+
+def _nature_texts(found: Identification) -> tuple[str, ...]:
+    """What is worth a line: purity unless one compound explains the query, the likeliest class and the best analogue."""
+    verdict = found.purity.verdict if found.purity else Verdict.NOT_ASSESSED
+    said = 1 if verdict is Verdict.CONFLICTS else 0  # the claim on a mixture gives the reason already
+    purity = () if verdict is Verdict.AGREES else purity_sentences(found)[said:]
+    likeliest = nature_sentences(replace(found, classes=found.classes[:1], analogues=found.analogues[:1]))
+    return (*purity, *likeliest)
 
 
 def _levels_text(found: Identification) -> str:

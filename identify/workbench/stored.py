@@ -16,9 +16,11 @@ from identify.errors import FormatError, LibraryError
 from identify.library.standing import ALL_STATUSES
 from identify.library.store import Library
 from identify.records import (
+    Analogue,
     Candidate,
     Claim,
     ClaimLevel,
+    ClassEvidence,
     Entry,
     EntryStatus,
     EvidenceItem,
@@ -28,10 +30,14 @@ from identify.records import (
     LibraryState,
     MassEstimate,
     MolecularIonEstimate,
+    Part,
+    Peaks,
+    Purity,
     Query,
     Report,
     SpectrumRecord,
     Verdict,
+    read_only,
 )
 from identify.settings import Settings, resolve
 from identify.spectra.align import align
@@ -167,6 +173,12 @@ def rebuild(document: Mapping[str, Any], record: SpectrumRecord, libraries: Sequ
             candidates=candidates,
             follow_up=tuple(FollowUp(**{**p, "candidates": tuple(p["candidates"])}) for p in found["follow_up"]),
             notes=tuple(found["notes"]),
+            purity=_purity(found.get("purity")),
+            classes=tuple(
+                ClassEvidence(c["name"], c["probability"], tuple(c["neighbours"]), tuple(c["ions"]))
+                for c in found.get("classes", ())
+            ),
+            analogues=tuple(Analogue(**item) for item in found.get("analogues", ())),
         )
         states = tuple(LibraryState(**state) for state in document["libraries"])
         program = document["program"]
@@ -218,6 +230,24 @@ def _explanation(tree: Mapping[str, Any]) -> Explanation:
 def _molecular_ion(found: Mapping[str, Any]) -> MolecularIonEstimate:
     estimates = tuple(MassEstimate(**{**row, "basis": tuple(row["basis"])}) for row in found["estimates"])
     return MolecularIonEstimate(estimates, found["not_observed_probability"], found["agreement"])
+
+
+def _purity(found: Mapping[str, Any] | None) -> Purity | None:
+    """None too for a result of a version that did not look at it."""
+    if found is None:
+        return None
+    left = found["residual"]
+    return Purity(
+        verdict=Verdict(found["verdict"]),
+        reason=found["reason"],
+        parts=tuple(Part(**part) for part in found["parts"]),
+        explained_share=found["explained_share"],
+        misfit=tuple(found["misfit"]),
+        residual=None
+        if left is None
+        else Peaks(read_only([mz for mz, _ in left]), read_only([value for _, value in left])),
+        background=tuple(found["background"]),
+    )
 
 
 def _claim(claim: Mapping[str, Any]) -> Claim:

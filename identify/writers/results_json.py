@@ -22,6 +22,7 @@ from identify.records import (
     Identification,
     LibraryState,
     MolecularIonEstimate,
+    Purity,
     Rejection,
     Report,
 )
@@ -187,6 +188,41 @@ def _identification(found: Identification) -> dict[str, Any]:
         "hits": [_hit(candidate) for candidate in found.candidates],
         "follow_up": [_follow_up(plan) for plan in found.follow_up],
         "notes": list(found.notes),
+        "purity": None if found.purity is None else _purity(found.purity),
+        "classes": [
+            {
+                "name": item.name,
+                "probability": _number(item.probability),
+                "neighbours": list(item.neighbours),
+                "ions": list(item.ions),
+            }
+            for item in found.classes
+        ],
+        "analogues": [
+            {
+                "name": item.name,
+                "accession": item.accession,
+                "shift": item.shift,
+                "text": item.text,
+                "score": _number(item.score),
+            }
+            for item in found.analogues
+        ],
+    }
+
+
+def _purity(found: Purity) -> dict[str, Any]:
+    left = found.residual
+    return {
+        "verdict": found.verdict.value,
+        "reason": found.reason,
+        "parts": [
+            {"name": part.name, "accession": part.accession, "share": _number(part.share)} for part in found.parts
+        ],
+        "explained_share": _number(found.explained_share),
+        "misfit": [_number(value) for value in found.misfit],
+        "residual": None if left is None else _pairs(zip(left.mz.tolist(), left.intensity.tolist(), strict=True)),
+        "background": list(found.background),
     }
 
 

@@ -15,7 +15,7 @@ from pathlib import Path
 import pytest
 
 import identify.report
-from identify.records import EntryStatus, Report
+from identify.records import Analogue, ClassEvidence, EntryStatus, Part, Purity, Report, Verdict
 from identify.report import contexts
 from identify.report.context import DETAILED, LONG_REPORT, build_page
 from identify.report.contexts import ExplanationNode
@@ -347,3 +347,21 @@ def test_page_works_in_a_browser_at_both_widths(tmp_path: Path) -> None:
             assert trouble == []
             view.close()
         browser.close()
+
+
+def test_mixture_classes_and_analogues_stand_before_the_candidates(page: Page) -> None:
+    said = " ".join(" ".join(page.words).split())
+    first = said.index("Two entries together explain the query far better than one.")
+    assert "Left over, to be searched as a query of its own: m/z 105 (40 %), 94 (8.0 %), 120 (5.5 %)." in said
+    assert "Like Ethyl hexanoate, plus CH2 (+14 Da); similarity after shifting 0.830." in said
+    assert first < said.rindex("Candidates")
+
+
+def test_purity_sentences_from_a_library_are_shown_as_text() -> None:
+    found = build_identification()
+    purity = Purity(Verdict.CONFLICTS, HOSTILE, (Part(HOSTILE, HOSTILE, 0.5),), background=(HOSTILE,))
+    like = Analogue(HOSTILE, HOSTILE, 1, HOSTILE, 0.9)
+    kind = ClassEvidence(HOSTILE, 0.9, (HOSTILE,), (HOSTILE,))
+    shown = render_html(build_report(replace(found, purity=purity, analogues=(like,), classes=(kind,))))
+    assert "<script>alert" not in shown
+    assert "<img" not in shown

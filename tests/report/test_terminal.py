@@ -12,7 +12,7 @@ from rich.console import Console
 from identify.records import Report
 from identify.report.terminal import render_terminal
 from identify.report.words import CAUTIONS
-from tests.builders import build_candidate, build_identification, build_query, build_report
+from tests.builders import build_candidate, build_identification, build_open_identification, build_query, build_report
 
 
 def _print(report: Report, width: int = 80, encoding: str = "utf-8", **options: bool) -> str:
@@ -104,3 +104,12 @@ def test_a_terminal_without_the_marks_gets_letters(encoding: str) -> None:
 def test_a_report_without_queries_says_what_was_rejected() -> None:
     text = _print(replace(build_report(), identifications=()))
     assert text.startswith("Not used: 2 inputs") and "Evidence:" not in text
+
+
+def test_mixture_class_and_analogue_are_told_in_a_line_each() -> None:
+    text = " ".join(_print(build_report(build_open_identification())).split())
+    assert "Two entries together" not in text, "the claim has said it already"
+    assert "Left over, to be searched as a query of its own: m/z 105 (40 %), 94 (8.0 %), 120 (5.5 %)." in text
+    assert "Known background among what is left over: siloxane." in text
+    assert "Class ester (71 %): neighbours Ethyl hexanoate" in text
+    assert "Like Ethyl hexanoate, plus CH2 (+14 Da); similarity after shifting 0.830." in text

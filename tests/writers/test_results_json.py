@@ -117,9 +117,33 @@ def _objects(node: Any, path: tuple[Any, ...] = ()) -> Iterator[tuple[tuple[Any,
             yield from _objects(value, (*path, key))
 
 
+ADDED_LATER = ("purity", "classes", "analogues")
+"""Fields of a query that results of older versions lack; those stay valid."""
+
+
+def test_result_of_an_older_version_stays_valid(validator: Any) -> None:
+    found = report_to_dict(build_report())
+    for query in found["queries"]:
+        for name in ADDED_LATER:
+            del query[name]
+    validator.validate(found)
+
+
+def test_mixture_classes_and_analogues_are_written_whole() -> None:
+    query = report_to_dict(build_report())["queries"][2]
+    assert [part["share"] for part in query["purity"]["parts"]] == [0.64, 0.36]
+    assert query["purity"]["residual"] == [[94.0, 8.0], [105.0, 40.0], [120.0, 5.5]]
+    assert query["classes"][0]["ions"] == ["rearrangement ion 88 with 101 (common practice)"]
+    assert query["analogues"] == [
+        {"name": "Ethyl hexanoate", "accession": "T002", "shift": 14, "text": "plus CH2", "score": 0.83}
+    ]
+
+
 def test_schema_rejects_a_result_with_any_field_missing(validator: Any) -> None:
     whole = report_to_dict(build_report())
-    fields = [(path, key) for path, part in _objects(whole) if path[:1] != ("settings",) for key in part]
+    whole["queries"][0] |= {name: whole["queries"][2][name] for name in ADDED_LATER}
+    objects = [(path, part) for path, part in _objects(whole) if path[:1] != ("settings",)]
+    fields = [(path, key) for path, part in objects for key in part if key not in ADDED_LATER]
     assert len(fields) > 80
     for path, key in fields:
         found = copy.deepcopy(whole)
