@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Final
+from typing import Final, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -95,6 +95,28 @@ class FlatPairs:
         best = np.zeros(self.n_entries)
         np.maximum.at(best, self.owner, values)
         return best
+
+
+class Tilt(NamedTuple):
+    """Ions of many entries with and without the tilt between each of them and the query; see `remove_tilt`.
+
+    Attributes
+    ----------
+    weight : array of shape (n_peaks,)
+        Root of the smaller intensity; 0 where the query has no peak.
+    total : array of shape (n_entries,)
+        Sum of the weights.
+    off, left : arrays of shape (n_peaks,)
+        Logarithm of the ratio of intensities from its mean, with the tilt and without it; `left` is 0 where there is no pair.
+    straight : array of shape (n_peaks,)
+        The entry's intensities tilted as the query's are.
+    """
+
+    weight: FloatArray
+    total: FloatArray
+    off: FloatArray
+    left: FloatArray
+    straight: FloatArray
 
 
 def pair_up(query: CleanSpectrum, entries: Sequence[CleanSpectrum]) -> FlatPairs:
@@ -192,7 +214,22 @@ def _cosines(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
     return [*cosine, *reverse, *forward]
 
 
-def _ratios(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
+def remove_tilt(pairs: FlatPairs) -> Tilt:
+    """Logarithms of the intensity ratios of the ions both have, before and after the tilt between the spectra is taken out.
+
+    Parameters
+    ----------
+    pairs : FlatPairs
+
+    Returns
+    -------
+    Tilt
+
+    Notes
+    -----
+    The slope of ``ln(query / entry)`` over m/z is fitted with the root of the smaller intensity as weight and shrunk towards 0
+    (`TILT_RANGE_DA`); instruments differ by such a slope.
+    """
     mz, matched, owner = pairs.mz.astype(np.float64), pairs.query > 0, pairs.owner
     ratio = np.where(matched, np.log(np.maximum(pairs.query, TINY) / np.maximum(pairs.entry, TINY)), 0.0)
     weight = np.where(matched, np.sqrt(np.minimum(pairs.query, pairs.entry)), 0.0)
@@ -200,8 +237,13 @@ def _ratios(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
     centre, level = pairs.total(weight * mz) / total, pairs.total(weight * ratio) / total
     distance, off = mz - centre[owner], ratio - level[owner]
     slope = pairs.total(weight * distance * off) / (pairs.total(weight * distance**2) + total * TILT_RANGE_DA**2)
-    left = np.where(matched, off - slope[owner] * distance, 0.0)
-    straight = pairs.entry * np.exp(np.clip(slope[owner] * distance, -5.0, 5.0))
+    tilt = slope[owner] * distance
+    left = np.where(matched, off - tilt, 0.0)
+    return Tilt(weight, total, off, left, pairs.entry * np.exp(np.clip(tilt, -5.0, 5.0)))
+
+
+def _ratios(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
+    mz, (weight, total, off, left, straight) = pairs.mz.astype(np.float64), remove_tilt(pairs)
     weighting = COSINES["root"]
     own, other = _weights(mz, pairs.query, weighting), _weights(mz, straight, weighting)
     whole = _from_cut(query, pairs, _weights(query.nominal.mz, query.nominal.intensity, weighting) ** 2)
