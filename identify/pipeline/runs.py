@@ -180,7 +180,7 @@ class _Analysis:
             findings.append(self._identify(component, run, scale, first_query + component.number - 1))
         width_s = decomposition.width_scans * decomposition.scan_time_s
         settled = settle_jointly(findings, width_s, self.settings)
-        named = name_classes(settled, self.settings)
+        named = name_classes(settled, self.settings, scale)
         return RunFindings(number, run, decomposition, named, scale, run.notes)
 
     def _own_scale(self, components: Sequence[Component]) -> RetentionScale | None:

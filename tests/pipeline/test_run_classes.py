@@ -5,10 +5,12 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
+import pytest
 
-from identify.pipeline.run_classes import name_class, name_classes
-from identify.records import Claim, ClaimLevel, Identification, Peaks
-from identify.runs.findings import Finding
+from identify.pipeline.run_classes import estimate_share, name_class, name_classes
+from identify.records import Claim, ClaimLevel, Identification, MassEstimate, MolecularIonEstimate, Peaks
+from identify.retention import Ladder
+from identify.runs.findings import Finding, RetentionScale
 from identify.runs.model import Component
 from identify.settings import Settings
 from tests.builders import build_candidate, build_mass_estimate, build_query
@@ -52,25 +54,62 @@ def test_a_claim_that_stands_is_not_touched() -> None:
     assert name_class(found.identification, component(), Settings()) is found.identification
 
 
-def test_among_hydrocarbons_a_likely_hydrocarbon_is_claimed_with_a_note_and_a_likely_ketone_is_not() -> None:
-    run = [finding((XYLENE, 0.99, 0.98), level=ClaimLevel.TENTATIVE) for _ in range(12)]
-    likely, unlikely = (
-        finding((ALKANE, 0.7, 0.95), (KETONE, 0.3, 0.95)),
-        finding((KETONE, 0.6, 0.95), ("CCO", 0.3, 0.95), (ALKANE, 0.02, 0.9)),
+ALKANE_IONS = {41: 35, 42: 25, 43: 100, 55: 14, 56: 20, 57: 22, 70: 20, 71: 30, 84: 20, 85: 70, 86: 5, 100: 6}
+ETHER_IONS = {41: 15, 43: 14, 45: 12, 55: 6, 57: 30, 59: 40, 73: 100, 74: 5, 87: 8, 88: 1}
+
+
+def with_ions(made: Finding, ions: dict[int, float], minutes: float = 5.0) -> Finding:
+    peaks = Peaks(np.array(list(ions), float), np.array(list(ions.values()), float))
+    return replace(
+        made, component=replace(made.component, peaks=peaks, uncertainty=np.ones(len(ions)), time_s=60 * minutes)
     )
-    named = name_classes([*run, likely, unlikely], Settings())
-    claims = [f.identification.claim for f in named[-2:]]
-    assert [claim.level for claim in claims] == [ClaimLevel.CLASS, ClaimLevel.NO_CLAIM]
-    # Odds 0.7/0.3 times (0.5/0.5)/(0.042/0.958) = 53, by hand: 0.9815.
-    assert abs(claims[0].probability - 0.9815) < 0.001
-    assert named[-2].identification.notes[-1].startswith("The class rests on the run as well: 12 of its 12 components")
 
 
-def test_few_witnesses_change_nothing() -> None:
-    run = [finding((XYLENE, 0.99, 0.98), level=ClaimLevel.TENTATIVE) for _ in range(5)]
-    likely = finding((ALKANE, 0.7, 0.95), (KETONE, 0.3, 0.95))
-    assert name_classes([*run, likely], Settings())[-1] is not None
-    assert name_classes([*run, likely], Settings())[-1].identification.claim.level is ClaimLevel.NO_CLAIM
+UNKNOWN = ((KETONE, 0.1, 0.9), ("CCOC(C)=O", 0.08, 0.9), (ALKANE, 0.02, 0.85))
+
+
+def test_among_hydrocarbons_a_spectrum_like_an_alkane_is_claimed_as_hydrocarbon_and_an_ether_is_not() -> None:
+    run = [with_ions(finding(*UNKNOWN), ALKANE_IONS) for _ in range(30)] + [with_ions(finding(*UNKNOWN), ETHER_IONS)]
+    *alkanes, ether = name_classes(run, Settings())
+    claim = alkanes[0].identification.claim
+    assert claim.level is ClaimLevel.CLASS
+    assert claim.statement.startswith("Hydrocarbon, no single compound")
+    assert "The class rests on the run as well" in " ".join(alkanes[0].identification.notes)
+    assert ether.identification.claim.level is ClaimLevel.NO_CLAIM
+
+
+def test_the_same_spectrum_among_ethers_is_no_hydrocarbon() -> None:
+    run = [with_ions(finding(*UNKNOWN), ETHER_IONS) for _ in range(30)] + [with_ions(finding(*UNKNOWN), ALKANE_IONS)]
+    assert {f.identification.claim.level for f in name_classes(run, Settings())} == {ClaimLevel.NO_CLAIM}
+
+
+def test_few_components_say_nothing_about_the_rest_of_the_run() -> None:
+    run = [with_ions(finding(*UNKNOWN), ALKANE_IONS) for _ in range(5)]
+    assert {f.identification.claim.level for f in name_classes(run, Settings())} == {ClaimLevel.NO_CLAIM}
+
+
+def test_probable_candidates_of_another_class_stand_against_the_run() -> None:
+    likely = finding(("CCOC(C)=O", 0.6, 0.95), (ALKANE, 0.02, 0.8))
+    run = [with_ions(finding(*UNKNOWN), ALKANE_IONS) for _ in range(30)] + [with_ions(likely, ALKANE_IONS)]
+    assert name_classes(run, Settings())[-1].identification.claim.level is ClaimLevel.NO_CLAIM
+
+
+@pytest.mark.parametrize(
+    ("minutes", "expected"),
+    [(5.0, "Alkane with 7 carbons by ion series and molecular ion"), (2.0, "Hydrocarbon"), (9.0, "Hydrocarbon")],
+)
+def test_a_clear_molecular_ion_gives_the_carbon_number_where_the_order_of_elution_allows(minutes, expected) -> None:
+    scale = RetentionScale(Ladder((5, 7, 9), (3.0, 5.0, 7.0)), "by hand", 5.0)
+    run = [with_ions(finding(*UNKNOWN), ALKANE_IONS, minutes) for _ in range(30)]
+    sure = MolecularIonEstimate((MassEstimate(100, 0.99, ()),), 0.01)
+    run = [replace(f, identification=replace(f.identification, molecular_ion=sure)) for f in run]
+    claim = name_classes(run, Settings(), scale)[0].identification.claim
+    assert claim.statement.startswith(f"{expected}, no single compound")
+
+
+def test_the_share_of_a_class_is_estimated_cautiously() -> None:
+    # 40 certain members of 50: the Wilson limit of 0.8 with n = 50 and z = 1.645 is 0.692, by hand.
+    assert abs(estimate_share([1.0] * 40 + [0.0] * 10, 0.04) - 0.692) < 0.002
 
 
 def test_a_stricter_threshold_is_kept() -> None:
