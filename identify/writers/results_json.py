@@ -9,6 +9,7 @@ import json
 from collections.abc import Iterable, Mapping, Sequence
 from functools import cache
 from importlib import resources
+from math import floor
 from pathlib import Path
 from typing import Any
 
@@ -32,6 +33,7 @@ SCHEMA_NAME = "ionwitness.result/1"
 SCHEMA_FILE = "result-1.json"
 DECIMALS = 6
 """Decimals of scores, probabilities, log-odds and m/z: far below what any of them means, so no information is lost."""
+SCALE = 10**DECIMALS
 SIGNIFICANT_DIGITS = 6
 """Digits of intensities, which come in any unit."""
 
@@ -154,21 +156,27 @@ def round_explanation(explanation: Explanation, decimals: int = DECIMALS) -> Exp
     >>> [part.value for part in tree.parts]
     [0.4, 0.3, 0.3]
     """
-    return _apportion(explanation, round(explanation.value * 10**decimals), decimals)
+    scale = 10**decimals
+    return _rounded(explanation, round(explanation.value * scale), scale)
 
 
-def _apportion(explanation: Explanation, units: int, decimals: int) -> Explanation:
-    if not explanation.parts:
-        return Explanation(explanation.label, units / 10**decimals, explanation.detail)
-    scaled = [part.value * 10**decimals for part in explanation.parts]
-    floors = [int(value // 1) for value in scaled]
-    by_remainder = sorted(range(len(scaled)), key=lambda place: (floors[place] - scaled[place], place))
-    missing = units - sum(floors)
-    shares = list(floors)
-    for step in range(missing):
-        shares[by_remainder[step % len(by_remainder)]] += 1
-    parts = tuple(_apportion(part, share, decimals) for part, share in zip(explanation.parts, shares, strict=True))
-    return Explanation(explanation.label, units / 10**decimals, explanation.detail, parts)
+def _rounded(explanation: Explanation, units: int, scale: int) -> Explanation:
+    shares = _share_units(explanation.parts, units, scale)
+    parts = tuple(_rounded(part, share, scale) for part, share in zip(explanation.parts, shares, strict=True))
+    return Explanation(explanation.label, units / scale, explanation.detail, parts)
+
+
+def _share_units(parts: Sequence[Explanation], units: int, scale: int) -> list[int]:
+    """Units of the last digit for each part, adding up to `units` (see `round_explanation`)."""
+    scaled = [part.value * scale for part in parts]
+    shares = [floor(value) for value in scaled]
+    missing = units - sum(shares) if shares else 0
+    if missing > 0:
+        lost = [share - value for share, value in zip(shares, scaled, strict=True)]
+        by_remainder = sorted(range(len(shares)), key=lost.__getitem__)
+        for step in range(missing):
+            shares[by_remainder[step % len(by_remainder)]] += 1
+    return shares
 
 
 def _identification(found: Identification) -> dict[str, Any]:
@@ -286,7 +294,7 @@ def _hit(candidate: Candidate) -> dict[str, Any]:
         "entries_of_compound": candidate.n_entries,
         "probability": _number(candidate.probability),
         "evidence": [_evidence(item) for item in candidate.evidence],
-        "explanation": _explanation(round_explanation(candidate.explanation)),
+        "explanation": _explanation(candidate.explanation, round(candidate.explanation.value * SCALE), SCALE),
         "notes": list(candidate.notes),
     }
 
@@ -304,13 +312,13 @@ def _evidence(item: EvidenceItem) -> dict[str, Any]:
     }
 
 
-def _explanation(tree: Explanation) -> dict[str, Any]:
-    return {
-        "label": tree.label,
-        "value": tree.value,
-        "detail": tree.detail,
-        "parts": [_explanation(part) for part in tree.parts],
-    }
+def _explanation(tree: Explanation, units: int, scale: int) -> dict[str, Any]:
+    """What `round_explanation` gives, written down without making the rounded tree first: most of a result is explanations."""
+    if not tree.parts:
+        return {"label": tree.label, "value": units / scale, "detail": tree.detail, "parts": []}
+    shares = _share_units(tree.parts, units, scale)
+    parts = [_explanation(part, share, scale) for part, share in zip(tree.parts, shares, strict=True)]
+    return {"label": tree.label, "value": units / scale, "detail": tree.detail, "parts": parts}
 
 
 def _follow_up(plan: FollowUp) -> dict[str, Any]:
