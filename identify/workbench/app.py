@@ -25,6 +25,7 @@ from identify.workbench import (
 )
 from identify.workbench.desk import Forbidden, NotFound
 from identify.workbench.guard import App, Guard
+from identify.workbench.identifier_process import Broken
 from identify.workbench.pages import NotSignedIn, View, Workbench, person_of, render
 
 ROOMS = (
@@ -43,6 +44,7 @@ STATUS: tuple[tuple[type[IonwitnessError], int], ...] = (
     (Forbidden, 403),
     (LibraryConflict, 409),
     (LibraryBusy, 503),
+    (Broken, 500),
 )
 STATIC_TYPES = {"css": "text/css", "js": "text/javascript"}
 

@@ -3,6 +3,7 @@ stay as they are."""
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -48,10 +49,26 @@ def draw_query(desk: Desk, query_id: int, result_id: int) -> DrawnQuery:
     LibraryError
         See `identify.workbench.stored.rebuild`.
     """
-    return desk.keep_drawn(result_id, lambda: _draw(desk, query_id, result_id))
+    return desk.keep_drawn(result_id, lambda: draw_result(desk, query_id, result_id))
 
 
-def _draw(desk: Desk, query_id: int, result_id: int) -> DrawnQuery:
+def draw_result(desk: Desk, query_id: int, result_id: int) -> DrawnQuery:
+    """Like `draw_query`, but drawn afresh and not kept.
+
+    Parameters
+    ----------
+    desk : Desk
+    query_id, result_id : int
+
+    Returns
+    -------
+    DrawnQuery
+
+    Raises
+    ------
+    LibraryError
+        See `identify.workbench.stored.rebuild`.
+    """
     shown = desk.shown_result(query_id, result_id)
     found, page = shown.identification, build_page(shown.report)
     made_at = next(made_at for item, made_at, _ in desk.case.results_of(query_id) if item == result_id)
@@ -76,6 +93,21 @@ def _draw(desk: Desk, query_id: int, result_id: int) -> DrawnQuery:
         changes=shown.changes,
         is_newer_library=then != [library.fingerprint for library in desk.libraries],
     )
+
+
+def drawn_from_dict(values: Mapping[str, Any]) -> DrawnQuery:
+    """What `dataclasses.asdict` made of drawn parts, as parts again.
+
+    Parameters
+    ----------
+    values : mapping
+
+    Returns
+    -------
+    DrawnQuery
+    """
+    whole = {name: tuple(values[name]) for name in ("choices", "standards")}
+    return DrawnQuery(**{**values, **whole, "changes": tuple(Change(**change) for change in values["changes"])})
 
 
 def _choice(candidate: Candidate) -> dict[str, Any]:

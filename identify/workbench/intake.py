@@ -10,6 +10,7 @@ document]}``, ``{"error": …}`` and at last ``{"end": true}``.
 from __future__ import annotations
 
 import json
+import os
 import sys
 from collections.abc import Callable, Mapping
 from dataclasses import replace
@@ -27,6 +28,8 @@ MAX_SPECTRA = 5000
 MAX_REJECTIONS = 1000
 MAX_SCANS_KEPT = 20_000
 MEBIBYTE = 2**20
+NICENESS = 5
+"""How far this process gives way to the one that answers browsers."""
 
 Say = Callable[[Mapping[str, Any]], None]
 
@@ -34,6 +37,7 @@ Say = Callable[[Mapping[str, Any]], None]
 def main() -> int:
     """Exit code: 0 when the last line was said."""
     orders = json.loads(sys.stdin.readline())
+    os.nice(NICENESS)
     limit_process(orders["seconds"], orders["mebibytes"])
     # What others print must not become a line of ours.
     stream, sys.stdout = sys.stdout, sys.stderr

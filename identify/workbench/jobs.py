@@ -8,22 +8,20 @@ from __future__ import annotations
 import logging
 import threading
 from collections.abc import Mapping
+from functools import partial
 from typing import Any
 
-from identify import __version__
 from identify.errors import InputError, IonwitnessError, SpectrumError
 from identify.library.verify import verify_library
-from identify.pipeline.search import identify_query, make_query
 from identify.records import Rejection, SpectrumRecord
 from identify.report.words import counted
-from identify.settings import Settings
 from identify.workbench.case_rows import Job, NewQuery
 from identify.workbench.desk import Desk
-from identify.workbench.drawn_query import draw_query
+from identify.workbench.identifier_process import Broken, IdentifierProcess
 from identify.workbench.intake_process import RUN_LIMITS, IntakeProcess, Limits
 from identify.workbench.job_list import add_job, finish_job, next_job, report_progress, requeue_jobs
 from identify.workbench.record_json import record_from_dict, rejection_from_dict
-from identify.workbench.stored import result_document, settings_to_text
+from identify.workbench.stored import settings_to_text
 
 _LOG = logging.getLogger(__name__)
 DRAWN_AHEAD = 20
@@ -52,7 +50,8 @@ class JobRunner:
         self._desk = desk
         self._limits, self._run_limits = limits or Limits(), run_limits
         self._work = threading.Condition()
-        self._identifying = threading.Lock()
+        paths = tuple(library.path for library in desk.libraries)
+        self.identifier = IdentifierProcess(paths, desk.case.path, desk.settings)
         self._is_over = False
         self._cancelled: set[int] = set()
         self._processes: dict[int, IntakeProcess] = {}
@@ -72,6 +71,7 @@ class JobRunner:
             self._work.notify_all()
         for process in processes:
             process.end()
+        self.identifier.end()
         for thread in self._threads:
             thread.join(timeout=20.0)
 
@@ -112,6 +112,8 @@ class JobRunner:
                 return  # it stays marked as running, and waits again at the next start
             state, message = "cancelled", "cancelled; what was found before is kept"
         except IonwitnessError as error:
+            if self._is_over and isinstance(error, Broken):
+                return
             state, message = "failed", error.message
         except Exception as error:
             # A bug in one job must not end the thread that does the others; it is shown as what it is.
@@ -180,16 +182,14 @@ class JobRunner:
     def _keep(self, job: Job, batch: list[NewQuery], number: int) -> None:
         added = self._desk.case.add_queries(job.id, batch, who=job.who, at=self._desk.now(), run_id=None)
         if number <= DRAWN_AHEAD:
-            for query_id, result_id in added:
-                draw_query(self._desk, query_id, result_id)
+            for pair in added:
+                self._desk.keep_drawn(pair[1], partial(self.identifier.draw, *pair))
         report_progress(self._desk.case, job.id, number, None, f"{counted(number, 'spectrum', 'spectra')} read")
         batch.clear()
 
     def _identify_one(self, record: SpectrumRecord, number: int, rejected: list[Rejection]) -> NewQuery | None:
         try:
-            # Two at once would gain nothing in one process, and keep the pages waiting twice as often.
-            with self._identifying:
-                document = identify_record(self._desk, record, number)
+            document = self.identifier.identify(record, number)
         except SpectrumError as error:
             source = record.source
             rejected.append(
@@ -240,32 +240,3 @@ class JobRunner:
             verdict = "intact" if found.is_intact else f"NOT intact: {problems}"
             told.append(f"{library.path.name}: {counted(found.n_events, 'event')}, {verdict}")
         return ". ".join(told) + "."
-
-
-def identify_record(
-    desk: Desk, record: SpectrumRecord, number: int, settings: Settings | None = None
-) -> dict[str, Any]:
-    """The result contract of one record against the libraries as they are now.
-
-    Parameters
-    ----------
-    desk : Desk
-    record : SpectrumRecord
-    number : int
-    settings : Settings, optional
-        Those of the desk by default.
-
-    Returns
-    -------
-    dict
-
-    Raises
-    ------
-    SpectrumError
-        If the spectrum cannot be searched.
-    """
-    settings = settings or desk.settings
-    query = make_query(record, number, settings)
-    searchable = desk.searchable()
-    found = identify_query(query, searchable, settings)
-    return result_document(found, settings, [item.state for item in searchable], __version__)

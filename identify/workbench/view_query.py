@@ -16,8 +16,7 @@ from identify.workbench.case_rows import Decision, QueryRow
 from identify.workbench.decisions import decide, list_decisions
 from identify.workbench.desk import Desk, NotFound
 from identify.workbench.drawn_query import draw_query
-from identify.workbench.jobs import identify_record
-from identify.workbench.pages import Outcome, TheDesk, ThePerson, View, add_action, add_view
+from identify.workbench.pages import Outcome, TheDesk, ThePerson, View, add_action, add_view, workbench_of
 from identify.workbench.record_json import record_to_dict
 from identify.workbench.sessions import Person
 from identify.workbench.stored import settings_of
@@ -227,6 +226,6 @@ def clean_again(
     settings = settings_of(desk.case.document(row.result_id))
     fraction = desk.settings.cleaning.noise_fraction if noise else 0.0
     settings = replace(settings, cleaning=CleaningSettings(air_and_water, bleed, noise, fraction))
-    document = identify_record(desk, desk.case.record(query_id), row.number, settings)
+    document = workbench_of(request).jobs.identifier.identify(desk.case.record(query_id), row.number, settings)
     result = desk.case.add_result(query_id, document, who=person.name, at=desk.now())
     return f"/queries/{query_id}?said=cleaned", {"result": result}

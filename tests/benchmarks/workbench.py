@@ -4,6 +4,7 @@
 
 Each person signs in by name, pastes queries (entries of the library with noise, seeded), looks at pages while the work goes
 on, and decides every query of theirs. Times are taken at the client, whole answers. The server runs in its own process.
+After the load one person alone asks for each page again, to see what processor time it takes (Linux: read from /proc).
 """
 
 from __future__ import annotations
@@ -32,6 +33,7 @@ from identify.workbench.people import set_person
 
 ROOT = Path(__file__).resolve().parent.parent.parent
 PASSWORD = "a password for the benchmark"
+N_ALONE = 24
 VIEWS = ("/", "/queries/{query}", "/queries/{query}", "/library?name={name}", "/library?ion={ion}", "/library/1/entries/{entry}",
          "/follow-up", "/trail", "/standards", "/queries/{query}?why_not={name}")  # fmt: skip
 
@@ -119,6 +121,29 @@ def start_server(library: Path, case: Path) -> tuple[subprocess.Popen[str], str]
     return process, process.stdout.readline().split("Workbench: ")[1].partition("/open/")[0]
 
 
+def processor_seconds(pid: int) -> float:
+    """User and system time of a process so far, without its children."""
+    fields = Path(f"/proc/{pid}/stat").read_text("utf-8").rpartition(")")[2].split()
+    return (int(fields[11]) + int(fields[12])) / os.sysconf("SC_CLK_TCK")
+
+
+def measure_alone(origin: str, pid: int, name: str, n_queries: int) -> dict[str, tuple[float, float]]:
+    """Median time and mean processor time of each page, in seconds, for one person with nothing else going on."""
+    times: dict[str, list[float]] = defaultdict(list)
+    person = Person(name, origin, [], 0.0, times)
+    person.client.post("/sign-in", data={"name": name, "password": PASSWORD})
+    costs = {}
+    for view in dict.fromkeys(VIEWS):
+        before = processor_seconds(pid)
+        for number in range(N_ALONE):
+            names = ("toluene", "phenol", "limon", "caffe", "acid")
+            query = 1 + number * max(1, n_queries // N_ALONE) % n_queries
+            person.ask(view, query=query, name=names[number % 5], ion=(57, 91, 149)[number % 3], entry=1 + 17 * number)
+        costs[view] = (statistics.median(times[view]), (processor_seconds(pid) - before) / N_ALONE)
+    person.client.close()
+    return costs
+
+
 def main() -> int:
     """Run the load and print what was measured."""
     parser = argparse.ArgumentParser(description=__doc__)
@@ -146,10 +171,12 @@ def main() -> int:
                 person.start()
             for person in people:
                 person.join()
+            elapsed, used = time.perf_counter() - started, processor_seconds(process.pid)
+            load = os.getloadavg()
+            alone = measure_alone(origin, process.pid, names[0], len(texts))
         finally:
             process.terminate()
             process.wait(timeout=30)
-        elapsed = time.perf_counter() - started
         with open_case(case_path) as case:
             counts, fault, n_decisions = case.count_queries(), find_fault(case), len(list_decisions(case))
     faults = [fault for person in people for fault in person.faults]
@@ -157,12 +184,13 @@ def main() -> int:
     print(f"{expected} queries, {options.people} people, think time {options.think:g} s: {elapsed:.1f} s")
     print(f"kept: {sum(counts.values())} queries, {n_decisions} decisions; chain {fault or 'intact'}")
     print(f"answers that were not as expected: {len(faults)} {sorted(set(faults))[:5]}")
-    print(f"{'page':42} {'n':>5} {'median':>8} {'p95':>8} {'worst':>8}  ms")
+    print(f"processor time of the server during the load {used:.1f} s; load average at its end {load[0]:.1f}")
+    print(f"{'page':42} {'n':>5} {'median':>8} {'p95':>8} {'worst':>8}  ms   alone: median, processor ms")
     for view, taken in [*sorted(times.items()), ("all pages", [t for some in times.values() for t in some])]:
         p95 = statistics.quantiles(taken, n=20)[-1] if len(taken) > 1 else taken[0]
-        print(
-            f"{view:42} {len(taken):5} {1e3 * statistics.median(taken):8.0f} {1e3 * p95:8.0f} {1e3 * max(taken):8.0f}"
-        )
+        told = "".join(f" {1e3 * value:8.1f}" for value in alone.get(view, ()))
+        middle, worst = statistics.median(taken), max(taken)
+        print(f"{view:42} {len(taken):5} {1e3 * middle:8.0f} {1e3 * p95:8.0f} {1e3 * worst:8.0f}     {told}")
     return 0 if (sum(counts.values()), n_decisions) == (expected, expected) and not faults and not fault else 1
 
 

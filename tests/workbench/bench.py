@@ -62,7 +62,7 @@ class Bench:
         assert answer.headers["location"] == "/"
         return client
 
-    def wait(self, client: httpx.Client | None = None, limit_s: float = 60.0) -> list[dict[str, Any]]:
+    def wait(self, client: httpx.Client | None = None, limit_s: float = 240.0) -> list[dict[str, Any]]:
         """Jobs once all of them are over."""
         end = time.monotonic() + limit_s
         while time.monotonic() < end:
