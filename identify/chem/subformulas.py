@@ -32,9 +32,9 @@ def _spread(best: NDArray[np.int32], symbol: str, count: int) -> NDArray[np.int3
     lot = 1
     while count > 0:
         lot = min(lot, count)
-        taken = np.full_like(best, _NEVER)
-        taken[mass * lot :] = best[: best.size - mass * lot] + value * lot
-        best = np.maximum(best, taken)
+        step, before = mass * lot, best
+        best = before.copy()
+        np.maximum(best[step:], before[: before.size - step] + value * lot, out=best[step:])
         count -= lot
         lot *= 2
     return best

@@ -7,9 +7,10 @@ depends on the query alone, `FormulaFacts` (cached by formula text) everything t
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cached_property, lru_cache
 
 import numpy as np
+from numpy.typing import NDArray
 
 from identify.chem.derivatives import find_derivative, possible_formulas
 from identify.chem.formula import Formula, parse_formula, rings_plus_double_bonds
@@ -83,9 +84,9 @@ class QueryFacts:
         return self.dense[mz] if 0 <= mz < len(self.dense) else 0.0
 
 
-@dataclass(frozen=True, slots=True, eq=False)
+@dataclass(frozen=True, eq=False)
 class FormulaFacts:
-    """What depends on the formula alone.
+    """What depends on the formula alone; isotopes and subformulas are worked out when first asked for.
 
     Attributes
     ----------
@@ -93,31 +94,42 @@ class FormulaFacts:
         As measured.
     nominal_mass : int
         M: mass numbers of the most abundant isotope of each element.
-    pattern : tuple of float
-        Isotope peaks relative to M at offsets `FIRST_OFFSET` … `LAST_OFFSET`.
-    strongest_offset : int
-        Offset of the tallest isotope peak from M (+2 for Br2).
-    last_offset : int
-        Highest offset with at least 0.1 % of the tallest isotope peak.
     carbons, nitrogens : int
     heavy : frozenset of str
         Elements present with a strong heavier isotope (Cl, Br, S, Si), or an unusual pattern (B, Se, metals).
     saturation : float
         Rings plus double bonds.
-    reachable : ndarray of bool
-        Index m is True when a subformula has nominal mass m.
     """
 
     formula: Formula
     nominal_mass: int
-    pattern: tuple[float, ...]
-    strongest_offset: int
-    last_offset: int
     carbons: int
     nitrogens: int
     heavy: frozenset[str]
     saturation: float
-    reachable: np.ndarray[tuple[int, ...], np.dtype[np.bool_]]
+
+    @cached_property
+    def pattern(self) -> tuple[float, ...]:
+        """Isotope peaks relative to M at offsets `FIRST_OFFSET` … `LAST_OFFSET`."""
+        found = isotope_pattern(self.formula)
+        return tuple(found.at(offset) for offset in range(FIRST_OFFSET, LAST_OFFSET + 1))
+
+    @cached_property
+    def strongest_offset(self) -> int:
+        """Offset of the tallest isotope peak from M (+2 for Br2)."""
+        return self.pattern.index(max(self.pattern)) + FIRST_OFFSET
+
+    @cached_property
+    def last_offset(self) -> int:
+        """Highest offset with at least 0.1 % of the tallest isotope peak."""
+        least = 0.001 * max(self.pattern)
+        last = max((place for place, ratio in enumerate(self.pattern) if ratio >= least), default=0)
+        return max(last + FIRST_OFFSET, 0)
+
+    @cached_property
+    def reachable(self) -> NDArray[np.bool_]:
+        """Index m is True when a subformula has nominal mass m."""
+        return reachable_nominal(self.formula)
 
     def ratio(self, offset: int) -> float:
         """Isotope peak at M + `offset` relative to M."""
@@ -149,23 +161,15 @@ def formula_facts(text: str) -> FormulaFacts | None:
         return None
     if formula.nominal_mass <= 0:
         return None
-    pattern = isotope_pattern(formula)
-    ratios = tuple(float(pattern.at(offset)) for offset in range(FIRST_OFFSET, LAST_OFFSET + 1))
-    tallest = max(range(len(ratios)), key=ratios.__getitem__)
-    last = max((place for place, ratio in enumerate(ratios) if ratio >= 0.001 * ratios[tallest]), default=0)
     carbons = formula.count("C") + formula.count("[12C]") + formula.count("[13C]")
     symbols = {symbol for symbol, _ in formula.counts if not symbol.startswith("[")}
     return FormulaFacts(
         formula=formula,
         nominal_mass=formula.nominal_mass,
-        pattern=ratios,
-        strongest_offset=tallest + FIRST_OFFSET,
-        last_offset=max(last + FIRST_OFFSET, 0),
         carbons=carbons,
         nitrogens=formula.count("N") + formula.count("[15N]"),
         heavy=frozenset(symbols - LIGHT),
         saturation=rings_plus_double_bonds(formula),
-        reachable=reachable_nominal(formula),
     )
 
 

@@ -193,18 +193,32 @@ def _from_cut(query: CleanSpectrum, pairs: FlatPairs, values: FloatArray) -> Flo
     return sums[np.searchsorted(query.nominal.mz, pairs.cut)]
 
 
-def _weights(mz: FloatArray, intensity: FloatArray, weighting: Weighting) -> FloatArray:
-    weights: FloatArray = mz**weighting.mz_power * intensity**weighting.intensity_power
-    return weights
+@dataclass(frozen=True, slots=True, eq=False)
+class _Logs:
+    """Logarithms of m/z and intensity of some peaks, from which the weights for any exponents follow by one `exp`."""
+
+    mz: FloatArray
+    intensity: FloatArray
+
+    @classmethod
+    def of(cls, mz: FloatArray, intensity: FloatArray) -> _Logs:
+        with np.errstate(divide="ignore"):  # no peak: -inf, and its weight 0
+            return cls(np.log(mz), np.log(intensity))
+
+    def weights(self, weighting: Weighting) -> FloatArray:
+        """``mz**b * intensity**a``, 0 where the intensity is 0."""
+        weights: FloatArray = np.exp(weighting.mz_power * self.mz + weighting.intensity_power * self.intensity)
+        return weights
 
 
 def _cosines(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
-    mz = pairs.mz.astype(np.float64)
     matched = pairs.query > 0
+    own_logs, other_logs = _Logs.of(pairs.mz, pairs.query), _Logs.of(pairs.mz, pairs.entry)
+    query_logs = _Logs.of(query.nominal.mz, query.nominal.intensity)
     cosine, reverse, forward = [], [], []
     for name, weighting in COSINES.items():
-        own, other = _weights(mz, pairs.query, weighting), _weights(mz, pairs.entry, weighting)
-        whole = _from_cut(query, pairs, _weights(query.nominal.mz, query.nominal.intensity, weighting) ** 2)
+        own, other = own_logs.weights(weighting), other_logs.weights(weighting)
+        whole = _from_cut(query, pairs, query_logs.weights(weighting) ** 2)
         whole = whole * pairs.scale ** (2.0 * weighting.intensity_power)
         shared, theirs = pairs.total(own * other), pairs.total(other * other)
         cosine.append(shared / np.sqrt(whole * theirs + TINY))
@@ -245,8 +259,8 @@ def remove_tilt(pairs: FlatPairs) -> Tilt:
 def _ratios(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
     mz, (weight, total, off, left, straight) = pairs.mz.astype(np.float64), remove_tilt(pairs)
     weighting = COSINES["root"]
-    own, other = _weights(mz, pairs.query, weighting), _weights(mz, straight, weighting)
-    whole = _from_cut(query, pairs, _weights(query.nominal.mz, query.nominal.intensity, weighting) ** 2)
+    own, other = _Logs.of(mz, pairs.query).weights(weighting), _Logs.of(mz, straight).weights(weighting)
+    whole = _from_cut(query, pairs, _Logs.of(query.nominal.mz, query.nominal.intensity).weights(weighting) ** 2)
     whole = whole * pairs.scale ** (2.0 * weighting.intensity_power)
     heavy = weight * mz
     return [
