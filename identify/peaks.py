@@ -13,7 +13,11 @@ FloatArray = NDArray[np.float64]
 
 
 def read_only(values: ArrayLike) -> FloatArray:
-    """Float64 copy of `values`, shape ``(n,)``, that nobody can write to."""
+    """Float64 copy of `values`, shape ``(n,)``, that nobody can write to; `values` itself if it is such an array already."""
+    if isinstance(values, np.ndarray) and values.dtype == np.float64 and values.ndim == 1:
+        flags = values.flags
+        if flags.owndata and not flags.writeable:
+            return values
     array = np.array(values, dtype=np.float64).reshape(-1)
     array.setflags(write=False)
     return array

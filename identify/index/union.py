@@ -12,7 +12,7 @@ import numpy as np
 
 from identify.errors import UsageError
 from identify.index.search import choose_best
-from identify.records import Hit
+from identify.records import FloatArray, Hit
 
 TIE = 6
 """Decimals at which scores of different libraries count as equal: the accuracy the index promises."""
@@ -109,11 +109,18 @@ def merge_hits(
         LibraryHit(library, hit, hit.entry_id in own[library]) for library, hits in enumerate(libraries) for hit in hits
     ]
 
-    def place(found: LibraryHit, first: float, second: float) -> tuple[float, ...]:
-        yields = not (prefer_own and found.is_own)
-        return (-round(first, TIE), -round(second, TIE), yields, -first, -second, found.library, found.hit.entry_id)
+    cosine = np.array([found.hit.cosine for found in merged], dtype=np.float64)
+    reverse = np.array([found.hit.reverse for found in merged], dtype=np.float64)
+    last = [
+        np.array([found.hit.entry_id for found in merged], dtype=np.int64),
+        np.array([found.library for found in merged], dtype=np.int64),
+    ]
+    yields = np.array([not (prefer_own and found.is_own) for found in merged], dtype=np.bool_)
 
-    by_cosine = sorted(merged, key=lambda found: place(found, found.hit.cosine, found.hit.reverse))
-    by_reverse = sorted(merged, key=lambda found: place(found, found.hit.reverse, found.hit.cosine))
-    chosen = {*by_cosine[:k], *by_reverse[:k]}
-    return tuple(found for found in by_cosine if found in chosen)
+    def order(first: FloatArray, second: FloatArray) -> list[int]:
+        rounded = (yields, -np.round(second, TIE), -np.round(first, TIE))
+        return [int(place) for place in np.lexsort((*last, -second, -first, *rounded))]
+
+    by_cosine = order(cosine, reverse)
+    chosen = {*by_cosine[:k], *order(reverse, cosine)[:k]}
+    return tuple(merged[place] for place in by_cosine if place in chosen)

@@ -59,7 +59,7 @@ def unpack(data: bytes, dtype: str, where: str) -> NDArray[np.float64]:
 
     Returns
     -------
-    ndarray of float64, shape (n,)
+    ndarray of float64, shape (n,), read-only
 
     Raises
     ------
@@ -74,4 +74,6 @@ def unpack(data: bytes, dtype: str, where: str) -> NDArray[np.float64]:
     size = int(dtype[-1])
     if len(data) % size:
         raise LibraryDamaged("peaks", where=where, found=f"{len(data)} bytes", expected=f"a multiple of {size}")
-    return np.frombuffer(data, dtype=dtype).astype(np.float64)
+    values = np.frombuffer(data, dtype=dtype).astype(np.float64)
+    values.setflags(write=False)  # so that `Peaks` need not copy it again
+    return values

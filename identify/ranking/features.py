@@ -212,8 +212,8 @@ class _Logs:
 
 
 def _cosines(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
-    matched = pairs.query > 0
-    own_logs, other_logs = _Logs.of(pairs.mz, pairs.query), _Logs.of(pairs.mz, pairs.entry)
+    mz, matched = pairs.mz.astype(np.float64), pairs.query > 0
+    own_logs, other_logs = _Logs.of(mz, pairs.query), _Logs.of(mz, pairs.entry)
     query_logs = _Logs.of(query.nominal.mz, query.nominal.intensity)
     cosine, reverse, forward = [], [], []
     for name, weighting in COSINES.items():
