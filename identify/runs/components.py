@@ -12,13 +12,14 @@ and Stein 1999 (J Am Soc Mass Spectrom 10:770); non-negative least squares, Laws
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from identify.records import FloatArray, Peaks
 from identify.runs.clusters import Cluster, cluster_ion_peaks
+from identify.runs.hidden import find_hidden
 from identify.runs.ion_peaks import correct_skew, estimate_skew, estimate_width, find_ion_peaks
 from identify.runs.kinds import find_kind
 from identify.runs.model import Component, Decomposition, IonMatrix, NoiseModel, Run
@@ -113,18 +114,59 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
 
 
 def _extract_all(clusters: Sequence[Cluster], stage: Stage) -> tuple[Sequence[Shape], list[Component | None]]:
-    """Shapes and components of the clusters that make one; what the others held goes to their neighbours."""
+    """Shapes and components of the clusters that make one; what the others held goes to their neighbours.
+
+    Then what is left over is looked at once more, for peaks whose ions have no common apex (see `identify.runs.hidden`).
+    """
+    clusters, shapes, extracted = _settle(clusters, {}, stage)
+    rest = _rest(extracted, shapes, stage)
+    sigma = stage.noise.sigma(stage.level + stage.signal)
+    hidden = find_hidden(
+        _left(rest, stage, sigma), stage.signal * (stage.signal > SIGNIFICANT_SIGMA * sigma), sigma, stage.width
+    )
+    if hidden:
+        given = {id(cluster): shape for cluster, shape in hidden}
+        together = sorted([*clusters, *(cluster for cluster, _ in hidden)], key=lambda cluster: cluster.apex)
+        _, shapes, extracted = _settle(together, given, stage)
+    return shapes, extracted
+
+
+def _settle(
+    clusters: Sequence[Cluster], given: Mapping[int, Shape], stage: Stage
+) -> tuple[Sequence[Cluster], Sequence[Shape], list[Component | None]]:
+    """Clusters that make a component, with their shapes and components; `given` has known shapes by identity of the cluster."""
     shapes: Sequence[Shape] = ()
     extracted: list[Component | None] = []
     for _ in range(MAX_PASSES):
-        shapes = fit_shapes(clusters, stage.signal, stage.width)
+        fitted = fit_shapes(clusters, stage.signal, stage.width)
+        shapes = [given.get(id(cluster), shape) for cluster, shape in zip(clusters, fitted, strict=True)]
         extracted = [_extract(place, clusters, shapes, stage) for place in range(len(clusters))]
         keep = [place for place, component in enumerate(extracted) if component and not _is_remnant(component)]
         if len(keep) == len(clusters):
             break
         clusters = [clusters[place] for place in keep]
         shapes, extracted = [shapes[place] for place in keep], [extracted[place] for place in keep]
-    return shapes, extracted
+    return clusters, shapes, extracted
+
+
+def _rest(extracted: Sequence[Component | None], shapes: Sequence[Shape], stage: Stage) -> FloatArray:
+    """Signal minus all components, shape ``(n_scans, n_ions)``."""
+    rest = stage.signal.copy()
+    for component, shape in zip(extracted, shapes, strict=True):
+        if component:
+            columns = np.searchsorted(stage.matrix.mz, component.peaks.mz.astype(np.int64))
+            rows = slice(shape.first, shape.first + shape.values.size)
+            rest[rows, columns] -= np.outer(shape.values, component.peaks.intensity)
+    return rest
+
+
+def _left(rest: FloatArray, stage: Stage, sigma: FloatArray) -> FloatArray:
+    """The part of a rest above noise and misfit that lasts for two scans at least, 0 elsewhere."""
+    over = rest > np.maximum(SIGNIFICANT_SIGMA * sigma, FIT_ERROR * stage.signal)
+    beside = np.zeros_like(over)
+    beside[1:] |= over[:-1]
+    beside[:-1] |= over[1:]
+    return np.where(over & beside, rest, 0.0)
 
 
 def _is_remnant(component: Component) -> bool:
@@ -134,20 +176,8 @@ def _is_remnant(component: Component) -> bool:
 
 def _unassigned(extracted: Sequence[Component | None], shapes: Sequence[Shape], stage: Stage) -> FloatArray:
     """Signal of each scan above its noise that no component explains, shape ``(n_scans,)``."""
-    rest = stage.signal.copy()
-    for component, shape in zip(extracted, shapes, strict=True):
-        if component:
-            columns = np.searchsorted(stage.matrix.mz, component.peaks.mz.astype(np.int64))
-            rows = slice(shape.first, shape.first + shape.values.size)
-            rest[rows, columns] -= np.outer(shape.values, component.peaks.intensity)
-    limit = SIGNIFICANT_SIGMA * stage.noise.sigma(stage.level + stage.signal)
-    limit = np.maximum(limit, FIT_ERROR * stage.signal)
-    over = rest > limit
-    # A single reading above the limit is noise: a peak lasts.
-    beside = np.zeros_like(over)
-    beside[1:] |= over[:-1]
-    beside[:-1] |= over[1:]
-    return np.asarray(np.where(over & beside, rest, 0.0).sum(axis=1))
+    sigma = stage.noise.sigma(stage.level + stage.signal)
+    return np.asarray(_left(_rest(extracted, shapes, stage), stage, sigma).sum(axis=1))
 
 
 @dataclass(frozen=True, slots=True, eq=False)

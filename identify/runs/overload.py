@@ -22,6 +22,9 @@ GUIDE_IONS = 6
 GUIDE_SHARE = 0.08
 ION_SHARE = 0.002
 TAIL_WIDTHS = 60.0
+LINGERING_SHARE = 0.8
+"""An ion whose trace after the stretch is a falling tail to this share is all the overloaded peak's, slower than its other ions:
+what sticks to the walls of the source (hydrogen chloride after a chlorinated solvent)."""
 RATIO_ERROR = 0.04
 """How far ion ratios drift within a stretch beyond what the guide traces describe (petrol run: 2–5 %)."""
 
@@ -135,7 +138,11 @@ def _measure(signal: FloatArray, first: int, last: int, width: float) -> Overloa
         weights, _ = nnls(traces, window[:, ion])
         own = np.minimum(traces @ weights, window[:, ion])
         amount[: stop - start, ion] = own
-        amount[stop - start :, ion] = _falling_tail(signal[stop:end, ion], float(own[-1]))
+        tail = signal[stop:end, ion]
+        amount[stop - start :, ion] = _falling_tail(tail, float(own[-1]))
+        lingering = _falling_tail(tail, float(window[-1, ion]))
+        if lingering.sum() >= LINGERING_SHARE * tail.sum():
+            amount[stop - start :, ion] = lingering
     total = amount.sum(axis=1)
     apex = start + float(np.average(np.arange(stop - start), weights=total[: stop - start]))
     return Overload(first, last, apex, start, amount)
