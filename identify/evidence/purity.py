@@ -2,23 +2,69 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
+from typing import NamedTuple
 
 import numpy as np
 
 from identify.evidence.fragments import BACKGROUND
+from identify.evidence.purity_model import LEAST_CHANCE, PURITY_WEIGHTS
+from identify.evidence.shifted import dense_rows
 from identify.records import CleanSpectrum, Entry, FloatArray, Part, Peaks, Purity, Verdict
 
 MAX_ENTRIES = 30
-"""Entries of the hit list that are tried; a co-eluting compound below them is found by searching the residual spectrum."""
-PENALTY = 0.5
-"""An entry more must cut the misfit to this fraction or below (see `tests/benchmarks/fit_evidence.py purity`)."""
+"""Entries that are tried: hits of the query, and hits of what the best one leaves over."""
 LEAST_SHARE = 0.05
 """Smallest share of the intensity that counts as a compound of its own."""
 MOST_ALIKE = 0.75
 """Entries more alike than this (cosine of the weighted spectra) are one shape measured twice, not two compounds."""
 NOTABLE_RESIDUAL = 2.0
 """Residual peaks below this percentage of the base peak are not offered as a new query."""
+MOST_LEAVING = 8
+"""Hits among which the one is chosen whose remainder is searched."""
+SEARCHED_RESIDUAL, LEAST_PEAKS, LITTLE_LEFT = 1.0, 3, 0.05
+"""A residual is searched with its peaks of at least this percentage of the base peak, from so many peaks on, unless it is less
+than this share of the intensity."""
+LEAST_MISFIT = 1e-4
+"""Misfits below this one are equally good."""
+
+
+class Trial(NamedTuple):
+    """An explanation that was tried.
+
+    Attributes
+    ----------
+    chosen : tuple of int
+        Places of its entries.
+    misfit : float
+        Relative.
+    share, alike : float
+        Smallest share of the ion current and largest cosine among its entries; 1 and 0 for a single entry.
+    chance : float
+        That its last entry is needed; 0 for one with too small a share.
+    """
+
+    chosen: tuple[int, ...]
+    misfit: float
+    share: float = 1.0
+    alike: float = 0.0
+    chance: float = 1.0
+
+
+class System(NamedTuple):
+    """Query and entries on one axis, as relative intensities, and the weight of each m/z."""
+
+    query: FloatArray
+    matrix: FloatArray
+    axis: FloatArray
+    weight: FloatArray
+
+    def products(self) -> tuple[FloatArray, FloatArray, float, FloatArray]:
+        """Weighted products of the entries with each other, with the query, of the query with itself; currents of the entries."""
+        weighted = self.matrix * self.weight
+        total = float((self.weight * self.query**2).sum())
+        return weighted @ self.matrix.T, weighted @ self.query, total, self.matrix.sum(axis=1)
 
 
 def judge_purity(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> Purity:
@@ -38,34 +84,74 @@ def judge_purity(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> Purity:
 
     Notes
     -----
-    Weighted non-negative least squares on intensities, ``Σ w (q − Σ a_i e_i)²`` with ``w = m/z / (q + 1)``: errors grow with the
-    square root of intensity and high m/z tells more. All pairs are tried, and all third entries with the best pair. An entry
-    more is accepted only when it cuts the misfit to `PENALTY` of what it was, has at least `LEAST_SHARE`, and is not the same
-    shape again.
+    Weighted non-negative least squares on intensities, ``Σ w (q − Σ a_i e_i)²`` with ``w = m/z / (0.5 + q + 0.03 q²)``: errors
+    grow with the square root of an intensity and, for strong peaks, in proportion to it; high m/z tells more. All pairs are
+    tried, and all third entries with the best pair. An entry more costs: it is accepted when `needs_another` is at least
+    `LEAST_CHANCE`, a penalty chosen by cross-validation on mixtures of open records, and when its share is at least
+    `LEAST_SHARE` and its shape is not one of the others again.
     """
     usable = [entry for entry in entries[:MAX_ENTRIES] if len(entry.spectrum.nominal)]
     if not len(spectrum.nominal) or not usable:
         return Purity(Verdict.NOT_ASSESSED, "There is no hit to explain the query with.")
-    query, matrix, axis = _common_axis(spectrum, usable)
-    weight = axis / (query + 1.0)
-    gram = (matrix * weight) @ matrix.T
-    target = (matrix * weight) @ query
-    total = float((weight * query**2).sum())
-    chosen, misfits = _choose(gram, target, total)
+    system = prepare(spectrum, usable)
+    gram, target, total, currents = system.products()
+    trials = try_parts(gram, target, total, currents)
+    chosen = [trial.chosen for trial in trials if trial.chance >= LEAST_CHANCE][-1]
     amounts = _solve(gram, target, chosen)
-    fitted = amounts @ matrix[list(chosen)]
-    explained = float(np.minimum(fitted, query).sum() / query.sum())
-    return _describe(usable, chosen, amounts, query - fitted, axis, explained, misfits)
+    fitted = amounts @ system.matrix[list(chosen)]
+    explained = float(np.minimum(fitted, system.query).sum() / system.query.sum())
+    misfits = tuple(trial.misfit for trial in trials)
+    return _describe(usable, chosen, amounts, system.query - fitted, system.axis, explained, misfits)
 
 
-def _common_axis(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> tuple[FloatArray, FloatArray, FloatArray]:
+def leave_over(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> CleanSpectrum | None:
+    """What the best single entry leaves of a query, to be searched for a second compound; None when it is little.
+
+    Parameters
+    ----------
+    spectrum : CleanSpectrum
+        The query.
+    entries : sequence of Entry
+        Its hits, best first; the first `MOST_LEAVING` are tried.
+
+    Returns
+    -------
+    CleanSpectrum or None
+    """
+    usable = [entry for entry in entries[:MOST_LEAVING] if len(entry.spectrum.nominal)]
+    if not len(spectrum.nominal) or not usable:
+        return None
+    query, matrix, axis, weight = prepare(spectrum, usable)
+    products, lengths = matrix @ (weight * query), np.maximum((matrix * weight * matrix).sum(axis=1), 1e-12)
+    best = int(np.argmax(products**2 / lengths))
+    left = query - matrix[best] * (products[best] / lengths[best])
+    kept = left >= SEARCHED_RESIDUAL
+    if np.maximum(left, 0.0).sum() < LITTLE_LEFT * query.sum() or np.count_nonzero(kept) < LEAST_PEAKS:
+        return None
+    return CleanSpectrum(Peaks(axis[kept], left[kept]), None, spectrum.lowest_mz, spectrum.steps)
+
+
+def prepare(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> System:
+    """Query and entries over the range that the query and its best hits cover.
+
+    Parameters
+    ----------
+    spectrum : CleanSpectrum
+        With at least one peak.
+    entries : sequence of Entry
+        At least one, each with at least one peak.
+
+    Returns
+    -------
+    System
+    """
     lowest = max([spectrum.lowest_mz, *(entry.spectrum.lowest_mz for entry in entries[:3])])
-    top = int(max([spectrum.nominal.mz[-1], *(entry.spectrum.nominal.mz[-1] for entry in entries)]))
-    dense = np.zeros((len(entries) + 1, top + 1))
-    for row, peaks in enumerate([spectrum.nominal, *(entry.spectrum.nominal for entry in entries)]):
-        dense[row, peaks.mz.astype(int)] = peaks.relative
     lowest = min(lowest, int(spectrum.nominal.mz[-1]))
-    return dense[0, lowest:], dense[1:, lowest:], np.arange(lowest, top + 1, dtype=float)
+    spectra = [spectrum.nominal, *(entry.spectrum.nominal for entry in entries)]
+    top = int(max(peaks.mz[-1] for peaks in spectra))
+    dense = dense_rows(spectra, top + 1)
+    query, axis = dense[0, lowest:], np.arange(lowest, top + 1, dtype=float)
+    return System(query, dense[1:, lowest:], axis, axis / (0.5 + query + 0.03 * query**2))
 
 
 def _solve(gram: FloatArray, target: FloatArray, chosen: tuple[int, ...]) -> FloatArray:
@@ -83,29 +169,73 @@ def _solve(gram: FloatArray, target: FloatArray, chosen: tuple[int, ...]) -> Flo
     return amounts
 
 
-def _misfit(gram: FloatArray, target: FloatArray, total: float, chosen: tuple[int, ...]) -> float:
-    amounts = _solve(gram, target, chosen)
-    block = gram[np.ix_(chosen, chosen)]
-    return max(float(total - 2.0 * amounts @ target[list(chosen)] + amounts @ block @ amounts), 0.0) / total
+def try_parts(gram: FloatArray, target: FloatArray, total: float, currents: FloatArray) -> list[Trial]:
+    """The best single entry, the best pair, and if it is needed the best third entry with it.
 
+    Parameters
+    ----------
+    gram : ndarray, shape (n, n)
+        Weighted products of the entries.
+    target : ndarray, shape (n,)
+        Weighted products of the entries with the query.
+    total : float
+        Weighted product of the query with itself.
+    currents : ndarray, shape (n,)
+        Summed intensity of each entry over the common range.
 
-def _choose(gram: FloatArray, target: FloatArray, total: float) -> tuple[tuple[int, ...], tuple[float, ...]]:
+    Returns
+    -------
+    list of Trial
+        One to three.
+    """
     norms = np.sqrt(np.maximum(gram.diagonal(), 1e-12))
     alike = gram / np.outer(norms, norms)
     singles = (total - np.maximum(target, 0.0) ** 2 / norms**2) / total
-    best: tuple[int, ...] = (int(np.argmin(singles)),)
-    misfits = [max(float(singles[best[0]]), 0.0)]
+    first = int(np.argmin(singles))
+    trials = [Trial((first,), max(float(singles[first]), LEAST_MISFIT))]
     for tried in (_best_pair, _best_triple):
-        found = tried(gram, target, total, alike, best)
+        found = tried(gram, target, total, alike, trials[-1].chosen)
         if found is None:
             break
-        misfit, winner = found
-        misfits.append(misfit)
-        amounts = _solve(gram, target, winner)
-        if misfit > PENALTY * misfits[-2] or amounts.min() < LEAST_SHARE * amounts.sum():
+        misfit, chosen = max(found[0], LEAST_MISFIT), found[1]
+        share = _solve(gram, target, chosen) * currents[list(chosen)]
+        smallest = float(share.min() / max(share.sum(), 1e-12))
+        closest = max(float(alike[one, other]) for one in chosen for other in chosen if one != other)
+        chance = needs_another(trials[-1].misfit, misfit, smallest, closest) if smallest >= LEAST_SHARE else 0.0
+        trials.append(Trial(chosen, misfit, smallest, closest, chance))
+        if chance < LEAST_CHANCE:
             break
-        best = winner
-    return best, tuple(misfits)
+    return trials
+
+
+def needs_another(before: float, after: float, share: float, alike: float) -> float:
+    """Chance that a further entry is a compound of its own, in (0, 1).
+
+    Parameters
+    ----------
+    before, after : float
+        Relative misfit without and with it.
+    share : float
+        Smallest share of the ion current among the parts.
+    alike : float
+        Largest cosine among the parts.
+
+    Returns
+    -------
+    float
+        Fitted with as many mixtures as pure spectra, a quarter of these without an entry: good for a threshold, not a
+        probability in the laboratory.
+    """
+    logit = PURITY_WEIGHTS[0]
+    for weight, value in zip(PURITY_WEIGHTS[1:], purity_features(before, after, share, alike), strict=True):
+        logit += weight * value
+    return 1.0 / (1.0 + math.exp(-max(min(logit, 50.0), -50.0)))
+
+
+def purity_features(before: float, after: float, share: float, alike: float) -> tuple[float, ...]:
+    """What `needs_another` weighs: the misfit, its logarithmic gain, share and likeness of the parts, and two products."""
+    start, gain = math.log(before), math.log(after / before)
+    return start, gain, math.log(max(share, 1e-3)), alike, start * gain, gain * gain
 
 
 def _best_pair(
@@ -128,15 +258,19 @@ def _best_pair(
 def _best_triple(
     gram: FloatArray, target: FloatArray, total: float, alike: FloatArray, best: tuple[int, ...]
 ) -> tuple[float, tuple[int, ...]] | None:
-    """The best pair with the third entry that cuts the misfit most."""
-    thirds = [
-        place
-        for place in range(len(target))
-        if place not in best and all(alike[place, other] < MOST_ALIKE for other in best)
-    ]
-    if not thirds:
+    """The best pair with the third entry that cuts the misfit most among those that need all three, all solved at once."""
+    different = (alike[:, list(best)] < MOST_ALIKE).all(axis=1)
+    different[list(best)] = False
+    thirds = np.flatnonzero(different)
+    places = np.stack([np.full(thirds.size, best[0]), np.full(thirds.size, best[1]), thirds], axis=1)
+    block = gram[places[:, :, None], places[:, None, :]] + 1e-9 * gram.diagonal().max() * np.eye(3)
+    wanted = target[places]
+    amounts = np.linalg.solve(block, wanted[:, :, None])[:, :, 0]
+    misfit = np.where((amounts > 0).all(axis=1), total - (amounts * wanted).sum(axis=1), np.inf) / total
+    if not np.isfinite(misfit).any():
         return None
-    return min((_misfit(gram, target, total, (*best, place)), (*best, place)) for place in thirds)
+    winner = int(np.argmin(misfit))
+    return max(float(misfit[winner]), 0.0), (*best, int(thirds[winner]))
 
 
 def _describe(
@@ -179,10 +313,8 @@ def _part(entry: Entry, share: float) -> Part:
 
 
 def _residual(left: FloatArray, axis: FloatArray) -> tuple[Peaks | None, tuple[str, ...]]:
-    notable = left >= NOTABLE_RESIDUAL
-    known = np.array([int(mz) in BACKGROUND for mz in axis.tolist()], dtype=bool)
-    named = tuple(sorted({BACKGROUND[int(mz)] for mz in axis[notable & known].tolist()}))
-    kept = notable & ~known
-    if np.count_nonzero(kept) < 3:
-        return None, named
-    return Peaks(axis[kept], left[kept]), named
+    notable = np.flatnonzero(left >= NOTABLE_RESIDUAL)
+    known = [int(mz) in BACKGROUND for mz in axis[notable].tolist()]
+    named = tuple(sorted({BACKGROUND[int(mz)] for mz in axis[notable[known]].tolist()}))
+    kept = notable[~np.array(known, dtype=bool)]
+    return (Peaks(axis[kept], left[kept]) if kept.size >= LEAST_PEAKS else None), named

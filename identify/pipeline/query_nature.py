@@ -6,7 +6,7 @@ from collections.abc import Callable, Sequence
 
 from identify.evidence.classes import find_analogues, find_classes
 from identify.evidence.facts import QueryFacts
-from identify.evidence.purity import MAX_ENTRIES, judge_purity
+from identify.evidence.purity import MAX_ENTRIES, judge_purity, leave_over
 from identify.evidence.shifted import match_shifted
 from identify.ranking.grouping import Match, compound_key
 from identify.ranking.shortlist import Draft
@@ -27,8 +27,6 @@ N_DRAFTS = 18
 """Compounds of the shortlist tried as parts; the rest of `MAX_ENTRIES` are those that the query contains best."""
 N_OF_RESIDUAL = 8
 """Compounds found by searching the residual that are tried as further parts."""
-LITTLE_EXPLAINED = 0.85
-"""Below this explained share a residual is searched for a second compound."""
 SURE_MASS = 0.8
 """From this probability on, the molecular mass fixes the mass difference to an analogue."""
 LEAST_ALIKE = 0.5
@@ -51,7 +49,7 @@ def judge_parts(spectrum: CleanSpectrum, drafts: Sequence[Draft], matches: Seque
     matches : sequence of Match
         All hits with their entries.
     search : callable
-        Hits of another spectrum; called at most once, with the residual where the hits leave much unexplained.
+        Hits of another spectrum; called at most once, with what the best one leaves over where that is much.
 
     Returns
     -------
@@ -62,11 +60,9 @@ def judge_parts(spectrum: CleanSpectrum, drafts: Sequence[Draft], matches: Seque
         if len(tried) == MAX_ENTRIES - N_OF_RESIDUAL:
             break
         tried.setdefault(compound_key(match.entry), match.entry)
-    purity = judge_purity(spectrum, list(tried.values()))
-    if purity.residual is None or purity.explained_share >= LITTLE_EXPLAINED:
-        return purity
-    left = CleanSpectrum(purity.residual, None, spectrum.lowest_mz)
-    for match in sorted(search(left), key=lambda match: -match.hit.cosine):
+    left = leave_over(spectrum, list(tried.values()))
+    found = search(left) if left is not None else ()
+    for match in sorted(found, key=lambda match: -match.hit.cosine):
         if len(tried) == MAX_ENTRIES:
             break
         tried.setdefault(compound_key(match.entry), match.entry)

@@ -111,9 +111,47 @@ def test_best_pair_equals_trying_all_pairs(build) -> None:
 
         pairs = [(one, other) for one in range(6) for other in range(one)]
         plain = min(
-            purity._misfit(gram, target, total, pair)
-            for pair in pairs
-            if alike[pair] < purity.MOST_ALIKE and needs_both(pair)
+            left_by(matrix, query, pair) for pair in pairs if alike[pair] < purity.MOST_ALIKE and needs_both(pair)
         )
         assert found is not None
         assert found[0] == pytest.approx(plain, abs=1e-6)
+
+
+def left_by(matrix: np.ndarray, query: np.ndarray, chosen: tuple[int, ...]) -> float:
+    """Relative misfit by non-negative least squares of scipy."""
+    from scipy.optimize import nnls
+
+    return float(nnls(matrix[list(chosen)].T, query)[1] ** 2 / (query @ query))
+
+
+def test_best_third_entry_equals_trying_all(build) -> None:
+    """Oracle: all thirds at once against non-negative least squares of scipy on each."""
+    rng = np.random.default_rng(9)
+    for _ in range(30):
+        matrix = rng.uniform(0, 1, (7, 40)) * (rng.uniform(0, 1, (7, 40)) < 0.3)
+        query = rng.uniform(0.2, 1, 3) @ matrix[:3] + rng.uniform(0, 0.2, 40)
+        gram, target, total = matrix @ matrix.T, matrix @ query, float(query @ query)
+        lengths = np.sqrt(gram.diagonal())
+        found = purity._best_triple(gram, target, total, gram / np.outer(lengths, lengths), (0, 1))
+        assert found is not None
+        plain = min(left_by(matrix, query, (0, 1, third)) for third in range(2, 7))
+        assert found[0] == pytest.approx(plain, abs=1e-6)
+
+
+def test_alike_parts_are_not_tried_as_a_pair(build) -> None:
+    gram = np.array([[1.0, 0.9], [0.9, 1.0]])
+    assert purity._best_pair(gram, np.array([1.0, 1.0]), 2.0, gram, (0,)) is None
+
+
+def test_what_the_best_entry_leaves_is_a_query_for_a_second_compound(build, entries) -> None:
+    left = purity.leave_over(build.spectrum(mix((NAPHTHALENE, 0.7), (PHENOL, 0.3))), entries[:2])
+    assert left is not None
+    assert left.nominal.base_peak_mz == 94
+    assert purity.leave_over(build.spectrum(NAPHTHALENE), entries) is None, "nothing is left of a pure spectrum"
+    assert purity.leave_over(build.spectrum({}), entries) is None
+
+
+def test_a_further_entry_must_bring_more_when_it_is_more_like_the_first() -> None:
+    better = purity.needs_another(0.3, 0.03, 0.4, 0.1)
+    assert better > purity.LEAST_CHANCE > purity.needs_another(0.3, 0.25, 0.4, 0.1)
+    assert purity.needs_another(0.3, 0.1, 0.4, 0.1) > purity.needs_another(0.3, 0.1, 0.4, 0.7)

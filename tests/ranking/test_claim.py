@@ -9,7 +9,7 @@ from identify.ranking.alternatives import Chances, group_isomers
 from identify.ranking.claim import make_claim, percent
 from identify.ranking.features import NAMES
 from identify.ranking.model import default_model
-from identify.records import Candidate, Claim, ClaimLevel, Entry, EvidenceItem, Explanation, Verdict
+from identify.records import Candidate, Claim, ClaimLevel, Entry, EvidenceItem, Explanation, Part, Purity, Verdict
 from identify.settings import Settings
 from identify.spectra.align import align
 from tests.ranking.builders import XYLENE, build_entry, build_item, build_query
@@ -25,6 +25,7 @@ def claim_of(
     entries: list[Entry] | None = None,
     evidence: tuple[EvidenceItem, ...] = (),
     limit: float = 0.95,
+    purity: Purity | None = None,
 ) -> Claim:
     """Claim for given probabilities; the first group holds all unlisted isomers."""
     entries = entries or [build_entry(n, XYLENE, smiles=ORTHO if n == 0 else META) for n in range(len(listed))]
@@ -41,7 +42,7 @@ def claim_of(
         for n, entry in enumerate(entries)
     ]  # fmt: skip
     model = replace(default_model(), same_class=0.5)
-    return make_claim(candidates, chances, model, Settings(claim_threshold=limit))
+    return make_claim(candidates, chances, model, Settings(claim_threshold=limit), purity)
 
 
 def test_a_compound_with_independent_evidence_is_supported() -> None:
@@ -144,3 +145,21 @@ def test_percent_never_rounds_to_certainty() -> None:
         "> 99 %",
         "> 99 %",
     ]
+
+
+def test_of_a_mixture_no_compound_group_or_class_is_claimed() -> None:
+    parts = (Part("naphthalene", "A1", 0.7), Part("dodecane", "A2", 0.3))
+    mixed = Purity(Verdict.CONFLICTS, "Two entries together explain it.", parts)
+    claim = claim_of([0.99], 0.005, 0.005, evidence=(build_item("molecular ion", 0.5),), purity=mixed)
+    assert claim.level is ClaimLevel.NO_CLAIM
+    assert "two compounds together" in claim.statement
+    assert "naphthalene (70 % of the signal) and dodecane (30 % of the signal)" in claim.statement
+    assert "take a cleaner spectrum" in claim.statement
+    assert claim.members == ("naphthalene", "dodecane")
+    assert claim.compound_probability == 0.99, "what one compound would be given is still said"
+
+
+@pytest.mark.parametrize("verdict", [Verdict.AGREES, Verdict.INCONCLUSIVE, Verdict.NOT_ASSESSED])
+def test_only_a_mixture_holds_a_claim_back(verdict: Verdict) -> None:
+    with_purity = claim_of([0.97], 0.02, 0.01, purity=Purity(verdict, "said"))
+    assert with_purity == claim_of([0.97], 0.02, 0.01)
