@@ -35,7 +35,11 @@ def align(query: CleanSpectrum, entry: CleanSpectrum) -> AlignedPeaks:
     query_start = int(np.searchsorted(query_mz, lowest))
     entry_start = int(np.searchsorted(entry_mz, lowest))
     query_mz, entry_mz = query_mz[query_start:], entry_mz[entry_start:]
-    axis = np.union1d(query_mz, entry_mz)
+    both = np.concatenate([query_mz, entry_mz])
+    both.sort()
+    is_first = np.ones(both.size, dtype=np.bool_)
+    np.not_equal(both[1:], both[:-1], out=is_first[1:])
+    axis = both[is_first]
     query_intensity, entry_intensity = np.zeros(axis.size), np.zeros(axis.size)
     query_intensity[np.searchsorted(axis, query_mz)] = query.nominal.relative[query_start:]
     entry_intensity[np.searchsorted(axis, entry_mz)] = entry.nominal.relative[entry_start:]
