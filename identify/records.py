@@ -439,6 +439,8 @@ class LibraryState:
     fingerprint: str
     entries: int
     compounds: int
+    calibration: str = ""
+    """Calibration of the probabilities that the library carries; empty for the shipped one."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -69,6 +69,8 @@ class Settings:
         Probability a level must reach to be claimed, in [0.5, 1).
     tolerance_ppm, tolerance_da : float
         Accurate-mass tolerance: the larger of the two applies.
+    use_calibration : bool
+        Use the calibration of the probabilities that a library carries (`library calibrate`); else the shipped one.
     """
 
     weighting: Weighting = field(default_factory=Weighting)
@@ -79,6 +81,7 @@ class Settings:
     tolerance_ppm: float = 10.0
     tolerance_da: float = 0.002
     prefer_own_standards: bool = True
+    use_calibration: bool = True
 
     def __post_init__(self) -> None:
         _check_range("top", self.top, 1, 200)

@@ -12,6 +12,7 @@ from identify.cli.confirm import confirm, instrument
 from identify.cli.demo import demo
 from identify.cli.library import library
 from identify.cli.library_audit import audit, export
+from identify.cli.library_calibrate import calibrate
 from identify.cli.library_care import (
     affected,
     backup,
@@ -55,7 +56,19 @@ def ionwitness() -> None:
 
 for _command in (demo, search, run, confirm, instrument, compare, standard, library, serve):
     ionwitness.add_command(_command)
-for _command in (audit, export, verify, backup, restore, migrate, quarantine, reinstate, affected, consensus):
+for _command in (
+    audit,
+    export,
+    verify,
+    backup,
+    restore,
+    migrate,
+    quarantine,
+    reinstate,
+    affected,
+    consensus,
+    calibrate,
+):
     library.add_command(_command)
 for _command in (create_key, sign, check_signed):
     library.add_command(_command)

@@ -14,6 +14,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from pathlib import Path
 
 from identify.errors import SpectrumError, UsageError
@@ -23,9 +24,12 @@ from identify.evidence.molecular_ion import estimate_molecular_ion
 from identify.index import SearchIndex, search_index
 from identify.index.union import merge_hits
 from identify.library.cache import load_index
+from identify.library.calibration import read_calibration
 from identify.library.store import Library, open_library
 from identify.pipeline.query_nature import describe_unnamed, judge_parts
+from identify.ranking.calibration import SHIPPED, Shift, shift_model
 from identify.ranking.grouping import Match
+from identify.ranking.model import RankingModel, default_model
 from identify.ranking.rank import rank
 from identify.ranking.shortlist import shortlist
 from identify.records import (
@@ -55,6 +59,8 @@ class SearchableLibrary:
     library: Library
     index: SearchIndex
     state: LibraryState
+    shift: Shift = SHIPPED
+    """Calibration of the probabilities that the library carries."""
 
 
 @contextmanager
@@ -95,8 +101,37 @@ def open_libraries(
         opened = []
         for path, event in zip(paths, events, strict=True):
             library = stack.enter_context(open_library(path, as_of=event))
-            opened.append(SearchableLibrary(library, load_index(library, settings.weighting), library.state()))
+            opened.append(_make_searchable(library, settings))
         yield tuple(opened)
+
+
+def _make_searchable(library: Library, settings: Settings) -> SearchableLibrary:
+    calibration = read_calibration(library) if settings.use_calibration else None
+    state = library.state()
+    index = load_index(library, settings.weighting)
+    if calibration is None:
+        return SearchableLibrary(library, index, state)
+    return SearchableLibrary(library, index, replace(state, calibration=calibration.described), calibration.shift)
+
+
+def choose_model(libraries: Sequence[SearchableLibrary]) -> RankingModel:
+    """The shipped ranking model, calibrated as the libraries say if all say the same.
+
+    Parameters
+    ----------
+    libraries : sequence of SearchableLibrary
+
+    Returns
+    -------
+    RankingModel
+    """
+    shifts = {item.shift for item in libraries}
+    return _calibrated(shifts.pop()) if len(shifts) == 1 else default_model()
+
+
+@lru_cache(maxsize=64)
+def _calibrated(shift: Shift) -> RankingModel:
+    return shift_model(default_model(), shift)
 
 
 def identify_query(query: Query, libraries: Sequence[SearchableLibrary], settings: Settings) -> Identification:
@@ -118,13 +153,14 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
         return _find_matches(spectrum, libraries, settings)
 
     matches = find(query.spectrum)
-    drafts = shortlist(query.spectrum, matches, settings)
-    neighbours = [(draft.entry, draft.cosine) for draft in drafts]
+    model = choose_model(libraries)
+    drafts = shortlist(query.spectrum, matches, settings, model)
+    neighbours = [(match.entry, match.hit.cosine) for match in sorted(matches, key=lambda match: -match.hit.cosine)]
     molecular_ion = estimate_molecular_ion(query.spectrum, neighbours)
     facts = build_query_facts(query)
     evidence = [gather_evidence(query, draft.entry, draft.aligned, settings, facts) for draft in drafts]
     purity = judge_parts(query.spectrum, drafts, matches, find)
-    ranking = rank(query, drafts, evidence, molecular_ion, settings, purity=purity)
+    ranking = rank(query, drafts, evidence, molecular_ion, settings, model, purity=purity)
     classes, analogues = describe_unnamed(query, facts, ranking.claim, purity, molecular_ion, neighbours)
     return Identification(
         query=query,

@@ -104,6 +104,8 @@ class RankingModel:
         Log-odds of something else, over `identify.ranking.alternatives.ELSEWHERE_NAMES`.
     same_class : float
         Share of queries answered by something else whose compound is of the best candidate's class all the same.
+    sharpness : float
+        Factor on all log-odds before they become probabilities; 1 unless a library was calibrated.
     """
 
     provenance: str
@@ -114,6 +116,7 @@ class RankingModel:
     unlisted: Linear
     elsewhere: Linear
     same_class: float
+    sharpness: float = 1.0
 
 
 def build_model(coefficients: Mapping[str, Any]) -> RankingModel:

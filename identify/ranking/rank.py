@@ -36,6 +36,47 @@ class Ranking(NamedTuple):
     follow_up: tuple[FollowUp, ...]
 
 
+class Answers(NamedTuple):
+    """Log-odds of all answers to a query, before they become probabilities.
+
+    Attributes
+    ----------
+    listed : array of shape (n_candidates,)
+    unlisted : array of shape (n_groups,)
+        Isomers without an entry; ``-inf`` where the formula is not known, so that none can be spoken of.
+    elsewhere : float
+        Something else.
+    groups : Groups
+    """
+
+    listed: FloatArray
+    unlisted: FloatArray
+    elsewhere: float
+    groups: Groups
+
+
+def list_answers(drafts: Sequence[Draft], log_odds: FloatArray, model: RankingModel) -> Answers:
+    """Log-odds of each listed compound, of unlisted isomers of each group, and of something else.
+
+    Parameters
+    ----------
+    drafts : sequence of Draft
+        At least one.
+    log_odds : array of shape (n_drafts,)
+        For each compound, before its rivals are looked at.
+    model : RankingModel
+
+    Returns
+    -------
+    Answers
+    """
+    features = np.array([draft.features for draft in drafts])
+    groups = group_isomers([draft.entry for draft in drafts], features, log_odds)
+    unlisted = model.unlisted.value(groups.unlisted) + _log_sums(log_odds, groups)
+    unlisted = np.where(np.array([bool(key) for key in groups.keys]), unlisted, -np.inf)
+    return Answers(log_odds, unlisted, float(model.elsewhere.value(groups.elsewhere)), groups)
+
+
 def weigh_answers(drafts: Sequence[Draft], log_odds: FloatArray, model: RankingModel) -> Chances:
     """Probabilities of each listed compound, of unlisted isomers, and of something else.
 
@@ -51,16 +92,38 @@ def weigh_answers(drafts: Sequence[Draft], log_odds: FloatArray, model: RankingM
     -------
     Chances
     """
-    features = np.array([draft.features for draft in drafts])
-    groups = group_isomers([draft.entry for draft in drafts], features, log_odds)
-    unlisted = model.unlisted.value(groups.unlisted) + _log_sums(log_odds, groups)
-    # An isomer without an entry can only be spoken of where the formula is known.
-    unlisted = np.where(np.array([bool(key) for key in groups.keys]), unlisted, -np.inf)
-    everything = np.concatenate([log_odds, unlisted, [float(model.elsewhere.value(groups.elsewhere))]])
-    chance = np.exp(everything - everything.max())
+    answers = list_answers(drafts, log_odds, model)
+    everything = np.concatenate([log_odds, answers.unlisted, [answers.elsewhere]])
+    chance = np.exp(model.sharpness * (everything - everything.max()))
     chance /= chance.sum()
     n = len(drafts)
-    return Chances(chance[:n], chance[n:-1], float(chance[-1]), groups)
+    return Chances(chance[:n], chance[n:-1], float(chance[-1]), answers.groups)
+
+
+def explain_drafts(
+    drafts: Sequence[Draft],
+    evidence: Sequence[Sequence[EvidenceItem]],
+    molecular_ion: MolecularIonEstimate,
+    model: RankingModel,
+) -> list[Explanation]:
+    """What speaks for each draft before its rivals are looked at; its value is the log-odds.
+
+    Parameters
+    ----------
+    drafts : sequence of Draft
+    evidence : sequence of sequences of EvidenceItem
+        As many as drafts.
+    molecular_ion : MolecularIonEstimate
+    model : RankingModel
+
+    Returns
+    -------
+    list of Explanation
+    """
+    return [
+        explain_candidate(model, draft.match, found, _nominal_mass(draft), molecular_ion)
+        for draft, found in zip(drafts, evidence, strict=True)
+    ]
 
 
 def rank(
@@ -99,10 +162,7 @@ def rank(
     if not drafts:
         return Ranking((), 0.0, make_claim((), None, model, settings), ())
     items = [tuple(evidence[place]) if place < len(evidence) else () for place in range(len(drafts))]
-    told = [
-        explain_candidate(model, draft.match, found, _nominal_mass(draft), molecular_ion)
-        for draft, found in zip(drafts, items, strict=True)
-    ]
+    told = explain_drafts(drafts, items, molecular_ion, model)
     log_odds = np.array([explained.value for explained in told])
     order = np.argsort(-log_odds, kind="stable")
     drafts, items, told = [drafts[n] for n in order], [items[n] for n in order], [told[n] for n in order]

@@ -281,7 +281,8 @@ def _cleaning_summary(steps: Sequence[CleaningStep]) -> str:
 
 def _library(state: LibraryState) -> Fact:
     size = f"{counted(state.entries, 'entry', 'entries')} of {counted(state.compounds, 'compound')}"
-    return Fact(visible_text(state.path), f"{size}, fingerprint {visible_text(state.fingerprint)}")
+    calibration = f"; probabilities calibrated by {visible_text(state.calibration)}" if state.calibration else ""
+    return Fact(visible_text(state.path), f"{size}, fingerprint {visible_text(state.fingerprint)}{calibration}")
 
 
 def _credits(report: Report) -> tuple[CreditRow, ...]:

@@ -194,6 +194,8 @@ def _print_libraries(report: Report, console: Console) -> None:
             f"{counted(state.compounds, 'compound')}, fingerprint {visible_text(state.fingerprint)[:16]}"
         )
         _print(console, f"{text} · {visible_text(report.program)} {visible_text(report.version)}", style="dim")
+        if state.calibration:
+            _print(console, f"Probabilities calibrated by {visible_text(state.calibration)}", style="dim", indent=2)
 
 
 def _print(console: Console, text: str, *, style: str = "", indent: int = 0, hanging: int = 0) -> None:

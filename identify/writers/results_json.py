@@ -337,6 +337,7 @@ def _library(state: LibraryState) -> dict[str, Any]:
         "fingerprint": state.fingerprint,
         "entries": state.entries,
         "compounds": state.compounds,
+        "calibration": state.calibration,
     }
 
 
