@@ -16,6 +16,8 @@ LENDERS = 5
 SELECTIVE_APEX_SCANS = 0.25
 SELECTIVE_FLANK = 0.08
 """An ion that only one of several crowded clusters shows has its apex there and falls to this share on both sides."""
+MIN_OTHER_FORM = 0.22
+"""Share of the usual shape's area by which a shape of usual width must depart from it to be used in its place."""
 MIN_AGREEMENT = 0.95
 """Correlation with the median shape that an ion needs to take part in the mean."""
 
@@ -92,9 +94,11 @@ def _window(apex: float, half: int, n_scans: int) -> tuple[int, int]:
 
 
 def _differs(own: Shape, usual: Shape) -> bool:
-    """Whether a shape is narrower or wider than the usual one by more than noise, and still a single peak's."""
-    ratio = float(own.values.sum() / usual.values.sum())
-    return 0.35 <= ratio <= 0.85 or 1.18 <= ratio <= 2.2
+    """Whether a shape is narrower, wider or otherwise formed than the usual one by more than noise, and still a single peak's."""
+    extent = float(usual.values.sum())
+    ratio = float(own.values.sum()) / extent
+    form = float(np.abs(own.values - usual.on(own.first, own.first + own.values.size)).sum()) / extent
+    return 0.35 <= ratio <= 0.85 or 1.18 <= ratio <= 2.2 or (0.85 < ratio < 1.18 and form >= MIN_OTHER_FORM)
 
 
 def _own_shape(cluster: Cluster, signal: FloatArray, half: int) -> Shape | None:
