@@ -60,12 +60,14 @@ def audit(path: Path, csv_path: Path | None, shown: int, is_applied: bool, who: 
 
 
 def _show(report: AuditReport, standing: dict[str, str], shown: int) -> None:
-    doubtful = sorted(
-        (item for item in report.audits if item.findings), key=lambda item: (_ORDER[item.proposal], -item.log_odds, item.entry_id)
-    )  # fmt: skip
+    from identify.library.audit import USE
+
+    doubtful = [item for item in report.audits if item.proposal != USE]
+    doubtful.sort(key=lambda item: (_ORDER[item.proposal], -item.log_odds, item.entry_id))
     say(f"{report.path}: {len(report.audits):,} entries, fingerprint {report.fingerprint[:16]}")
     say("proposed: " + ", ".join(f"{name} {n:,}" for name, n in report.by_proposal.items()))
-    say("findings: " + (", ".join(f"{kind} {n:,}" for kind, n in report.by_finding.items()) or "none"))
+    for title, numbers in (("findings", report.by_finding), ("notes", report.by_note)):
+        say(f"{title}: " + (", ".join(f"{kind} {n:,}" for kind, n in numbers.items()) or "none"))
     for item in doubtful[:shown]:
         say(
             f"{item.accession} {item.name} ({standing[item.accession]}): {item.proposal}, log-odds {item.log_odds:+.1f}"
@@ -77,10 +79,10 @@ def _show(report: AuditReport, standing: dict[str, str], shown: int) -> None:
         for finding in item.findings:
             say(f"  {finding.grade.value}, {finding.kind}: {finding.reason}")
     if len(doubtful) > shown:
-        say(f"and {len(doubtful) - shown:,} more entries with findings")
+        say(f"and {len(doubtful) - shown:,} more entries not proposed for use without caution")
 
 
-_ORDER = {"quarantine": 0, "use with caution": 1, "use": 2}
+_ORDER = {"quarantine": 0, "use with caution": 1}
 
 
 def _write(path: Path, report: AuditReport, standing: dict[str, str]) -> None:

@@ -9,15 +9,26 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Callable, Collection, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
-from identify.evidence.facts import formula_facts, spectrum_facts
+from identify.evidence.facts import FormulaFacts, formula_facts, spectrum_facts
 from identify.index import SearchIndex, search_index
-from identify.library.audit_cells import DEPTH, Cell, Neighbour, have_same_form, observe_entry, top_of_cluster
+from identify.library.audit_cells import (
+    DEPTH,
+    LEAST_COSINE,
+    NEAR_COSINE,
+    SHIFT,
+    Cell,
+    Neighbour,
+    have_same_form,
+    may_be_shifted,
+    observe_entry,
+    top_of_cluster,
+)
 from identify.library.audit_metadata import AuditFinding, Grade, check_statements
 from identify.library.audit_weights import BASE_LOG_ODDS, CAUTION_FROM, QUARANTINE_FROM, WEIGHTS
 from identify.library.store import Library
-from identify.records import Entry, EntryStatus
+from identify.records import CleanSpectrum, Entry, EntryStatus, Peaks
 from identify.similarity.scores import cosine_score
 from identify.spectra.align import align
 
@@ -26,6 +37,10 @@ Progress = Callable[[int, str], None]
 USE, CAUTION, QUARANTINE = "use", "use with caution", "quarantine"
 SHOWN_FROM = 0.5
 """Observations with less evidence against the entry are not findings."""
+SILENT = frozenset(
+    {"no similar spectrum", "usual loss", "wide, excess explainable", "even N, few even", "odd N, few even"}
+)
+"""Observations that lack support rather than contradict: they count, but are never more than a note."""
 SERIOUS_FROM = 2.0
 NEAR_DUPLICATE = 0.9999
 IDENTICAL_TO_OTHER = 0.995
@@ -65,15 +80,27 @@ class AuditReport:
 
     @property
     def by_finding(self) -> Mapping[str, int]:
-        """Number of entries by kind of finding, most frequent first."""
-        kinds = (kind for audit in self.audits for kind in {finding.kind for finding in audit.findings})
+        """Number of entries by kind of finding, most frequent first; notes are not counted."""
+        return self._count(lambda finding: finding.grade is not Grade.NOTE)
+
+    @property
+    def by_note(self) -> Mapping[str, int]:
+        """Number of entries by kind of note, most frequent first."""
+        return self._count(lambda finding: finding.grade is Grade.NOTE)
+
+    def _count(self, is_wanted: Callable[[AuditFinding], bool]) -> dict[str, int]:
+        kinds = (
+            kind for audit in self.audits for kind in {finding.kind for finding in audit.findings if is_wanted(finding)}
+        )
         return dict(Counter(kinds).most_common())
 
     @property
     def to_quarantine(self) -> Mapping[str, str]:
         """Reasons by accession for entries proposed for quarantine, as `quarantine_entries` takes them."""
         return {
-            audit.accession: "; ".join(finding.kind for finding in audit.findings if finding.grade is not Grade.NOTE)
+            audit.accession: "; ".join(
+                [finding.kind for finding in audit.findings if finding.grade is not Grade.NOTE] or ["many small signs"]
+            )
             for audit in self.audits
             if audit.proposal == QUARANTINE
         }
@@ -140,20 +167,55 @@ def audit_entry(library: Library, index: SearchIndex, entry: Entry, *, overruled
     -------
     EntryAudit
     """
-    neighbours, replicates = look_around(library, index, entry, leave_out={entry.id})
-    cells = observe_entry(entry, neighbours, replicates)
+    cells, neighbours, replicates = observe_in_library(library, index, entry, leave_out={entry.id})
     log_odds, observed = weigh_cells(cells)
     (record,) = library.get_records([entry.id])
     stated = check_statements(entry, record, [replicate.entry for replicate in replicates])
-    twins = _find_twins(entry, neighbours)
-    findings = sorted((*stated, *twins, *observed), key=lambda finding: (_ORDER[finding.grade], -finding.log_odds))
     proposal = propose(log_odds, stated)
+    if proposal == USE or log_odds < CAUTION_FROM:  # the sum speaks for the entry: single signs are no findings
+        observed = [replace(finding, grade=Grade.NOTE) for finding in observed]
+    found = (*stated, *_find_twins(entry, neighbours), *observed)
+    findings = sorted(found, key=lambda finding: (_ORDER[finding.grade], -finding.log_odds))
     if overruled and proposal == QUARANTINE:
         proposal = CAUTION
-    suspicion = "" if proposal == USE else suspect(entry, neighbours, replicates)
+    suspicion = suspect(entry, neighbours, replicates, cells) if log_odds >= CAUTION_FROM else ""
     return EntryAudit(
         entry.id, entry.accession, entry.identity.name, tuple(findings), log_odds, suspicion, proposal, overruled
     )
+
+
+def observe_in_library(
+    library: Library, index: SearchIndex, entry: Entry, *, leave_out: Collection[int]
+) -> tuple[tuple[Cell, ...], list[Neighbour], list[Neighbour]]:
+    """Cells of an entry, with the neighbours and replicates they come from.
+
+    Parameters
+    ----------
+    library : Library
+    index : SearchIndex
+    entry : Entry
+        Need not be in the library.
+    leave_out : collection of int
+        Entry ids that do not count as neighbours: its own.
+
+    Returns
+    -------
+    cells : tuple of Cell
+    neighbours, replicates : list of Neighbour
+        Best first.
+    """
+    neighbours, replicates = look_around(library, index, entry, leave_out=leave_out)
+    shifted = None
+    if may_be_shifted(entry, neighbours, replicates):
+        hits = search_index(index, _one_lower(entry.spectrum), 2 + len(leave_out))
+        shifted = max((hit.cosine for hit in hits if hit.entry_id not in leave_out), default=0.0)
+    return observe_entry(entry, neighbours, replicates, cosine_if_shifted=shifted), neighbours, replicates
+
+
+def _one_lower(spectrum: CleanSpectrum) -> CleanSpectrum:
+    peaks = spectrum.nominal
+    kept = peaks.mz > 1.0
+    return CleanSpectrum(Peaks(peaks.mz[kept] - 1.0, peaks.intensity[kept]), None, max(spectrum.lowest_mz - 1, 0))
 
 
 _ORDER = {Grade.SERIOUS: 0, Grade.CAUTION: 1, Grade.NOTE: 2}
@@ -178,7 +240,8 @@ def look_around(
     neighbours, replicates : list of Neighbour
         Best first.
     """
-    hits = [hit for hit in search_index(index, entry.spectrum, DEPTH) if hit.entry_id not in leave_out]
+    found = search_index(index, entry.spectrum, DEPTH)
+    hits = [hit for hit in found if hit.cosine >= LEAST_COSINE and hit.entry_id not in leave_out]
     entries = library.get_entries([hit.entry_id for hit in hits])
     neighbours = [Neighbour(other, hit.cosine) for other, hit in zip(entries, hits, strict=True)]
     replicates = [neighbour for neighbour in neighbours if have_same_form(entry, neighbour.entry)]
@@ -209,6 +272,7 @@ def weigh_cells(cells: Sequence[Cell]) -> tuple[float, list[AuditFinding]]:
         total += weight
         if weight >= SHOWN_FROM:
             grade = Grade.SERIOUS if weight >= SERIOUS_FROM else Grade.CAUTION
+            grade = Grade.NOTE if cell.cell in SILENT else grade
             findings.append(AuditFinding(cell.kind, grade, cell.reason, cell.observed, cell.expected, weight))
     return total, findings
 
@@ -235,34 +299,48 @@ def _find_twins(entry: Entry, neighbours: Sequence[Neighbour]) -> list[AuditFind
     return found[:2]
 
 
-def suspect(entry: Entry, neighbours: Sequence[Neighbour], replicates: Sequence[Neighbour]) -> str:
+def suspect(
+    entry: Entry, neighbours: Sequence[Neighbour], replicates: Sequence[Neighbour], cells: Sequence[Cell] = ()
+) -> str:
     """What the error in an entry may be, in words; empty when nothing fits.
 
     Parameters
     ----------
     entry : Entry
     neighbours, replicates : sequence of Neighbour
+    cells : sequence of Cell
 
     Returns
     -------
     str
     """
     formula = formula_facts(entry.formula_as_measured)
-    best = next((neighbour for neighbour in neighbours if neighbour.cosine >= 0.8), None)
+    if any(cell.kind == SHIFT and cell.cell in {"far better", "better"} for cell in cells):
+        return "all m/z one too high"
+    best = next((neighbour for neighbour in neighbours if neighbour.cosine >= NEAR_COSINE), None)
     if best is not None and best.entry.compound_id != entry.compound_id and not replicates:
         known = formula_facts(best.entry.formula_as_measured)
         if known is not None and formula is not None and known.nominal_mass != formula.nominal_mass:
             return f"the spectrum resembles that of {best.entry.identity.name} ({best.entry.accession})"
     if replicates and replicates[0].cosine < 0.5 and best is not None:
         return f"unlike the compound's other spectra, it resembles that of {best.entry.identity.name}"
-    if formula is None:
-        return ""
-    shift = top_of_cluster(spectrum_facts(entry.spectrum, entry.acquisition)) - formula.nominal_mass
+    return "" if formula is None else _suspect_mass(entry, formula)
+
+
+def _suspect_mass(entry: Entry, formula: FormulaFacts) -> str:
+    """What the ions at and above M suggest."""
+    facts = spectrum_facts(entry.spectrum, entry.acquisition)
+    mass = formula.nominal_mass
+    if formula.ratio(2) >= 0.3:
+        from_isotope = facts.at(mass + 2) / formula.ratio(2)
+        if from_isotope >= 5.0 and 6.0 <= from_isotope / max(facts.at(mass), 0.01) <= 16.0:
+            return "the intensity of M is about ten times too low for its isotope peak: a typing error?"
+    shift = top_of_cluster(facts) - mass
     if shift > 0 and shift % 72 == 0 and not entry.measured_as:
-        return f"{shift // 72} trimethylsilyl groups more than declared"
+        return f"{shift // 72} trimethylsilyl group(s) more than declared"
     if shift == 1:
-        return "all m/z one too high, or [M+H]+ instead of M"
-    if 1 < shift <= 12:
+        return "[M+H]+ instead of M, or M one too low"
+    if 3 <= shift <= 12 and not entry.is_labelled and facts.at(mass) < 1.0:
         return f"an isotope-labelled compound ({shift} Da heavier) under the unlabelled formula"
     if shift > 12:
         return f"a molecule {shift} Da heavier than the formula"

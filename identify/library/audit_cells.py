@@ -8,12 +8,15 @@ how much more often wrong entries fall into it than right ones.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
-from identify.errors import StructureError
-from identify.evidence.composition import check_explained, check_formula_rules
-from identify.evidence.facts import FormulaFacts, QueryFacts, entry_formula, formula_facts, spectrum_facts
+from identify.chem.formula import parse_formula
+from identify.errors import FormulaError, StructureError
+from identify.evidence.composition import FORMULA_RULES, check_explained, check_formula_rules
+from identify.evidence.facts import FormulaFacts, QueryFacts, entry_formula, spectrum_facts
 from identify.evidence.finding import Finding
 from identify.evidence.high_mass import excess_above, improbable_loss
 from identify.evidence.isotopes import check_carbon_count, check_isotope_pattern
@@ -27,44 +30,18 @@ LOSSES = "losses from M"
 NEIGHBOUR_MASS = "mass of similar spectra"
 REPLICATES = "replicates"
 RELATED = "structure of similar spectra"
+SHIFT = "shifted by one"
 DEPTH = 40
 """Most similar spectra looked at."""
 USEFUL_COSINE = 0.6
 """A neighbour below this says nothing about mass or structure (judgement)."""
-USUAL_LOSSES = frozenset(
-    {
-        1,
-        2,
-        3,
-        15,
-        16,
-        17,
-        18,
-        19,
-        20,
-        26,
-        27,
-        28,
-        29,
-        30,
-        31,
-        32,
-        33,
-        34,
-        35,
-        36,
-        39,
-        40,
-        41,
-        42,
-        43,
-        44,
-        45,
-        46,
-        47,
-        48,
-    }
-)
+NEAR_COSINE = 0.85
+"""A neighbour from here on should be of a compound with this mass or of related structure (judgement)."""
+LEAST_COSINE = 0.3
+"""Neighbours below this change no cell: beside one of `USEFUL_COSINE` they are far behind."""
+COMMON = frozenset({"Cl", "Br", "S", "Si"})
+"""Elements with strong heavier isotopes for which the parity of fragments still says something."""
+USUAL_LOSSES = frozenset({1, 2, 3, *range(15, 21), *range(26, 37), *range(39, 49)})
 """Single losses from M that molecules of many classes show (McLafferty & Turecek, from memory)."""
 
 
@@ -88,7 +65,13 @@ class Neighbour:
     cosine: float
 
 
-def observe_entry(entry: Entry, neighbours: Sequence[Neighbour], replicates: Sequence[Neighbour]) -> tuple[Cell, ...]:
+def observe_entry(
+    entry: Entry,
+    neighbours: Sequence[Neighbour],
+    replicates: Sequence[Neighbour],
+    *,
+    cosine_if_shifted: float | None = None,
+) -> tuple[Cell, ...]:
     """Cells of an entry, always one per kind in the same order.
 
     Parameters
@@ -98,6 +81,8 @@ def observe_entry(entry: Entry, neighbours: Sequence[Neighbour], replicates: Seq
         Most similar other entries, best first; replicates among them count as replicates only.
     replicates : sequence of Neighbour
         Other entries of the compound, measured in the same form at like energy, with their cosine.
+    cosine_if_shifted : float, optional
+        Cosine of the most similar spectrum when all m/z are taken as one lower, where that was looked at.
 
     Returns
     -------
@@ -105,17 +90,73 @@ def observe_entry(entry: Entry, neighbours: Sequence[Neighbour], replicates: Seq
     """
     facts = spectrum_facts(entry.spectrum, entry.acquisition)
     formula, _ = entry_formula(entry, facts)
+    own = _own_cells(facts, formula)
+    if is_salt(entry):
+        salt = "A salt evaporates in parts, so M of the formula is not expected."
+        own = tuple(Cell(cell.kind, "", salt) if cell.kind in OF_MOLECULE else cell for cell in own)
     return (
-        *_own_cells(facts, formula),
+        *own,
         _neighbour_mass(formula, [found for found in neighbours if not have_same_form(entry, found.entry)]),
         _replicates(replicates),
         _related(entry, neighbours),
+        _shift(neighbours, replicates, cosine_if_shifted),
     )
+
+
+OF_MOLECULE = frozenset({TOP, BESIDE, LOSSES, FORMULA_RULES})
+"""Kinds that mean nothing where the molecule of the formula does not evaporate as a whole."""
+_SALT = re.compile(
+    r"(ammonium|pyridinium|phosphonium|sulfonium)\s+(chloride|bromide|iodide)|hydrochloride|hydrobromide|methiodide",
+    re.IGNORECASE,
+)
+
+
+def is_salt(entry: Entry) -> bool:
+    """Whether the entry's formula is that of a salt: charged parts in its structure, or an onium halide by name."""
+    smiles = entry.identity.smiles
+    parts = set(smiles.split("."))
+    is_salt_structure = len(parts) > 1 and ("+" in smiles or bool(parts & {"Cl", "Br", "I"}))
+    return is_salt_structure or bool(_SALT.search(entry.identity.name))
+
+
+def may_be_shifted(entry: Entry, neighbours: Sequence[Neighbour], replicates: Sequence[Neighbour]) -> bool:
+    """Whether it is worth a second search with all m/z one lower: nothing is very similar, and M is not plainly seen.
+
+    Parameters
+    ----------
+    entry : Entry
+    neighbours, replicates : sequence of Neighbour
+
+    Returns
+    -------
+    bool
+    """
+    if any(found.cosine >= NEAR_COSINE for found in (*neighbours[:1], *replicates[:1])):
+        return False
+    facts = spectrum_facts(entry.spectrum, entry.acquisition)
+    formula, _ = entry_formula(entry, facts)
+    if formula is None:
+        return True
+    mz = formula.nominal_mass + formula.strongest_offset
+    return facts.at(mz) < max(1.0, 2.0 * facts.at(mz + 1))
+
+
+def _shift(neighbours: Sequence[Neighbour], replicates: Sequence[Neighbour], shifted: float | None) -> Cell:
+    if shifted is None:
+        return Cell(SHIFT, "", "Nothing suggests that all m/z are one too high.")
+    best = max((found.cosine for found in (*neighbours[:1], *replicates[:1])), default=0.0)
+    gain = shifted - best
+    cell = "far better" if gain >= 0.15 else "better" if gain >= 0.03 else ""
+    reason = f"With all m/z one lower, similar spectra of the library fit {cell or 'no better'}."
+    return Cell(SHIFT, cell, reason, f"cosine {shifted:.2f} instead of {best:.2f}", "no better than as it is")
 
 
 def _own_cells(facts: QueryFacts, formula: FormulaFacts | None) -> tuple[Cell, ...]:
     checks = (check_isotope_pattern, check_carbon_count, check_explained, check_formula_rules)
     found = [_from_finding(check(facts, formula)) for check in checks]
+    if formula is not None and formula.heavy - COMMON:
+        reason = "Fragments with metals, boron or selenium follow no rule of parity or saturation."
+        found[-1] = Cell(FORMULA_RULES, "", reason)
     if formula is None:
         missing = "The formula as measured is not known."
         return (*(Cell(kind, "", missing) for kind in (TOP, BESIDE, ABOVE, LOSSES)), *found)
@@ -154,6 +195,8 @@ def _highest_ions(facts: QueryFacts, formula: FormulaFacts) -> Cell:
     mass = formula.nominal_mass
     gap = mass - top_of_cluster(facts)
     seen = facts.at(mass + formula.strongest_offset)
+    if -formula.last_offset <= gap < 0 and seen >= 1.0 and _excess(facts, formula)[0] < 2.0:
+        gap = 0
     observed = f"highest cluster at m/z {mass - gap}, {seen:.1f} % of base at M"
     if -14 <= gap < 0 and seen < 1.0:
         cell, reason = (
@@ -191,10 +234,21 @@ def _beside(facts: QueryFacts, formula: FormulaFacts) -> Cell:
 
 
 def _above(facts: QueryFacts, formula: FormulaFacts) -> Cell:
-    excess, mz = excess_above(facts.dense, formula)
+    excess, mz = _excess(facts, formula)
     cell = "none" if excess < 0.5 else "trace" if excess < 2.0 else "some" if excess < 10.0 else "strong"
     reason = f"m/z {mz} is heavier than the molecule (M {formula.nominal_mass})." if mz else "Nothing lies above M."
     return Cell(ABOVE, cell, reason, f"{excess:.1f} % of base", "isotope peaks and [M+H]+ only")
+
+
+def _excess(facts: QueryFacts, formula: FormulaFacts) -> tuple[float, int]:
+    """Excess above M; where another isotope peak is the tallest (Br2), M is taken from that one."""
+    offset = formula.strongest_offset
+    if offset <= 0:
+        return excess_above(facts.dense, formula)
+    mass, dense = formula.nominal_mass, list(facts.dense)
+    if mass < len(dense):
+        dense[mass] = max(dense[mass], facts.at(mass + offset) / formula.ratio(offset))
+    return excess_above(tuple(dense), formula)
 
 
 def _losses(facts: QueryFacts, formula: FormulaFacts) -> Cell:
@@ -211,13 +265,13 @@ def _neighbour_mass(formula: FormulaFacts | None, neighbours: Sequence[Neighbour
         return Cell(NEIGHBOUR_MASS, "", "The formula as measured is not known.")
     best: dict[bool, Neighbour] = {}
     for neighbour in neighbours:
-        known = formula_facts(neighbour.entry.formula_as_measured)
-        if known is not None:
-            best.setdefault(known.nominal_mass == formula.nominal_mass, neighbour)
+        known = nominal_mass_of(neighbour.entry.formula_as_measured)
+        if known:
+            best.setdefault(known == formula.nominal_mass, neighbour)
     same = best[True].cosine if True in best else 0.0
     other = best[False].cosine if False in best else 0.0
     if max(same, other) < USEFUL_COSINE:
-        return Cell(NEIGHBOUR_MASS, "no similar spectrum", "No other spectrum of the library is similar.")
+        return Cell(NEIGHBOUR_MASS, "", "No other spectrum of the library is similar.")
     lead = same - other
     cell = next(
         name
@@ -227,9 +281,20 @@ def _neighbour_mass(formula: FormulaFacts | None, neighbours: Sequence[Neighbour
         )
         if lead >= limit
     )  # fmt: skip
+    if lead < -0.1 and other >= NEAR_COSINE:
+        cell += ", near"
     nearest = best[lead >= 0].entry
     reason = f"The most similar spectrum is of {nearest.identity.name} ({nearest.formula_as_measured})."
     return Cell(NEIGHBOUR_MASS, cell, reason, f"same mass {same:.2f}, other mass {other:.2f}", "similar spectra of M")
+
+
+@lru_cache(maxsize=50_000)
+def nominal_mass_of(formula: str) -> int:
+    """Nominal mass of a formula as text; 0 when there is none."""
+    try:
+        return parse_formula(formula).nominal_mass if formula else 0
+    except FormulaError:
+        return 0
 
 
 def _replicates(replicates: Sequence[Neighbour]) -> Cell:
@@ -278,7 +343,9 @@ def _related(entry: Entry, neighbours: Sequence[Neighbour]) -> Cell:
         for limit, name in ((0.4, "close"), (0.25, "related"), (0.15, "remote"), (0.08, "foreign"), (-1.0, "alien"))
         if mean >= limit
     )
-    reason = f"The compounds with the most similar spectra are {cell} in structure."
+    if useful[0].cosine >= NEAR_COSINE:
+        cell += ", near"
+    reason = f"The compounds with the most similar spectra are {cell.removesuffix(', near')} in structure."
     return Cell(RELATED, cell, reason, f"mean similarity {mean:.2f}", "similar spectra of similar structures")
 
 

@@ -10,7 +10,7 @@ from pathlib import Path
 
 from identify import __version__
 from identify.errors import InputError
-from identify.library.drafts import Policy
+from identify.library.drafts import EXCLUDED, Policy
 from identify.library.events import append_event
 from identify.library.intake import Progress, Stream, Tally, stream_of, take_stream
 from identify.library.licences import resolve_licences
@@ -41,8 +41,15 @@ class BuildReport:
 
     @property
     def exit_code(self) -> int:
-        """0: leaving out what the choice of licence and method excludes is what was asked for; 3: nothing was accepted."""
-        return 0 if self.n_accepted else 3
+        """0, or 1 when inputs were faulty; what the choice of licence and method leaves out is no fault. 3: nothing taken."""
+        if not self.n_accepted:
+            return 3
+        return 1 if self.n_faulty else 0
+
+    @property
+    def n_faulty(self) -> int:
+        """Records rejected because they, or their file, could not be used: not those of another method or licence."""
+        return sum(count for reason, count in self.n_rejected.items() if reason not in EXCLUDED)
 
 
 def build_library(
@@ -266,6 +273,9 @@ def add_spectra(
 def describe_build(report: BuildReport) -> list[str]:
     """Lines for a terminal: accepted, rejected by reason, remarks."""
     lines = [f"{report.n_accepted:,} of {report.n_read:,} records accepted, {report.n_compounds:,} compounds"]
-    lines += [f"  rejected {count:,} × {reason}" for reason, count in report.n_rejected.items()]
+    lines += [
+        f"  {'left out' if reason in EXCLUDED else 'rejected'} {count:,} × {reason}"
+        for reason, count in report.n_rejected.items()
+    ]
     lines += [f"  noted {count:,} × {remark}" for remark, count in report.notes.items()]
     return lines

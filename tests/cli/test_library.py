@@ -48,7 +48,7 @@ def test_a_library_is_built_of_a_folder_and_says_what_it_left_out(run: Run, tmp_
     (folder / "2.txt").write_text(RECORD.format(number=1, name="Acetone", base=43))
     (folder / "3.txt").write_text(RECORD.format(number=3, name="Acetone", base="x"))
     result = run("library", "build", tmp_path / "lab.ionlib", folder, "--who", "tester", "--rejected", out)
-    assert result.return_value == 0
+    assert result.return_value == 1, "two records could not be used"
     assert result.output.splitlines()[0] == "1 of 3 records accepted, 1 compounds"
     assert "rejected 1 × duplicate accession" in result.output
     assert (
@@ -57,6 +57,21 @@ def test_a_library_is_built_of_a_folder_and_says_what_it_left_out(run: Run, tmp_
     )
     with out.open(encoding="utf-8", newline="") as stream:
         assert {Path(row["source"]).name for row in csv.DictReader(stream)} == {"2.txt", "3.txt"}
+
+
+def test_records_of_another_method_or_licence_are_left_out_by_choice_with_exit_code_0(run: Run, tmp_path: Path) -> None:
+    text = RECORD.format(number=2, name="Acetone", base=43)
+    others = (
+        text.replace("GC-EI-Q", "LC-ESI-QTOF").replace("INVENTED-2", "INVENTED-3"),
+        text.replace("CC BY", "CC BY-NC").replace("INVENTED-2", "INVENTED-4"),
+    )
+    for number, record in enumerate((text, *others)):
+        (tmp_path / f"{number}.txt").write_text(record)
+    files = sorted(tmp_path.glob("*.txt"))
+    result = run("library", "build", tmp_path / "lab.ionlib", *files, "--who", "tester")
+    assert result.return_value == 0
+    assert "left out 1 × not electron ionization" in result.output
+    assert "left out 1 × licence not accepted" in result.output
 
 
 def test_a_second_build_of_the_same_name_is_refused(run: Run, lab: Path, tmp_path: Path) -> None:

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import pytest
 from library_builders import BENZENE, TOLUENE, WHEN, build_record, build_test_library
@@ -16,6 +18,7 @@ from identify.library.audit import (
     audit_entry,
     audit_library,
     look_around,
+    observe_in_library,
     propose,
     read_overruled,
     suspect,
@@ -32,7 +35,7 @@ from identify.settings import Weighting
 
 
 def make(
-    peaks, name: str = "Toluene", formula: str = "C7H8", smiles: str = "Cc1ccccc1", **more
+    peaks: dict[int, float], name: str = "Toluene", formula: str = "C7H8", smiles: str = "Cc1ccccc1", **more: Any
 ) -> tuple[Entry, SpectrumRecord]:
     """Entry and record without a library file."""
     import tempfile
@@ -44,11 +47,11 @@ def make(
             return library.get_entries([1])[0], library.get_records([1])[0]
 
 
-def statements(entry: Entry, record: SpectrumRecord, others=()) -> dict[str, Grade]:
+def statements(entry: Entry, record: SpectrumRecord, others: Sequence[Entry] = ()) -> dict[str, Grade]:
     return {finding.kind: finding.grade for finding in check_statements(entry, record, others)}
 
 
-def cells(entry: Entry, neighbours=(), replicates=()) -> dict[str, str]:
+def cells(entry: Entry, neighbours: Sequence[Neighbour] = (), replicates: Sequence[Neighbour] = ()) -> dict[str, str]:
     return {cell.kind: cell.cell for cell in observe_entry(entry, neighbours, replicates)}
 
 
@@ -77,9 +80,15 @@ def test_peaks_that_do_not_fit_their_splash_are_serious() -> None:
 
 @pytest.mark.parametrize(
     ("energy", "expected"),
-    [(70.0, {}), (None, {"energy": Grade.NOTE}), (20.0, {"energy": Grade.CAUTION}), (120.0, {"energy": Grade.CAUTION})],
+    [
+        (70.0, {}),
+        (None, {"energy": Grade.NOTE}),
+        (20.0, {"energy": Grade.NOTE}),
+        (14.0, {"energy": Grade.CAUTION}),
+        (120.0, {"energy": Grade.CAUTION}),
+    ],
 )
-def test_energies_other_than_70_ev_ask_for_caution(energy: float | None, expected: dict[str, Grade]) -> None:
+def test_energies_far_from_70_ev_ask_for_caution(energy: float | None, expected: dict[str, Grade]) -> None:
     assert statements(*make(FULL, energy_ev=energy)) == expected
 
 
@@ -128,19 +137,87 @@ def test_observations_on_the_molecular_region() -> None:
     assert cells(unknown)["highest ions"] == ""
 
 
+def test_bromine_clusters_are_no_ions_above_m() -> None:
+    """M at nominal mass is the smallest peak of C6Br6: pattern 1:6:15:20:15:6:1, binomial for equal 79Br and 81Br."""
+    cluster = {546 + 2 * n: height for n, height in enumerate((1.0, 6.0, 15.0, 20.0, 15.0, 6.0, 1.0))}
+    whole = {79: 10.0, 232: 100.0, 392: 15.0} | cluster
+    bromine, _ = make(whole, name="Hexabromobenzene", formula="C6Br6", smiles="Brc1c(Br)c(Br)c(Br)c(Br)c1Br")
+    assert cells(bromine)["ions above M"] == "none"
+    assert cells(bromine)["highest ions"] == "M strong"
+    worse = {mz: height for mz, height in whole.items() if mz != 546}
+    heavier, _ = make(
+        worse | {590: 20.0}, name="Hexabromobenzene", formula="C6Br6", smiles="Brc1c(Br)c(Br)c(Br)c(Br)c1Br"
+    )
+    assert cells(heavier)["ions above M"] == "strong"
+
+
+def test_metals_and_salts_are_not_judged_by_rules_for_molecules() -> None:
+    tin, _ = make({120: 100.0, 197: 70.0, 351: 90.0}, name="Tetraphenyltin", formula="C24H20Sn", smiles="")
+    assert cells(tin)["nitrogen rule and rings"] == ""
+    salt, record = make(
+        {58: 100.0, 59: 60.0, 94: 15.0, 96: 14.0, 142: 5.0},
+        name="Tetramethylammonium bromide", formula="C4H12BrN", smiles="C[N+](C)(C)C.[Br-]",
+    )  # fmt: skip
+    assert [cells(salt)[kind] for kind in ("highest ions", "nitrogen rule and rings")] == ["", ""]
+    assert statements(salt, record) == {"salt": Grade.CAUTION}
+    dimer, record = make(FULL, name="Dimer", formula="C4H8O4", smiles="OCC=O.OCC=O")
+    assert "salt" not in statements(dimer, record)
+
+
+def test_a_second_search_tells_shifted_masses_from_a_protonated_molecule(tmp_path: Path) -> None:
+    path = tmp_path / "a.ionlib"
+    shifted = {mz + 1: height for mz, height in FULL.items()}
+    records = [
+        build_record("RIGHT", "Toluene", FULL, formula="C7H8", smiles="Cc1ccccc1"),
+        build_record("WRONG", "Tropilidene", shifted, formula="C7H8", smiles="C1C=CC=CC=C1"),
+    ]
+    build_test_library(path, records)
+    found = {audited.accession: audited for audited in audit(path).audits}
+    assert found["WRONG"].suspicion == "all m/z one too high"
+    with open_library(path) as library:
+        index = load_index(library, Weighting())
+        right, wrong = library.get_entries([1, 2])
+        observed = [
+            {cell.kind: cell.cell for cell in observe_in_library(library, index, entry, leave_out={entry.id})[0]}
+            for entry in (right, wrong)
+        ]
+    assert [cells_of["shifted by one"] for cells_of in observed] == ["", "far better"]
+
+
+def test_a_molecular_ion_ten_times_too_low_is_suspected_a_typing_error() -> None:
+    peaks = {77: 20.0, 111: 100.0, 113: 33.0, 139: 60.0, 141: 20.0, 156: 3.0, 158: 10.0}
+    entry, _ = make(peaks, name="Chlorobenzoic acid", formula="C7H5ClO2", smiles="OC(=O)c1ccc(Cl)cc1")
+    assert "ten times too low" in suspect(entry, [], [])
+    good, _ = make(peaks | {156: 30.0}, name="Chlorobenzoic acid", formula="C7H5ClO2", smiles="OC(=O)c1ccc(Cl)cc1")
+    assert suspect(good, [], []) == ""
+
+
+def test_signs_outweighed_by_the_sum_are_notes(tmp_path: Path) -> None:
+    path = tmp_path / "a.ionlib"
+    records = [build_record(f"R{n}", "Toluene", FULL, formula="C7H8", smiles="Cc1ccccc1") for n in range(2)]
+    build_test_library(path, records)
+    report = audit(path)
+    assert dict(report.by_proposal) == {"use": 2}
+    assert report.by_finding == {}
+    assert report.by_note["near-duplicate"] == 2
+    for entry in report.audits:
+        assert {finding.grade for finding in entry.findings} == {Grade.NOTE}
+
+
 def test_observations_on_neighbours_and_replicates() -> None:
     entry, _ = make(FULL)
     other, _ = make(BENZENE, name="Benzene", formula="C6H6", smiles="c1ccccc1")
     same, other = replace(entry, id=2), replace(other, id=3, compound_id=9)
     twin = replace(entry, id=4, compound_id=8)
-    assert cells(entry, [Neighbour(other, 0.95)])["mass of similar spectra"] == "other mass far best"
+    assert cells(entry, [Neighbour(other, 0.95)])["mass of similar spectra"] == "other mass far best, near"
+    assert cells(entry, [Neighbour(other, 0.8)])["mass of similar spectra"] == "other mass far best"
     assert (
         cells(entry, [Neighbour(twin, 0.95), Neighbour(other, 0.5)])["mass of similar spectra"]
         == "same mass clearly best"
     )
-    assert (
-        cells(entry, [Neighbour(same, 0.99), Neighbour(other, 0.5)])["mass of similar spectra"] == "no similar spectrum"
-    ), "replicates are judged as replicates only"
+    assert cells(entry, [Neighbour(same, 0.99), Neighbour(other, 0.5)])["mass of similar spectra"] == "", (
+        "replicates are judged as replicates only"
+    )
     assert cells(entry, [], [Neighbour(same, 0.3)])["replicates"] == "strange"
     assert cells(entry, [], [Neighbour(same, 0.3), Neighbour(same, 0.96)])["replicates"] == "the same"
     assert cells(entry)["replicates"] == ""

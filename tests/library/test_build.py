@@ -135,6 +135,7 @@ def test_counts_add_up_and_duplicates_are_refused(tmp_path: Path) -> None:
     assert report.n_read == 7
     assert report.n_accepted == 5
     assert report.n_rejected == {"duplicate accession": 1, "licence not accepted": 1}
+    assert (report.n_faulty, report.exit_code) == (1, 1), "another licence is a choice, a duplicate a fault"
     assert {rejection.reason for rejection in report.rejected} == set(report.n_rejected)
     assert report.n_compounds == 4
 
