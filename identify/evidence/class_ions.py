@@ -12,6 +12,12 @@ from typing import NamedTuple
 COMMON = "common practice, from memory"
 CONTAMINANTS = "contaminant table of an instrument help page (read)"
 
+SELDOM_WITH_M = {
+    "sugar": 1.0, "fatty alcohol": 0.80, "siloxane": 0.69, "acetal": 0.66, "phthalate": 0.63, "acetate": 0.55,
+}  # fmt: skip
+"""Classes most of whose open records show no molecular ion (below 0.5 % of base), with that share among 4,251 underivatized
+records of release 2025.05.1; classes of fewer than 12 records left out. Over all classes it is 0.26."""
+
 
 class ClassRule(NamedTuple):
     """Ions that mark a class.

@@ -5,6 +5,9 @@ Is the molecular ion where the formula puts it, does anything lie above it, are 
 
 from __future__ import annotations
 
+from identify.chem.structures import compound_classes
+from identify.errors import StructureError
+from identify.evidence.class_ions import SELDOM_WITH_M
 from identify.evidence.facts import FormulaFacts, QueryFacts
 from identify.evidence.finding import Finding, not_assessed
 from identify.evidence.fragments import BACKGROUND
@@ -78,6 +81,13 @@ def check_molecular_ion(
         return not_assessed(MOLECULAR_ION, f"m/z {mz} lies outside the measured range.")
     seen = facts.at(mz)
     verdict, reason = _compare_levels(seen, own, label, facts.floor)
+    seldom = _seldom_class(entry) if verdict is Verdict.CONFLICTS and level_of(own) == "weak" else ""
+    if seldom:
+        verdict = Verdict.INCONCLUSIVE
+        reason = (
+            f"The query does not show {label}; {100 * SELDOM_WITH_M[seldom]:.0f} % of the open records of its class "
+            f"({seldom}) do not."
+        )
     cell = f"{stand_in}entry {level_of(own)}, query {level_of(seen)}"
     if n_groups is not None:
         reason = f"{reason[:-1]}, taken as {n_groups} groups because that fits the query best."
@@ -93,6 +103,17 @@ def check_molecular_ion(
         uncertainty=f"peaks below {facts.floor:.2g} % are not recorded",
         source=PRESENCE_SOURCE,
     )
+
+
+def _seldom_class(entry: Entry) -> str:
+    """Class of the compound itself that seldom shows M; empty for none. Asked only where M is weak: it takes time."""
+    if not entry.identity.smiles or entry.measured_as:
+        return ""
+    try:
+        found = compound_classes(entry.identity.smiles)
+    except StructureError:
+        return ""
+    return max((name for name in found if name in SELDOM_WITH_M), key=lambda name: SELDOM_WITH_M[name], default="")
 
 
 def _compare_levels(seen: float, own: float, label: str, floor: float) -> tuple[Verdict, str]:

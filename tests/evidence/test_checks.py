@@ -116,6 +116,18 @@ def test_molecular_ion_is_judged_against_the_entry(build, own: float, seen: floa
     )
 
 
+def test_a_weak_molecular_ion_may_be_missing_in_a_class_that_seldom_shows_it(build) -> None:
+    """Phthalates without M: common practice, and 63 % of the open records."""
+    peaks = {104: 0.1, 149: 100.0, 150: 9.0, 205: 4.0, 223: 6.0}
+    query, mass = build_query_facts(build.query(peaks)), formula_facts("C16H22O4")
+    phthalate = build.entry({**peaks, 278: 1.0}, "C16H22O4", smiles="CCCCOC(=O)c1ccccc1C(=O)OCCCC")
+    item = check_molecular_ion(query, mass, phthalate)
+    assert item.verdict is Verdict.INCONCLUSIVE
+    assert "63 % of the open records of its class (phthalate)" in item.reason
+    ketone = build.entry({**peaks, 278: 1.0}, "C16H22O4", smiles="CCCCCC(=O)c1ccc(O)c(O)c1C(=O)CCCO")
+    assert check_molecular_ion(query, mass, ketone).verdict is Verdict.CONFLICTS
+
+
 def test_molecular_ion_weaker_than_anything_recorded_is_not_missed(build) -> None:
     entry = build.entry({43: 100.0, 136: 2.0}, "C10H16")
     finding = check_molecular_ion(build_query_facts(build.query({43: 100.0, 71: 5.0})), formula_facts("C10H16"), entry)
