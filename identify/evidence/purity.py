@@ -259,9 +259,10 @@ def _best_triple(
     gram: FloatArray, target: FloatArray, total: float, alike: FloatArray, best: tuple[int, ...]
 ) -> tuple[float, tuple[int, ...]] | None:
     """The best pair with the third entry that cuts the misfit most among those that need all three, all solved at once."""
-    different = (alike[:, list(best)] < MOST_ALIKE).all(axis=1)
-    different[list(best)] = False
-    thirds = np.flatnonzero(different)
+    # An entry is as alike as can be to itself, so the pair's own members drop out too.
+    thirds = np.flatnonzero(alike[:, list(best)].max(axis=1) < MOST_ALIKE)
+    if not thirds.size:
+        return None
     places = np.stack([np.full(thirds.size, best[0]), np.full(thirds.size, best[1]), thirds], axis=1)
     block = gram[places[:, :, None], places[:, None, :]] + 1e-9 * gram.diagonal().max() * np.eye(3)
     wanted = target[places]
