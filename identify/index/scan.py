@@ -53,7 +53,7 @@ Float32Array = NDArray[np.float32]
 
 
 def find_candidates(
-    segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_] | None = None
+    segment: Segment, query: WeighedQuery, k: int, hidden: NDArray[np.bool_] | None = None, *, many: bool = False
 ) -> NDArray[np.int64]:
     """Rows that contain the true `k` best by cosine and by reverse match, with all ties, and few others.
 
@@ -67,13 +67,15 @@ def find_candidates(
         How many by each score, ≥ 1.
     hidden : bool array of shape (n_entries,), optional
         Rows that do not take part.
+    many : bool
+        Whether so many queries follow that loading the compiled pass pays in any library.
 
     Returns
     -------
     int64 array
         Rows, increasing, without those that share no peak with the query.
     """
-    if segment.n_entries >= COMPILED_FROM_ENTRIES:
+    if many or segment.n_entries >= COMPILED_FROM_ENTRIES:
         from identify.index.scan_compiled import scan
 
         return scan(segment, query, k, hidden)

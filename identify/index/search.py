@@ -180,7 +180,7 @@ def score_all(index: SearchIndex, spectrum: CleanSpectrum) -> tuple[NDArray[np.i
     return ids[order], cosine[order], reverse[order]
 
 
-def search_index(index: SearchIndex, spectrum: CleanSpectrum, k: int) -> tuple[Hit, ...]:
+def search_index(index: SearchIndex, spectrum: CleanSpectrum, k: int, *, many: bool = False) -> tuple[Hit, ...]:
     """Best entries: the `k` best by cosine and the `k` best by reverse match, united.
 
     Parameters
@@ -191,6 +191,8 @@ def search_index(index: SearchIndex, spectrum: CleanSpectrum, k: int) -> tuple[H
         The query.
     k : int
         How many by each score, ≥ 1.
+    many : bool
+        Whether thousands of queries follow: the answer is the same, sooner from about the five-hundredth on.
 
     Returns
     -------
@@ -212,7 +214,8 @@ def search_index(index: SearchIndex, spectrum: CleanSpectrum, k: int) -> tuple[H
         raise UsageError("number of hits", found=str(k), expected="at least 1")
     query = weigh_query(spectrum, index.weighting)
     rows = [
-        find_candidates(segment, query, k, mask) for segment, mask in zip(index.segments, index.hidden, strict=True)
+        find_candidates(segment, query, k, mask, many=many)
+        for segment, mask in zip(index.segments, index.hidden, strict=True)
     ]
     ids, cosine, reverse = _score(index, query, rows)
     best = choose_best(ids, cosine, reverse, k)

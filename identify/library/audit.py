@@ -42,6 +42,8 @@ SILENT = frozenset(
 )
 """Observations that lack support rather than contradict: they count, but are never more than a note."""
 SERIOUS_FROM = 2.0
+MANY_ENTRIES = 2000
+"""From here on the compiled search is loaded: below it would take longer than it saves."""
 NEAR_DUPLICATE = 0.9999
 IDENTICAL_TO_OTHER = 0.995
 
@@ -129,12 +131,12 @@ def audit_library(library: Library, index: SearchIndex, *, progress: Progress | 
     audited = frozenset(EntryStatus) - {EntryStatus.WITHDRAWN, EntryStatus.REFUSED, EntryStatus.PROPOSED}
     ids = library.entry_ids(audited)
     overruled = read_overruled(library)
-    audits = []
+    many, audits = len(ids) >= MANY_ENTRIES, []
     for number, entry_id in enumerate(ids):
         if progress and number % 50 == 0:
             progress(number, "entries")
         (entry,) = library.get_entries([entry_id])
-        audits.append(audit_entry(library, index, entry, overruled=overruled.get(entry_id, "")))
+        audits.append(audit_entry(library, index, entry, overruled=overruled.get(entry_id, ""), many=many))
     return AuditReport(str(library.path), library.fingerprint, tuple(audits))
 
 
@@ -150,7 +152,9 @@ def read_overruled(library: Library) -> dict[int, str]:
     return out
 
 
-def audit_entry(library: Library, index: SearchIndex, entry: Entry, *, overruled: str = "") -> EntryAudit:
+def audit_entry(
+    library: Library, index: SearchIndex, entry: Entry, *, overruled: str = "", many: bool = False
+) -> EntryAudit:
     """Audit of one entry against the searchable entries of the library.
 
     Parameters
@@ -162,12 +166,14 @@ def audit_entry(library: Library, index: SearchIndex, entry: Entry, *, overruled
         In the library; its standing does not matter.
     overruled : str
         Why a reviewer has put it back into use; the proposal is then at most `use with caution`.
+    many : bool
+        Whether thousands of audits follow.
 
     Returns
     -------
     EntryAudit
     """
-    cells, neighbours, replicates = observe_in_library(library, index, entry, leave_out={entry.id})
+    cells, neighbours, replicates = observe_in_library(library, index, entry, leave_out={entry.id}, many=many)
     log_odds, observed = weigh_cells(cells)
     (record,) = library.get_records([entry.id])
     stated = check_statements(entry, record, [replicate.entry for replicate in replicates])
@@ -185,7 +191,7 @@ def audit_entry(library: Library, index: SearchIndex, entry: Entry, *, overruled
 
 
 def observe_in_library(
-    library: Library, index: SearchIndex, entry: Entry, *, leave_out: Collection[int]
+    library: Library, index: SearchIndex, entry: Entry, *, leave_out: Collection[int], many: bool = False
 ) -> tuple[tuple[Cell, ...], list[Neighbour], list[Neighbour]]:
     """Cells of an entry, with the neighbours and replicates they come from.
 
@@ -197,6 +203,8 @@ def observe_in_library(
         Need not be in the library.
     leave_out : collection of int
         Entry ids that do not count as neighbours: its own.
+    many : bool
+        Whether thousands of entries follow.
 
     Returns
     -------
@@ -204,10 +212,10 @@ def observe_in_library(
     neighbours, replicates : list of Neighbour
         Best first.
     """
-    neighbours, replicates = look_around(library, index, entry, leave_out=leave_out)
+    neighbours, replicates = look_around(library, index, entry, leave_out=leave_out, many=many)
     shifted = None
     if may_be_shifted(entry, neighbours, replicates):
-        hits = search_index(index, _one_lower(entry.spectrum), 2 + len(leave_out))
+        hits = search_index(index, _one_lower(entry.spectrum), 2 + len(leave_out), many=many)
         shifted = max((hit.cosine for hit in hits if hit.entry_id not in leave_out), default=0.0)
     return observe_entry(entry, neighbours, replicates, cosine_if_shifted=shifted), neighbours, replicates
 
@@ -222,7 +230,7 @@ _ORDER = {Grade.SERIOUS: 0, Grade.CAUTION: 1, Grade.NOTE: 2}
 
 
 def look_around(
-    library: Library, index: SearchIndex, entry: Entry, *, leave_out: Collection[int]
+    library: Library, index: SearchIndex, entry: Entry, *, leave_out: Collection[int], many: bool = False
 ) -> tuple[list[Neighbour], list[Neighbour]]:
     """Most similar other entries, and the other entries of the same compound in the same form.
 
@@ -234,13 +242,15 @@ def look_around(
         Need not be in the library.
     leave_out : collection of int
         Entry ids that do not count as neighbours: its own.
+    many : bool
+        Whether thousands of entries follow.
 
     Returns
     -------
     neighbours, replicates : list of Neighbour
         Best first.
     """
-    found = search_index(index, entry.spectrum, DEPTH)
+    found = search_index(index, entry.spectrum, DEPTH, many=many)
     hits = [hit for hit in found if hit.cosine >= LEAST_COSINE and hit.entry_id not in leave_out]
     entries = library.get_entries([hit.entry_id for hit in hits])
     neighbours = [Neighbour(other, hit.cosine) for other, hit in zip(entries, hits, strict=True)]

@@ -163,7 +163,7 @@ class Judge:
         (source,) = self.library.get_entries([made_of])
         whole = own | self.same[self.key(entry)] | self.same[self.key(source)]
         (record,) = self.library.get_records([entry.id])
-        cells, _, replicates = observe_in_library(self.library, self.index, entry, leave_out=own)
+        cells, _, replicates = observe_in_library(self.library, self.index, entry, leave_out=own, many=True)
         found = check_statements(entry, record, [replicate.entry for replicate in replicates])
         is_contradictory = any(f.grade is Grade.SERIOUS or f.kind in UNDECLARED for f in found)
         flagged = [
@@ -172,7 +172,7 @@ class Judge:
         return Case(kind, cells, self.cells(entry, whole), is_contradictory, *flagged)
 
     def cells(self, entry: Entry, leave_out: set[int]) -> tuple[Cell, ...]:
-        return observe_in_library(self.library, self.index, entry, leave_out=leave_out)[0]
+        return observe_in_library(self.library, self.index, entry, leave_out=leave_out, many=True)[0]
 
 
 def collect(judge: Judge, fitting: bool, per_kind: int, seed: int) -> Iterator[Case]:
@@ -189,7 +189,7 @@ def collect_clean(judge: Judge, fitting: bool, n_wanted: int, seed: int) -> Iter
     for entry in pool:
         if n_clean >= n_wanted:
             break
-        _, replicates = look_around(judge.library, judge.index, entry, leave_out={entry.id})
+        _, replicates = look_around(judge.library, judge.index, entry, leave_out={entry.id}, many=True)
         if replicates and replicates[0].cosine >= CLEAN_FROM:
             n_clean += 1
             yield judge.judge("clean", entry, entry.id)
