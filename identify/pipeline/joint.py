@@ -234,3 +234,26 @@ def claim_class(found: Identification, name: str, probability: float) -> Identif
         class_probability=probability, msi_2007=msi, schymanski_2014=schymanski,
     )  # fmt: skip
     return replace(found, claim=claim)
+
+
+def claim_from_run(found: Identification) -> Identification:
+    """The identification with its best candidate as a tentative claim: what the run as a whole adds made it probable enough.
+
+    Parameters
+    ----------
+    found : Identification
+        With at least one candidate.
+
+    Returns
+    -------
+    Identification
+    """
+    best = found.candidates[0]
+    msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.TENTATIVE]
+    shown = f"{best.probability:.0%}" if best.probability < 0.995 else "over 99%"
+    claim = Claim(
+        ClaimLevel.TENTATIVE, f"{best.entry.identity.name}: library match and the run as a whole ({shown}).", best.probability,
+        (best.entry.identity.name,), best.probability, max(best.probability, found.claim.group_probability),
+        max(best.probability, found.claim.class_probability), msi_2007=msi, schymanski_2014=schymanski,
+    )  # fmt: skip
+    return replace(found, claim=claim)

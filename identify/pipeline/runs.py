@@ -8,6 +8,7 @@ from pathlib import Path
 
 from identify import __version__
 from identify.errors import InputError, SpectrumError, UsageError
+from identify.pipeline.elution import weigh_by_elution
 from identify.pipeline.joint import settle_jointly
 from identify.pipeline.run_classes import name_classes
 from identify.pipeline.search import Progress, SearchableLibrary, identify_query, make_query, open_libraries
@@ -179,7 +180,8 @@ class _Analysis:
                 self.progress(first_query + component.number - 2, f"component {component.number}")
             findings.append(self._identify(component, run, scale, first_query + component.number - 1))
         width_s = decomposition.width_scans * decomposition.scan_time_s
-        settled = settle_jointly(findings, width_s, self.settings)
+        possible = weigh_by_elution(findings, scale, self.settings)
+        settled = settle_jointly(possible, width_s, self.settings)
         named = name_classes(settled, self.settings, scale)
         return RunFindings(number, run, decomposition, named, scale, run.notes)
 

@@ -1,0 +1,146 @@
+"""Candidates too large to have eluted so early: the order of boiling points, by number of heavy atoms.
+
+On every column the most branched alkane is the least retained compound of its size, so that a compound of n carbon, nitrogen,
+oxygen, sulfur, chlorine and bromine atoms has a retention index of at least about ``90 n − 140`` (textbook knowledge; checked by
+hand on the smallest known: diethyl ether 494 ≥ 310, diisopropyl ether 602 ≥ 490, 2,2,4-trimethylpentane 690 ≥ 580,
+2,2,4,4-tetramethylpentane 773 ≥ 670; indices from memory). Fluorine and silicon compounds boil lower and are not judged.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import replace
+from math import log
+
+from identify.chem.formula import Formula, parse_formula
+from identify.errors import FormulaError
+from identify.pipeline.joint import COMPOUND_LEVELS, claim_from_run, lower_claim
+from identify.records import Candidate, ClaimLevel, EvidenceItem, Explanation, Identification, Verdict
+from identify.retention import linear_index
+from identify.runs.findings import Finding, RetentionScale
+from identify.settings import Settings
+
+KIND = "order of elution"
+PER_ATOM, OFFSET, MOST_ATOMS = 90.0, 140.0, 20
+JUDGED = frozenset({"C", "H", "N", "O", "S", "Cl", "Br"})
+TOO_LARGE_ODDS = 50.0
+"""How much less likely such a candidate becomes: the bound is a rule of thumb, no law."""
+SLACK = 30.0
+WORTH_A_NOTE = 0.02
+
+
+def weigh_by_elution(
+    findings: Sequence[Finding], scale: RetentionScale | None, settings: Settings
+) -> tuple[Finding, ...]:
+    """Findings whose candidates are weighed by whether they can elute when their component does.
+
+    Parameters
+    ----------
+    findings : sequence of Finding
+    scale : RetentionScale or None
+        Without one nothing is judged.
+    settings : Settings
+
+    Returns
+    -------
+    tuple of Finding
+        As many, same order. Probabilities of the other candidates, and of what is not in the library, rise by as much as those of
+        the candidates judged too large fall.
+    """
+    if scale is None:
+        return tuple(findings)
+    judged = []
+    for finding in findings:
+        found = finding.identification
+        highest = _highest_index(finding.component.time_s / 60.0, scale)
+        if found is not None and highest is not None:
+            finding = replace(finding, identification=_weigh(found, highest, settings))
+        judged.append(finding)
+    return tuple(judged)
+
+
+def least_index(formula: Formula) -> float | None:
+    """Lower limit of the retention index of a compound, from its size; None where the rule does not judge.
+
+    Parameters
+    ----------
+    formula : Formula
+
+    Returns
+    -------
+    float or None
+
+    Examples
+    --------
+    >>> least_index(parse_formula("C10H20O2")), least_index(parse_formula("C4H12Si"))
+    (940.0, None)
+    """
+    elements = {symbol for symbol, _ in formula.counts}
+    heavy = sum(count for symbol, count in formula.counts if symbol != "H")
+    if not elements <= JUDGED or heavy > MOST_ATOMS:
+        return None
+    return PER_ATOM * heavy - OFFSET
+
+
+def _highest_index(minutes: float, scale: RetentionScale) -> float | None:
+    """Index of a time, or the first rung's for times before it; None after the last."""
+    index = linear_index(minutes, scale.ladder)
+    if index is None and minutes < scale.ladder.times[0]:
+        index = 100.0 * scale.ladder.carbons[0]
+    return index
+
+
+def _weigh(found: Identification, highest: float, settings: Settings) -> Identification:
+    too_large = [_is_too_large(candidate, highest) for candidate in found.candidates]
+    lost = sum(c.probability for c, flag in zip(found.candidates, too_large, strict=True) if flag)
+    if lost < WORTH_A_NOTE:
+        return found
+    whole = 1.0 - lost * (1.0 - 1.0 / TOO_LARGE_ODDS)
+    weighed = [
+        _with_probability(c, (c.probability / TOO_LARGE_ODDS if flag else c.probability) / whole, highest, flag)
+        for c, flag in zip(found.candidates, too_large, strict=True)
+    ]
+    order = sorted(weighed, key=lambda candidate: -candidate.probability)
+    ranked = tuple(replace(c, rank=rank) for rank, c in enumerate(order, start=1))
+    names = [c.entry.identity.name for c, flag in zip(found.candidates, too_large, strict=True) if flag][:3]
+    note = f"Too large to elute before index {highest:.0f}, hence hardly possible: {'; '.join(names)}."
+    inside = min(1.0, sum(c.probability for c in ranked))
+    changed = replace(found, candidates=ranked, in_library_probability=inside)
+    if too_large[0] and found.claim.level in (*COMPOUND_LEVELS, ClaimLevel.ISOMER_GROUP):
+        without = replace(changed.claim, level=ClaimLevel.TENTATIVE, group_probability=0.0)
+        return lower_claim(replace(changed, claim=without), note, settings.claim_threshold)
+    changed = replace(changed, notes=(*changed.notes, note))
+    if found.claim.level is ClaimLevel.NO_CLAIM and ranked[0].probability >= settings.claim_threshold:
+        return claim_from_run(changed)
+    return changed
+
+
+def _is_too_large(candidate: Candidate, highest: float) -> bool:
+    try:
+        least = least_index(parse_formula(candidate.entry.formula_as_measured))
+    except FormulaError:
+        return False
+    return least is not None and least > highest + SLACK
+
+
+def _with_probability(candidate: Candidate, probability: float, highest: float, is_too_large: bool) -> Candidate:
+    new = min(1.0 - 1e-9, max(1e-12, probability))
+    old = min(1.0 - 1e-9, max(1e-12, candidate.probability))
+    change = log(new / (1.0 - new)) - log(old / (1.0 - old))
+    explanation = candidate.explanation
+    if explanation.parts:
+        part = Explanation(KIND, change, "candidates too large for this time leave their probability to the others")
+        explanation = Explanation(
+            explanation.label, explanation.value + change, explanation.detail, (*explanation.parts, part)
+        )
+    evidence = candidate.evidence
+    if is_too_large:
+        evidence = (
+            *evidence,
+            EvidenceItem(
+                KIND, Verdict.CONFLICTS, "larger than what elutes by then", observed=f"index at most {highest:.0f}",
+                expected=f"at least {least_index(parse_formula(candidate.entry.formula_as_measured)):.0f}",
+                log_odds=-log(TOO_LARGE_ODDS), source="most branched alkanes elute first (textbook knowledge)",
+            ),
+        )  # fmt: skip
+    return replace(candidate, probability=new, explanation=explanation, evidence=evidence)
