@@ -220,6 +220,7 @@ def test_dropped_files_are_taken_and_pages_work_without_scripts(bench: Bench) ->
         page.goto(_fresh_link(bench))
         page.fill("textarea[name=peaks]", "43 100, 58 30, 15 20")
         page.click("button:has-text('Identify the list')")
+        page.wait_for_url("**/?said=received")
         bench.wait()
         page.goto(bench.origin)
         page.click("text=pasted peaks >> nth=-1")
