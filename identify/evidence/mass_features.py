@@ -148,8 +148,8 @@ def peak_features(problem: MassProblem) -> dict[str, FloatArray]:
     here = pad[at]
     suffix_max = np.maximum.accumulate(raw[::-1])[::-1]
     suffix_sum = np.cumsum(raw[::-1])[::-1]
-    near = np.max([raw[at + offset] for offset in range(-14, 4)], axis=0)
-    wide = np.max([raw[at + offset] for offset in range(-60, 4)], axis=0)
+    window = raw[at[:, None] + np.arange(-60, 4)[None, :]]
+    near, wide = window[:, -18:].max(axis=1), window.max(axis=1)
     top = int(problem.tops[0])
     even = float(problem.corrected[40 : max(top - 2, 41) : 2].sum())
     odd = float(problem.corrected[41 : max(top - 2, 42) : 2].sum())
@@ -166,7 +166,7 @@ def peak_features(problem: MassProblem) -> dict[str, FloatArray]:
         "odd mass": parity,
         "even share": np.full(masses.size, even_share),
         "odd mass, even share": parity * even_share,
-        "improbable loss": log_level(np.max([pad[at - loss] for loss in IMPROBABLE], axis=0)),
+        "improbable loss": log_level(pad[at[:, None] - np.array(IMPROBABLE)[None, :]].max(axis=1)),
         "log mass": np.log(masses.astype(float)),
     }
     for level, highest in zip(TOP_LEVELS, problem.tops.tolist(), strict=True):

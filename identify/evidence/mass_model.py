@@ -45,12 +45,14 @@ class Trees:
 
     def sum_over(self, matrix: FloatArray) -> FloatArray:
         """Sum of all trees for every row of `matrix`, shape (n_rows,)."""
-        rows = np.arange(len(matrix))[:, None]
-        node = np.broadcast_to(self.roots[None, :], (len(matrix), self.roots.size))
+        # `take` on flat arrays is several times faster than indexing; one array holds both children of a node.
+        values, first = np.ascontiguousarray(matrix).reshape(-1), np.arange(len(matrix))[:, None] * matrix.shape[1]
+        children = np.stack([self.right, self.left], axis=1).reshape(-1)
+        node = np.repeat(self.roots[None, :], len(matrix), axis=0)
         for _ in range(self.depth):
-            goes_left = matrix[rows, self.feature[node]] <= self.threshold[node]
-            node = np.where(goes_left, self.left[node], self.right[node])
-        result: FloatArray = self.value[node].sum(axis=1)
+            goes_left = values.take(first + self.feature.take(node)) <= self.threshold.take(node)
+            node = children.take(2 * node + goes_left)
+        result: FloatArray = self.value.take(node).sum(axis=1)
         return result
 
 
