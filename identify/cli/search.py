@@ -60,7 +60,7 @@ def search(
     who: str,
 ) -> int:
     """Identify every spectrum in QUERIES (files, folders, archives, or - for pasted peaks)."""
-    from identify.pipeline import search_files, search_pasted
+    from identify.pipeline import search_files, search_pasted, search_to_json
     from identify.settings import resolve
 
     settings = resolve(
@@ -75,7 +75,12 @@ def search(
         report = search_pasted(_read_pasted(), libraries, settings, as_of=as_of)
     else:
         with progress_bar("Identifying") as progress:
-            report = search_files(queries, libraries, settings, progress, as_of=as_of)
+            if json_path and not (csv_path or html_path or why_not):
+                report = search_to_json(queries, libraries, settings, json_path, progress, as_of=as_of)
+                click.echo(f"Written: {json_path}", err=True)
+                json_path = None  # written already
+            else:
+                report = search_files(queries, libraries, settings, progress, as_of=as_of)
     code = deliver(report, json_path, csv_path, html_path)
     if why_not:
         say_why_not(why_not, report, libraries, settings, as_of)

@@ -6,7 +6,7 @@ nothing else wires the rooms together.
 Not for: any decision of its own. Each step is a function of the room that owns it.
 """
 
-from identify.pipeline.files import search_files, search_pasted
+from identify.pipeline.files import search_files, search_pasted, search_to_json
 from identify.pipeline.search import (
     SearchableLibrary,
     identify_query,
@@ -23,4 +23,5 @@ __all__ = [
     "open_libraries",
     "search_files",
     "search_pasted",
+    "search_to_json",
 ]

@@ -9,12 +9,13 @@ from __future__ import annotations
 import gc
 import os
 from collections import deque
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from concurrent.futures import Future, ProcessPoolExecutor
 from contextlib import ExitStack
 from itertools import chain, islice
 from multiprocessing import get_context
 from pathlib import Path
+from typing import TypeVar
 
 from identify.pipeline.search import (
     Progress,
@@ -25,6 +26,7 @@ from identify.pipeline.search import (
 from identify.records import Identification, Rejection, SpectrumRecord
 from identify.settings import Settings
 
+Shape = TypeVar("Shape")
 WORTH_WORKERS = 60
 """From this many queries on, starting workers (about a second each) pays."""
 GROUP = 12
@@ -44,8 +46,37 @@ def identify_many(
 ) -> Iterator[Identification]:
     """Identifications in the order of the records, from this process for a few and from workers for many.
 
+    All parameters are those of `map_identifications`.
+
+    Yields
+    ------
+    Identification
+    """
+    return map_identifications(_whole, records, libraries, settings, rejected, progress, as_of=as_of)
+
+
+def _whole(found: Identification) -> Identification:
+    return found
+
+
+def map_identifications(
+    shape: Callable[[Identification], Shape],
+    records: Iterable[SpectrumRecord],
+    libraries: Sequence[SearchableLibrary],
+    settings: Settings,
+    rejected: list[Rejection],
+    progress: Progress | None = None,
+    *,
+    as_of: Sequence[int | str] = (),
+) -> Iterator[Shape]:
+    """What `shape` makes of each identification, in the order of the records.
+
+    Workers apply `shape` themselves: an identification is ten times as large as most of what is wanted of it.
+
     Parameters
     ----------
+    shape : callable
+        A function of a module, or a partial of one: it goes to other processes.
     records : iterable of SpectrumRecord
         Consumed as results are taken.
     libraries : sequence of SearchableLibrary
@@ -58,7 +89,7 @@ def identify_many(
 
     Yields
     ------
-    Identification
+    Shape
         The same, bit for bit, whatever the number of workers.
     """
     remaining = iter(records)
@@ -66,23 +97,20 @@ def identify_many(
     workers = min(MAX_WORKERS, len(os.sched_getaffinity(0)))
     everything = chain(first, remaining)
     if len(first) < WORTH_WORKERS or workers < 2:
-        yield from identify_records(everything, libraries, settings, rejected, progress)
+        yield from map(shape, identify_records(everything, libraries, settings, rejected, progress))
         return
     paths = [Path(searchable.state.path) for searchable in libraries]
     with ProcessPoolExecutor(workers, get_context("spawn"), _open_in_worker, (paths, settings, as_of)) as pool:
-        under_way: deque[Future[_Results]] = deque()
+        under_way: deque[Future[tuple[list[Shape], list[Rejection]]]] = deque()
         done = 0
         for start, group in _groups(everything):
-            under_way.append(pool.submit(_identify_group, start, group))
+            under_way.append(pool.submit(_identify_group, shape, start, group))
             if len(under_way) >= workers * GROUPS_UNDER_WAY:
                 done += GROUP
                 yield from _take(under_way.popleft(), rejected, progress, done)
         while under_way:
             done += GROUP
             yield from _take(under_way.popleft(), rejected, progress, done)
-
-
-_Results = tuple[list[Identification], list[Rejection]]
 
 
 def _groups(records: Iterator[SpectrumRecord]) -> Iterator[tuple[int, list[SpectrumRecord]]]:
@@ -93,12 +121,15 @@ def _groups(records: Iterator[SpectrumRecord]) -> Iterator[tuple[int, list[Spect
 
 
 def _take(
-    future: Future[_Results], rejected: list[Rejection], progress: Progress | None, done: int
-) -> Iterator[Identification]:
+    future: Future[tuple[list[Shape], list[Rejection]]],
+    rejected: list[Rejection],
+    progress: Progress | None,
+    done: int,
+) -> Iterator[Shape]:
     found, left_out = future.result()
     rejected.extend(left_out)
     if progress:
-        progress(done, found[-1].query.record.title if found else "")
+        progress(done, "")
     yield from found
 
 
@@ -120,7 +151,9 @@ def _open_in_worker(paths: list[Path], settings: Settings, as_of: Sequence[int |
     gc.set_threshold(100_000, 20, 20)
 
 
-def _identify_group(start: int, records: list[SpectrumRecord]) -> _Results:
+def _identify_group(
+    shape: Callable[[Identification], Shape], start: int, records: list[SpectrumRecord]
+) -> tuple[list[Shape], list[Rejection]]:
     rejected: list[Rejection] = []
-    found = list(identify_records(records, _Worker.libraries, _Worker.settings, rejected, first=start))
-    return found, rejected
+    found = identify_records(records, _Worker.libraries, _Worker.settings, rejected, first=start)
+    return [shape(item) for item in found], rejected

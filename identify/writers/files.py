@@ -5,7 +5,10 @@ from __future__ import annotations
 import contextlib
 import os
 import tempfile
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
+from typing import IO
 
 from identify.errors import UsageError
 
@@ -22,15 +25,38 @@ def write_atomically(path: Path, content: bytes) -> None:
     Raises
     ------
     UsageError
+        As `open_atomically`.
+    """
+    with open_atomically(path) as file:
+        file.write(content)
+
+
+@contextmanager
+def open_atomically(path: Path) -> Iterator[IO[bytes]]:
+    """A file to write into that takes the place of `path` when the block ends, or vanishes if anything goes wrong.
+
+    Parameters
+    ----------
+    path : Path
+        File to write or replace; its folder must exist.
+
+    Yields
+    ------
+    binary file
+
+    Raises
+    ------
+    UsageError
         If the folder is missing, not a folder, not writable, or the disk is full.
 
     Notes
     -----
-    Written to a temporary file in the same folder, synchronised, then renamed over `path`.
+    A temporary file in the same folder, synchronised, then renamed over `path`.
     """
     path = Path(path)
     try:
-        _write_and_replace(path, content)
+        with _replacing(path) as file:
+            yield file
     except OSError as error:
         raise UsageError(
             "output file",
@@ -40,13 +66,14 @@ def write_atomically(path: Path, content: bytes) -> None:
         ) from error
 
 
-def _write_and_replace(path: Path, content: bytes) -> None:
+@contextmanager
+def _replacing(path: Path) -> Iterator[IO[bytes]]:
     if path.is_dir():
         raise IsADirectoryError(21, "a folder of that name")
     handle, name = tempfile.mkstemp(prefix=f".{path.name[:40]}.", suffix=".tmp", dir=path.parent)
     try:
         with os.fdopen(handle, "wb") as file:
-            file.write(content)
+            yield file
             file.flush()
             os.fsync(file.fileno())
         # mkstemp makes the file private; a result is as readable as any new file of this user.

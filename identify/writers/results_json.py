@@ -6,7 +6,8 @@ The other writers and the pages read the same `Report`; this file fixes names, o
 from __future__ import annotations
 
 import json
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from dataclasses import replace
 from functools import cache
 from importlib import resources
 from math import floor
@@ -27,10 +28,12 @@ from identify.records import (
     Rejection,
     Report,
 )
-from identify.writers.files import write_atomically
+from identify.writers.files import open_atomically
 
 SCHEMA_NAME = "ionwitness.result/1"
 SCHEMA_FILE = "result-1.json"
+_LISTS = ("queries", "rejected")
+"""Parts of a result with a line for each row; the last ones."""
 DECIMALS = 6
 """Decimals of scores, probabilities, log-odds and m/z: far below what any of them means, so no information is lost."""
 SCALE = 10**DECIMALS
@@ -102,14 +105,45 @@ def report_to_json(report: Report) -> str:
     ValueError
         If a number is not finite: a bug upstream that must not reach a file.
     """
-    lines = []
-    for name, value in report_to_dict(report).items():
-        if name in ("queries", "rejected") and value:
-            rows = ",\n    ".join(_dumps(row) for row in value)
-            lines.append(f"  {_dumps(name)}: [\n    {rows}\n  ]")
-        else:
-            lines.append(f"  {_dumps(name)}: {_dumps(value)}")
-    return "{\n" + ",\n".join(lines) + "\n}\n"
+    queries = (identification_to_json(found) for found in report.identifications)
+    return "".join(_json_pieces(report, queries, report.rejected))
+
+
+def identification_to_json(found: Identification) -> str:
+    """One line of JSON: what stands for one query under ``queries``.
+
+    Parameters
+    ----------
+    found : Identification
+
+    Returns
+    -------
+    str
+
+    Raises
+    ------
+    ValueError
+        If a number is not finite.
+    """
+    return _dumps(_identification(found))
+
+
+def _json_pieces(frame: Report, queries: Iterable[str], rejected: Sequence[Rejection]) -> Iterator[str]:
+    """The text of a result, piece by piece; `rejected` is looked at when all queries are out, for it may grow until then."""
+    head = report_to_dict(replace(frame, identifications=(), rejected=()))
+    yield "{"
+    for name, value in head.items():
+        if name not in _LISTS:
+            yield f"\n  {_dumps(name)}: {_dumps(value)},"
+    for name, rows in zip(_LISTS, (queries, (_dumps(_rejection(row)) for row in rejected)), strict=True):
+        comma = "," if name != _LISTS[-1] else ""
+        yield f"\n  {_dumps(name)}: ["
+        before = "\n    "
+        for row in rows:
+            yield before + row
+            before = ",\n    "
+        yield f"]{comma}" if before == "\n    " else f"\n  ]{comma}"
+    yield "\n}\n"
 
 
 def write_json(path: Path, report: Report) -> None:
@@ -127,8 +161,32 @@ def write_json(path: Path, report: Report) -> None:
     ValueError
         If a number in the report is not finite (a bug).
     """
-    # A lone surrogate cannot be UTF-8; its backslash form is the JSON escape of the same character.
-    write_atomically(path, report_to_json(report).encode("utf-8", "backslashreplace"))
+    queries = (identification_to_json(found) for found in report.identifications)
+    write_json_stream(path, report, queries, report.rejected)
+
+
+def write_json_stream(path: Path, frame: Report, queries: Iterable[str], rejected: Sequence[Rejection]) -> None:
+    """Nothing comes out; afterwards `path` holds a report whose queries came one by one, whole or not at all.
+
+    Parameters
+    ----------
+    path : Path
+    frame : Report
+        Program, settings and libraries; its queries and rejections are not looked at.
+    queries : iterable of str
+        From `identification_to_json`.
+    rejected : sequence of Rejection
+        May grow while `queries` are taken.
+
+    Raises
+    ------
+    UsageError
+        If the file cannot be written.
+    """
+    with open_atomically(path) as file:
+        for piece in _json_pieces(frame, queries, rejected):
+            # A lone surrogate cannot be UTF-8; its backslash form is the JSON escape of the same character.
+            file.write(piece.encode("utf-8", "backslashreplace"))
 
 
 def round_explanation(explanation: Explanation, decimals: int = DECIMALS) -> Explanation:
