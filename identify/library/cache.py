@@ -15,8 +15,10 @@ File layout, all little-endian::
 
 from __future__ import annotations
 
+import contextlib
 import json
 import mmap
+import re
 import secrets
 import struct
 import zlib
@@ -38,6 +40,8 @@ _HEAD = struct.Struct("<8sQII")
 _ALIGN = 64
 _MAX_HEADER = 2**20
 _TYPES = frozenset({"<i8", "<i4", "<u4", "<u2", "|u1", "<f4", "<f8"})
+LEFT_BEHIND_S = 600.0
+"""A temporary file not written to for so long has no writer any more: an index of a million entries is written in seconds."""
 MERGE_AT = 1000
 """Entries added or hidden in memory before they are merged and the cache file is written anew."""
 
@@ -186,9 +190,21 @@ def write_index(path: Path, index: SearchIndex, library_id: str, event: str) -> 
                 stream.seek(start + at)
                 stream.write(data.data)
             stream.truncate(start + offset)
+        written_s = temporary.stat().st_mtime
         temporary.replace(path)
     finally:
         temporary.unlink(missing_ok=True)
+    _drop_left_behind(path, written_s)
+
+
+def _drop_left_behind(path: Path, written_s: float) -> None:
+    """Remove the temporary files of writers that were killed: of our own pattern, and long before the file just written."""
+    pattern = re.compile(re.escape(f".{path.name}.") + r"[0-9a-f]{12}")
+    for other in path.parent.iterdir():
+        if pattern.fullmatch(other.name):
+            with contextlib.suppress(OSError):  # another process may do the same
+                if other.stat().st_mtime < written_s - LEFT_BEHIND_S:
+                    other.unlink()
 
 
 def read_index(path: Path, library_id: str, weighting: Weighting) -> tuple[SearchIndex, str]:

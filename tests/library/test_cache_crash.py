@@ -84,23 +84,56 @@ def test_the_search_after_a_kill_is_right(tmp_path: Path, work: Callable[[Path, 
             assert scores(load_index(library, WEIGHTING)) == expected
 
 
-def test_searches_beside_a_process_that_adds_are_right(library_path: Path) -> None:
-    process = start(add_now_and_then, library_path)
+def search_and_compare(path: Path) -> int:
+    """Number of states of the library, at most 12, in which the index answered as a fresh one."""
+    states: set[str] = set()
+    deadline = time.monotonic() + 30
+    while len(states) < 12 and time.monotonic() < deadline:
+        with open_library(path) as library:
+            before = library.search_fingerprint
+            found, expected = load_index(library, WEIGHTING), build_index(library.iter_peaks(), WEIGHTING)
+            if library.search_fingerprint == before:  # nothing was added between the two
+                assert scores(found) == scores(expected)
+                states.add(before)
+    return len(states)
+
+
+def search_and_report(path: Path, ready: Connection) -> None:
+    ready.send("ready")
+    ready.send(search_and_compare(path))
+
+
+def test_two_processes_that_search_while_a_third_adds_are_right(library_path: Path) -> None:
+    adder = start(add_now_and_then, library_path)
+    here, there = PROCESSES.Pipe(duplex=False)
+    second = PROCESSES.Process(target=search_and_report, args=(library_path, there), daemon=True)
+    second.start()
     try:
-        states: set[str] = set()
-        deadline = time.monotonic() + 30
-        while len(states) < 12 and time.monotonic() < deadline:
-            with open_library(library_path) as library:
-                before = library.search_fingerprint
-                found, expected = load_index(library, WEIGHTING), build_index(library.iter_peaks(), WEIGHTING)
-                if library.search_fingerprint == before:  # nothing was added between the two
-                    assert scores(found) == scores(expected)
-                    states.add(before)
-        assert len(states) == 12
+        assert search_and_compare(library_path) == 12
+        assert (here.recv(), here.recv()) == ("ready", 12)
     finally:
-        assert process.pid is not None
-        os.kill(process.pid, signal.SIGKILL)
-        process.join()
+        for process in (adder, second):
+            assert process.pid is not None
+            if process.is_alive():
+                os.kill(process.pid, signal.SIGKILL)
+            process.join()
+
+
+def test_what_killed_writers_left_is_removed_by_the_next_and_nothing_else(library_path: Path) -> None:
+    with open_library(library_path) as library:
+        index_path = cache_paths(library, WEIGHTING)[0]
+        mark = f".{index_path.name}."
+        old, fresh, foreign = mark + "0123456789ab", mark + "ba9876543210", mark + "not-of-ours"
+        for name in (old, fresh, foreign):
+            index_path.with_name(name).write_bytes(b"half an index")
+        long_ago = time.time() - 2 * cache.LEFT_BEHIND_S
+        for name in (old, foreign):
+            os.utime(index_path.with_name(name), (long_ago, long_ago))
+        load_index(library, WEIGHTING)
+    left = {path.name for path in index_path.parent.iterdir()}
+    assert index_path.name in left
+    assert {fresh, foreign} <= left
+    assert old not in left
 
 
 def test_an_entry_that_comes_while_the_index_is_built_is_not_lost(
