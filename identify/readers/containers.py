@@ -177,7 +177,8 @@ def _read_zip(path: Path, stream: BinaryIO, on_reject: OnReject) -> Iterator[Ope
     left, n_members = MAX_ARCHIVE_BYTES, 0
     with archive:
         for info in archive.infolist():
-            if info.is_dir():
+            # `info.is_dir` fails on a member without a name (Python 3.11).
+            if info.filename.endswith("/"):
                 continue
             name = _member_name(str(path), info.filename)
             n_members += 1
