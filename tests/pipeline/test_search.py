@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from datetime import UTC, datetime
 from pathlib import Path
 
@@ -60,3 +61,38 @@ def test_accurate_pairs_are_scored_on_accurate_peaks(library: Path) -> None:
 def test_a_mixed_pair_says_that_nominal_masses_were_compared(library: Path) -> None:
     _, notes = identify(library, {float(round(mz)): i for mz, i in BENZOTHIAZOLE.items() if mz != 134.9937})
     assert notes == ("Compared at nominal m/z: the query has no accurate masses.",)
+
+
+def named(name: str, smiles: str, peaks: dict[float, float], accession: str) -> SpectrumRecord:
+    made = record(peaks, accession)
+    return replace(made, identity=Identity(name=name, formula="C7H5NS", smiles=smiles))
+
+
+def test_several_libraries_answer_as_one_that_holds_all_and_each_candidate_names_its_own(tmp_path: Path) -> None:
+    other = {mz + 0.02: 100.0 - i / 2 for mz, i in BENZOTHIAZOLE.items()}
+    here = [
+        named("benzothiazole", "c1ccc2scnc2c1", BENZOTHIAZOLE, "A1"),
+        named("phenyl isothiocyanate", "S=C=Nc1ccccc1", other, "A2"),
+    ]
+    there = [
+        named("phenyl thiocyanate", "N#CSc1ccccc1", {mz: i + 9.0 for mz, i in other.items()}, "B1"),
+        named("benzothiazole", "c1ccc2scnc2c1", {mz: i + 3.0 for mz, i in BENZOTHIAZOLE.items()}, "B2"),
+    ]
+    made = {"one": here, "two": there, "both": [*here, *there]}
+    for name, records in made.items():
+        build_from_records(tmp_path / name, records, origin="test", who="tester", when=datetime(2026, 1, 1, tzinfo=UTC))
+    settings, query = Settings(), record({mz: i + 1.0 for mz, i in BENZOTHIAZOLE.items()}, "Q")
+    answers = []
+    for names in (["one", "two"], ["both"]):
+        with open_libraries([tmp_path / name for name in names], settings) as libraries:
+            (found,) = identify_records([query], libraries, settings, [])
+        answers.append(found.candidates)
+    shown = [
+        [(c.entry.accession, c.cosine, c.reverse, c.probability, c.n_entries) for c in candidates]
+        for candidates in answers
+    ]
+    assert shown[0] == shown[1]
+    assert len(shown[0]) == 3
+    assert [Path(c.library).name for c in answers[0]] == [
+        "one" if c.entry.accession[0] == "A" else "two" for c in answers[0]
+    ]
