@@ -7,7 +7,9 @@ from typing import TYPE_CHECKING
 
 import click
 
-from identify.cli.search import FILE, deliver, progress_bar, read_settings
+from identify.cli.options import FILE, WHO, check_outputs, read_text
+from identify.cli.progress import progress_bar
+from identify.cli.search import deliver, read_settings, remember
 
 if TYPE_CHECKING:
     from identify.pipeline.runs import RunOptions
@@ -29,6 +31,11 @@ if TYPE_CHECKING:
 @click.option("--report", "html_path", type=FILE, help="Write a self-contained HTML report.")
 @click.option("--top", type=int, default=10, show_default=True, help="Candidates kept per component.")
 @click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
+@click.option(
+    "--record/--no-record", "is_recorded", default=None,
+    help="Remember in the library which entries answered (default: when a result file is written and the library allows).",
+)  # fmt: skip
+@WHO
 def run(
     paths: tuple[Path, ...],
     libraries: tuple[Path, ...],
@@ -42,6 +49,8 @@ def run(
     html_path: Path | None,
     top: int,
     settings_path: Path | None,
+    is_recorded: bool | None,
+    who: str,
 ) -> int:
     """Find and name everything that eluted in each RUN (ANDI-MS netCDF, mzML).
 
@@ -53,13 +62,22 @@ def run(
     from identify.settings import resolve
 
     settings = resolve(read_settings(settings_path), where=str(settings_path or "settings"), top=top)
+    outputs = (json_path, csv_path, html_path)
+    check_outputs(outputs, [*paths, *libraries, *(path for path in (blank, ladder, settings_path) if path)])
+    written = next((path for path in outputs if path), None)
+    if is_recorded and written is None:
+        raise UsageError("--record", found="no result file", expected="--json, --csv or --report with it")
     if at is not None:
-        if len(paths) != 1 or blank or ladder:
-            raise UsageError("--at", found="several runs, a blank or a ladder beside it", expected="one run alone")
+        if len(paths) != 1 or blank or ladder or column:
+            beside = "several runs, a blank, a ladder or a column beside it"
+            raise UsageError("--at", found=beside, expected="one run alone")
         report = identify_scans(
             paths[0], _minutes(at, "--at"), _minutes(background or "", "--background"), libraries, settings
         )
-        return deliver(report, json_path, csv_path, html_path)
+        code = deliver(report, json_path, csv_path, html_path)
+        if written and is_recorded is not False:
+            remember(report, written, who, is_required=bool(is_recorded))
+        return code
     if background is not None:
         raise UsageError("--background", found="no --at", expected="--at with the minutes of the peak")
     options = _options(blank, ladder, column)
@@ -71,6 +89,8 @@ def run(
     from identify.report.run_terminal import render_run_terminal
 
     render_run_terminal(found, Console())
+    if written and is_recorded is not False:
+        remember(found.report, written, who, is_required=bool(is_recorded))
     return found.report.exit_code
 
 
@@ -99,10 +119,7 @@ def _options(blank: Path | None, ladder: Path | None, column: str) -> RunOptions
         return RunOptions(blank=blank, column=column)
     if is_run(ladder):
         return RunOptions(blank=blank, ladder_run=ladder, column=column)
-    try:
-        text = ladder.read_text(encoding="utf-8")
-    except (OSError, UnicodeDecodeError) as error:
-        raise UsageError("--ladder", where=str(ladder), found=str(error), expected="a readable text or run") from None
+    text = read_text(ladder, "--ladder", UsageError)
     return RunOptions(blank=blank, ladder=parse_ladder(text, str(ladder)), column=column)
 
 

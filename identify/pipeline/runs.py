@@ -16,10 +16,10 @@ from identify.pipeline.shared_unknowns import share_unknowns
 from identify.readers.runs import read_run
 from identify.records import Acquisition, Identification, Rejection, Report, Retention, SpectrumRecord
 from identify.retention import Ladder, linear_index, phase_class
-from identify.runs.alkanes import find_alkane_ladder
+from identify.runs.alkanes import alkane_share, find_alkane_ladder
 from identify.runs.components import decompose, find_components
 from identify.runs.findings import Finding, RetentionScale, RunFindings, RunsReport
-from identify.runs.model import Component, ComponentKind, Run
+from identify.runs.model import Component, ComponentKind, Decomposition, Run
 from identify.settings import Settings
 
 NOT_SEARCHED = {
@@ -29,6 +29,10 @@ NOT_SEARCHED = {
 LADDER_UNCERTAINTY, RUN_LADDER_UNCERTAINTY, OWN_UNCERTAINTY = 3.0, 3.0, 30.0
 """Index units. ± 2–5 on the same column and method is common practice; a scale from the sample's own alkanes rests on their
 identification and is not used as evidence."""
+
+
+ALKANES_ONLY_SHARE = 0.8
+"""A run whose alkanes make this share of all compounds' area is an alkane run."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,26 +125,52 @@ def run_files(
     known = find_components(read_run(options.blank)) if options.blank else ()
     given = _given_scale(options)
     rejected: list[Rejection] = []
+    taken_apart = _take_apart(paths, known, rejected)
+    given = given or _scale_among(taken_apart, options)
     runs: list[RunFindings] = []
     with open_libraries(library_paths, settings) as libraries:
-        for number, path in enumerate(paths, start=1):
-            try:
-                run = read_run(path)
-            except InputError as error:
-                if len(paths) == 1:
-                    raise
-                rejected.append(Rejection(str(path), None, error.what, error.found, error.expected, error.hint))
-                continue
+        analysis = _Analysis(libraries, settings, options, given, rejected, progress)
+        for number, (run, decomposition) in enumerate(taken_apart, start=1):
             first_query = 1 + sum(len(earlier.findings) for earlier in runs)
-            analysis = _Analysis(libraries, settings, options, given, rejected, progress)
-            runs.append(analysis.run(run, number, known, first_query))
+            runs.append(analysis.run(run, decomposition, number, first_query))
         states = tuple(searchable.state for searchable in libraries)
-    if not runs:
-        raise InputError("runs", found=f"none of {len(paths)} readable", expected="at least one")
     shared, unknowns = share_unknowns(runs)
     found = tuple(f.identification for run in shared for f in run.findings if f.identification)
     report = Report("ionwitness", __version__, settings.as_dict(), states, found, tuple(rejected))
     return RunsReport(tuple(shared), report, unknowns)
+
+
+def _take_apart(
+    paths: Sequence[Path], blank: Sequence[Component], rejected: list[Rejection]
+) -> list[tuple[Run, Decomposition]]:
+    """Every run that can be read, with its components; the others are rejections, unless there is no other."""
+    found = []
+    for path in paths:
+        try:
+            run = read_run(path)
+            found.append((run, decompose(run, blank)))
+        except InputError as error:
+            if len(paths) == 1:
+                raise
+            rejected.append(Rejection(str(path), None, error.what, error.found, error.expected, error.hint))
+    if not found:
+        raise InputError("runs", found=f"none of {len(paths)} readable", expected="at least one")
+    return found
+
+
+def _scale_among(taken_apart: Sequence[tuple[Run, Decomposition]], options: RunOptions) -> RetentionScale | None:
+    """Scale of an alkane run that is one of several runs; None with one run only, or where no run is of alkanes alone."""
+    if len(taken_apart) < 2:
+        return None
+    phase = phase_class(options.column) if options.column else ""
+    for run, decomposition in taken_apart:
+        if alkane_share(decomposition.components) < ALKANES_ONLY_SHARE:
+            continue
+        ladder = find_alkane_ladder(decomposition.components, alkanes_only=True)
+        if ladder is not None:
+            name = Path(run.source.path).name
+            return RetentionScale(ladder, f"the alkane run {name}, found among the runs", RUN_LADDER_UNCERTAINTY, phase)
+    return None
 
 
 def _given_scale(options: RunOptions) -> RetentionScale | None:
@@ -170,9 +200,8 @@ class _Analysis:
     rejected: list[Rejection]
     progress: Progress | None
 
-    def run(self, run: Run, number: int, blank: Sequence[Component], first_query: int) -> RunFindings:
+    def run(self, run: Run, decomposition: Decomposition, number: int, first_query: int) -> RunFindings:
         """Findings of one run."""
-        decomposition = decompose(run, blank)
         scale = self.given or self._own_scale(decomposition.components)
         findings = []
         for component in decomposition.components:

@@ -13,7 +13,7 @@ from itertools import pairwise
 import numpy as np
 
 from identify.retention import Ladder
-from identify.runs.model import Component
+from identify.runs.model import Component, ComponentKind
 
 MIN_SERIES_SHARE = 0.9
 """Share of the signal from m/z 39 in the series CnH2n+1, CnH2n and CnH2n-1, and the molecular ion."""
@@ -57,6 +57,22 @@ def alkane_carbons(component: Component, series_share: float = MIN_SERIES_SHARE)
     if float(relative[own].sum() / relative.sum()) < series_share:
         return None
     return carbons
+
+
+def alkane_share(components: Sequence[Component]) -> float:
+    """Share of the area of all compounds (solvent, gas and bleed left out) that alkanes make, in [0, 1].
+
+    Parameters
+    ----------
+    components : sequence of Component
+
+    Returns
+    -------
+    float
+    """
+    compounds = [c for c in components if c.kind is ComponentKind.COMPOUND]
+    total = sum(c.area for c in compounds)
+    return sum(c.area for c in compounds if alkane_carbons(c) is not None) / total if total > 0 else 0.0
 
 
 def _from_molecular_ion(values: dict[int, float]) -> int:

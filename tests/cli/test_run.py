@@ -15,6 +15,7 @@ from referencing import Registry, Resource
 
 from identify.cli.run import run
 from identify.errors import IonwitnessError
+from identify.library.reported import find_affected
 from identify.library.store import open_library
 from identify.writers.results_json import load_schema
 from identify.writers.run_json import load_run_schema
@@ -152,6 +153,51 @@ def test_a_spectrum_taken_by_hand_is_searched(tmp_path: Path, starter: Path, sam
     document = json.loads((tmp_path / "o.json").read_text())
     assert document["schema"] == "ionwitness.result/1"
     assert document["queries"][0]["hits"][0]["name"].casefold() == "naphthalene"
+
+
+def test_an_alkane_run_among_the_runs_gives_the_scale(tmp_path: Path, starter: Path, sample: Path) -> None:
+    alkanes = save(
+        tmp_path / "alkanes.cdf", [Eluting(alkane(8 + k), 60.0 + 60.0 * k, 40_000.0) for k in range(5)], seed=3
+    )
+    result = call(sample, alkanes, "--library", starter, "--json", tmp_path / "o.json")
+    assert result.exception is None, result.exception
+    first = json.loads((tmp_path / "o.json").read_text())["runs"][0]
+    assert "alkanes.cdf, found among the runs" in first["retention_scale"]["origin"]
+    indices = [c["retention_index"] for c in first["components"] if c["area"] > 1e4]
+    assert indices == pytest.approx([866.7, 1000.0, 1133.3], abs=1.0)
+
+
+def test_a_result_file_is_remembered_in_the_library_and_no_record_leaves_it_alone(
+    tmp_path: Path, starter: Path, sample: Path
+) -> None:
+    def remembered() -> set[str]:
+        with open_library(starter) as library:
+            (naphthalene,) = [e for e in library.iter_entries() if e.identity.name.casefold() == "naphthalene"]
+            return {row.result for row in find_affected(library, naphthalene.accession)}
+
+    call(sample, "--library", starter, "--json", tmp_path / "o.json", "--no-record")
+    call(sample, "--library", starter)
+    assert remembered() == set()
+    result = call(sample, "--library", starter, "--json", tmp_path / "o.json", "--who", "anna")
+    assert result.exception is None, result.exception
+    assert remembered() == {str(tmp_path / "o.json")}
+    assert "no result file" in str(call(sample, "--library", starter, "--record").exception)
+
+
+def test_an_output_over_an_input_or_without_a_folder_is_refused_before_any_work(
+    tmp_path: Path, starter: Path, sample: Path
+) -> None:
+    content = sample.read_bytes()
+    assert "a file that this command reads" in str(call(sample, "--library", starter, "--json", sample).exception)
+    assert sample.read_bytes() == content
+    missing = tmp_path / "nowhere" / "o.json"
+    assert "no such folder" in str(call(sample, "--library", starter, "--report", missing).exception)
+
+
+def test_a_ladder_that_is_no_text_or_not_there_says_so(tmp_path: Path, starter: Path, sample: Path) -> None:
+    (tmp_path / "ladder.bin").write_bytes(b"\xff\xfe\x00C8")
+    assert "no UTF-8 text" in str(call(sample, "--library", starter, "--ladder", tmp_path / "ladder.bin").exception)
+    assert "no file" in str(call(sample, "--library", starter, "--ladder", tmp_path / "none.txt").exception)
 
 
 @pytest.mark.parametrize(
