@@ -12,6 +12,7 @@ from collections import deque
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from concurrent.futures import Future, ProcessPoolExecutor
 from contextlib import ExitStack
+from dataclasses import replace
 from itertools import chain, islice
 from multiprocessing import get_context
 from pathlib import Path
@@ -29,6 +30,8 @@ from identify.settings import Settings
 Shape = TypeVar("Shape")
 WORTH_WORKERS = 60
 """From this many queries on, starting workers (about a second each) pays."""
+WORTH_MACHINE_CODE = 400
+"""From this many queries on, loading the machine code of the search in each worker pays for a small library too."""
 GROUP = 12
 GROUPS_UNDER_WAY = 3
 """Per worker: enough to keep it busy, few enough to bound memory."""
@@ -93,14 +96,15 @@ def map_identifications(
         The same, bit for bit, whatever the number of workers.
     """
     remaining = iter(records)
-    first = list(islice(remaining, WORTH_WORKERS))
+    first = list(islice(remaining, WORTH_MACHINE_CODE))
     workers = min(MAX_WORKERS, len(os.sched_getaffinity(0)))
     everything = chain(first, remaining)
     if len(first) < WORTH_WORKERS or workers < 2:
         yield from map(shape, identify_records(everything, libraries, settings, rejected, progress))
         return
     paths = [Path(searchable.state.path) for searchable in libraries]
-    with ProcessPoolExecutor(workers, get_context("spawn"), _open_in_worker, (paths, settings, as_of)) as pool:
+    opened = (paths, settings, as_of, len(first) >= WORTH_MACHINE_CODE)
+    with ProcessPoolExecutor(workers, get_context("spawn"), _open_in_worker, opened) as pool:
         under_way: deque[Future[tuple[list[Shape], list[Rejection]]]] = deque()
         done = 0
         for start, group in _groups(everything):
@@ -142,8 +146,9 @@ class _Worker:
     settings: Settings = Settings()
 
 
-def _open_in_worker(paths: list[Path], settings: Settings, as_of: Sequence[int | str]) -> None:
-    _Worker.libraries = _Worker.stack.enter_context(open_libraries(paths, settings, as_of))
+def _open_in_worker(paths: list[Path], settings: Settings, as_of: Sequence[int | str], is_busy: bool) -> None:
+    libraries = _Worker.stack.enter_context(open_libraries(paths, settings, as_of))
+    _Worker.libraries = tuple(replace(searchable, is_busy=is_busy) for searchable in libraries)
     _Worker.settings = settings
     # A result is a tree of thousands of small records without cycles; looking for cycles after every 700 of them, and again and
     # again through all entries kept, costs a worker a tenth of its time.

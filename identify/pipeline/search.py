@@ -61,6 +61,8 @@ class SearchableLibrary:
     state: LibraryState
     shift: Shift = SHIPPED
     """Calibration of the probabilities that the library carries."""
+    is_busy: bool = False
+    """Whether so many queries are to come that loading the machine code of the search (0.5 s) pays."""
 
 
 @contextmanager
@@ -195,7 +197,7 @@ def _find_matches(spectrum: CleanSpectrum, libraries: Sequence[SearchableLibrary
     found: list[Sequence[Hit]] = []
     entries: list[dict[int, Entry]] = []
     for searchable in libraries:
-        hits = search_index(searchable.index, spectrum, settings.search_depth)
+        hits = search_index(searchable.index, spectrum, settings.search_depth, many=searchable.is_busy)
         found.append(hits)
         entries.append({entry.id: entry for entry in searchable.library.get_entries([hit.entry_id for hit in hits])})
     own = [[key for key, entry in held.items() if entry.status is EntryStatus.OWN_STANDARD] for held in entries]
