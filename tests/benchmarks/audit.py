@@ -1,6 +1,6 @@
 """How many injected errors the library audit finds, at how many false alarms; with `--fit`, where its weights come from.
 
-    python tests/benchmarks/audit.py LIB [--per-kind 100] [--fit]
+    python tests/benchmarks/audit.py LIB [--per-kind 100] [--fit] [--whole] [--sample 40]
 
 LIB is built of the open records (`ionwitness library build all.ionlib ../shared/data/massbank-2025.05.1-ei.zip --licence
 all`). Errors are injected into copies in memory: spectra swapped between compounds, a formula changed by a few atoms, a
@@ -30,8 +30,8 @@ import numpy as np
 from identify.chem.formula import Formula, parse_formula
 from identify.errors import FormulaError
 from identify.index import SearchIndex
-from identify.library.audit import audit_library, look_around, observe_in_library
-from identify.library.audit_cells import REPLICATES, Cell
+from identify.library.audit import USE, AuditReport, EntryAudit, audit_library, look_around, observe_in_library
+from identify.library.audit_cells import REPLICATES, Cell, nominal_mass_of
 from identify.library.audit_metadata import Grade, check_statements
 from identify.library.audit_weights import BASE_LOG_ODDS, CAUTION_FROM, QUARANTINE_FROM, WEIGHTS
 from identify.library.cache import load_index
@@ -309,12 +309,39 @@ def show(cases: list[Case], log_odds: list[float], caution: float, quarantine: f
         )
 
 
+def draw_sample(report: AuditReport, n: int, seed: int) -> tuple[tuple[str, list[EntryAudit]], ...]:
+    """Entries drawn at random among those flagged and those not."""
+    chance = random.Random(seed)
+    flagged = [audit for audit in report.audits if audit.proposal != USE]
+    rest = [audit for audit in report.audits if audit.proposal == USE]
+    return tuple(
+        (title, chance.sample(group, min(n, len(group)))) for title, group in (("flagged", flagged), ("not", rest))
+    )
+
+
+def describe(library: Library, audit: EntryAudit) -> str:
+    """What a person needs to judge the entry: statements, the tallest and the highest peaks, the findings."""
+    (entry,) = library.get_entries([audit.entry_id])
+    peaks = sorted(zip(entry.spectrum.nominal.mz.tolist(), entry.spectrum.nominal.relative.tolist(), strict=True))
+    tallest = sorted(sorted(peaks, key=lambda peak: -peak[1])[:14])
+    lines = [
+        f"{audit.accession} {audit.name}: {audit.proposal}, log-odds {audit.log_odds:+.1f} {audit.suspicion}",
+        f"  {entry.formula_as_measured} M {nominal_mass_of(entry.formula_as_measured)} {entry.measured_as}"
+        f" {entry.acquisition.energy_ev} eV, {len(peaks)} peaks, {entry.identity.smiles}",
+        "  tallest " + " ".join(f"{mz:.0f}:{height:.0f}" for mz, height in tallest),
+        "  highest " + " ".join(f"{mz:.0f}:{height:.2g}" for mz, height in peaks[-9:]),
+    ]
+    lines += [f"    {f.grade} {f.kind}: {f.reason} {f.observed}" for f in audit.findings]
+    return "\n".join(lines)
+
+
 def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("library", type=Path)
     parser.add_argument("--per-kind", type=int, default=100)
     parser.add_argument("--fit", action="store_true")
     parser.add_argument("--whole", action="store_true", help="also audit the whole library and count findings")
+    parser.add_argument("--sample", type=int, default=0, help="entries to print for judging by hand, flagged and not")
     options = parser.parse_args()
     with open_library(options.library) as library:
         index = load_index(library, Weighting())
@@ -335,10 +362,14 @@ def main() -> None:
                     levels = caution, quarantine
                     values = [with_stated(*pair, *levels, alone) for pair in zip(values, cases, strict=True)]
                 show(cases, values, caution, quarantine, f"other half of the compounds, {title}, {where}")
-        if options.whole:
+        if options.whole or options.sample:
             report = audit_library(library, index)
             print("\nwhole library:", dict(report.by_proposal))
             print("findings:", dict(report.by_finding))
+            for title, audits in draw_sample(report, options.sample, seed=4):
+                print(f"\n{title}")
+                for audit in audits:
+                    print(describe(library, audit))
 
 
 if __name__ == "__main__":
