@@ -325,7 +325,7 @@ def suspect(
     str
     """
     formula = formula_facts(entry.formula_as_measured)
-    if any(cell.kind == SHIFT and cell.cell in {"far better", "better"} for cell in cells):
+    if any(cell.kind == SHIFT and cell.cell == "far better" for cell in cells):
         return "all m/z one too high"
     best = next((neighbour for neighbour in neighbours if neighbour.cosine >= NEAR_COSINE), None)
     if best is not None and best.entry.compound_id != entry.compound_id and not replicates:

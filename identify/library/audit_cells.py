@@ -146,7 +146,7 @@ def _shift(neighbours: Sequence[Neighbour], replicates: Sequence[Neighbour], shi
         return Cell(SHIFT, "", "Nothing suggests that all m/z are one too high.")
     best = max((found.cosine for found in (*neighbours[:1], *replicates[:1])), default=0.0)
     gain = shifted - best
-    cell = "far better" if gain >= 0.15 else "better" if gain >= 0.03 else ""
+    cell = "far better" if gain >= 0.2 and shifted >= 0.7 else "better" if gain >= 0.1 and shifted >= 0.8 else ""
     reason = f"With all m/z one lower, similar spectra of the library fit {cell or 'no better'}."
     return Cell(SHIFT, cell, reason, f"cosine {shifted:.2f} instead of {best:.2f}", "no better than as it is")
 
