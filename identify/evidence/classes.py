@@ -177,9 +177,10 @@ def find_analogues(matches: Sequence[ShiftedMatch], count: int = 5) -> tuple[Ana
     Returns
     -------
     tuple of Analogue
-        In words like 'plus CH2'.
+        In words like 'plus CH2'; a difference without a usual explanation makes no analogue.
     """
-    ranked = sorted(matches, key=lambda match: -match.score)[:count]
+    explained = [match for match in matches if not describe_shift(match.shift).endswith(" Da")]
+    ranked = sorted(explained, key=lambda match: -match.score)[:count]
     return tuple(
         Analogue(
             match.entry.identity.name or match.entry.accession,

@@ -1,10 +1,11 @@
 """Numbers that tell a molecular mass from other masses, for every mass a query might have.
 
-Three estimators are kept apart, so that their agreement means something:
+Three groups of features, kept apart so that the agreement of estimators made of them means something:
 
 - *peaks*: the high-mass end of the query itself (intensity at M, what lies above, isotope corrections, parity, logical losses);
 - *pairs*: fragments that add up to M (an ester's acid and alkene parts), and typical terminal losses of the highest ions;
-- *neighbours*: the library entries most like the query, directly and after shifting by the mass difference.
+- *neighbours*: the library entries most like the query: their masses and gaps above the highest ions, and how well their
+  fragments fit when they are shifted by the mass difference.
 """
 
 from __future__ import annotations
@@ -142,7 +143,7 @@ def highest_ions(corrected: FloatArray) -> IntArray:
 
 
 def peak_features(problem: MassProblem) -> dict[str, FloatArray]:
-    """Features of the estimator *peaks*, each of shape (n_masses,)."""
+    """Features of the group *peaks*, each of shape (n_masses,)."""
     masses, raw, pad = problem.masses, problem.raw_pad, problem.pad
     at = masses + PAD
     here = pad[at]
@@ -181,7 +182,7 @@ def peak_features(problem: MassProblem) -> dict[str, FloatArray]:
 
 
 def pair_features(problem: MassProblem) -> dict[str, FloatArray]:
-    """Features of the estimator *pairs*: how much fragments add up to M − 1 … M + 2 more than to masses around."""
+    """Features of the group *pairs*: how much fragments add up to M − 1 … M + 2 more than to masses around."""
     masses, corrected = problem.masses, problem.corrected
     axis = np.arange(corrected.size)
     low = np.sqrt(corrected) * (axis >= 27)
@@ -202,7 +203,7 @@ def pair_features(problem: MassProblem) -> dict[str, FloatArray]:
 
 
 def neighbour_features(problem: MassProblem) -> dict[str, FloatArray]:
-    """Features of the estimator *neighbours*."""
+    """Features of the group *neighbours*."""
     masses, table = problem.masses, problem.table
     names = _neighbour_names()
     if not table.entries:

@@ -67,7 +67,7 @@ class MassModel:
     mean, scale : ndarray
         For standardising; values are clipped at ± `CLIP`.
     estimators : dict of str to LinearEstimator
-        `peaks`, `pairs`, `neighbours`, and `first look` over all, which picks the masses the trees judge.
+        `query`, `neighbours`, `shifted`, and `first look` over all, which picks the masses the trees judge.
     trees : Trees
     temperature : float
         Logits of the trees are divided by it.

@@ -1,8 +1,8 @@
 """Which nominal mass has the molecule, judged from the query and its neighbours alone?
 
-Three estimators look at the same candidate masses: the high-mass ions of the query, its losses and fragment pairs, and its
-neighbours in the library with their mass differences. A model fitted on open records, the compound itself removed from the
-library, weighs them together.
+Three estimators look at the same candidate masses: the query's own high-mass ions, losses and fragment pairs; the masses of its
+neighbours in the library and how far these lie above their highest ions; and neighbours whose fragments fit once they are shifted
+by the mass difference. A model fitted on open records, the compound itself removed from the library, weighs them together.
 """
 
 from __future__ import annotations
@@ -17,9 +17,9 @@ from identify.evidence.shifted import build_shift_table
 from identify.records import CleanSpectrum, Entry, MassEstimate, MolecularIonEstimate
 
 WORDS = {
-    "peaks": "high-mass ions of the query",
-    "losses": "losses and fragment pairs",
-    "neighbours": "neighbours in the library and their mass differences",
+    "query": "ions and losses of the query",
+    "neighbours": "masses of the neighbours",
+    "shifted": "neighbours after shifting",
 }
 MOST_ESTIMATES = 5
 LEAST_PROBABILITY = 0.01
@@ -60,7 +60,7 @@ def estimate_molecular_ion(spectrum: CleanSpectrum, neighbours: Sequence[tuple[E
     alone = {
         name: int(masses[int(np.argmax(model.estimators[name].logits(standardised)))])
         for name in WORDS
-        if name != "neighbours" or problem.table.entries
+        if name == "query" or problem.table.entries
     }
     first = model.estimators["first look"].logits(standardised)
     kept = np.argsort(-first, kind="stable")[: model.kept]

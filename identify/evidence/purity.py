@@ -21,6 +21,8 @@ MOST_ALIKE = 0.75
 """Entries more alike than this (cosine of the weighted spectra) are one shape measured twice, not two compounds."""
 NOTABLE_RESIDUAL = 2.0
 """Residual peaks below this percentage of the base peak are not offered as a new query."""
+LEAST_EXPLAINED = 0.3
+"""Below this explained share nothing is subtracted."""
 MOST_LEAVING = 8
 """Hits among which the one is chosen whose remainder is searched."""
 SEARCHED_RESIDUAL, LEAST_PEAKS, LITTLE_LEFT = 1.0, 3, 0.05
@@ -291,7 +293,8 @@ def _describe(
             key=lambda part: -part.share,
         )
     )
-    residual, background = _residual(left, axis)
+    # What is left of a query that nothing explains is the query itself.
+    residual, background = _residual(left, axis) if explained >= LEAST_EXPLAINED else (None, ())
     names = " and ".join(f"{part.name} ({100 * part.share:.0f} %)" for part in parts)
     if len(parts) > 1:
         verdict, reason = (
@@ -305,7 +308,7 @@ def _describe(
         )
     else:
         verdict = Verdict.INCONCLUSIVE
-        reason = f"The hits explain only {100 * explained:.0f} % of the query; a second compound may not be among them."
+        reason = f"The hits explain only {100 * explained:.0f} % of the query: its compound, or a second one, is not among them."
     return Purity(verdict, reason, parts, explained, misfits, residual, background)
 
 

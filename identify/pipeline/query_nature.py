@@ -69,6 +69,23 @@ def judge_parts(spectrum: CleanSpectrum, drafts: Sequence[Draft], matches: Seque
     return judge_purity(spectrum, list(tried.values()))
 
 
+def nearest_compounds(matches: Sequence[Match]) -> list[tuple[Entry, float]]:
+    """The most similar entry of each compound with its cosine, nearest first.
+
+    Parameters
+    ----------
+    matches : sequence of Match
+
+    Returns
+    -------
+    list of (Entry, cosine in [0, 1])
+    """
+    nearest: dict[str, tuple[Entry, float]] = {}
+    for match in sorted(matches, key=lambda match: -match.hit.cosine):
+        nearest.setdefault(compound_key(match.entry), (match.entry, match.hit.cosine))
+    return list(nearest.values())
+
+
 def describe_unnamed(
     query: Query,
     facts: QueryFacts,

@@ -26,7 +26,7 @@ from identify.index.union import merge_hits
 from identify.library.cache import load_index
 from identify.library.calibration import read_calibration
 from identify.library.store import Library, open_library
-from identify.pipeline.query_nature import describe_unnamed, judge_parts
+from identify.pipeline.query_nature import describe_unnamed, judge_parts, nearest_compounds
 from identify.ranking.calibration import SHIPPED, Shift, shift_model
 from identify.ranking.grouping import Match
 from identify.ranking.model import RankingModel, default_model
@@ -157,7 +157,7 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
     matches = find(query.spectrum)
     model = choose_model(libraries)
     drafts = shortlist(query.spectrum, matches, settings, model)
-    neighbours = [(match.entry, match.hit.cosine) for match in sorted(matches, key=lambda match: -match.hit.cosine)]
+    neighbours = nearest_compounds(matches)
     molecular_ion = estimate_molecular_ion(query.spectrum, neighbours)
     facts = build_query_facts(query)
     evidence = [gather_evidence(query, draft.entry, draft.aligned, settings, facts) for draft in drafts]

@@ -26,7 +26,7 @@ from fit_evidence import (
     likelihood_ratios,
     rule_ratios,
 )
-from fit_molecular_ion import cross_fit, mass_data, print_mass_quality
+from fit_molecular_ion import cross_fit, is_consistent, mass_data, print_mass_quality
 from fit_purity import simulate
 
 from identify.evidence.facts import build_query_facts, formula_facts, spectrum_facts
@@ -50,7 +50,12 @@ def show_molecular_ion(records: OpenRecords) -> None:
         formula = formula_facts(records.entries[place].formula_as_measured)
         naive.append(formula is not None and int(strong[-1]) == formula.nominal_mass)
     print(f"queries {len(naive):,}; highest ion of 1 % or more is M: {np.mean(naive):.3f}")
-    print_mass_quality(data, cross_fit(data))
+    crossed = cross_fit(data)
+    print_mass_quality(data, crossed)
+    print(
+        "the same without records whose own spectrum contradicts the formula they state (ions of 2 % and more above M + 6)"
+    )
+    print_mass_quality(data, crossed, np.array([is_consistent(records, place) for place in data.places.tolist()]))
 
 
 def show_carbons(records: OpenRecords) -> None:

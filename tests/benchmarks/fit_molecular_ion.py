@@ -24,12 +24,11 @@ from identify.evidence.mass_features import NEIGHBOURS, SEEN, MassProblem, all_f
 from identify.evidence.mass_model import CLIP, softmax
 from identify.evidence.shifted import build_shift_table
 
+DIRECT = ("same ", "nearest ")
 ESTIMATORS = {
-    "peaks": lambda name, group: group == "peaks" and not name.startswith("loss of"),
-    "losses": lambda name, group: (
-        group == "pairs" or name.startswith(("loss of", "odd mass", "log mass", "improbable"))
-    ),
-    "neighbours": lambda name, group: group == "neighbours",
+    "query": lambda name, group: group != "neighbours",
+    "neighbours": lambda name, group: group == "neighbours" and name.startswith(DIRECT),
+    "shifted": lambda name, group: group == "neighbours" and not name.startswith(DIRECT),
     "first look": lambda name, group: True,
 }
 """Which features each linear estimator may use."""
@@ -235,51 +234,81 @@ def _export_tree(nodes: Any) -> dict[str, list[float]]:
     }
 
 
-def print_mass_quality(data: MassData, crossed: dict[str, NDArray[np.float64]]) -> None:
-    """Print how often each estimator is right on top, and how far agreement can be trusted; all from cross-fitting."""
-    tops = {
-        name: np.array([start + int(np.argmax(logits[start:stop])) for start, stop in pairwise(data.start.tolist())])
+def print_mass_quality(
+    data: MassData, crossed: dict[str, NDArray[np.float64]], chosen: NDArray[np.bool_] | None = None
+) -> None:
+    """Print how often each estimator is right on top, and how far agreement can be trusted; all from cross-fitting.
+
+    `chosen` picks some of the queries.
+    """
+    chosen = np.ones(len(data.places), bool) if chosen is None else chosen
+    spans = [span for span, wanted in zip(pairwise(data.start.tolist()), chosen, strict=True) if wanted]
+    seen = data.seen[chosen]
+    right = {
+        name: data.right[[start + int(np.argmax(logits[start:stop])) for start, stop in spans]]
         for name, logits in crossed.items()
     }
     names = {
-        "peaks": "peaks alone",
-        "losses": "losses and pairs alone",
-        "neighbours": "neighbours alone",
+        "query": "ions and losses of the query alone",
+        "neighbours": "masses of the neighbours alone",
+        "shifted": "neighbours after shifting alone",
         "trees": "combined",
     }
-    print("nominal mass right on top, compound removed        all   M seen   M not seen")
+    print(
+        f"nominal mass right on top, {len(spans):,} queries          all   M seen   M not seen ({1 - seen.mean():.2f})"
+    )
     for name, label in names.items():
-        right = data.right[tops[name]]
-        print(f"  {label:46s} {right.mean():.3f}    {right[data.seen].mean():.3f}    {right[~data.seen].mean():.3f}")
-    together = (tops["peaks"] == tops["losses"]) & (tops["peaks"] == tops["neighbours"])
-    print(f"  all three agree: coverage {together.mean():.3f}, right {data.right[tops['peaks']][together].mean():.4f}")
-    two = tops["peaks"] == tops["neighbours"]
-    print(f"  peaks and neighbours agree: coverage {two.mean():.3f}, right {data.right[tops['peaks']][two].mean():.4f}")
-    temperature = best_temperature(data, crossed["trees"])
+        print(
+            f"  {label:46s} {right[name].mean():.3f}    {right[name][seen].mean():.3f}    {right[name][~seen].mean():.3f}"
+        )
+    places = {name: [int(np.argmax(crossed[name][start:stop])) for start, stop in spans] for name in names}
+    together = np.array(
+        [len({places[name][n] for name in ("query", "neighbours", "shifted")}) == 1 for n in range(len(spans))]
+    )
+    print(f"  all three agree: coverage {together.mean():.3f}, right {right['query'][together].mean():.4f}")
+    _print_confidence(data, crossed["trees"], spans, seen)
+
+
+def _print_confidence(
+    data: MassData, logits: NDArray[np.float64], spans: list[tuple[int, int]], seen: NDArray[np.bool_]
+) -> None:
+    temperature = best_temperature(data, logits)
     confident, honest = [], []
-    for query, (start, stop) in enumerate(pairwise(data.start.tolist())):
-        chance = softmax(crossed["trees"][start:stop] / temperature)
+    for is_seen, (start, stop) in zip(seen.tolist(), spans, strict=True):
+        chance = softmax(logits[start:stop] / temperature)
         confident.append((float(chance.max()), bool(data.right[start + int(chance.argmax())])))
-        seen = data.present[start:stop]
-        hidden = float(chance[~seen].sum())
-        shown = np.where(seen, chance, 0.0)
-        says_hidden = hidden > shown.max(initial=0.0)
-        honest.append(not data.seen[query] if says_hidden else bool(data.right[start + int(shown.argmax())]))
-    order = sorted(confident, reverse=True)
+        present = data.present[start:stop]
+        shown = np.where(present, chance, 0.0)
+        says_hidden = float(chance[~present].sum()) > shown.max(initial=0.0)
+        honest.append(not is_seen if says_hidden else bool(data.right[start + int(shown.argmax())]))
+    precision = np.cumsum([item[1] for item in sorted(confident, reverse=True)]) / np.arange(1, len(confident) + 1)
     for goal in (0.99, 0.95, 0.90):
-        right = np.cumsum([item[1] for item in order]) / np.arange(1, len(order) + 1)
-        reached = np.flatnonzero(right >= goal)
-        print(f"  precision {goal:.2f} at coverage {(reached[-1] + 1) / len(order) if reached.size else 0:.3f}")
-    edges = np.array([item[0] for item in confident])
-    truth = np.array([item[1] for item in confident], float)
-    bins = np.minimum((edges * 10).astype(int), 9)
+        reached = np.flatnonzero(precision >= goal)
+        print(f"  precision {goal:.2f} at coverage {(reached[-1] + 1) / len(spans) if reached.size else 0:.3f}")
+    print(f"  precision at coverage 0.33: {precision[int(0.33 * len(spans))]:.3f}")
+    said, truth = np.array([item[0] for item in confident]), np.array([item[1] for item in confident], float)
+    bins = np.minimum((said * 10).astype(int), 9)
     error = sum(
-        abs(edges[bins == b].mean() - truth[bins == b].mean()) * (bins == b).mean()
+        abs(said[bins == b].mean() - truth[bins == b].mean()) * (bins == b).mean()
         for b in range(10)
         if (bins == b).any()
     )
     print(f"  calibration error of the best mass, ten bins: {error:.3f}")
     print(f"  right when 'not observed' counts as an answer: {np.mean(honest):.3f}")
+
+
+def is_consistent(records: OpenRecords, place: int) -> bool:
+    """Whether a record's own spectrum allows its stated formula: nothing of 2 % or more lies beyond its isotope cluster."""
+    entry = records.entries[place]
+    formula = formula_facts(entry.formula_as_measured)
+    peaks = entry.spectrum.nominal
+    return (
+        formula is not None and not (peaks.relative[peaks.mz > formula.nominal_mass + LAST_OFFSET_JUDGED] >= 2.0).any()
+    )
+
+
+LAST_OFFSET_JUDGED = 6
+"""M + 6 still belongs to the cluster of common halogens and of [M+H]+."""
 
 
 if __name__ == "__main__":

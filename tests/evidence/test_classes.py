@@ -81,5 +81,6 @@ def test_shift_in_words(shift: int, text: str) -> None:
 
 def test_analogues_are_ranked_by_their_score(build) -> None:
     one, other = build.entry({43: 1.0}, "C5H12", number=1), build.entry({57: 1.0}, "C6H14", number=2)
-    found = find_analogues([ShiftedMatch(one, 28, 0.6, 0.4), ShiftedMatch(other, 14, 0.8, 0.5)])
+    odd = ShiftedMatch(one, 27, 0.9, 0.4)
+    found = find_analogues([odd, ShiftedMatch(one, 28, 0.6, 0.4), ShiftedMatch(other, 14, 0.8, 0.5)])
     assert [(item.shift, item.text) for item in found] == [(14, "plus CH2"), (28, "plus C2H4 or CO")]
