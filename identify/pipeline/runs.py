@@ -212,7 +212,7 @@ class _Analysis:
         possible = weigh_by_elution(findings, scale, self.settings)
         settled = settle_jointly(possible, width_s, self.settings)
         named = name_classes(settled, self.settings, scale)
-        return RunFindings(number, run, decomposition, named, scale, run.notes)
+        return RunFindings(number, run, decomposition, named, scale, (*run.notes, *decomposition.notes))
 
     def _own_scale(self, components: Sequence[Component]) -> RetentionScale | None:
         ladder = find_alkane_ladder(components, alkanes_only=False) if self.options.self_calibrate else None

@@ -20,7 +20,7 @@ import numpy as np
 from identify.records import FloatArray, Peaks
 from identify.runs.clusters import Cluster, cluster_ion_peaks
 from identify.runs.hidden import find_hidden
-from identify.runs.ion_peaks import correct_skew, estimate_skew, estimate_width, find_ion_peaks
+from identify.runs.ion_peaks import IonPeaks, correct_skew, estimate_skew, estimate_width, find_ion_peaks
 from identify.runs.kinds import find_kind
 from identify.runs.model import Component, Decomposition, IonMatrix, NoiseModel, Run
 from identify.runs.overload import RATIO_ERROR, Overload, find_overloads
@@ -32,6 +32,10 @@ MIN_AMPLITUDE_SIGMA = 3.0
 MIN_COMPONENT_SNR = 8.0
 MAX_NEIGHBOURS = 8
 MAX_PASSES = 3
+MAX_ION_PEAKS, MAX_CLUSTERS = 250_000, 1_000
+"""Bounds of work: a run of noise has no end of peaks. A dense sample has some 300 components and 10,000 ion peaks an hour."""
+MAX_LOOKED_AGAIN = 500
+"""With more components than this nothing is looked at twice."""
 REMNANT_IONS, REMNANT_PURITY = 4, 0.25
 SIGNIFICANT_SIGMA = 3.0
 FIT_ERROR = 0.1
@@ -100,7 +104,8 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
         overloads = find_overloads(signal, width)
         residual, level = _without(overloads, signal, background, noise)
         peaks = find_ion_peaks(residual, level, noise, width)
-    clusters = cluster_ion_peaks(peaks, run.n_scans, width)
+    peaks, notes = _strongest_peaks(peaks)
+    clusters, more = _strongest_clusters(cluster_ion_peaks(peaks, run.n_scans, width))
     significant = signal * (signal >= SIGNIFICANT_SIGMA * noise.sigma(background + signal))
     stage = Stage(matrix, residual, level, noise, width, float(significant.sum()), _detector_ceiling(matrix))
     shapes, extracted = _extract_all(clusters, stage)
@@ -110,7 +115,31 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
     found.sort(key=lambda component: component.time_s)
     components = tuple(replace(c, number=n, **find_kind(c, found, blank)) for n, c in enumerate(found, start=1))
     total = matrix.intensity.sum(axis=1, dtype=np.float64)
-    return Decomposition(components, matrix.time_s, total, background.sum(axis=1), unassigned, width, skew)
+    return Decomposition(
+        components, matrix.time_s, total, background.sum(axis=1), unassigned, width, skew, (*notes, *more)
+    )
+
+
+def _strongest_peaks(peaks: IonPeaks) -> tuple[IonPeaks, tuple[str, ...]]:
+    """At most `MAX_ION_PEAKS`, those furthest above noise, in their order; and a note when some were left out."""
+    if peaks.apex.size <= MAX_ION_PEAKS:
+        return peaks, ()
+    kept = np.sort(np.argsort(-peaks.signal_to_noise, kind="stable")[:MAX_ION_PEAKS])
+    note = (
+        f"{peaks.apex.size:,} peaks of single ions, far more than compounds make: only the {MAX_ION_PEAKS:,} furthest above "
+        "noise were looked at"
+    )
+    return IonPeaks(peaks.ion[kept], peaks.apex[kept], peaks.height[kept], peaks.signal_to_noise[kept]), (note,)
+
+
+def _strongest_clusters(clusters: Sequence[Cluster]) -> tuple[Sequence[Cluster], tuple[str, ...]]:
+    """At most `MAX_CLUSTERS`, those with most signal, in their order; and a note when some were left out."""
+    if len(clusters) <= MAX_CLUSTERS:
+        return clusters, ()
+    limit = sorted((float(cluster.height.sum()) for cluster in clusters), reverse=True)[MAX_CLUSTERS - 1]
+    kept = [cluster for cluster in clusters if cluster.height.sum() >= limit][:MAX_CLUSTERS]
+    note = f"{len(clusters):,} moments of elution, far more than a run holds: only the {MAX_CLUSTERS:,} largest were taken apart"
+    return kept, (note,)
 
 
 def _extract_all(clusters: Sequence[Cluster], stage: Stage) -> tuple[Sequence[Shape], list[Component | None]]:
@@ -119,6 +148,8 @@ def _extract_all(clusters: Sequence[Cluster], stage: Stage) -> tuple[Sequence[Sh
     Then what is left over is looked at once more, for peaks whose ions have no common apex (see `identify.runs.hidden`).
     """
     clusters, shapes, extracted = _settle(clusters, {}, stage)
+    if len(clusters) > MAX_LOOKED_AGAIN:
+        return shapes, extracted
     rest = _rest(extracted, shapes, stage)
     sigma = stage.noise.sigma(stage.level + stage.signal)
     hidden = find_hidden(

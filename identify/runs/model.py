@@ -182,6 +182,8 @@ class Decomposition:
         Typical full width at half height of a peak.
     skew_scans_per_mz : float
         Scan skew that was corrected; 0 when the run shows none.
+    notes : tuple of str
+        What was left out to keep the work bounded, in words.
     """
 
     components: tuple[Component, ...]
@@ -191,6 +193,7 @@ class Decomposition:
     unassigned: FloatArray
     width_scans: float
     skew_scans_per_mz: float
+    notes: tuple[str, ...] = ()
 
     @property
     def scan_time_s(self) -> float:

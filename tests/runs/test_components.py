@@ -162,3 +162,21 @@ def test_the_same_run_gives_the_same_components() -> None:
     run = make_run([Eluting(ONE, 100.0, 20_000.0), Eluting(OTHER, 101.5, 9_000.0)], 200, seed=14)
     one, two = find_components(run), find_components(run)
     assert [(c.time_s, c.area) for c in one] == [(c.time_s, c.area) for c in two]
+
+
+def test_a_run_of_noise_is_bounded_and_says_so(monkeypatch: pytest.MonkeyPatch) -> None:
+    rng = np.random.default_rng(0)
+    n_scans, n_points = 300, 60
+    mz = np.sort(rng.integers(35, 200, (n_scans, n_points)), axis=1).astype(np.float32).ravel()
+    run = Run(
+        Source("noise"), "", "", "", np.arange(n_scans) * 0.5 + 60.0,
+        np.arange(n_scans + 1, dtype=np.int64) * n_points, mz, rng.exponential(300.0, mz.size).astype(np.float32) + 20,
+    )  # fmt: skip
+    free = decompose(run)
+    assert free.notes == ()
+    monkeypatch.setattr("identify.runs.components.MAX_ION_PEAKS", 400)
+    monkeypatch.setattr("identify.runs.components.MAX_CLUSTERS", 5)
+    bounded = decompose(run)
+    apart = [sum("overloaded" not in c.note for c in found.components) for found in (bounded, free)]
+    assert apart[0] <= 5 < apart[1]
+    assert ["peaks of single ions" in bounded.notes[0], "moments of elution" in bounded.notes[1]] == [True, True]
