@@ -43,7 +43,7 @@ def settle_jointly(findings: Sequence[Finding], width_s: float, settings: Settin
     tuple of Finding
         As many, same order; each lowered claim has a note with the reason.
     """
-    settled = list(findings)
+    settled = [_without_mixture_doubt(finding, settings.claim_threshold) for finding in findings]
     for lower in (_one_peak_per_compound, _order_of_indices, _order_in_series):
         for place, reason in lower(settled, width_s).items():
             found = settled[place].identification
@@ -51,6 +51,31 @@ def settle_jointly(findings: Sequence[Finding], width_s: float, settings: Settin
                 lowered = lower_claim(found, reason, settings.claim_threshold)
                 settled[place] = replace(settled[place], identification=lowered)
     return tuple(settled)
+
+
+def _without_mixture_doubt(finding: Finding, threshold: float) -> Finding:
+    """The finding with its isomer group claimed, where a peak is overloaded and only the doubt about its purity stood against it.
+
+    The ion ratios of an overloaded peak drift, so that a second entry always explains them better: no sign of a mixture.
+    """
+    found = finding.identification
+    if found is None or not finding.component.is_saturated or not found.candidates or found.purity is None:
+        return finding
+    best, claim = found.candidates[0], found.claim
+    formula = best.entry.formula_as_measured
+    open_levels = (ClaimLevel.CLASS, ClaimLevel.NO_CLAIM)
+    doubted = found.purity.verdict is Verdict.CONFLICTS and claim.level in open_levels
+    if not (doubted and formula and claim.group_probability >= threshold):
+        return finding
+    names = tuple(c.entry.identity.name for c in found.candidates if c.entry.formula_as_measured == formula)
+    msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.ISOMER_GROUP]
+    text = f"One of the isomers of {formula} ({claim.group_probability:.0%}): {'; '.join(names)}."
+    group = replace(
+        claim, level=ClaimLevel.ISOMER_GROUP, statement=text, probability=claim.group_probability, members=names,
+        msi_2007=msi, schymanski_2014=schymanski,
+    )  # fmt: skip
+    note = "The peak is overloaded and its ion ratios drift: that two entries explain it better than one is no sign of a mixture."
+    return replace(finding, identification=replace(found, claim=group, notes=(*found.notes, note)))
 
 
 def lower_claim(found: Identification, reason: str, threshold: float) -> Identification:

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from identify.pipeline.joint import settle_jointly
-from identify.records import Candidate, Claim, ClaimLevel, EvidenceItem, Identification, Peaks, Verdict
+from identify.records import Candidate, Claim, ClaimLevel, EvidenceItem, Identification, Peaks, Purity, Verdict
 from identify.runs.findings import Finding
 from identify.runs.model import Component
 from identify.settings import Settings
@@ -116,3 +116,15 @@ def test_a_lowered_claim_is_an_isomer_group_only_when_its_probability_allows(gro
     ]
     expected = ClaimLevel.ISOMER_GROUP if group > 0.9 else ClaimLevel.NO_CLAIM
     assert levels(pair) == [expected, expected]
+
+
+@pytest.mark.parametrize(("is_saturated", "expected"), [(True, ClaimLevel.ISOMER_GROUP), (False, ClaimLevel.CLASS)])
+def test_only_an_overloaded_peak_is_not_held_for_a_mixture(is_saturated: bool, expected: ClaimLevel) -> None:
+    one = finding(1, 5.0, candidate("hexane", 0.6), ClaimLevel.CLASS)
+    doubt = Purity(Verdict.CONFLICTS, "two entries explain it better")
+    one = replace(
+        one,
+        component=replace(one.component, is_saturated=is_saturated),
+        identification=replace(one.identification, purity=doubt),
+    )
+    assert levels([one]) == [expected]
