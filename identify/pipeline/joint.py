@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import replace
 
-from identify.ranking.claim import PUBLISHED_LEVELS
+from identify.ranking.claim import PUBLISHED_LEVELS, percent
 from identify.records import Candidate, Claim, ClaimLevel, Identification, Verdict
 from identify.retention import doubt_about_index, phase_class, series_key
 from identify.runs.findings import Finding
@@ -69,7 +69,7 @@ def _without_mixture_doubt(finding: Finding, threshold: float) -> Finding:
         return finding
     names = tuple(c.entry.identity.name for c in found.candidates if c.entry.formula_as_measured == formula)
     msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.ISOMER_GROUP]
-    text = f"One of the isomers of {formula} ({claim.group_probability:.0%}): {'; '.join(names)}."
+    text = f"One of the isomers of {formula} ({percent(claim.group_probability)}): {'; '.join(names)}."
     group = replace(
         claim, level=ClaimLevel.ISOMER_GROUP, statement=text, probability=claim.group_probability, members=names,
         msi_2007=msi, schymanski_2014=schymanski,
@@ -252,7 +252,7 @@ def claim_class(found: Identification, name: str, probability: float) -> Identif
     Identification
     """
     msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.CLASS]
-    shown = f"{probability:.0%}" if probability < 0.995 else "over 99%"
+    shown = percent(probability)
     claim = Claim(
         ClaimLevel.CLASS, f"{name[:1].upper()}{name[1:]}, no single compound ({shown}).", probability,
         compound_probability=found.claim.compound_probability, group_probability=found.claim.group_probability,
@@ -275,7 +275,7 @@ def claim_from_run(found: Identification) -> Identification:
     """
     best = found.candidates[0]
     msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.TENTATIVE]
-    shown = f"{best.probability:.0%}" if best.probability < 0.995 else "over 99%"
+    shown = percent(best.probability)
     claim = Claim(
         ClaimLevel.TENTATIVE, f"{best.entry.identity.name}: library match and the run as a whole ({shown}).", best.probability,
         (best.entry.identity.name,), best.probability, max(best.probability, found.claim.group_probability),

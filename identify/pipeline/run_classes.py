@@ -24,6 +24,7 @@ import numpy as np
 from identify.chem.structures import compound_classes
 from identify.errors import StructureError
 from identify.pipeline.joint import claim_class
+from identify.ranking.claim import percent
 from identify.records import Candidate, ClaimLevel, Identification
 from identify.retention import linear_index
 from identify.runs.alkanes import alkane_carbons
@@ -89,7 +90,7 @@ def name_classes(
         return tuple(alone)
     library_share = load_forest().library_share
     share = estimate_share(judged, library_share)
-    note = f"The class rests on the run as well: at least {share:.0%} of its {len(judged)} components are hydrocarbons."
+    note = f"The class rests on the run as well: at least {percent(share)} of its {len(judged)} components are hydrocarbons."
     with_run = [_with_run_share(f, share, library_share, note, settings) for f in alone]
     return tuple(_with_carbons(f, settings, scale) for f in with_run)
 
@@ -183,7 +184,7 @@ def _with_carbons(finding: Finding, settings: Settings, scale: RetentionScale | 
     if both >= settings.claim_threshold:
         claimed = claim_class(found, f"{kind} by ion series and molecular ion", both)
         return replace(finding, identification=claimed)
-    note = f"Its molecular ion is likeliest m/z {likely.nominal_mass} ({likely.probability:.0%}): {kind}."
+    note = f"Its molecular ion is likeliest m/z {likely.nominal_mass} ({percent(likely.probability)}): {kind}."
     return replace(finding, identification=replace(found, notes=(*found.notes, note)))
 
 

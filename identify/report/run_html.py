@@ -170,7 +170,10 @@ def _facts(run: RunFindings) -> tuple[Fact, ...]:
     if run.scale:
         words = f"from {visible_text(run.scale.origin)}, ± {run.scale.uncertainty:.0f}"
         facts.append(
-            Fact("retention index", words + ("" if run.scale.phase else "; column not stated, so it decides nothing"))
+            Fact(
+                "retention index",
+                words + ("" if run.scale.phase else "; column not stated, so it serves the order of elution only"),
+            )
         )
     else:
         facts.append(Fact("retention index", "not assessed: no ladder, and too few n-alkanes in the run"))

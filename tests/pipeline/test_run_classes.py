@@ -42,7 +42,7 @@ def statement(found: Finding) -> str:
 def test_candidates_that_agree_on_a_class_make_a_claim_for_the_most_telling_one() -> None:
     found = finding((XYLENE, 0.5, 0.98), (OTHER, 0.46, 0.97), (KETONE, 0.01, 0.7))
     # 0.96 within the library, and 0.95 of the vote for the 0.03 outside it, by hand: 0.989.
-    assert statement(found) == "Alkylbenzene, no single compound (99%)."
+    assert statement(found) == "Alkylbenzene, no single compound (99 %)."
 
 
 def test_candidates_of_different_classes_make_no_claim() -> None:
