@@ -92,7 +92,7 @@ def describe_unnamed(
     claim: Claim,
     purity: Purity,
     molecular_ion: MolecularIonEstimate,
-    neighbours: Sequence[tuple[Entry, float]],
+    matches: Sequence[Match],
 ) -> tuple[tuple[ClassEvidence, ...], tuple[Analogue, ...]]:
     """Classes and analogues of a query for which no compound or isomer group is claimed; none for the others.
 
@@ -104,8 +104,8 @@ def describe_unnamed(
     purity : Purity
         Of a mixture only classes are given: its fragments belong to several molecules.
     molecular_ion : MolecularIonEstimate
-    neighbours : sequence of (Entry, cosine in [0, 1])
-        Best first.
+    matches : sequence of Match
+        All hits with their entries; each compound counts once.
 
     Returns
     -------
@@ -113,12 +113,13 @@ def describe_unnamed(
     analogues : tuple of Analogue
         At most `N_ANALOGUES`.
     """
-    if claim.level not in UNNAMED or not neighbours:
+    if claim.level not in UNNAMED or not matches:
         return (), ()
+    neighbours = nearest_compounds(matches)
     classes = find_classes(facts, neighbours)
     if purity.verdict is Verdict.CONFLICTS:
         return classes, ()
     best = molecular_ion.estimates[0] if molecular_ion.estimates else None
     mass = best.nominal_mass if best and best.probability >= SURE_MASS else None
-    matches = match_shifted(query.spectrum, neighbours, mass=mass)
-    return classes, find_analogues([match for match in matches if match.score >= LEAST_ALIKE], N_ANALOGUES)
+    shifted = match_shifted(query.spectrum, neighbours, mass=mass)
+    return classes, find_analogues([item for item in shifted if item.score >= LEAST_ALIKE], N_ANALOGUES)

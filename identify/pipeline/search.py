@@ -26,7 +26,7 @@ from identify.index.union import merge_hits
 from identify.library.cache import load_index
 from identify.library.calibration import read_calibration
 from identify.library.store import Library, open_library
-from identify.pipeline.query_nature import describe_unnamed, judge_parts, nearest_compounds
+from identify.pipeline.query_nature import describe_unnamed, judge_parts
 from identify.ranking.calibration import SHIPPED, Shift, shift_model
 from identify.ranking.grouping import Match
 from identify.ranking.model import RankingModel, default_model
@@ -48,6 +48,8 @@ from identify.settings import Settings
 from identify.similarity.pair import score_pair
 from identify.spectra.cleaning import clean_spectrum
 
+DEPTH_OF_RESIDUAL = 20
+"""Hits by each score wanted for what the best entry leaves over: enough for the few compounds that are tried as further parts."""
 Progress = Callable[[int, str], None]
 """Called with the number of queries done and the name of the one in hand."""
 
@@ -150,20 +152,16 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
     Identification
         At most `settings.top` candidates, best first; none when no entry shares a peak.
     """
-
-    def find(spectrum: CleanSpectrum) -> list[Match]:
-        return _find_matches(spectrum, libraries, settings)
-
-    matches = find(query.spectrum)
+    matches = _find_matches(query.spectrum, libraries, settings)
     model = choose_model(libraries)
     drafts = shortlist(query.spectrum, matches, settings, model)
-    neighbours = nearest_compounds(matches)
-    molecular_ion = estimate_molecular_ion(query.spectrum, neighbours)
+    molecular_ion = estimate_molecular_ion(query.spectrum, [(draft.entry, draft.cosine) for draft in drafts])
     facts = build_query_facts(query)
     evidence = [gather_evidence(query, draft.entry, draft.aligned, settings, facts) for draft in drafts]
-    purity = judge_parts(query.spectrum, drafts, matches, find)
+    few = replace(settings, search_depth=min(settings.search_depth, DEPTH_OF_RESIDUAL))
+    purity = judge_parts(query.spectrum, drafts, matches, lambda left: _find_matches(left, libraries, few))
     ranking = rank(query, drafts, evidence, molecular_ion, settings, model, purity=purity)
-    classes, analogues = describe_unnamed(query, facts, ranking.claim, purity, molecular_ion, neighbours)
+    classes, analogues = describe_unnamed(query, facts, ranking.claim, purity, molecular_ion, matches)
     return Identification(
         query=query,
         molecular_ion=molecular_ion,
