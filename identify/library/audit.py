@@ -345,7 +345,7 @@ def _suspect_mass(entry: Entry, formula: FormulaFacts) -> str:
         from_isotope = facts.at(mass + 2) / formula.ratio(2)
         if from_isotope >= 5.0 and 6.0 <= from_isotope / max(facts.at(mass), 0.01) <= 16.0:
             return "the intensity of M is about ten times too low for its isotope peak: a typing error?"
-    shift = top_of_cluster(facts) - mass
+    shift = top_of_cluster(facts, formula) - mass
     if shift > 0 and shift % 72 == 0 and not entry.measured_as:
         return f"{shift // 72} trimethylsilyl group(s) more than declared"
     if shift == 1:

@@ -168,12 +168,14 @@ def _from_finding(finding: Finding) -> Cell:
     return Cell(finding.kind, finding.cell, finding.reason, finding.observed, finding.expected)
 
 
-def top_of_cluster(facts: QueryFacts) -> int:
+def top_of_cluster(facts: QueryFacts, formula: FormulaFacts) -> int:
     """m/z of the lightest strong ion of the highest cluster of at least 1 % of the base peak.
 
     Parameters
     ----------
     facts : QueryFacts
+    formula : FormulaFacts
+        With elements of strong heavier isotopes, an ion two below as tall or taller makes a peak an isotope peak.
 
     Returns
     -------
@@ -185,17 +187,18 @@ def top_of_cluster(facts: QueryFacts) -> int:
         if value < 1.0:
             continue
         is_carbon_13 = facts.at(mz - 1) * mz * 0.00085 * 1.6 >= value
+        is_heavy = bool(formula.heavy) and max(1.2 * facts.at(mz - 2), facts.at(mz - 1)) >= value
         is_halogen = facts.at(mz - 2) * 0.25 < value < facts.at(mz - 2) * 1.05
-        if not (is_carbon_13 or is_halogen):
+        if not (is_carbon_13 or is_heavy or is_halogen):
             return mz
     return facts.top_mz
 
 
 def _highest_ions(facts: QueryFacts, formula: FormulaFacts) -> Cell:
     mass = formula.nominal_mass
-    gap = mass - top_of_cluster(facts)
+    gap = mass - top_of_cluster(facts, formula)
     seen = facts.at(mass + formula.strongest_offset)
-    if -formula.last_offset <= gap < 0 and seen >= 1.0 and _excess(facts, formula)[0] < 2.0:
+    if -formula.last_offset <= gap < 0 and seen >= 1.0 and _excess(facts, formula)[0] < 3.0:
         gap = 0
     observed = f"highest cluster at m/z {mass - gap}, {seen:.1f} % of base at M"
     if -14 <= gap < 0 and seen < 1.0:

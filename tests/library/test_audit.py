@@ -151,6 +151,18 @@ def test_bromine_clusters_are_no_ions_above_m() -> None:
     assert cells(heavier)["ions above M"] == "strong"
 
 
+@pytest.mark.parametrize(
+    ("peaks", "formula", "name"),
+    [
+        ({73: 47.0, 75: 10.0, 301: 87.0, 302: 26.0, 303: 16.0}, "C10H27F3Si4", "silane, M − 15 with silicon isotopes"),
+        ({73: 97.0, 137: 100.0, 139: 99.0, 179: 3.2, 181: 3.7}, "C6H15BrSi", "bromide, M − 15"),
+    ],
+)
+def test_the_isotope_peak_of_a_usual_loss_is_no_unusual_loss(peaks: dict[int, float], formula: str, name: str) -> None:
+    entry, _ = make(peaks, name=name, formula=formula, smiles="")
+    assert cells(entry)["highest ions"] == "usual loss"
+
+
 def test_metals_and_salts_are_not_judged_by_rules_for_molecules() -> None:
     tin, _ = make({120: 100.0, 197: 70.0, 351: 90.0}, name="Tetraphenyltin", formula="C24H20Sn", smiles="")
     assert cells(tin)["nitrogen rule and rings"] == ""
