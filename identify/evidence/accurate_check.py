@@ -9,6 +9,7 @@ from identify.chem.elements import ELECTRON_MASS
 from identify.chem.formula import Formula, parse_formula
 from identify.chem.subformulas import explain_mz
 from identify.errors import FormulaError
+from identify.evidence.accurate import mass_error_histogram
 from identify.evidence.facts import FormulaFacts, QueryFacts
 from identify.evidence.finding import Finding, not_assessed
 from identify.records import Verdict
@@ -21,6 +22,8 @@ SOURCE = (
 )
 
 
+CLASS_PPM = 2.0
+"""Width of the classes in which mass errors are counted."""
 DOUBLE_CHARGE_SATURATION = 6.0
 """Rings plus double bonds from which doubly charged ions are tried: common in polycyclic and polychlorinated aromatics."""
 
@@ -77,7 +80,7 @@ def check_accurate_mass(facts: QueryFacts, formula: FormulaFacts | None, setting
             errors.append(best[1] / best[0].monoisotopic_mass * 1e6)
     share = explained / total
     size = next(word for edge, word in ((0.5, "few"), (0.8, "half"), (0.95, "most"), (2.0, "all")) if share < edge)
-    middle = f", median error {median(errors):+.1f} ppm" if errors else ""
+    middle = f", median error {median(errors):+.1f} ppm ({_describe_errors(errors)})" if errors else ""
     if size == "all":
         verdict, reason = Verdict.AGREES, "The main ions have the accurate masses of pieces of this formula."
     elif size == "most":
@@ -98,3 +101,13 @@ def check_accurate_mass(facts: QueryFacts, formula: FormulaFacts | None, setting
         uncertainty=f"± {settings.tolerance_ppm:g} ppm or ± {1000 * settings.tolerance_da:g} mDa. {recalibration.reason}",
         source=SOURCE,
     )
+
+
+def _describe_errors(errors_ppm: list[float]) -> str:
+    """Histogram of the mass errors in words: ions in each class of `CLASS_PPM` that has any."""
+    classes = [
+        f"{low:+g} to {low + CLASS_PPM:+g}: {number}"
+        for low, number in mass_error_histogram(errors_ppm, CLASS_PPM)
+        if number
+    ]
+    return f"ions by error in ppm: {', '.join(classes)}"

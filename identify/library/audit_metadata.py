@@ -12,6 +12,7 @@ from statistics import median
 from identify.errors import FormulaError, StructureError
 from identify.library.audit_cells import is_salt
 from identify.records import Entry, SpectrumRecord
+from identify.retention import doubt_about_index
 from identify.spectra.splash import verify_splash
 
 
@@ -166,6 +167,12 @@ def _retention(entry: Entry, replicates: Sequence[Entry]) -> AuditFinding | None
         for other in replicates
         if other.retention.index is not None and other.retention.phase == mine.phase
     ]
+    doubt = doubt_about_index(mine.index, mine.time_s) if mine.index is not None else ""
+    if mine.index is not None and doubt:
+        return AuditFinding(
+            "retention index", Grade.CAUTION, f"The retention index is not used: {doubt}.", f"{mine.index:g}",
+            "an index on an n-alkane scale",
+        )  # fmt: skip
     if mine.index is None or len(others) < 2:
         return None
     middle = median(others)

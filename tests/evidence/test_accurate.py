@@ -73,6 +73,16 @@ def check(peaks: dict[float, float], formula: str, **settings: float) -> Verdict
     return check_accurate_mass(facts, formula_facts(formula), Settings(**settings)).verdict
 
 
+def test_mass_errors_are_shown_by_class() -> None:
+    """Two ions 3 ppm too heavy and one exact: two between 2 and 4 ppm."""
+    exact = ions_of("C7H5O+", "C6H5+", "C4H3+")
+    shifts = (3.0, 3.0, 0.5)
+    peaks = {mz * (1 + shift * 1e-6): value for (mz, value), shift in zip(exact.items(), shifts, strict=True)}
+    facts = spectrum_facts(accurate(peaks), Acquisition())
+    observed = check_accurate_mass(facts, formula_facts("C8H8O"), Settings()).observed
+    assert observed.endswith("(ions by error in ppm: +0 to +2: 1, +2 to +4: 2)")
+
+
 def test_isobars_are_told_apart() -> None:
     peaks = ions_of("C7H5O+", "C6H5+", "C8H8O+", "C4H3+")
     assert check(peaks, "C8H8O") is Verdict.AGREES

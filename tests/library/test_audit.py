@@ -116,6 +116,14 @@ def test_a_retention_index_far_from_the_others_is_found() -> None:
     assert statements(at(1020.0), record, others[:1]) == {}, "one value is no rule"
 
 
+@pytest.mark.parametrize(("index", "time_s"), [(0.0, None), (462.0, 462.0), (9.1, 546.0), (45.0, None)])
+def test_a_retention_index_that_is_none_is_found(index: float, time_s: float | None) -> None:
+    """0, the retention time written in the wrong field (seconds or minutes), and values below any alkane's."""
+    entry, record = make(FULL)
+    doubtful = replace(entry, retention=Retention(index=index, time_s=time_s, phase="non-polar"))
+    assert statements(doubtful, record) == {"retention index": Grade.CAUTION}
+
+
 def test_a_formula_unlike_that_of_the_replicates_is_serious() -> None:
     entry, record = make(FULL)
     wrong = replace(entry, formula_as_measured="C8H10")
