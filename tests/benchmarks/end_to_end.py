@@ -29,7 +29,9 @@ COMMAND = [sys.executable, "-c", "from identify.cli import main; main()"]
 def timed(*arguments: object) -> float:
     """Wall time of one command in a fresh process, in seconds."""
     start = time.perf_counter()
-    subprocess.run([*COMMAND, *map(str, arguments)], check=True, capture_output=True)
+    done = subprocess.run([*COMMAND, *map(str, arguments)], check=False, capture_output=True)
+    if done.returncode not in (0, 1):  # 1: done, some records left out
+        raise SystemExit(done.stderr.decode())
     return time.perf_counter() - start
 
 
