@@ -21,8 +21,9 @@ MOST_ALIKE = 0.75
 """Entries more alike than this (cosine of the weighted spectra) are one shape measured twice, not two compounds."""
 NOTABLE_RESIDUAL = 2.0
 """Residual peaks below this percentage of the base peak are not offered as a new query."""
-LEAST_EXPLAINED = 0.3
-"""Below this explained share nothing is subtracted."""
+WELL_EXPLAINED, HALF_EXPLAINED, LEAST_EXPLAINED = 0.8, 0.5, 0.3
+"""Explained shares: from the first on one entry is enough; below the second its compound is not among the hits; below the third
+nothing is subtracted. Judgement: the intensities of one compound on two instruments often differ by a fifth."""
 MOST_LEAVING = 8
 """Hits among which the one is chosen whose remainder is searched."""
 SEARCHED_RESIDUAL, LEAST_PEAKS, LITTLE_LEFT = 1.0, 3, 0.05
@@ -301,7 +302,7 @@ def _describe(
             Verdict.CONFLICTS,
             f"{len(parts)} entries together explain the query far better than one: {names}.",
         )
-    elif explained >= 0.8:
+    elif explained >= WELL_EXPLAINED:
         verdict, reason = (
             Verdict.AGREES,
             f"One entry explains {100 * explained:.0f} % of the query; no second one improves that.",

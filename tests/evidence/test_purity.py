@@ -155,3 +155,19 @@ def test_a_further_entry_must_bring_more_when_it_is_more_like_the_first() -> Non
     better = purity.needs_another(0.3, 0.03, 0.4, 0.1)
     assert better > purity.LEAST_CHANCE > purity.needs_another(0.3, 0.25, 0.4, 0.1)
     assert purity.needs_another(0.3, 0.1, 0.4, 0.1) > purity.needs_another(0.3, 0.1, 0.4, 0.7)
+
+
+@pytest.mark.parametrize(
+    ("foreign", "words"), [(0.3, "another instrument or a compound without"), (0.6, "not among them")]
+)
+def test_how_much_is_unexplained_is_said_in_words(build, entries, foreign: float, words: str) -> None:
+    unknown = {44: 60.0, 58: 100.0, 91: 30.0, 165: 8.0}
+    outcome = judge_purity(build.spectrum(mix((NAPHTHALENE, 1 - foreign), (unknown, foreign))), entries[:1])
+    assert outcome.verdict is Verdict.INCONCLUSIVE
+    assert words in outcome.reason
+    assert outcome.residual is not None
+
+
+def test_nothing_is_subtracted_where_nothing_is_explained(build, entries) -> None:
+    outcome = judge_purity(build.spectrum({44: 60.0, 58: 100.0, 91: 30.0, 165: 8.0, 207: 9.0}), entries[:1])
+    assert (outcome.residual, outcome.background) == (None, ())
