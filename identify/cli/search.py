@@ -27,6 +27,9 @@ __all__ = ["FILE", "deliver", "progress_bar", "read_settings", "search"]
 @click.option("--json", "json_path", type=FILE, help="Write the full result as JSON.")
 @click.option("--csv", "csv_path", type=FILE, help="Write one row per candidate as CSV.")
 @click.option("--report", "html_path", type=FILE, help="Write a self-contained HTML report.")
+@click.option(
+    "--work-list", "work_list_path", type=FILE, help="Write the next measurements of all queries, ranked, as CSV."
+)
 @click.option("--top", type=int, help="Candidates reported per query (default 25).")
 @click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
 @click.option(
@@ -51,6 +54,7 @@ def search(
     json_path: Path | None,
     csv_path: Path | None,
     html_path: Path | None,
+    work_list_path: Path | None,
     top: int | None,
     settings_path: Path | None,
     prefer_own: bool | None,
@@ -66,7 +70,7 @@ def search(
     settings = resolve(
         read_settings(settings_path), where=str(settings_path or "settings"), top=top, prefer_own_standards=prefer_own
     )
-    outputs = (json_path, csv_path, html_path)
+    outputs = (json_path, csv_path, html_path, work_list_path)
     check_outputs(outputs, (*queries, *libraries))
     written = next((path for path in outputs if path), None)
     if is_recorded and written is None:
@@ -75,13 +79,18 @@ def search(
         report = search_pasted(_read_pasted(), libraries, settings, as_of=as_of)
     else:
         with progress_bar("Identifying") as progress:
-            if json_path and not (csv_path or html_path or why_not):
+            if json_path and not (csv_path or html_path or work_list_path or why_not):
                 report = search_to_json(queries, libraries, settings, json_path, progress, as_of=as_of)
                 click.echo(f"Written: {json_path}", err=True)
                 json_path = None  # written already
             else:
                 report = search_files(queries, libraries, settings, progress, as_of=as_of)
     code = deliver(report, json_path, csv_path, html_path)
+    if work_list_path:
+        from identify.writers.work_list_csv import write_work_list
+
+        write_work_list(work_list_path, report)
+        click.echo(f"Written: {work_list_path}", err=True)
     if why_not:
         say_why_not(why_not, report, libraries, settings, as_of)
     if written and is_recorded is not False:

@@ -19,6 +19,7 @@ from identify.records import (
     Report,
     Verdict,
 )
+from identify.report.batch_section import build_batch_tables
 from identify.report.candidates import SourceList, build_candidate_detail, build_candidate_table, build_mark
 from identify.report.contexts import (
     ClaimContext,
@@ -106,6 +107,7 @@ def build_page(report: Report, *, date: str = "") -> PageContext:
             for item in report.rejected
         ),
         structures_svg=sheet.symbols_svg(),
+        batch=build_batch_tables(report.identifications),
     )
 
 

@@ -238,6 +238,25 @@ class RejectionRow:
 
 
 @dataclass(frozen=True, slots=True)
+class BatchRow:
+    """One threshold: accepted answers and the expected share of wrong ones by both estimates, as shown."""
+
+    threshold: str
+    accepted: str
+    by_model: str
+    by_second: str
+
+
+@dataclass(frozen=True, slots=True)
+class BatchTable:
+    """One level: its rows and its curve."""
+
+    level: str
+    rows: tuple[BatchRow, ...]
+    curve_svg: str
+
+
+@dataclass(frozen=True, slots=True)
 class PageContext:
     """The whole page."""
 
@@ -258,3 +277,5 @@ class PageContext:
     settings: tuple[Fact, ...]
     rejected: tuple[RejectionRow, ...]
     structures_svg: str
+    batch: tuple[BatchTable, ...] = ()
+    """Expected wrong answers among those accepted; empty when the queries are too few."""
