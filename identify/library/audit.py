@@ -14,9 +14,11 @@ from dataclasses import dataclass, replace
 from identify.evidence.facts import FormulaFacts, formula_facts, spectrum_facts
 from identify.index import SearchIndex, search_index
 from identify.library.audit_cells import (
+    ABOVE,
     DEPTH,
     LEAST_COSINE,
     NEAR_COSINE,
+    REPLICATES,
     SHIFT,
     Cell,
     Neighbour,
@@ -273,12 +275,16 @@ def weigh_cells(cells: Sequence[Cell]) -> tuple[float, list[AuditFinding]]:
     Returns
     -------
     log_odds : float
-        Base rate of the training set and the weights of all cells.
+        Base rate of the training set and the weights of all cells. Replicates that agree count for nothing where there are
+        ions above M: a derivative or label nobody declared is the same in all of them.
     findings : list of AuditFinding
     """
     total, findings = BASE_LOG_ODDS, []
+    is_above = any(cell.kind == ABOVE and cell.cell in {"some", "strong"} for cell in cells)
     for cell in cells:
         weight = WEIGHTS.get(cell.kind, {}).get(cell.cell, 0.0)
+        if is_above and cell.kind == REPLICATES:
+            weight = max(weight, 0.0)
         total += weight
         if weight >= SHOWN_FROM:
             grade = Grade.SERIOUS if weight >= SERIOUS_FROM else Grade.CAUTION

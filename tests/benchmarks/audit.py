@@ -31,7 +31,7 @@ from identify.chem.formula import Formula, parse_formula
 from identify.errors import FormulaError
 from identify.index import SearchIndex
 from identify.library.audit import USE, AuditReport, EntryAudit, audit_library, look_around, observe_in_library
-from identify.library.audit_cells import REPLICATES, Cell, nominal_mass_of
+from identify.library.audit_cells import ABOVE, REPLICATES, Cell, nominal_mass_of
 from identify.library.audit_metadata import Grade, check_statements
 from identify.library.audit_weights import BASE_LOG_ODDS, CAUTION_FROM, QUARANTINE_FROM, WEIGHTS
 from identify.library.cache import load_index
@@ -280,7 +280,13 @@ def write_weights(base: float, weights: dict[str, dict[str, float]], cases: list
 
 
 def total(cells: tuple[Cell, ...], base: float, weights: dict[str, dict[str, float]]) -> float:
-    return base + sum(weights.get(cell.kind, {}).get(cell.cell, 0.0) for cell in cells)
+    """Log-odds as `weigh_cells` adds them up."""
+    is_above = any(cell.kind == ABOVE and cell.cell in {"some", "strong"} for cell in cells)
+    value = base
+    for cell in cells:
+        weight = weights.get(cell.kind, {}).get(cell.cell, 0.0)
+        value += max(weight, 0.0) if is_above and cell.kind == REPLICATES else weight
+    return value
 
 
 def with_stated(value: float, case: Case, caution: float, quarantine: float, alone: bool) -> float:

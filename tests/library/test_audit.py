@@ -253,6 +253,15 @@ def test_the_evidence_of_the_findings_adds_up_with_the_silent_observations() -> 
     assert weigh_cells([Cell("highest ions", "", "not assessed")]) == (BASE_LOG_ODDS, [])
 
 
+def test_replicates_with_the_same_error_excuse_nothing() -> None:
+    alike = Cell("replicates", "the same", "because")
+    assert weigh_cells([Cell("ions above M", "none", ""), alike])[0] == pytest.approx(
+        weigh_cells([Cell("ions above M", "none", "")])[0] + WEIGHTS["replicates"]["the same"]
+    )
+    heavier = Cell("ions above M", "strong", "because")
+    assert weigh_cells([heavier, alike])[0] == weigh_cells([heavier])[0]
+
+
 def test_every_cell_that_can_be_observed_is_in_the_table_or_is_rare() -> None:
     """A renamed cell would silently weigh nothing."""
     for kind in ("highest ions", "ions above M", "losses from M", "mass of similar spectra", "replicates"):
