@@ -151,7 +151,7 @@ def _open_in_worker(paths: list[Path], settings: Settings, as_of: Sequence[int |
     _Worker.libraries = tuple(replace(searchable, is_busy=is_busy) for searchable in libraries)
     _Worker.settings = settings
     # A result is a tree of thousands of small records without cycles; looking for cycles after every 700 of them, and again and
-    # again through all entries kept, costs a worker a tenth of its time.
+    # again through all entries kept, costs a worker 5 to 10 % of its time.
     gc.freeze()
     gc.set_threshold(100_000, 20, 20)
 
