@@ -307,6 +307,12 @@ def _describe(
             Verdict.AGREES,
             f"One entry explains {100 * explained:.0f} % of the query; no second one improves that.",
         )
+    elif explained >= HALF_EXPLAINED:
+        verdict = Verdict.INCONCLUSIVE
+        reason = (
+            f"The best entry explains {100 * explained:.0f} % of the query; the rest may be the intensities of another "
+            "instrument or a compound without an entry."
+        )
     else:
         verdict = Verdict.INCONCLUSIVE
         reason = f"The hits explain only {100 * explained:.0f} % of the query: its compound, or a second one, is not among them."
