@@ -170,9 +170,10 @@ def seed(target: str, corpus: Path) -> None:
     if target == "results":
         _make_result(corpus)
     if target == "library":
-        _make_library()
-        for place in (16, 18, 40, 60, 100, 4096):
-            (corpus / str(place)).write_bytes(place.to_bytes(3, "big") + b"\xff")
+        _make_small_library()
+        size = (FOLDER / "good.ionlib").stat().st_size
+        for place in (16, 18, 40, 60, 100, *range(4096, size, 997)):
+            (corpus / str(place)).write_bytes(b"".join((place + n).to_bytes(3, "big") + b"\xff" for n in range(3)))
 
 
 def _small_run() -> bytes:
@@ -190,6 +191,16 @@ def _make_library() -> None:
     from identify.library.starter import build_starter
 
     build_starter(FOLDER / "good.ionlib", "fuzz", datetime(2026, 1, 5, tzinfo=UTC), replace=True)
+
+
+def _make_small_library() -> None:
+    from datetime import UTC, datetime
+
+    from identify.library.build import build_from_records
+    from identify.library.starter import starter_records
+
+    few = starter_records()[:6]
+    build_from_records(FOLDER / "good.ionlib", few, origin="fuzz", who="fuzz", when=datetime(2026, 1, 5, tzinfo=UTC))
 
 
 def _make_result(corpus: Path) -> None:
