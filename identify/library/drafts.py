@@ -33,7 +33,8 @@ NOT_MS1 = "not a full-scan spectrum (MS1)"
 LICENCE = "licence not accepted"
 UNUSABLE = "unusable spectrum"
 NAMELESS = "no name, formula or structure"
-EXCLUDED = frozenset({NOT_EI, NOT_POSITIVE, NOT_MS1, LICENCE})
+OTHER_FILE = "another kind of file"
+EXCLUDED = frozenset({NOT_EI, NOT_POSITIVE, NOT_MS1, LICENCE, OTHER_FILE})
 """Reasons that are a choice of what the library is for; every other reason is a fault of the record or file."""
 NOTE_ENERGY = "energy not stated: taken as 70 eV"
 NOTE_IONIZATION = "ionization not stated: taken as EI"

@@ -191,6 +191,9 @@ def find_chain_fault(events: Iterator[Event]) -> str:
         number += 1
         if event.seq != number:
             return f"event {number} is missing"
+        texts = (event.at, event.who, event.kind, event.reason, event.content, event.content_hash, event.previous_hash)
+        if not all(isinstance(text, str) for text in texts):  # a flipped bit can turn text into bytes
+            return f"event {number}: a field is no text"
         if sha256_of(event.content) != event.content_hash:
             return f"event {number}: its content does not agree with its content hash"
         if event.previous_hash != previous:

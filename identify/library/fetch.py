@@ -20,7 +20,7 @@ from urllib.parse import urljoin
 from identify import __version__
 from identify.errors import FetchError, UsageError
 from identify.library.build import BuildReport, build_library
-from identify.library.drafts import NOT_EI, NOT_MS1, NOT_POSITIVE
+from identify.library.drafts import NOT_EI, NOT_MS1, NOT_POSITIVE, OTHER_FILE
 from identify.library.intake import Progress
 from identify.library.recipe import Recipe, check_address, read_recipe
 
@@ -107,9 +107,7 @@ def check_counts(report: BuildReport, recipe: Recipe) -> None:
     FetchError
         If there are fewer records, fewer electron-ionization records or more SPLASH mismatches than expected.
     """
-    of_other_kind = sum(
-        report.n_rejected.get(reason, 0) for reason in (NOT_EI, NOT_MS1, NOT_POSITIVE, "unknown format")
-    )
+    of_other_kind = sum(report.n_rejected.get(reason, 0) for reason in (NOT_EI, NOT_MS1, NOT_POSITIVE, OTHER_FILE))
     facts = (
         (report.n_read, recipe.records_at_least, "records"),
         (report.n_read - of_other_kind, recipe.electron_ionization_at_least, "electron-ionization records"),

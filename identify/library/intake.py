@@ -12,7 +12,7 @@ from pathlib import Path
 from typing import NamedTuple
 
 from identify.errors import LibraryConflict
-from identify.library.drafts import Policy, judge_record
+from identify.library.drafts import OTHER_FILE, Policy, judge_record
 from identify.library.events import Event
 from identify.library.insertion import Insertion
 from identify.library.rows import Draft
@@ -24,6 +24,7 @@ Progress = Callable[[int, str], None]
 OnReject = Callable[[Rejection], None]
 
 DUPLICATE = "duplicate accession"
+UNKNOWN_FORMAT = "unknown format"
 MAX_LISTED = 20_000
 """Rejections listed one by one; the counts are always complete."""
 _PROGRESS_EVERY = 100
@@ -42,7 +43,17 @@ class Stream(NamedTuple):
 def stream_of(source: Path) -> Stream:
     """Records of a file, folder or archive."""
     folder = str(source.parent / "x").removesuffix("x")
-    return Stream(source.name, _source_hash(source), folder, lambda on_reject: read_spectra(source, on_reject))
+    return Stream(source.name, _source_hash(source), folder, lambda on_reject: _read(source, on_reject))
+
+
+def _read(source: Path, on_reject: OnReject) -> Iterator[SpectrumRecord]:
+    """Records; a file of no known format inside a folder or archive (a README) is another kind of file, no fault."""
+
+    def judge(rejection: Rejection) -> None:
+        is_beside = rejection.reason == UNKNOWN_FORMAT and rejection.source != str(source)
+        on_reject(replace(rejection, reason=OTHER_FILE) if is_beside else rejection)
+
+    return read_spectra(source, judge)
 
 
 def _source_hash(source: Path) -> str:

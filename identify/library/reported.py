@@ -120,6 +120,8 @@ def find_reported_fault(connection: sqlite3.Connection) -> str:
     for expected, (number, *values, before, stated) in enumerate(rows, start=1):
         if number != expected or before != previous:
             return f"reported query {expected} is missing"
+        if any(isinstance(value, bytes) for value in values):
+            return f"reported query {number}: a field is neither text nor a number"
         if _row_hash(number, values, before) != stated:
             return f"reported query {number}: its hash does not agree with its fields"
         previous = stated

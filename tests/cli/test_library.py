@@ -67,9 +67,10 @@ def test_records_of_another_method_or_licence_are_left_out_by_choice_with_exit_c
     )
     for number, record in enumerate((text, *others)):
         (tmp_path / f"{number}.txt").write_text(record)
-    files = sorted(tmp_path.glob("*.txt"))
-    result = run("library", "build", tmp_path / "lab.ionlib", *files, "--who", "tester")
+    (tmp_path / "README.md").write_text("About these records.")
+    result = run("library", "build", tmp_path / "lab.ionlib", tmp_path, "--who", "tester")
     assert result.return_value == 0
+    assert "left out 1 × another kind of file" in result.output
     assert "left out 1 × not electron ionization" in result.output
     assert "left out 1 × licence not accepted" in result.output
 

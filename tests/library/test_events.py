@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import pytest
 from library_builders import WHEN, WHO
@@ -48,9 +49,11 @@ def test_an_intact_chain_starts_at_genesis_and_has_no_fault(chain) -> None:
         ({"reason": "other"}, "event 3: its hash does not agree with its fields"),
         ({"content": '{"n":9}'}, "event 3: its content does not agree with its content hash"),
         ({"previous_hash": "f" * 64}, "event 3: it does not continue event 2"),
+        ({"who": b"Tester"}, "event 3: a field is no text"),
+        ({"content": b"{}"}, "event 3: a field is no text"),
     ],
 )
-def test_a_changed_event_is_named(chain, change: dict[str, str], fault: str) -> None:
+def test_a_changed_event_is_named(chain, change: dict[str, Any], fault: str) -> None:
     assert find_chain_fault(iter([*chain[:2], replace(chain[2], **change), *chain[3:]])) == fault
 
 
