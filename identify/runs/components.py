@@ -344,12 +344,14 @@ def _solve(design: FloatArray, window: FloatArray, sigma: FloatArray) -> tuple[F
     covariance = np.linalg.pinv(design.T @ design)
     mean_variance = np.sum(design[:, :1] * sigma**2, axis=0) / design[:, 0].sum()
     spread = np.sqrt(max(covariance[0, 0], 0.0) * mean_variance)
-    for ion in np.nonzero(window.max(axis=0) >= 2.0 * sigma.min(axis=0))[0]:
-        trace = window[:, ion]
-        solution, rest = nnls(design, trace)
+    # With no column below 0, the amplitude of the own shape alone is the most it can have beside others.
+    own = design[:, 0]
+    most = own @ window / float(own @ own)
+    varies = window.var(axis=0) * window.shape[0]
+    for ion in np.nonzero((window.max(axis=0) >= 2.0 * sigma.min(axis=0)) & (most >= MIN_AMPLITUDE_SIGMA * spread))[0]:
+        solution, rest = nnls(design, window[:, ion])
         amplitude[ion] = solution[0]
-        varies = float(np.sum((trace - trace.mean()) ** 2))
-        explained[ion] = max(0.0, 1.0 - rest**2 / varies) if varies > 0 else 0.0
+        explained[ion] = max(0.0, 1.0 - rest**2 / varies[ion]) if varies[ion] > 0 else 0.0
     return amplitude, spread, explained
 
 

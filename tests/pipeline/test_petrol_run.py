@@ -92,16 +92,26 @@ def test_most_of_the_signal_outside_solvent_and_background_is_explained(petrol: 
     assert petrol.runs[0].shares.at_least(ClaimLevel.CLASS) >= 0.93
 
 
-@pytest.mark.parametrize("minutes", [2.07, 2.35])
+def nearest(found: RunsReport, minutes: float) -> Finding:
+    """The component of at least 0.05 % of the signal nearest to a time."""
+    run = found.runs[0]
+    least = 5e-4 * run.shares.compounds
+    large = [f for f in run.findings if f.identification and f.component.area >= least]
+    return min(large, key=lambda finding: abs(finding.component.time_s / 60.0 - minutes))
+
+
+@pytest.mark.parametrize("minutes", [2.07, 2.345])
 def test_the_ethers_are_not_taken_for_hydrocarbons(petrol: RunsReport, minutes: float) -> None:
-    found = at(petrol, minutes).identification
-    assert "TERT-BUTYL ETHER" in found.candidates[0].entry.identity.name.upper()
-    assert "ydrocarbon" not in found.claim.statement
+    found = nearest(petrol, minutes).identification
+    name, statement = found.candidates[0].entry.identity.name.upper(), found.claim.statement
+    assert "TERT-BUTYL ETHER" in name
+    assert "ydrocarbon" not in statement
 
 
 def test_alkanes_with_a_clear_molecular_ion_have_their_carbon_number(petrol: RunsReport) -> None:
     for minutes, carbons in ((1.82, 5), (2.79, 7), (10.67, 10)):
-        assert f"lkane with {carbons} carbons" in at(petrol, minutes).identification.claim.statement
+        statement = nearest(petrol, minutes).identification.claim.statement
+        assert f"lkane with {carbons} carbons" in statement
 
 
 def test_the_n_alkanes_of_the_sample_give_an_approximate_scale(petrol: RunsReport) -> None:
