@@ -50,6 +50,10 @@ ENTRY_COLUMNS = (
     "measured_as", "formula_as_measured", "is_labelled", "licence", "authors", "source", "comments", "initial_status",
 )  # fmt: skip
 """Columns `entry_of` takes, in its order."""
+_INTEGERS = frozenset({"id", "compound_id", "lowest_mz", "ms_level", "is_labelled"})
+_REALS = frozenset({"energy_ev", "scan_low_mz", "scan_high_mz", "retention_time_s", "retention_index"})
+_BLOBS = frozenset({"nominal_mz", "nominal_intensity", "accurate_mz", "accurate_intensity"})
+_MAY_LACK = _REALS | {"ms_level", "accurate_mz", "accurate_intensity"}
 
 RECORD_COLUMNS = (
     "accession", "title", "name", "formula", "smiles", "inchi", "inchikey", "cas", "other_names",
@@ -135,6 +139,11 @@ def entry_of(row: Sequence[Any], status: EntryStatus, where: str) -> Entry:
     LibraryDamaged
         If the row cannot be what was written.
     """
+    fault = _find_odd_type(tuple(map(type, row)))
+    if fault:
+        raise LibraryDamaged(
+            "entry", where=f"{where}, entry {row[0]!r}", found=fault, expected="values as they were written"
+        )
     (
         entry_id, compound_id, accession, name, formula, smiles, inchi, inchikey, cas, other_names,
         nominal_mz, nominal_intensity, accurate_mz, accurate_intensity, lowest_mz, cleaning,
@@ -164,6 +173,19 @@ def entry_of(row: Sequence[Any], status: EntryStatus, where: str) -> Entry:
         source,
         texts_of(comments, place),
     )
+
+
+@lru_cache(maxsize=256)
+def _find_odd_type(types: tuple[type, ...]) -> str:
+    """What is wrong with the types of a row of `ENTRY_COLUMNS`; empty if nothing is.
+
+    SQLite checks types when a row is written, not when it is read: one flipped bit in a file can make a number of a text.
+    """
+    for name, found in zip(ENTRY_COLUMNS, types, strict=True):
+        wanted: type = int if name in _INTEGERS else float if name in _REALS else bytes if name in _BLOBS else str
+        if found is not wanted and not (found is type(None) and name in _MAY_LACK):
+            return f"{found.__name__} as {name}"
+    return ""
 
 
 def peaks_of(mz: bytes, intensity: bytes, where: str, mz_type: str = UINT16) -> Peaks:

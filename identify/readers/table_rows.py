@@ -12,11 +12,13 @@ from identify.readers.numbers import parse_number
 
 _MZ_NAMES = frozenset(
     {"mz", "mass", "masses", "ion", "mzratio", "moverz", "mzda", "mzth", "mzvalue", "masstocharge", "masscharge", "x"}
+    | {"masse", "masa"}
 )
 _RELATIVE_NAMES = frozenset({"relativeintensity", "relint", "relativeabundance", "rel", "relabundance"})
 _INTENSITY_NAMES = _RELATIVE_NAMES | {
     *("intensity", "int", "intensities", "ints", "intensitycounts", "intensitypercent"),
     *("abundance", "height", "peakheight", "count", "counts", "y"),
+    *("intensität", "intensitaet", "häufigkeit", "intensité", "intensite", "intensidad", "intensità"),
 }
 _DECIMAL_COMMA = re.compile(r"[+-]?\d+,\d+(?:[eE][+-]?\d+)?", re.ASCII)
 _ROW_START = re.compile(r"[\s\"'(\[]*[+-]?(?:\d|[.,]\d|nan\b|inf)", re.IGNORECASE)
