@@ -31,6 +31,7 @@ from identify.library.audit_metadata import AuditFinding, Grade, check_statement
 from identify.library.audit_weights import BASE_LOG_ODDS, CAUTION_FROM, QUARANTINE_FROM, WEIGHTS
 from identify.library.store import Library
 from identify.records import CleanSpectrum, Entry, EntryStatus, Peaks
+from identify.retention import find_suspect_indices
 from identify.similarity.scores import cosine_score
 from identify.spectra.align import align
 
@@ -133,12 +134,17 @@ def audit_library(library: Library, index: SearchIndex, *, progress: Progress | 
     audited = frozenset(EntryStatus) - {EntryStatus.WITHDRAWN, EntryStatus.REFUSED, EntryStatus.PROPOSED}
     ids = library.entry_ids(audited)
     overruled = read_overruled(library)
+    doubts = find_suspect_indices(library.iter_entries(audited))
     many, audits = len(ids) >= MANY_ENTRIES, []
     for number, entry_id in enumerate(ids):
         if progress and number % 50 == 0:
             progress(number, "entries")
         (entry,) = library.get_entries([entry_id])
-        audits.append(audit_entry(library, index, entry, overruled=overruled.get(entry_id, ""), many=many))
+        audits.append(
+            audit_entry(
+                library, index, entry, overruled=overruled.get(entry_id, ""), doubt=doubts.get(entry_id, ""), many=many
+            )
+        )
     return AuditReport(str(library.path), library.fingerprint, tuple(audits))
 
 
@@ -155,7 +161,7 @@ def read_overruled(library: Library) -> dict[int, str]:
 
 
 def audit_entry(
-    library: Library, index: SearchIndex, entry: Entry, *, overruled: str = "", many: bool = False
+    library: Library, index: SearchIndex, entry: Entry, *, overruled: str = "", doubt: str = "", many: bool = False
 ) -> EntryAudit:
     """Audit of one entry against the searchable entries of the library.
 
@@ -168,6 +174,8 @@ def audit_entry(
         In the library; its standing does not matter.
     overruled : str
         Why a reviewer has put it back into use; the proposal is then at most `use with caution`.
+    doubt : str
+        What `identify.retention.find_suspect_indices` says of its retention index beside those of the whole library.
     many : bool
         Whether thousands of audits follow.
 
@@ -178,7 +186,7 @@ def audit_entry(
     cells, neighbours, replicates = observe_in_library(library, index, entry, leave_out={entry.id}, many=many)
     log_odds, observed = weigh_cells(cells)
     (record,) = library.get_records([entry.id])
-    stated = check_statements(entry, record, [replicate.entry for replicate in replicates])
+    stated = check_statements(entry, record, [replicate.entry for replicate in replicates], doubt)
     proposal = propose(log_odds, stated)
     if proposal == USE or log_odds < CAUTION_FROM:  # the sum speaks for the entry: single signs are no findings
         observed = [replace(finding, grade=Grade.NOTE) for finding in observed]

@@ -49,7 +49,9 @@ _DERIVATIZED = re.compile(
 )
 
 
-def check_statements(entry: Entry, record: SpectrumRecord, replicates: Sequence[Entry]) -> tuple[AuditFinding, ...]:
+def check_statements(
+    entry: Entry, record: SpectrumRecord, replicates: Sequence[Entry], index_doubt: str = ""
+) -> tuple[AuditFinding, ...]:
     """Findings on an entry's metadata, in a fixed order.
 
     Parameters
@@ -59,6 +61,8 @@ def check_statements(entry: Entry, record: SpectrumRecord, replicates: Sequence[
         The record it was made of.
     replicates : sequence of Entry
         Other entries of the compound in the same form.
+    index_doubt : str
+        Why its retention index is not believed beside those of the whole library; empty when nothing is known against it.
 
     Returns
     -------
@@ -73,7 +77,7 @@ def check_statements(entry: Entry, record: SpectrumRecord, replicates: Sequence[
         _salt(entry),
         _energy(entry),
         _peaks(entry),
-        _retention(entry, replicates),
+        _retention(entry, replicates, index_doubt),
     )
     return tuple(finding for finding in found if finding is not None)
 
@@ -160,14 +164,15 @@ def _peaks(entry: Entry) -> AuditFinding | None:
     return AuditFinding("few peaks", Grade.CAUTION, reason, f"{n_peaks} peaks", f"{FEW_PEAKS} or more")
 
 
-def _retention(entry: Entry, replicates: Sequence[Entry]) -> AuditFinding | None:
+def _retention(entry: Entry, replicates: Sequence[Entry], doubt: str) -> AuditFinding | None:
     mine = entry.retention
     others = [
         other.retention.index
         for other in replicates
         if other.retention.index is not None and other.retention.phase == mine.phase
     ]
-    doubt = doubt_about_index(mine.index, mine.time_s) if mine.index is not None else ""
+    if mine.index is not None:
+        doubt = doubt_about_index(mine.index, mine.time_s) or doubt
     if mine.index is not None and doubt:
         return AuditFinding(
             "retention index", Grade.CAUTION, f"The retention index is not used: {doubt}.", f"{mine.index:g}",

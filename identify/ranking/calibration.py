@@ -175,8 +175,9 @@ def _answers(shift: Shift, one: Played) -> tuple[FloatArray, int]:
 
 
 def _chances(shift: Shift, odds: FloatArray) -> FloatArray:
-    chance: FloatArray = np.exp(shift.sharpness * (odds - odds.max()))
-    return chance / chance.sum()
+    weight = np.exp(shift.sharpness * (odds - odds.max()))
+    chances: FloatArray = weight / weight.sum()
+    return chances
 
 
 def _loss(shift: Shift, one: Played) -> float:

@@ -9,6 +9,7 @@ from typing import Annotated, Any, Literal
 from fastapi import APIRouter, Form, Path, Query, Request
 
 from identify.errors import UsageError, quote
+from identify.pipeline.why_not import WhyNot
 from identify.records import Candidate, ClaimLevel, EntryStatus, Identification
 from identify.report.words import visible_text
 from identify.settings import CleaningSettings
@@ -21,7 +22,7 @@ from identify.workbench.record_json import record_to_dict
 from identify.workbench.sessions import Person
 from identify.workbench.stored import settings_of
 from identify.workbench.view_work_list import query_line
-from identify.workbench.why_not import WhyNot, explain_absence
+from identify.workbench.why_not import explain_absence
 
 Id = Annotated[int, Path(ge=1, le=2**40)]
 LEVELS = tuple(level for level in ClaimLevel if level is not ClaimLevel.NO_CLAIM)

@@ -310,6 +310,31 @@ def test_an_audit_proposes_and_a_reviewer_decides(tmp_path: Path) -> None:
     assert again.findings, "what was found is still said"
 
 
+def test_an_index_out_of_order_within_its_homologous_series_is_found(tmp_path: Path) -> None:
+    """n-Alkanes: 100 index units for each carbon, by definition of the scale; one of eight was written down wrongly."""
+    path = tmp_path / "alkanes.ionlib"
+    build_test_library(
+        path,
+        [
+            build_record(
+                f"R{n}", f"alkane {n}", {43: 100.0, 57: 80.0, 71: 40.0, 85: 25.0, 14 * n + 2: 3.0},
+                formula=f"C{n}H{2 * n + 2}", smiles="C" * n,
+                retention=Retention(index=1000.0 if n == 13 else 100.0 * n, phase="non-polar"),
+            )
+            for n in range(9, 17)
+        ],
+    )  # fmt: skip
+    doubted = {
+        entry.accession: finding.reason
+        for entry in audit(path).audits
+        for finding in entry.findings
+        if finding.kind == "retention index"
+    }
+    assert doubted == {
+        "R13": "The retention index is not used: the index is out of order within its homologous series."
+    }
+
+
 def test_a_withdrawn_entry_is_not_audited(library_path: Path) -> None:
     from library_builders import move
 
