@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import functools
+import inspect
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Annotated, Any
@@ -176,9 +177,16 @@ def add_view(pages: APIRouter, twins: APIRouter, path: str, builder: Callable[..
         view = builder(*args, **kwargs)
         return JSONResponse({**view.data, **view.more()})
 
+    _take_signature(builder, page, data)
     # Their annotations are the builder's, which say View.
     pages.add_api_route(path, page, methods=["GET"], response_model=None, name=f"page {path}")
     twins.add_api_route(twin or path, data, methods=["GET"], response_model=None, name=f"data {path}")
+
+
+def _take_signature(builder: Callable[..., Any], *routes: Callable[..., Response]) -> None:
+    """Give routes the parameters of a builder, with its names looked up in its own module (an old FastAPI looks in ours)."""
+    for route in routes:
+        route.__signature__ = inspect.signature(builder, eval_str=True)  # type: ignore[attr-defined]
 
 
 Outcome = tuple[str, Mapping[str, Any]]
@@ -204,5 +212,6 @@ def add_action(pages: APIRouter, twins: APIRouter, path: str, action: Callable[.
         address, told = action(*args, **kwargs)
         return JSONResponse({**told, "page": address.partition("?")[0]}, status_code=201)
 
+    _take_signature(action, send, data)
     pages.add_api_route(path, send, methods=["POST"], response_model=None, name=f"send {path}")
     twins.add_api_route(path, data, methods=["POST"], response_model=None, name=f"action {path}", status_code=201)
