@@ -73,7 +73,7 @@ def _check_packages() -> None:
     if missing:
         raise UsageError(
             "workbench", found=f"no {', '.join(missing)}", expected="the packages of the workbench",
-            hint="Install them with `pip install 'ionwitness[workbench]'`, in the folder of the source `pip install '.[workbench]'`.",
+            hint="Install them with `pip install 'ionwitness[workbench]'` (in the source folder: '.[workbench]').",
         )  # fmt: skip
 
 
