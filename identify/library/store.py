@@ -15,7 +15,7 @@ from pathlib import Path
 from types import TracebackType
 from typing import Any, Self
 
-from identify.errors import LibraryError, UsageError, quote
+from identify.errors import LibraryDamaged, LibraryError, UsageError, quote
 from identify.library.connection import BUSY_TIMEOUT_S, connect, transaction, translated
 from identify.library.events import Event, read_events
 from identify.library.rows import ENTRY_COLUMNS, RECORD_COLUMNS, entry_of, peaks_of, record_of
@@ -245,9 +245,21 @@ class Library:
             return dict(self._standing)
 
     def events(self) -> list[Event]:
-        """Events in order."""
+        """Events in order.
+
+        Raises
+        ------
+        LibraryDamaged
+            If a field of one is no text.
+        """
         with self.reading() as connection:
-            return list(read_events(connection, self.as_of))
+            events = list(read_events(connection, self.as_of))
+        for event in events:
+            fields = (event.at, event.who, event.kind, event.reason, event.content, event.hash)
+            if not all(isinstance(text, str) for text in fields):  # a flipped bit in the file
+                found = f"event {event.seq} with a field that is no text"
+                raise LibraryDamaged("library", where=str(self.path), found=found, expected="text")
+        return events
 
     def entry_ids(self, statuses: Collection[EntryStatus] = SEARCHABLE) -> list[int]:
         """Ids of the entries with one of these standings, ascending."""

@@ -184,7 +184,11 @@ def _check_digests(connection: sqlite3.Connection) -> Iterator[Problem]:
 
 def _readable_events(connection: sqlite3.Connection) -> Iterator[Event]:
     """Events whose content agrees with its hash; the others have been reported."""
-    return (event for event in read_events(connection) if sha256_of(event.content) == event.content_hash)
+    return (
+        event
+        for event in read_events(connection)
+        if isinstance(event.content, str) and sha256_of(event.content) == event.content_hash
+    )
 
 
 def _check_compounds(connection: sqlite3.Connection) -> Iterator[Problem]:
