@@ -103,7 +103,7 @@ def show_query(
 
 def _explain(desk: Desk, query_id: int, result_id: int, asked: str) -> tuple[WhyNot, ...]:
     shown = desk.shown_result(query_id, result_id)
-    settings = settings_of(desk.case.document(result_id))
+    settings = settings_of({"settings": shown.report.settings})
     return explain_absence(asked, shown.identification, desk.searchable(), settings)
 
 

@@ -153,3 +153,17 @@ def test_a_look_up_that_makes_no_sense_says_so(used_bench: Bench) -> None:
         answer = used_bench.client.get(f"/api/library?{query}")
         assert answer.status_code == 200
         assert answer.json()["fault"]
+
+
+def test_a_query_page_says_whether_it_is_one_compound_and_what_it_is_like(used_bench: Bench) -> None:
+    """The same sentences as in the report, for every query that has them."""
+    from identify.report.nature import nature_sentences, purity_sentences
+
+    desk, n_said = used_bench.desk, 0
+    for row in desk.case.queries():
+        page = html.unescape(used_bench.client.get(f"/queries/{row.id}").text)
+        found = desk.shown_result(row.id, row.result_id).identification
+        for text in (*purity_sentences(found), *nature_sentences(found)):
+            assert text in page
+            n_said += 1
+    assert n_said
