@@ -1,7 +1,7 @@
 """How does the query compare with each of the entries found, in numbers that a model can add up?
 
 All entries of one query are compared at once: their peaks lie one after the other in flat arrays, with the owner of each
-peak beside it, so that a sum per entry is one `bincount`. Every number is taken over the m/z range both spectra cover.
+peak beside it, so that a sum per entry is one `reduceat`. Every number is taken over the m/z range both spectra cover.
 No number counts entries or replicates: a held-out compound has one entry fewer than its rivals, and a count would learn that.
 """
 
@@ -75,6 +75,10 @@ class FlatPairs:
         Lowest m/z of the range in common.
     scale : array of shape (n_entries,)
         Factor that made the query's intensities relative.
+    place : int array of shape (n_peaks,)
+        Number of the query's peak at the same m/z; the number of its peaks where it has none.
+    filled, starts : int arrays of shape (n_filled,)
+        Entries with a peak in the range in common, and where the peaks of each begin.
     """
 
     n_entries: int
@@ -84,16 +88,20 @@ class FlatPairs:
     entry: FloatArray
     cut: IntArray
     scale: FloatArray
+    place: IntArray
+    filled: IntArray
+    starts: IntArray
 
     def total(self, values: FloatArray) -> FloatArray:
         """Sum of per-peak values for each entry, shape ``(n_entries,)``."""
-        sums: FloatArray = np.bincount(self.owner, values, minlength=self.n_entries).astype(np.float64)
+        sums = np.zeros(self.n_entries)
+        sums[self.filled] = np.add.reduceat(values, self.starts) if self.starts.size else 0.0
         return sums
 
     def highest(self, values: FloatArray) -> FloatArray:
-        """Largest per-peak value for each entry, at least 0, shape ``(n_entries,)``."""
+        """Largest per-peak value (at least 0) for each entry, 0 without a peak, shape ``(n_entries,)``."""
         best = np.zeros(self.n_entries)
-        np.maximum.at(best, self.owner, values)
+        best[self.filled] = np.maximum.reduceat(values, self.starts) if self.starts.size else 0.0
         return best
 
 
@@ -140,15 +148,21 @@ def pair_up(query: CleanSpectrum, entries: Sequence[CleanSpectrum]) -> FlatPairs
     kept = mz >= cut[owner]
     owner, mz, intensity = owner[kept], mz[kept], intensity[kept]
     own_mz, own = query.nominal.mz.astype(np.int64), query.nominal.intensity
-    place = np.minimum(np.searchsorted(own_mz, mz), own_mz.size - 1)
-    beside = np.where(own_mz[place] == mz, own[place], 0.0)
+    place_of_mz = np.full(int(max(own_mz[-1], mz.max(initial=0))) + 1, own_mz.size)
+    place_of_mz[own_mz] = np.arange(own_mz.size)
+    place = place_of_mz[mz]
     best_from = np.append(np.maximum.accumulate(own[::-1])[::-1], 0.0)
     best_query = best_from[np.searchsorted(own_mz, cut)]
-    best_entry = np.zeros(n)
-    np.maximum.at(best_entry, owner, intensity)
     scale = np.where(best_query > 0, 100.0 / np.maximum(best_query, TINY), 0.0)
-    relative = intensity * (100.0 / np.maximum(best_entry, TINY))[owner]
-    return FlatPairs(n, owner, mz, beside * scale[owner], relative, cut, scale)
+    starts = np.flatnonzero(np.diff(owner, prepend=-1))
+    filled = owner[starts]
+    best_entry = np.ones(n)
+    best_entry[filled] = np.maximum.reduceat(intensity, starts) if starts.size else 1.0
+    query_intensity, entry_intensity = (
+        np.append(own, 0.0)[place] * scale[owner],
+        intensity * (100.0 / best_entry)[owner],
+    )
+    return FlatPairs(n, owner, mz, query_intensity, entry_intensity, cut, scale, place, filled, starts)
 
 
 def compare_with_entries(
@@ -172,7 +186,7 @@ def compare_with_entries(
 
     Notes
     -----
-    Some 3 ms for 150 entries of 80 peaks. With one peak list per entry ``(m, e)`` and the query's ``q`` at the same m/z:
+    Some 1.5 ms for 150 entries of 80 peaks. With one peak list per entry ``(m, e)`` and the query's ``q`` at the same m/z:
 
     - cosine ``Σ w(q) w(e) / sqrt(Σ w(q)² Σ w(e)²)`` with ``w`` = intensity**a · mz**b; *reverse* over the entry's peaks
       only, *forward* over the query's peaks only.
@@ -212,19 +226,21 @@ class _Logs:
 
 
 def _cosines(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
-    mz, matched = pairs.mz.astype(np.float64), pairs.query > 0
-    own_logs, other_logs = _Logs.of(mz, pairs.query), _Logs.of(mz, pairs.entry)
+    matched = (pairs.query > 0).astype(np.float64)
+    other_logs = _Logs.of(pairs.mz.astype(np.float64), pairs.entry)
     query_logs = _Logs.of(query.nominal.mz, query.nominal.intensity)
     cosine, reverse, forward = [], [], []
     for name, weighting in COSINES.items():
-        own, other = own_logs.weights(weighting), other_logs.weights(weighting)
-        whole = _from_cut(query, pairs, query_logs.weights(weighting) ** 2)
-        whole = whole * pairs.scale ** (2.0 * weighting.intensity_power)
-        shared, theirs = pairs.total(own * other), pairs.total(other * other)
+        query_weights, other = query_logs.weights(weighting), other_logs.weights(weighting)
+        own = np.append(query_weights, 0.0)[pairs.place]
+        scale = pairs.scale**weighting.intensity_power
+        whole = _from_cut(query, pairs, query_weights**2) * scale**2
+        squares = other * other
+        shared, theirs = pairs.total(own * other) * scale, pairs.total(squares)
         cosine.append(shared / np.sqrt(whole * theirs + TINY))
         if name in ONE_SIDED:
-            reverse.append(shared / np.sqrt(pairs.total(own * own) * theirs + TINY))
-            forward.append(shared / np.sqrt(whole * pairs.total(other * other * matched) + TINY))
+            reverse.append(shared / np.sqrt(pairs.total(own * own) * scale**2 * theirs + TINY))
+            forward.append(shared / np.sqrt(whole * pairs.total(squares * matched) + TINY))
     return [*cosine, *reverse, *forward]
 
 
@@ -258,10 +274,8 @@ def remove_tilt(pairs: FlatPairs) -> Tilt:
 
 def _ratios(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
     mz, (weight, total, off, left, straight) = pairs.mz.astype(np.float64), remove_tilt(pairs)
-    weighting = COSINES["root"]
-    own, other = _Logs.of(mz, pairs.query).weights(weighting), _Logs.of(mz, straight).weights(weighting)
-    whole = _from_cut(query, pairs, _Logs.of(query.nominal.mz, query.nominal.intensity).weights(weighting) ** 2)
-    whole = whole * pairs.scale ** (2.0 * weighting.intensity_power)
+    own, other = np.sqrt(mz * pairs.query), np.sqrt(mz * straight)  # weights of the cosine named "root"
+    whole = _from_cut(query, pairs, query.nominal.mz * query.nominal.intensity) * pairs.scale
     heavy = weight * mz
     return [
         pairs.total(own * other) / np.sqrt(whole * pairs.total(other * other) + TINY),
