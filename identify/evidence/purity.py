@@ -87,8 +87,9 @@ def judge_purity(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> Purity:
 
     Notes
     -----
-    Weighted non-negative least squares on intensities, ``Σ w (q − Σ a_i e_i)²`` with ``w = m/z / (0.5 + q + 0.03 q²)``: errors
-    grow with the square root of an intensity and, for strong peaks, in proportion to it; high m/z tells more. All pairs are
+    Weighted non-negative least squares on intensities, ``Σ w (q − Σ a_i e_i)²`` with ``w = m/z / (f + q + 0.03 q²)``,
+    f the weakest peak of the query and at least 0.5 (a list of principal ions leaves out what is weaker): errors grow
+    with the square root of an intensity and, for strong peaks, in proportion to it; high m/z tells more. All pairs are
     tried, and all third entries with the best pair. An entry more costs: it is accepted when `needs_another` is at least
     `LEAST_CHANCE`, a penalty chosen by cross-validation on mixtures of open records, and when its share is at least
     `LEAST_SHARE` and its shape is not one of the others again.
@@ -154,7 +155,9 @@ def prepare(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> System:
     top = int(max(peaks.mz[-1] for peaks in spectra))
     dense = dense_rows(spectra, top + 1)
     query, axis = dense[0, lowest:], np.arange(lowest, top + 1, dtype=float)
-    return System(query, dense[1:, lowest:], axis, axis / (0.5 + query + 0.03 * query**2))
+    # A list of principal ions leaves the weak ones out: what is weaker than all it has was not seen to be missing.
+    floor = max(0.5, float(spectrum.nominal.relative.min()))
+    return System(query, dense[1:, lowest:], axis, axis / (floor + query + 0.03 * query**2))
 
 
 def _solve(gram: FloatArray, target: FloatArray, chosen: tuple[int, ...]) -> FloatArray:

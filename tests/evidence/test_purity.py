@@ -171,3 +171,11 @@ def test_how_much_is_unexplained_is_said_in_words(build, entries, foreign: float
 def test_nothing_is_subtracted_where_nothing_is_explained(build, entries) -> None:
     outcome = judge_purity(build.spectrum({44: 60.0, 58: 100.0, 91: 30.0, 165: 8.0, 207: 9.0}), entries[:1])
     assert (outcome.residual, outcome.background) == (None, ())
+
+
+def test_a_list_of_principal_ions_is_not_called_unexplained_for_want_of_weak_ones(build, entries) -> None:
+    """From the newcomer's first hour: four typed ions of a known compound, its weaker ions not typed."""
+    typed = {mz: value for mz, value in NAPHTHALENE.items() if value >= 8.0}
+    weak = dict.fromkeys(range(37, 125, 6), 3.0)
+    outcome = judge_purity(build.spectrum(typed), [build.entry({**weak, **NAPHTHALENE}, name="naphthalene", number=9)])
+    assert outcome.explained_share > 0.6
