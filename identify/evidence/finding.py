@@ -7,7 +7,8 @@ quotient is the evidence. The table is `identify.evidence.weights`.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from functools import lru_cache
+from typing import NamedTuple
 
 from identify.evidence.weights import LOG_ODDS
 from identify.records import EvidenceItem, Verdict
@@ -15,8 +16,7 @@ from identify.records import EvidenceItem, Verdict
 SPEAKING = (Verdict.AGREES, Verdict.CONFLICTS)
 
 
-@dataclass(frozen=True, slots=True)
-class Finding:
+class Finding(NamedTuple):
     """What one check found, before it is weighed.
 
     Attributes
@@ -47,6 +47,7 @@ def not_assessed(kind: str, reason: str) -> Finding:
     return Finding(kind, Verdict.NOT_ASSESSED, reason)
 
 
+@lru_cache(maxsize=4096)  # two thirds of what is found for a candidate was found for another one too
 def weigh(finding: Finding) -> EvidenceItem:
     """Evidence item of a finding, with the measured log-odds of its cell.
 

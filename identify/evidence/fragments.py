@@ -2,9 +2,6 @@
 
 from __future__ import annotations
 
-import numpy as np
-from numpy.typing import NDArray
-
 from identify.evidence.facts import FormulaFacts, QueryFacts
 from identify.evidence.finding import Finding, not_assessed
 from identify.records import AlignedPeaks, FloatArray, Verdict
@@ -14,6 +11,8 @@ EXTRA = "ions only in the query"
 
 NOTABLE = 5.0
 """Relative intensity (% of base) from which an ion that only one spectrum has is named."""
+GRAVE = ("some", "many")
+"""Shares from which ions that only one spectrum has are a conflict."""
 SOURCE = (
     "Ions of the reference above 10 % must be present, extra ions are reviewed for background and co-elution (EPA 8260 family, "
     "rules for tentatively identified compounds); weighed on open EI records at equal cosine similarity"
@@ -41,11 +40,10 @@ def check_missing_ions(facts: QueryFacts, aligned: AlignedPeaks) -> Finding:
     """
     if not aligned.mz.size or not aligned.entry.any():
         return not_assessed(MISSING, "There is no m/z range that both spectra cover.")
-    absent = np.flatnonzero((aligned.query <= 0.1 * aligned.entry) & (aligned.entry >= max(NOTABLE, 2.0 * facts.floor)))
-    lost = _strongest(aligned.mz, aligned.entry, absent)
+    lost = _strongest_alone(aligned.mz, aligned.entry, aligned.query, max(NOTABLE, 2.0 * facts.floor))
     share = sum(mz * value for mz, value in lost) / float(aligned.entry @ aligned.mz)
     named = _list([mz for mz, _ in lost])
-    size = next(word for edge, word in ((1e-9, "none"), (0.05, "few"), (0.2, "some"), (2.0, "many")) if share <= edge)
+    size = _size_of(share)
     if size == "none":
         verdict, reason = Verdict.AGREES, "Every notable ion of the entry is in the query."
     elif size == "few":
@@ -80,19 +78,18 @@ def check_extra_ions(facts: QueryFacts, aligned: AlignedPeaks, formula: FormulaF
     """
     if not aligned.mz.size or not aligned.query.any():
         return not_assessed(EXTRA, "There is no m/z range that both spectra cover.")
-    extra = np.flatnonzero((aligned.entry <= 0.1 * aligned.query) & (aligned.query >= NOTABLE))
-    found = _strongest(aligned.mz, aligned.query, extra)
+    found = _strongest_alone(aligned.mz, aligned.query, aligned.entry, NOTABLE)
     counted = [(mz, value) for mz, value in found if mz not in BACKGROUND]
     share = sum(mz * value for mz, value in counted) / float(aligned.query @ aligned.mz)
-    foreign = sorted(mz for mz, _ in counted if formula is not None and not _reachable(formula, mz))
     named = _list([mz for mz, _ in counted])
     background = sorted({BACKGROUND[mz] for mz, _ in found if mz in BACKGROUND})
-    size = next(word for edge, word in ((1e-9, "none"), (0.05, "few"), (0.2, "some"), (2.0, "many")) if share <= edge)
-    cell = size + (", foreign" if foreign and size in ("some", "many") else "")
+    size = _size_of(share)
+    foreign = sorted(mz for mz, _ in counted if not _reachable(formula, mz)) if formula and size in GRAVE else []
+    cell = size + (", foreign" if foreign else "")
     aside = f" Named background left aside: {', '.join(background)}." if background else ""
     if size == "none":
         verdict, reason = Verdict.AGREES, "The entry has every notable ion of the query." + aside
-    elif foreign and size != "few":
+    elif foreign:
         verdict = Verdict.CONFLICTS
         reason = f"m/z {_list(foreign)} cannot come from this formula: a second compound or another candidate." + aside
     elif size == "few":
@@ -116,10 +113,15 @@ def _reachable(formula: FormulaFacts, mz: int) -> bool:
     return any(0 < place < reachable.size and bool(reachable[place]) for place in (mz, mz - 1, mz - 2))
 
 
-def _strongest(mz: FloatArray, intensity: FloatArray, places: NDArray[np.intp]) -> list[tuple[int, float]]:
-    """The chosen peaks, strongest first."""
-    chosen = zip(mz[places].tolist(), intensity[places].tolist(), strict=True)
-    return sorted(((int(place), value) for place, value in chosen), key=lambda peak: -peak[1])
+def _strongest_alone(mz: FloatArray, own: FloatArray, other: FloatArray, least: float) -> list[tuple[int, float]]:
+    """Peaks of at least `least` of which the other spectrum has a tenth or less, strongest first."""
+    strong = (own >= least).nonzero()[0]
+    chosen = zip(mz[strong].tolist(), own[strong].tolist(), other[strong].tolist(), strict=True)
+    return sorted([(int(place), value) for place, value, rest in chosen if rest <= 0.1 * value], key=lambda p: -p[1])
+
+
+def _size_of(share: float) -> str:
+    return "none" if share <= 1e-9 else "few" if share <= 0.05 else "some" if share <= 0.2 else "many"
 
 
 def _list(values: list[int]) -> str:

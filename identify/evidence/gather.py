@@ -36,7 +36,7 @@ def gather_evidence(
     tuple of EvidenceItem
         One per check, always in the same order.
     """
-    return tuple(weigh(finding) for finding in examine(query, entry, aligned, settings, facts))
+    return tuple([weigh(finding) for finding in examine(query, entry, aligned, settings, facts)])
 
 
 def examine(

@@ -5,6 +5,8 @@ Is the molecular ion where the formula puts it, does anything lie above it, are 
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 from identify.chem.structures import compound_classes
 from identify.errors import StructureError
 from identify.evidence.class_ions import SELDOM_WITH_M
@@ -256,16 +258,20 @@ def improbable_loss(dense: tuple[float, ...], formula: FormulaFacts) -> tuple[fl
     mass = formula.nominal_mass
     carbon = CARBON_13 * formula.carbons + formula.ratio(1) * 0.3
     worst, lost = 0.0, 0
-    excused = {loss for symbol, losses in HALOGEN_LOSSES.items() if formula.formula.count(symbol) for loss in losses}
-    for loss in IMPROBABLE_LOSSES:
-        if loss in excused:
-            continue
+    for loss in _improbable_losses(formula):
         mz = mass - loss
         if 1 <= mz < len(dense) and dense[mz] > worst:
             left = dense[mz] - 1.2 * carbon * dense[mz - 1]
             if left > worst:
                 worst, lost = left, loss
     return worst, lost
+
+
+@lru_cache(maxsize=20_000)
+def _improbable_losses(formula: FormulaFacts) -> tuple[int, ...]:
+    """`IMPROBABLE_LOSSES` without those that halogens or boron of the formula make probable."""
+    excused = {loss for symbol, losses in HALOGEN_LOSSES.items() if formula.formula.count(symbol) for loss in losses}
+    return tuple(loss for loss in IMPROBABLE_LOSSES if loss not in excused)
 
 
 def check_losses(facts: QueryFacts, formula: FormulaFacts | None, entry: Entry) -> Finding:
