@@ -35,11 +35,24 @@ UNLISTED_NAMES: Final = (
     "no rings or double bonds",
     "heavy atoms",
     "formula not known",
+    "derivative",
     *FROM_BEST,
 )
-ELSEWHERE_NAMES: Final = ("log-odds of the best candidate", "lead over the next formula", *FROM_BEST)
+ELSEWHERE_NAMES: Final = (
+    "log-odds of the best candidate",
+    "lead over the next formula",
+    "derivative",
+    "second candidate behind",
+    "fifth candidate behind",
+    "tenth candidate behind",
+    *FROM_BEST,
+)
 MOST_LEAD: Final = 6.0
 """A lead of more than this (log-odds) is no longer looked at; also the lead of a candidate without rivals."""
+PROFILE: Final = (1, 4, 9)
+"""Places of the candidates whose distance to the first one is looked at."""
+MOST_BEHIND: Final = 10.0
+"""No distance is larger; also that of a place without a candidate."""
 _COLUMNS: Final = [NAMES.index(name) for name in FROM_BEST]
 
 
@@ -121,21 +134,56 @@ def group_isomers(entries: Sequence[Entry], features: FloatArray, log_odds: Floa
                 min(lead, MOST_LEAD),
                 share,
                 float(np.log(members.size)),
-                *_composition(entries[best]),
+                *describe_composition(entries[best]),
                 float(not keys[best]),
+                float(bool(entries[best].measured_as)),
                 *features[best, _COLUMNS],
             ]
         )
     ranked = sorted(best_of_group, reverse=True)
     lead = ranked[0] - ranked[1] if len(ranked) > 1 else MOST_LEAD
     top = int(np.argmax(log_odds))
-    elsewhere = np.array([float(log_odds[top]), min(lead, MOST_LEAD), *features[top, _COLUMNS]])
+    derivative = float(bool(entries[top].measured_as))
+    behind = measure_distances(log_odds)
+    elsewhere = np.array([log_odds[top], min(lead, MOST_LEAD), derivative, *behind, *features[top, _COLUMNS]])
     names = tuple("" if key.startswith("#") else key for key in places)
     return Groups(of_candidate, names, np.array(rows), elsewhere)
 
 
-def _composition(entry: Entry) -> tuple[float, float, float]:
-    """Rings plus double bonds, whether there are none, and the logarithm of the number of heavy atoms."""
+def measure_distances(log_odds: FloatArray) -> list[float]:
+    """How far the candidates at the places of `PROFILE` are behind the first one.
+
+    Parameters
+    ----------
+    log_odds : array of shape (n_candidates,)
+
+    Returns
+    -------
+    list of float
+        Natural log-odds, at least 0 and at most `MOST_BEHIND`.
+
+    Examples
+    --------
+    >>> measure_distances(np.array([1.0, 3.0]))
+    [2.0, 10.0, 10.0]
+    """
+    ranked = np.sort(log_odds)[::-1]
+    return [
+        min(float(ranked[0] - ranked[place]), MOST_BEHIND) if place < ranked.size else MOST_BEHIND for place in PROFILE
+    ]
+
+
+def describe_composition(entry: Entry) -> tuple[float, float, float]:
+    """Rings plus double bonds, whether there are none, and the logarithm of the number of heavy atoms; zeros if not known.
+
+    Parameters
+    ----------
+    entry : Entry
+
+    Returns
+    -------
+    tuple of float
+    """
     facts = formula_facts(entry.formula_as_measured or entry.identity.formula)
     if facts is None:
         return 0.0, 0.0, 0.0

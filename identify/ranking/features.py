@@ -118,6 +118,8 @@ class Tilt(NamedTuple):
         Logarithm of the ratio of intensities from its mean, with the tilt and without it; `left` is 0 where there is no pair.
     straight : array of shape (n_peaks,)
         The entry's intensities tilted as the query's are.
+    slope : array of shape (n_entries,)
+        Of ``ln(query / entry)``, per m/z.
     """
 
     weight: FloatArray
@@ -125,6 +127,7 @@ class Tilt(NamedTuple):
     off: FloatArray
     left: FloatArray
     straight: FloatArray
+    slope: FloatArray
 
 
 def pair_up(query: CleanSpectrum, entries: Sequence[CleanSpectrum]) -> FlatPairs:
@@ -269,11 +272,11 @@ def remove_tilt(pairs: FlatPairs) -> Tilt:
     slope = pairs.total(weight * distance * off) / (pairs.total(weight * distance**2) + total * TILT_RANGE_DA**2)
     tilt = slope[owner] * distance
     left = np.where(matched, off - tilt, 0.0)
-    return Tilt(weight, total, off, left, pairs.entry * np.exp(np.clip(tilt, -5.0, 5.0)))
+    return Tilt(weight, total, off, left, pairs.entry * np.exp(np.clip(tilt, -5.0, 5.0)), slope)
 
 
 def _ratios(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
-    mz, (weight, total, off, left, straight) = pairs.mz.astype(np.float64), remove_tilt(pairs)
+    mz, (weight, total, off, left, straight, _) = pairs.mz.astype(np.float64), remove_tilt(pairs)
     own, other = np.sqrt(mz * pairs.query), np.sqrt(mz * straight)  # weights of the cosine named "root"
     whole = _from_cut(query, pairs, query.nominal.mz * query.nominal.intensity) * pairs.scale
     heavy = weight * mz

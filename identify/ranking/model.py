@@ -28,28 +28,45 @@ import numpy as np
 from identify.ranking.alternatives import ELSEWHERE_NAMES, UNLISTED_NAMES
 from identify.ranking.coefficients import COEFFICIENTS
 from identify.ranking.features import NAMES
+from identify.ranking.ions import CLOSE_NAMES, ION_NAMES, STATES
 from identify.records import EvidenceItem, Explanation, FloatArray, MolecularIonEstimate
 
 HEADINGS: Final = {
     "likeness": ("cosine", "reverse", "forward"),
     "intensity ratios": ("deviation",),
     "peaks missing": ("entry peaks missing", "query peaks missing", "strongest entry peak missing"),
+    "tilt": ("tilt",),
     "highest ions": ("same highest", "query goes", "entry goes"),
     "measurement": ("entry peaks", "query peaks", "peaks in common", "low energy", "range in common"),
 }
 """Headings under which the spectral parts are shown, with the beginnings of the feature names they take, first match wins."""
 
+SPECTRAL_NAMES: Final = (*NAMES, *CLOSE_NAMES)
+"""Features of a draft: those of the whole spectra, then tilt and ions."""
 _PLACES: Final = {
     heading: tuple(
         place
-        for place, name in enumerate(NAMES)
-        if heading == next(key for key, starts in HEADINGS.items() if name.startswith(starts))
+        for place, name in enumerate(SPECTRAL_NAMES)
+        if name not in ION_NAMES and heading == next(key for key, starts in HEADINGS.items() if name.startswith(starts))
     )
     for heading in HEADINGS
 }
-"""Columns of `NAMES` under each heading."""
+"""Columns of all but the ions under each heading."""
+IONS_HEADING: Final = "ions one by one"
+_ION_PLACES: Final = {
+    state: np.array(
+        [place for place, name in enumerate(SPECTRAL_NAMES) if name in ION_NAMES and name.endswith(f", {state}")]
+    )
+    for state in STATES
+}
+"""Columns of the ions in each state, whatever their intensity."""
 
-LINEAR_PARTS: Final = {"spectra": NAMES, "unlisted": UNLISTED_NAMES, "elsewhere": ELSEWHERE_NAMES}
+LINEAR_PARTS: Final = {
+    "shortlist": NAMES,
+    "spectra": SPECTRAL_NAMES,
+    "unlisted": UNLISTED_NAMES,
+    "elsewhere": ELSEWHERE_NAMES,
+}
 """Linear parts of the model with the names of their features."""
 
 MASS_FLOOR: Final = 0.02
@@ -90,10 +107,11 @@ class RankingModel:
     ----------
     provenance : str
         Script, data and date.
+    shortlist : Linear
+        Log-odds by which all entries found are sorted, over `identify.ranking.features.NAMES`.
     spectra : Linear
-        Log-odds from the spectra alone, over `identify.ranking.features.NAMES`; 0 for a typical right entry.
-    spectra_weight : float
-        What that is worth once the evidence has spoken (both look at the same peaks in part).
+        What the spectra are worth beside the evidence, which looks at some of the same peaks, over `SPECTRAL_NAMES`; 0 for a
+        typical right entry.
     evidence_weights : mapping of str to float
         What the log-odds of each kind of evidence are worth beside the spectra; 1 for a kind not named.
     mass_weight : float
@@ -109,8 +127,8 @@ class RankingModel:
     """
 
     provenance: str
+    shortlist: Linear
     spectra: Linear
-    spectra_weight: float
     evidence_weights: Mapping[str, float]
     mass_weight: float
     unlisted: Linear
@@ -158,30 +176,34 @@ def default_model() -> RankingModel:
     return build_model(COEFFICIENTS)
 
 
-def explain_spectra(model: RankingModel, features: FloatArray, weight: float = 1.0) -> Explanation:
-    """What the spectra say for one entry, under the headings of `HEADINGS`.
+def explain_spectra(model: RankingModel, features: FloatArray) -> Explanation:
+    """What the spectra say for one entry, under the headings of `HEADINGS` and, ion by ion, under `IONS_HEADING`.
 
     Parameters
     ----------
     model : RankingModel
     features : array of shape (n_features,)
-        One row of `identify.ranking.features.compare_with_entries`.
-    weight : float
-        Factor on every part: `RankingModel.spectra_weight` where evidence speaks beside the spectra.
+        In the order of `SPECTRAL_NAMES`.
 
     Returns
     -------
     Explanation
-        Its value is ``weight * model.spectra.value(features)``.
+        Its value is ``model.spectra.value(features)``.
     """
-    values = (model.spectra.parts(features) * weight).tolist()
-    seen = features.tolist()
+    weighed = model.spectra.parts(features)
+    values, seen = weighed.tolist(), np.round(features, 9).tolist()
     parts = []
     for heading, places in _PLACES.items():
-        found = tuple(Explanation(NAMES[place], values[place], f"{seen[place]:.3g}") for place in places)
+        found = tuple(Explanation(SPECTRAL_NAMES[place], values[place], f"{seen[place]:.3g}") for place in places)
         parts.append(Explanation(heading, _total(found), parts=found))
+    counted_once = len(SPECTRAL_NAMES) - len(ION_NAMES) // 2  # from there on the same ions count by m/z
+    states = tuple(
+        Explanation(state, float(weighed[places].sum()), f"{features[places[places < counted_once]].sum():.0f} ions")
+        for state, places in _ION_PLACES.items()
+    )
+    parts.append(Explanation(IONS_HEADING, _total(states), parts=states))
     if model.spectra.constant:
-        parts.append(Explanation("constant", model.spectra.constant * weight))
+        parts.append(Explanation("constant", model.spectra.constant))
     return Explanation("spectra", _total(parts), parts=tuple(parts))
 
 
@@ -198,7 +220,7 @@ def explain_candidate(
     ----------
     model : RankingModel
     spectra : Explanation
-        From `explain_spectra`, weighed with `RankingModel.spectra_weight`.
+        From `explain_spectra`.
     evidence : sequence of EvidenceItem
     nominal_mass : int or None
         Of the formula as measured; None when it is not known.

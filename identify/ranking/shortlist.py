@@ -5,13 +5,20 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+import numpy as np
+
 from identify.ranking.features import compare_with_entries
 from identify.ranking.grouping import Match, compound_key
+from identify.ranking.ions import compare_closely
 from identify.ranking.model import RankingModel, default_model, explain_spectra
 from identify.records import AlignedPeaks, CleanSpectrum, Entry, Explanation, FloatArray
 from identify.settings import Settings
 from identify.spectra.align import align
 
+N_CLOSER = 50
+"""Compounds whose best entry is compared ion by ion."""
+EQUAL = 9
+"""Decimals of log-odds: what differs by less is a tie, whatever the rounding of the machine."""
 N_DRAFTS = 25
 """Drafts kept at least, however few candidates are reported, so that the probabilities have rivals to weigh."""
 
@@ -25,7 +32,7 @@ class Draft:
     key : str
         See `identify.ranking.grouping.compound_key`.
     features : array of shape (n_features,)
-        Row of `identify.ranking.features.compare_with_entries`.
+        In the order of `identify.ranking.model.SPECTRAL_NAMES`.
     match : Explanation
         Log-odds from the spectra as they count beside the evidence, part by part.
     n_entries : int
@@ -70,7 +77,7 @@ def shortlist(
     features = compare_with_entries(
         spectrum, [entry.spectrum for entry in entries], [entry.acquisition.energy_ev for entry in entries]
     )
-    log_odds = model.spectra.value(features)
+    log_odds = np.round(model.shortlist.value(features), EQUAL)
     best: dict[str, int] = {}
     n_entries: dict[str, int] = {}
     for place, entry in enumerate(entries):
@@ -78,21 +85,25 @@ def shortlist(
         n_entries[key] = n_entries.get(key, 0) + 1
         if key not in best or log_odds[place] > log_odds[best[key]]:
             best[key] = place
-    ranked = sorted(best, key=lambda key: (-log_odds[best[key]], best[key]))
+    keys = sorted(best, key=lambda key: (-log_odds[best[key]], best[key]))[: max(settings.top, N_CLOSER)]
+    places = [best[key] for key in keys]
+    closer = compare_closely(spectrum, [entries[place].spectrum for place in places])
+    rows = np.concatenate([features[places], closer], axis=1)
+    order = np.argsort(-np.round(model.spectra.value(rows), EQUAL), kind="stable")
     drafts = []
-    for key in ranked[: max(settings.top, N_DRAFTS)]:
-        match, row = matches[best[key]], features[best[key]]
+    for number in order[: max(settings.top, N_DRAFTS)].tolist():
+        match, row = matches[places[number]], rows[number]
         drafts.append(
             Draft(
-                key,
+                keys[number],
                 match.entry,
                 match.library,
                 align(spectrum, match.entry.spectrum),
                 match.hit.cosine,
                 match.hit.reverse,
                 row,
-                explain_spectra(model, row, model.spectra_weight),
-                n_entries[key],
+                explain_spectra(model, row),
+                n_entries[keys[number]],
             )
         )
     return tuple(drafts)

@@ -1,33 +1,41 @@
 """How often is the first candidate right, and do the probabilities say so? On the open records, compounds held out.
 
-    python tests/benchmarks/accuracy.py              five folds, nested: parameters from four folds, measured on the fifth
-    python tests/benchmarks/accuracy.py --quick      the shipped parameters on one fold (its compounds took part in their fit)
-    python tests/benchmarks/accuracy.py --degrade    also with noise, cut low masses, tilt, co-elution, a thinned library
+    python tests/benchmarks/accuracy.py                     ranks, confidence, open set, errors and ceiling
+    python tests/benchmarks/accuracy.py --degrade           noise, cut low masses, tilt, co-elution, a thinned library
+    python tests/benchmarks/accuracy.py --ablate            each kind of evidence left out
+    python tests/benchmarks/accuracy.py --plot FILE.svg     the reliability plot of the open set
+    python tests/benchmarks/accuracy.py --quick             the shipped parameters on one fold (which took part in their fit)
 
-Protocol: see `ranking_data`. Every query goes through the product's own path: index → shortlist → evidence → rank. Baselines
-rank the same compounds by one score from an exact search of the same library.
+Five folds, nested: parameters from four folds of compounds, measured on the fifth. Protocol: see `ranking_data`. Every query
+goes through the product's own path: index → shortlist → evidence → rank. Baselines rank the same compounds by one score from an
+exact search of the same library. What the fit needs is kept in a scratch folder (`fit_ranking`) for the next run.
 """
 
 from __future__ import annotations
 
 import argparse
 import time
+from collections import Counter
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
+from pathlib import Path
 
 import numpy as np
-from fit_ranking import KINDS, collect, fit_model, is_isomer
+from fit_ranking import KINDS, fit_folds, is_isomer
 from numpy.typing import NDArray
 from ranking_data import N_FOLDS, SEED, Benchmark, load_benchmark
+from ranking_spoiled import ways_to_spoil
 
 from identify.evidence.facts import build_query_facts
 from identify.evidence.gather import gather_evidence
 from identify.evidence.molecular_ion import estimate_molecular_ion
 from identify.index import SearchIndex, search_index
+from identify.ranking.features import NAMES
 from identify.ranking.model import RankingModel, default_model
 from identify.ranking.rank import Ranking, rank
 from identify.ranking.shortlist import Draft, shortlist
-from identify.records import CleanSpectrum, Entry, EvidenceItem, MolecularIonEstimate, Peaks, Query
+from identify.records import CleanSpectrum, Entry, EvidenceItem, MolecularIonEstimate, Query
 from identify.settings import Settings, Weighting
 from identify.similarity.scores import composite_score
 from identify.spectra.align import align
@@ -39,6 +47,8 @@ BASELINES = {
     "cosine m/z^3 I^0.6": Weighting(mz_power=3.0, intensity_power=0.6),
 }
 FALSE_ALARMS = 0.012
+LEAST_LIKENESS = 0.6
+"""A reference less like the query than this is taken for a wrong record or one of other conditions."""
 Floats = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
@@ -59,6 +69,8 @@ class Answer:
     inside: float
     """Confidence that the compound is in the library."""
     class_chance: float = 0.0
+    first: int = -1
+    """Id of the entry of the first candidate."""
 
 
 @dataclass(eq=False)
@@ -94,6 +106,7 @@ def judge(bench: Benchmark, place: int, present: bool, ranking: Ranking) -> Answ
         ranking.claim.group_probability,
         ranking.in_library_probability,
         ranking.claim.class_probability,
+        best.entry.id if best else -1,
     )
 
 
@@ -259,94 +272,36 @@ def print_reliability(answers: Sequence[Answer]) -> None:
         print(f"  {level:<9}", "  ".join(cells))
 
 
-def degradations() -> dict[str, Callable[[Query], Query]]:
-    """Named ways to spoil a query."""
-    rng = np.random.default_rng(SEED)
-
-    def changed(query: Query, mz: Floats, intensity: Floats, lowest: int | None = None) -> Query:
-        kept = intensity > 1e-3 * intensity.max()
-        spectrum = query.spectrum
-        peaks = Peaks(mz[kept], intensity[kept])
-        return replace(query, spectrum=CleanSpectrum(peaks, None, lowest or spectrum.lowest_mz, spectrum.steps))
-
-    def noise(share: float) -> Callable[[Query], Query]:
-        def spoil(query: Query) -> Query:
-            p = query.spectrum.nominal
-            factor = np.exp(rng.normal(0, share, len(p)))
-            floor = np.abs(rng.normal(0, 0.02 * share, len(p))) * p.intensity.max()
-            return changed(query, p.mz, p.intensity * factor + floor)
-
-        return spoil
-
-    def cut(lowest: int) -> Callable[[Query], Query]:
-        def spoil(query: Query) -> Query:
-            p = query.spectrum.nominal
-            kept = p.mz >= lowest
-            if kept.sum() < 3:
-                return query
-            return changed(query, p.mz[kept], p.intensity[kept], max(lowest, query.spectrum.lowest_mz))
-
-        return spoil
-
-    def tilt(share: float) -> Callable[[Query], Query]:
-        def spoil(query: Query) -> Query:
-            p = query.spectrum.nominal
-            place = (p.mz - p.mz[0]) / max(p.mz[-1] - p.mz[0], 1.0)
-            return changed(query, p.mz, p.intensity * (1 + share * (2 * place - 1)))
-
-        return spoil
-
-    named = {f"intensity noise {share:.0%}": noise(share) for share in (0.1, 0.3, 0.6)}
-    named |= {f"nothing below m/z {lowest}": cut(lowest) for lowest in (50, 70)}
-    named |= {f"tilt {share:+.0%}": tilt(share) for share in (-0.3, 0.3)}
-    return named
-
-
-def mix_with(bench: Benchmark, share: float) -> Callable[[Query], Query]:
-    """A query with another record added: `share` of the base peak of the sum of both."""
-    rng = np.random.default_rng(SEED + 1)
-
-    def spoil(query: Query) -> Query:
-        other = bench.entries[int(rng.choice(bench.extra))].spectrum.nominal
-        own = query.spectrum.nominal
-        axis = np.union1d(own.mz, other.mz)
-        total = np.zeros(axis.size)
-        total[np.searchsorted(axis, own.mz)] += (1 - share) * own.relative
-        total[np.searchsorted(axis, other.mz)] += share * other.relative
-        kept = (axis >= query.spectrum.lowest_mz) & (total > 0.1)
-        spectrum = CleanSpectrum(Peaks(axis[kept], total[kept]), None, query.spectrum.lowest_mz)
-        return replace(query, spectrum=spectrum)
-
-    return spoil
-
-
 def print_degraded(
     bench: Benchmark, places: Sequence[int], models: dict[int, RankingModel], index: SearchIndex
 ) -> None:
     """Accuracy and calibration when queries or library get worse; the open-set library."""
     some = places[::4]
-    ways = degradations() | {f"co-elution {share:.0%}": mix_with(bench, share) for share in (0.1, 0.3, 0.5)}
-    print(
-        f"\nDegraded queries, open set ({len(some)} queries): rank-1 of those present, mean probability, ECE compound / group"
-    )
-    for name, change in {"as measured": lambda query: query, **ways}.items():
-        answers, _ = run_product(bench, index, some, models, bench.absent, change)
-        c = columns(answers)
-        right, group_right = c["right"].astype(bool), c["group_right"].astype(bool)
-        print(
-            f"{name:<28} {right[c['present'].astype(bool)].mean():.3f}  p {c['compound'].mean():.3f} right {right.mean():.3f}"
-            f"  ECE {calibration_error(c['compound'], right):.3f} / {calibration_error(c['group'], group_right):.3f}"
-        )
-    rng = np.random.default_rng(SEED + 2)
+    print(f"\nDegraded queries, open set ({len(some)} queries)\n{DEGRADED_HEAD}")
+    for name, change in {"as measured": lambda query, rng: query, **ways_to_spoil(bench)}.items():
+        rng = np.random.default_rng(SEED + 1)
+        answers, _ = run_product(bench, index, some, models, bench.absent, partial(change, rng=rng))
+        print(degraded_line(name, answers), flush=True)
+    rng = np.random.default_rng(SEED + 1)
     gone = {key for key in bench.by_key if rng.random() > 0.1}
-    thin = bench.build_index(Settings(), gone)
-    answers, _ = run_product(bench, thin, some, models, gone)
+    answers, _ = run_product(bench, bench.build_index(Settings(), gone), some, models, gone)
+    print(degraded_line("library thinned to 10 %", answers))
+
+
+DEGRADED_HEAD = (
+    f"{'':<28}{'rank-1 of those present':>24}{'mean p':>8}{'right':>8}{'ECE cmpd':>10}"
+    f"{'mean p':>9}{'right':>8}{'ECE grp':>9}"
+)
+
+
+def degraded_line(name: str, answers: Sequence[Answer]) -> str:
+    """Rank-1, mean probability, share right and calibration error at compound and group level."""
     c = columns(answers)
-    right, group_right = c["right"].astype(bool), c["group_right"].astype(bool)
-    print(
-        f"{'library thinned to 10 %':<28} {right[c['present'].astype(bool)].mean():.3f}  p {c['compound'].mean():.3f} "
-        f"right {right.mean():.3f}  ECE {calibration_error(c['compound'], right):.3f} / "
-        f"{calibration_error(c['group'], group_right):.3f}"
+    right, group_right, present = (c[key].astype(bool) for key in ("right", "group_right", "present"))
+    return (
+        f"{name:<28}{right[present].mean():>24.3f}{c['compound'].mean():>8.3f}{right.mean():>8.3f}"
+        f"{calibration_error(c['compound'], right):>10.3f}{c['group'].mean():>9.3f}{group_right.mean():>8.3f}"
+        f"{calibration_error(c['group'], group_right):>9.3f}"
     )
 
 
@@ -379,42 +334,196 @@ def print_ablation(
     measure("without any evidence", KINDS, mass=False)
 
 
-def print_errors(bench: Benchmark, answers: list[Answer], kept: list[Prepared]) -> None:
-    """What the wrong answers of the closed set are."""
-    counts: dict[str, int] = {}
-    for answer, ready in zip(answers, kept, strict=True):
-        if answer.right:
-            continue
-        entry = bench.entries[answer.place]
-        copies = [bench.entries[other] for other in bench.by_key[bench.keys[answer.place]] if other != answer.place]
-        copies = [other for other in copies if other.id not in {bench.entries[place].id for place in bench.queries}]
-        names = {other.identity.name.casefold() for other in copies} | {entry.identity.name.casefold()}
-        first = ready.drafts[0]
-        best = max(composite_score(align(entry.spectrum, other.spectrum), Weighting()) for other in copies)
-        wrong = composite_score(align(entry.spectrum, first.entry.spectrum), Weighting())
-        if first.entry.identity.name.casefold() in names:
-            kind = "same name, another structure in the source"
-        elif best < 0.6:
-            kind = "reference unlike the query (below 0.6): wrong record or other conditions"
-        elif is_isomer(first.entry, entry):
-            kind = "isomer " + (
-                "matches better than the right one" if wrong > best else "matches less well: ours to mend"
-            )
-        else:
-            kind = "other formula " + (
-                "matches better than the right one" if wrong > best else "matches less well: ours to mend"
-            )
-        counts[kind] = counts.get(kind, 0) + 1
-    print(f"\nWrong first candidates of the closed set: {sum(counts.values())} of {len(answers)}")
-    for kind, n in sorted(counts.items(), key=lambda pair: -pair[1]):
+BETTER = "matches better than every reference of the right compound"
+WORSE = "matches less well: ours to mend"
+
+
+def names_of(entry: Entry) -> set[str]:
+    """Names of an entry, without case and blanks."""
+    return {"".join(name.casefold().split()) for name in (entry.identity.name, *entry.identity.other_names) if name}
+
+
+def likeness(a: Entry, b: Entry) -> float:
+    """Composite similarity of two entries."""
+    return composite_score(align(a.spectrum, b.spectrum), Weighting())
+
+
+def kind_of_error(bench: Benchmark, answer: Answer, held: set[int]) -> str:
+    """Why the first candidate is wrong, as far as the records tell."""
+    truth, first = bench.entries[answer.place], bench.by_id[answer.first]
+    copies = [bench.entries[other] for other in bench.by_key[bench.keys[answer.place]] if other not in held]
+    names = names_of(truth).union(*(names_of(copy) for copy in copies))
+    best = max(likeness(truth, copy) for copy in copies)
+    if names & names_of(first) and is_isomer(first, truth):
+        return "same name and formula, another structure or none in the source"
+    if best < LEAST_LIKENESS:
+        return f"every reference unlike the query (below {LEAST_LIKENESS}): wrong record or other conditions"
+    kind = "isomer" if is_isomer(first, truth) else "other formula"
+    better = likeness(truth, first) > best
+    return f"{kind} {BETTER if better else WORSE}"
+
+
+def print_errors(bench: Benchmark, answers: list[Answer]) -> None:
+    """What the wrong answers of the closed set are, and what follows for the ceiling."""
+    held = set(bench.queries)
+    wrong = [(kind_of_error(bench, answer, held), answer) for answer in answers if not answer.right]
+    counts = Counter(kind for kind, _ in wrong)
+    print(f"\nWrong first candidates of the closed set: {len(wrong)} of {len(answers)}")
+    for kind, n in counts.most_common():
         print(f"  {n:>4}  {kind}")
+        named = [
+            (bench.entries[a.place].identity.name, bench.by_id[a.first].identity.name) for k, a in wrong if k == kind
+        ]
+        print("        " + "; ".join(f"{asked} → {told}" for asked, told in named[:4]))
+    ours = sum(n for kind, n in counts.items() if "ours to mend" in kind)
+    print(f"  rank-1 if none of ours were wrong {1 - (len(wrong) - ours) / len(answers):.3f}")
+    conflicts = counts["same name and formula, another structure or none in the source"]
+    print(f"  rank-1 with the same name and formula counted as right {1 - (len(wrong) - conflicts) / len(answers):.3f}")
+
+
+def print_ceiling(bench: Benchmark, answers: list[Answer], kept: list[Prepared]) -> None:
+    """How far any choice among the measures of likeness could get, and how far the isomers are within the replicate spread."""
+    names = [name for name in NAMES if name.startswith(("cosine", "reverse", "forward", "deviation"))]
+    by_any = np.zeros(len(answers), bool)
+    for number, (answer, ready) in enumerate(zip(answers, kept, strict=True)):
+        right = [draft.key == bench.keys[answer.place] for draft in ready.drafts]
+        if any(right):
+            rows = np.array([draft.features for draft in ready.drafts])
+            for name in names:
+                values = rows[:, NAMES.index(name)] * (-1 if name.startswith("deviation") else 1)
+                by_any[number] |= right[int(np.argmax(values))]
+    print(
+        f"\nCeiling: the right compound is first by at least one of {len(names)} measures of likeness {by_any.mean():.3f}"
+    )
+    found = np.mean(
+        [any(draft.key == bench.keys[a.place] for draft in r.drafts) for a, r in zip(answers, kept, strict=True)]
+    )
+    print(f"  among the candidates at all {found:.3f}")
+
+
+def write_reliability(answers: Sequence[Answer], path: Path) -> None:
+    """Reliability plot as SVG: share right over mean probability in ten bins, compound and group, 95 % intervals (Wilson)."""
+    c = columns(answers)
+    size, margin = 360, 44
+
+    def x(value: float) -> float:
+        return margin + value * size
+
+    def y(value: float) -> float:
+        return 16 + (1 - value) * size
+
+    lines = [
+        f'<svg xmlns="http://www.w3.org/2000/svg" width="{size + margin + 120}" height="{size + 60}" font-family="sans-serif" '
+        'font-size="12">',
+        f'<line x1="{x(0)}" y1="{y(0)}" x2="{x(1)}" y2="{y(1)}" stroke="#999" stroke-dasharray="4 4"/>',
+        f'<rect x="{x(0)}" y="{y(1)}" width="{size}" height="{size}" fill="none" stroke="#333"/>',
+    ]
+    for tick in (0.0, 0.2, 0.4, 0.6, 0.8, 1.0):
+        lines.append(f'<text x="{x(tick)}" y="{y(0) + 16}" text-anchor="middle">{tick:g}</text>')
+        lines.append(f'<text x="{x(0) - 6}" y="{y(tick) + 4}" text-anchor="end">{tick:g}</text>')
+    lines.append(f'<text x="{x(0.5)}" y="{y(0) + 36}" text-anchor="middle">probability stated</text>')
+    lines.append(f'<text x="{x(0)}" y="{y(1) - 4}">share right</text>')
+    for place, (level, truth, colour) in enumerate(
+        (("compound", "right", "#0b5394"), ("group", "group_right", "#b45f06"))
+    ):
+        chance, right = c[level].astype(float), c[truth].astype(bool)
+        bins = np.minimum((chance * 10).astype(int), 9)
+        for number in np.unique(bins):
+            inside = bins == number
+            low, high = wilson(int(right[inside].sum()), int(inside.sum()))
+            at, share = float(chance[inside].mean()), float(right[inside].mean())
+            lines.append(f'<line x1="{x(at)}" y1="{y(low)}" x2="{x(at)}" y2="{y(high)}" stroke="{colour}"/>')
+            lines.append(f'<circle cx="{x(at)}" cy="{y(share)}" r="4" fill="{colour}"/>')
+        error = calibration_error(chance, right)
+        top = y(0.16 - 0.06 * place)
+        lines.append(
+            f'<text x="{x(0.52)}" y="{top}" fill="{colour}">{level}: error {error:.3f}, n {chance.size}</text>'
+        )
+    path.write_text("\n".join([*lines, "</svg>", ""]), encoding="utf-8")
+
+
+def wilson(right: int, n: int, z: float = 1.96) -> tuple[float, float]:
+    """95 % interval of a share (Wilson 1927; formula from memory)."""
+    share, spread = right / n, z * z / n
+    centre = (share + spread / 2) / (1 + spread)
+    half = z * np.sqrt(share * (1 - share) / n + spread / (4 * n)) / (1 + spread)
+    return max(0.0, centre - half), min(1.0, centre + half)
+
+
+def run_baselines(
+    bench: Benchmark, indexes: tuple[SearchIndex, SearchIndex], places: Sequence[int]
+) -> dict[str, tuple[list[Answer], list[Answer]]]:
+    """Answers of the single scores in the closed and the open set."""
+    tables = {}
+    for name, weighting in BASELINES.items():
+        closed, lacking = (bench.build_index(Settings(weighting=weighting), gone) for gone in ((), bench.absent))
+        tables[name] = run_baseline(bench, closed, places, set()), run_baseline(bench, lacking, places, bench.absent)
+    tables["composite with peak ratios"] = (
+        run_baseline(bench, indexes[0], places, set(), composite=True),
+        run_baseline(bench, indexes[1], places, bench.absent, composite=True),
+    )
+    return tables
+
+
+def print_closed(
+    bench: Benchmark, places: Sequence[int], answers: list[Answer], tables: dict[str, tuple[list[Answer], list[Answer]]]
+) -> None:
+    """Ranks and confidence with every compound in the library."""
+    parts, ranks = subsets(bench, places), columns(answers)["rank"]
+    print("\nEvery compound in the library (closed set)      n   rank-1  rank-3  rank-10")
+    for name, (closed, _) in tables.items():
+        print(ranks_line(name, columns(closed)["rank"]))
+    for name, chosen in parts.items():
+        print(ranks_line("product" if name == "all" else f"product, {name}", ranks[chosen]))
+    for name, (closed, _) in tables.items():
+        print(ranks_line(f"  {name}, other contributor", columns(closed)["rank"][parts["other contributor only"]]))
+    print(spread_line("product", answers, bench))
+    print(f"\nClosed set, confidence\n{OPEN_HEAD}")
+    for name, (closed, _) in tables.items():
+        print(open_line(name, closed, calibrated=False))
+    print(open_line("product", answers, calibrated=True))
+
+
+def print_open(bench: Benchmark, answers: list[Answer], tables: dict[str, tuple[list[Answer], list[Answer]]]) -> None:
+    """Confidence with some compounds absent from the library."""
+    absent = sum(not answer.present for answer in answers)
+    print(f"\nOpen set: {absent} of {len(answers)} queries' compounds not in the library\n{OPEN_HEAD}")
+    for name, (_, lacking) in tables.items():
+        print(open_line(name, lacking, calibrated=False))
+    print(open_line("product", answers, calibrated=True))
+    print_reliability(answers)
+    c = columns(answers)
+    usable = ~c["present"].astype(bool) | np.array([has_usable_reference(bench, answer.place) for answer in answers])
+    flagged = flagged_absent(c["inside"][usable], c["present"][usable].astype(bool))
+    print(f"  absent flagged, present ones with a reference of at least {LEAST_LIKENESS} only: {flagged:.3f}")
+    rated = absent_by_isomers(answers)
+    print(f"  absent ones answered by an isomer that matches: {rated:.3f} of the absent")
+
+
+def has_usable_reference(bench: Benchmark, place: int) -> bool:
+    """Whether another record of the compound in the library resembles this one."""
+    held = set(bench.queries)
+    return any(
+        likeness(bench.entries[place], bench.entries[other]) >= LEAST_LIKENESS
+        for other in bench.by_key[bench.keys[place]]
+        if other not in held
+    )
+
+
+def absent_by_isomers(answers: Sequence[Answer]) -> float:
+    """Share of the absent compounds whose first candidate is an isomer."""
+    absent = [answer for answer in answers if not answer.present]
+    return float(np.mean([answer.group_right for answer in absent])) if absent else float("nan")
 
 
 def main() -> None:
-    """Print all tables."""
+    """Print the tables asked for."""
     asked = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     asked.add_argument("--quick", action="store_true", help="shipped parameters, one fold")
-    asked.add_argument("--degrade", action="store_true", help="degraded queries and library too")
+    asked.add_argument("--degrade", action="store_true", help="degraded queries and a thinned library, nothing else")
+    asked.add_argument("--ablate", action="store_true", help="evidence left out, nothing else")
+    asked.add_argument("--plot", type=Path, metavar="FILE", help="reliability plot of the open set, as SVG")
+    asked.add_argument("--no-baselines", action="store_true", help="the product alone")
     options = asked.parse_args()
     began, settings = time.perf_counter(), Settings()
     bench = load_benchmark()
@@ -423,51 +532,23 @@ def main() -> None:
         places = [place for place in places if bench.fold[bench.keys[place]] == 0]
         models = dict.fromkeys(range(N_FOLDS), default_model())
     else:
-        rows, trials = collect(bench, settings)
-        models = {f: fit_model(bench, rows, trials, [g for g in range(N_FOLDS) if g != f]) for f in range(N_FOLDS)}
-    print(f"{len(bench.entries)} records, {len(bench.queries)} held out, {len(places)} queries measured")
-    closed, lacking = bench.build_index(settings), bench.build_index(settings, bench.absent)
-
-    answers, kept = run_product(bench, closed, places, models, set())
-    parts = subsets(bench, places)
-    print("\nEvery compound in the library (closed set)      n   rank-1  rank-3  rank-10")
-    tables: dict[str, tuple[list[Answer], list[Answer]]] = {}
-    for name, weighting in BASELINES.items():
-        pair = [bench.build_index(replace(settings, weighting=weighting), gone) for gone in ((), bench.absent)]
-        tables[name] = (
-            run_baseline(bench, pair[0], places, set()),
-            run_baseline(bench, pair[1], places, bench.absent),
-        )
-        print(ranks_line(name, columns(tables[name][0])["rank"]))
-    tables["composite with peak ratios"] = (
-        run_baseline(bench, closed, places, set(), composite=True),
-        run_baseline(bench, lacking, places, bench.absent, composite=True),
-    )
-    print(ranks_line("composite with peak ratios", columns(tables["composite with peak ratios"][0])["rank"]))
-    ranks = columns(answers)["rank"]
-    for name, chosen in parts.items():
-        print(ranks_line("product" if name == "all" else f"product, {name}", ranks[chosen]))
-    published = columns(tables["cosine m/z^1.3 I^0.53"][0])["rank"]
-    print(ranks_line("  cosine, other contributor only", published[parts["other contributor only"]]))
-    print(spread_line("product", answers, bench))
-
-    print(f"\nClosed set, confidence\n{OPEN_HEAD}")
-    for name, (ours, _) in tables.items():
-        print(open_line(name, ours, calibrated=False))
-    print(open_line("product", answers, calibrated=True))
-
-    absent = sum(bench.keys[place] in bench.absent for place in places)
-    print(f"\nOpen set: {absent} of {len(places)} queries' compounds not in the library\n{OPEN_HEAD}")
-    open_answers, _ = run_product(bench, lacking, places, models, bench.absent)
-    for name, (_, ours) in tables.items():
-        print(open_line(name, ours, calibrated=False))
-    print(open_line("product", open_answers, calibrated=True))
-    print_reliability(open_answers)
-
-    print_ablation(bench, answers, kept, models)
-    print_errors(bench, answers, kept)
+        models = fit_folds(bench, settings)
+    print(f"{len(bench.entries)} records, {len(bench.queries)} held out, {len(places)} queries measured", flush=True)
     if options.degrade:
-        print_degraded(bench, places, models, lacking)
+        print_degraded(bench, places, models, bench.build_index(settings, bench.absent))
+    elif options.ablate:
+        print_ablation(bench, *run_product(bench, bench.build_index(settings), places, models, set()), models)
+    else:
+        closed, lacking = bench.build_index(settings), bench.build_index(settings, bench.absent)
+        tables = {} if options.no_baselines else run_baselines(bench, (closed, lacking), places)
+        answers, kept = run_product(bench, closed, places, models, set())
+        print_closed(bench, places, answers, tables)
+        print_errors(bench, answers)
+        print_ceiling(bench, answers, kept)
+        answers, _ = run_product(bench, lacking, places, models, bench.absent)
+        print_open(bench, answers, tables)
+        if options.plot:
+            write_reliability(answers, options.plot)
     print(f"\n{time.perf_counter() - began:.0f} s")
 
 

@@ -4,8 +4,17 @@ import numpy as np
 import pytest
 
 from identify.ranking.coefficients import COEFFICIENTS
-from identify.ranking.features import NAMES
-from identify.ranking.model import HEADINGS, as_coefficients, build_model, default_model, explain_spectra, mass_log_odds
+from identify.ranking.ions import ION_NAMES, STATES
+from identify.ranking.model import (
+    HEADINGS,
+    IONS_HEADING,
+    SPECTRAL_NAMES,
+    as_coefficients,
+    build_model,
+    default_model,
+    explain_spectra,
+    mass_log_odds,
+)
 from identify.records import MassEstimate, MolecularIonEstimate
 
 
@@ -28,17 +37,17 @@ def test_a_table_that_lacks_a_feature_is_refused() -> None:
 
 def test_the_explanation_of_the_spectra_is_their_log_odds() -> None:
     model = default_model()
-    row = np.random.default_rng(4).uniform(0, 1, len(NAMES))
+    row = np.random.default_rng(4).uniform(0, 1, len(SPECTRAL_NAMES))
     assert explain_spectra(model, row).value == pytest.approx(float(model.spectra.value(row)))
 
 
 def test_every_feature_is_shown_under_one_heading_and_no_name_counts_records() -> None:
-    shown = [
-        part.label for heading in explain_spectra(default_model(), np.zeros(len(NAMES))).parts for part in heading.parts
-    ]
-    assert sorted(shown) == sorted(NAMES)
-    assert set(HEADINGS) == {part.label for part in explain_spectra(default_model(), np.zeros(len(NAMES))).parts}
-    assert not [name for name in NAMES if "record" in name or "replicate" in name or "entries" in name]
+    explained = explain_spectra(default_model(), np.zeros(len(SPECTRAL_NAMES)))
+    shown = {heading.label: [part.label for part in heading.parts] for heading in explained.parts}
+    assert shown.pop(IONS_HEADING) == list(STATES)
+    assert sorted(name for names in shown.values() for name in names) == sorted(set(SPECTRAL_NAMES) - set(ION_NAMES))
+    assert set(HEADINGS) == set(shown)
+    assert not [name for name in SPECTRAL_NAMES if "record" in name or "replicate" in name or "entries" in name]
 
 
 def test_the_likelier_mass_weighs_more_and_an_unnamed_one_nothing() -> None:
