@@ -20,7 +20,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, fields
-from functools import cache
+from functools import cache, cached_property
 from typing import Any, Final
 
 import numpy as np
@@ -28,7 +28,7 @@ import numpy as np
 from identify.ranking.alternatives import ELSEWHERE_NAMES, UNLISTED_NAMES
 from identify.ranking.coefficients import COEFFICIENTS
 from identify.ranking.features import NAMES
-from identify.ranking.ions import CLOSE_NAMES, ION_NAMES, STATES
+from identify.ranking.ions import CLOSE_NAMES, COUNTED, ION_NAMES, LEVELS, STATES
 from identify.records import EvidenceItem, Explanation, FloatArray, MolecularIonEstimate
 
 HEADINGS: Final = {
@@ -53,13 +53,9 @@ _PLACES: Final = {
 }
 """Columns of all but the ions under each heading."""
 IONS_HEADING: Final = "ions one by one"
-_ION_PLACES: Final = {
-    state: np.array(
-        [place for place, name in enumerate(SPECTRAL_NAMES) if name in ION_NAMES and name.endswith(f", {state}")]
-    )
-    for state in STATES
-}
-"""Columns of the ions in each state, whatever their intensity."""
+_FIRST_ION: Final = len(SPECTRAL_NAMES) - len(ION_NAMES)
+_ION_SHAPE: Final = (len(COUNTED), len(LEVELS), len(STATES))
+"""The columns from `_FIRST_ION` on, unfolded."""
 
 LINEAR_PARTS: Final = {
     "shortlist": NAMES,
@@ -73,7 +69,7 @@ MASS_FLOOR: Final = 0.02
 """Probability taken for a nominal mass that the estimate from the query does not name."""
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Linear:
     """A weighted sum of named features, each seen from its centre.
 
@@ -88,9 +84,14 @@ class Linear:
     weights: tuple[float, ...]
     centres: tuple[float, ...]
 
+    @cached_property
+    def _arrays(self) -> tuple[FloatArray, FloatArray]:
+        return np.array(self.weights), np.array(self.centres)
+
     def parts(self, features: FloatArray) -> FloatArray:
         """Contribution of each feature; the last axis is that of the features."""
-        product: FloatArray = (features - np.array(self.centres)) * np.array(self.weights)
+        weights, centres = self._arrays
+        product: FloatArray = (features - centres) * weights
         return product
 
     def value(self, features: FloatArray) -> FloatArray:
@@ -194,12 +195,12 @@ def explain_spectra(model: RankingModel, features: FloatArray) -> Explanation:
     values, seen = weighed.tolist(), np.round(features, 9).tolist()
     parts = []
     for heading, places in _PLACES.items():
-        found = tuple(Explanation(SPECTRAL_NAMES[place], values[place], f"{seen[place]:.3g}") for place in places)
+        found = tuple([Explanation(SPECTRAL_NAMES[place], values[place], f"{seen[place]:.3g}") for place in places])
         parts.append(Explanation(heading, _total(found), parts=found))
-    counted_once = len(SPECTRAL_NAMES) - len(ION_NAMES) // 2  # from there on the same ions count by m/z
+    of_state = weighed[_FIRST_ION:].reshape(_ION_SHAPE).sum(axis=(0, 1)).tolist()
+    n_ions = features[_FIRST_ION:].reshape(_ION_SHAPE)[0].sum(axis=0).tolist()  # counted as one each, not by m/z
     states = tuple(
-        Explanation(state, float(weighed[places].sum()), f"{features[places[places < counted_once]].sum():.0f} ions")
-        for state, places in _ION_PLACES.items()
+        [Explanation(state, value, f"{n:.0f} ions") for state, value, n in zip(STATES, of_state, n_ions, strict=True)]
     )
     parts.append(Explanation(IONS_HEADING, _total(states), parts=states))
     if model.spectra.constant:

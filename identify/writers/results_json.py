@@ -11,6 +11,7 @@ from functools import cache, lru_cache
 from importlib import resources
 from json.encoder import encode_basestring
 from math import floor
+from operator import sub
 from pathlib import Path
 from typing import Any
 
@@ -219,10 +220,10 @@ def _rounded(explanation: Explanation, units: int, scale: int) -> Explanation:
 def _share_units(parts: Sequence[Explanation], units: int, scale: int) -> list[int]:
     """Units of the last digit for each part, adding up to `units` (see `round_explanation`)."""
     scaled = [part.value * scale for part in parts]
-    shares = [floor(value) for value in scaled]
+    shares = list(map(floor, scaled))
     missing = units - sum(shares) if shares else 0
     if missing > 0:
-        lost = [share - value for share, value in zip(shares, scaled, strict=True)]
+        lost = list(map(sub, shares, scaled))
         by_remainder = sorted(range(len(shares)), key=lost.__getitem__)
         for step in range(missing):
             shares[by_remainder[step % len(by_remainder)]] += 1
@@ -393,8 +394,7 @@ def _explanation_text(tree: Explanation, units: int) -> str:
     """JSON of what `round_explanation` gives for a root of `units` / `SCALE`, without making the rounded tree first."""
     parts = ""
     if tree.parts:
-        shares = _share_units(tree.parts, units, SCALE)
-        parts = ", ".join([_explanation_text(part, share) for part, share in zip(tree.parts, shares, strict=True)])
+        parts = ", ".join(map(_explanation_text, tree.parts, _share_units(tree.parts, units, SCALE)))
     label, detail = encode_basestring(tree.label), encode_basestring(tree.detail)
     return f'{{"label": {label}, "value": {units / SCALE}, "detail": {detail}, "parts": [{parts}]}}'
 
