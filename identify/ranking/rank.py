@@ -7,6 +7,7 @@ from typing import NamedTuple
 
 import numpy as np
 
+from identify.chem.constitution import is_only_isomer
 from identify.evidence.facts import formula_facts
 from identify.ranking.alternatives import Chances, Groups, group_isomers
 from identify.ranking.claim import make_claim
@@ -43,7 +44,7 @@ class Answers(NamedTuple):
     ----------
     listed : array of shape (n_candidates,)
     unlisted : array of shape (n_groups,)
-        Isomers without an entry; ``-inf`` where the formula is not known, so that none can be spoken of.
+        Isomers without an entry; ``-inf`` where there can be none (CH2Cl2), and where the formula is not known.
     elsewhere : float
         Something else.
     groups : Groups
@@ -73,7 +74,8 @@ def list_answers(drafts: Sequence[Draft], log_odds: FloatArray, model: RankingMo
     features = np.array([draft.features for draft in drafts])
     groups = group_isomers([draft.entry for draft in drafts], features, log_odds)
     unlisted = model.unlisted.value(groups.unlisted) + _log_sums(log_odds, groups)
-    unlisted = np.where(np.array([bool(key) for key in groups.keys]), unlisted, -np.inf)
+    can_exist = np.array([bool(key) and not is_only_isomer(key) for key in groups.keys])
+    unlisted = np.where(can_exist, unlisted, -np.inf)
     return Answers(log_odds, unlisted, float(model.elsewhere.value(groups.elsewhere)), groups)
 
 

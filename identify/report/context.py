@@ -192,7 +192,7 @@ def _claim(claim: Claim, in_library_probability: float, threshold: float) -> Cla
         ("compound in the library", in_library_probability, None),
     )
     unlisted = ""
-    if claim.unlisted_isomers is not None:
+    if claim.unlisted_isomers:
         unlisted = f"{counted(claim.unlisted_isomers, 'isomer')} without an entry could give the same spectrum."
     return ClaimContext(
         statement=sentence(claim.statement),

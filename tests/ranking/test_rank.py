@@ -148,3 +148,12 @@ def test_weigh_answers_gives_a_distribution() -> None:
     chances = weigh_answers(drafts, np.array([2.0, 1.0, -3.0]), default_model())
     assert chances.listed.sum() + chances.unlisted.sum() + chances.elsewhere == pytest.approx(1.0)
     assert chances.listed[0] / chances.listed[1] == pytest.approx(math.e)
+
+
+def test_a_formula_with_one_constitution_leaves_no_unlisted_isomer() -> None:
+    """CH2Cl2 can be bound in one way only (common practice): its group is the compound."""
+    peaks = {47: 20.0, 49: 100.0, 51: 30.0, 84: 60.0, 86: 38.0, 88: 6.0}
+    found = build_ranking(build_query(peaks), [build_entry(1, peaks, formula="CH2Cl2")])
+    assert found.claim.group_probability == pytest.approx(found.candidates[0].probability)
+    several = build_ranking(build_query(peaks), [build_entry(1, peaks, formula="C2H4Cl2")])
+    assert several.claim.group_probability > several.candidates[0].probability
