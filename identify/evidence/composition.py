@@ -56,10 +56,15 @@ def check_formula_rules(facts: QueryFacts, formula: FormulaFacts | None) -> Find
     nitrogen = "no N" if formula.nitrogens == 0 else "odd N" if formula.nitrogens % 2 else "even N"
     if (nitrogen, size) in (("no N", "few"), ("odd N", "many"), ("even N", "some")):
         verdict, reason = Verdict.AGREES, f"The parity of the fragments is usual for {_count(formula.nitrogens)}."
-    elif (nitrogen, size) == ("no N", "many"):
+    elif (nitrogen, size) == ("even N", "few"):
         verdict, reason = (
             Verdict.CONFLICTS,
-            "Fragments at even m/z dominate, which suggests nitrogen; the formula has none.",
+            f"Hardly any fragment has an even m/z, as if there were no nitrogen; the formula has {formula.nitrogens} N.",
+        )
+    elif (nitrogen, size) == ("no N", "many"):
+        verdict, reason = (
+            Verdict.INCONCLUSIVE,
+            "Fragments at even m/z dominate: nitrogen would explain them, and so do losses of whole molecules.",
         )
     else:
         verdict, reason = (

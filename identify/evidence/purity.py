@@ -8,7 +8,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from identify.evidence.fragments import BACKGROUND
+from identify.evidence.fragments import BACKGROUND, NOTABLE
 from identify.evidence.purity_model import LEAST_CHANCE, PURITY_WEIGHTS
 from identify.evidence.shifted import dense_rows
 from identify.records import CleanSpectrum, Entry, FloatArray, Part, Peaks, Purity, Verdict
@@ -101,11 +101,19 @@ def judge_purity(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> Purity:
     gram, target, total, currents = system.products()
     trials = try_parts(gram, target, total, currents)
     chosen = [trial.chosen for trial in trials if trial.chance >= LEAST_CHANCE][-1]
-    amounts = _solve(gram, target, chosen)
+    amounts = _amounts_of_notable_ions(system, chosen)
     fitted = amounts @ system.matrix[list(chosen)]
     explained = float(np.minimum(fitted, system.query).sum() / system.query.sum())
     misfits = tuple(trial.misfit for trial in trials)
     return _describe(usable, chosen, amounts, system.query - fitted, system.axis, explained, misfits)
+
+
+def _amounts_of_notable_ions(system: System, chosen: tuple[int, ...]) -> FloatArray:
+    """Amounts of the chosen entries, fitted without the weak ions that only entries have: who types a list leaves them out."""
+    rows = system.matrix[list(chosen)]
+    counted = (system.query > 0) | (rows.max(axis=0) > NOTABLE)
+    weighted = rows[:, counted] * system.weight[counted]
+    return _solve(weighted @ rows[:, counted].T, weighted @ system.query[counted], tuple(range(len(chosen))))
 
 
 def leave_over(spectrum: CleanSpectrum, entries: Sequence[Entry]) -> CleanSpectrum | None:

@@ -179,3 +179,14 @@ def test_a_list_of_principal_ions_is_not_called_unexplained_for_want_of_weak_one
     weak = dict.fromkeys(range(37, 125, 6), 3.0)
     outcome = judge_purity(build.spectrum(typed), [build.entry({**weak, **NAPHTHALENE}, name="naphthalene", number=9)])
     assert outcome.explained_share > 0.6
+
+
+def test_weak_ions_that_a_typed_list_leaves_out_do_not_make_its_compound_a_stranger(build) -> None:
+    """Acetone, principal ions from memory: the analyst types six, the entry has ten weak ones more."""
+    weak = dict.fromkeys((26, 28, 29, 37, 38, 39, 40, 41, 44, 57), 3.0)
+    entry = build.entry({27: 7.0, 42: 7.0, 43: 100.0, 58: 35.0, 59: 1.2, **weak}, name="acetone")
+    outcome = judge_purity(build.spectrum({15: 20.0, 27: 8.0, 42: 7.0, 43: 100.0, 58: 30.0, 59: 1.0}), [entry])
+    assert outcome.explained_share > 0.9
+    strangers = build.entry({43: 20.0, 58: 6.0, 71: 100.0, 86: 60.0}, name="another compound")
+    outcome = judge_purity(build.spectrum({15: 20.0, 27: 8.0, 42: 7.0, 43: 100.0, 58: 30.0, 59: 1.0}), [strangers])
+    assert outcome.explained_share < 0.5, "strong ions that the query lacks still count"
