@@ -44,6 +44,7 @@ from identify.report.words import (
     LEVEL_MEANINGS,
     LONG_TEXT,
     NONE,
+    claim_probability_text,
     counted,
     file_name,
     minutes_text,
@@ -129,7 +130,7 @@ def _summary(found: Identification, query: QueryContext) -> SummaryRow:
         statement=query.claim.statement,
         level=query.claim.level,
         style=query.claim.style,
-        probability=probability_text(found.claim.probability),
+        probability=claim_probability_text(found.claim),
         next_step=query.follow_up[0].action if query.follow_up else "",
     )
 

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 from identify.records import Identification, Report
 from identify.report.terminal import print_notices
-from identify.report.words import minutes_text, probability_text, sentence, visible_text
+from identify.report.words import claim_probability_text, minutes_text, sentence, visible_text
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -36,7 +36,7 @@ def render_overview(report: Report, console: Console) -> None:
         time_s = found.query.record.retention.time_s
         minutes = minutes_text(time_s).removesuffix(" min") if time_s is not None else ""
         cells = (_name(found), minutes, found.claim.level.value, sentence(found.claim.statement))
-        table.add_row(*(Text(cell) for cell in cells), Text(probability_text(found.claim.probability)))
+        table.add_row(*(Text(cell) for cell in cells), Text(claim_probability_text(found.claim)))
     console.print(table)
     console.print()
     print_notices(report, console)

@@ -6,7 +6,7 @@ import unicodedata
 from collections.abc import Sequence
 from pathlib import PurePath
 
-from identify.records import ClaimLevel, EvidenceItem, Verdict
+from identify.records import Claim, ClaimLevel, EvidenceItem, Verdict
 
 MAX_TEXT, LONG_TEXT = 300, 2000
 """Longest name and longest sentence shown, in characters."""
@@ -71,6 +71,11 @@ def probability_text(probability: float) -> str:
     if probability < 0.01:
         return f"<{NO_BREAK}1{NO_BREAK}%"
     return f"{100.0 * probability:.0f}{NO_BREAK}%"
+
+
+def claim_probability_text(claim: Claim) -> str:
+    """Probability of what is claimed; a dash where nothing is, so that no number is read as one of a name."""
+    return NONE if claim.level is ClaimLevel.NO_CLAIM else probability_text(claim.probability)
 
 
 def score_text(score: float) -> str:
