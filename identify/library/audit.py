@@ -103,9 +103,7 @@ class AuditReport:
     def to_quarantine(self) -> Mapping[str, str]:
         """Reasons by accession for entries proposed for quarantine, as `quarantine_entries` takes them."""
         return {
-            audit.accession: "; ".join(
-                [finding.kind for finding in audit.findings if finding.grade is not Grade.NOTE] or ["many small signs"]
-            )
+            audit.accession: "; ".join(finding.kind for finding in audit.findings if finding.grade is not Grade.NOTE)
             for audit in self.audits
             if audit.proposal == QUARANTINE
         }
@@ -190,13 +188,23 @@ def audit_entry(
     proposal = propose(log_odds, stated)
     if proposal == USE or log_odds < CAUTION_FROM:  # the sum speaks for the entry: single signs are no findings
         observed = [replace(finding, grade=Grade.NOTE) for finding in observed]
-    found = (*stated, *_find_twins(entry, neighbours), *observed)
+    found = [*stated, *_find_twins(entry, neighbours), *observed]
+    if proposal != USE and all(finding.grade is Grade.NOTE for finding in found):
+        found.append(_sum_of_signs(log_odds))
     findings = sorted(found, key=lambda finding: (_ORDER[finding.grade], -finding.log_odds))
     if overruled and proposal == QUARANTINE:
         proposal = CAUTION
     suspicion = suspect(entry, neighbours, replicates, cells) if log_odds >= CAUTION_FROM else ""
     return EntryAudit(
         entry.id, entry.accession, entry.identity.name, tuple(findings), log_odds, suspicion, proposal, overruled
+    )
+
+
+def _sum_of_signs(log_odds: float) -> AuditFinding:
+    """What there is to say where no single observation explains the proposal."""
+    reason = "Nothing stands out by itself; small signs and missing support add up."
+    return AuditFinding(
+        "many small signs", Grade.CAUTION, reason, f"log-odds {log_odds:+.2f}", f"below {CAUTION_FROM:+.2f}"
     )
 
 

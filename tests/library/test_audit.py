@@ -29,6 +29,7 @@ from identify.library.audit_metadata import AuditFinding, Grade, check_statement
 from identify.library.audit_weights import BASE_LOG_ODDS, CAUTION_FROM, QUARANTINE_FROM, WEIGHTS
 from identify.library.cache import load_index
 from identify.library.standing import quarantine_entries, reinstate_entry
+from identify.library.starter import build_starter
 from identify.library.store import open_library
 from identify.records import Entry, EntryStatus, Retention, SpectrumRecord
 from identify.settings import Weighting
@@ -358,3 +359,14 @@ def test_the_suspicion_names_the_compound_a_spectrum_resembles(tmp_path: Path) -
     assert suspicion == "the spectrum resembles that of Right (A)"
     kinds = {finding.kind: finding for finding in found.findings}
     assert kinds["like another compound"].observed.startswith("A, Right, cosine 1.0000")
+
+
+def test_every_entry_not_simply_usable_has_a_finding_that_says_why(tmp_path: Path) -> None:
+    build_starter(tmp_path / "starter.ionlib", "Ada", WHEN)
+    report = audit(tmp_path / "starter.ionlib")
+    doubtful = [entry for entry in report.audits if entry.proposal != USE]
+    assert doubtful
+    for entry in doubtful:
+        assert any(finding.grade is not Grade.NOTE for finding in entry.findings), entry.accession
+    kinds = {finding.kind for entry in doubtful for finding in entry.findings}
+    assert "many small signs" in kinds, "siloxanes: no observation by itself, all together"
