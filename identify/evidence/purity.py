@@ -311,7 +311,7 @@ def _describe(
     if len(parts) > 1:
         verdict, reason = (
             Verdict.CONFLICTS,
-            f"{len(parts)} entries together explain the query far better than one: {names}.",
+            f"{len(parts)} entries together explain the query far better than one, for instance {names}.",
         )
     elif explained >= WELL_EXPLAINED:
         verdict, reason = (

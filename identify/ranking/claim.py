@@ -125,8 +125,9 @@ def _hold_back(purity: Purity, levels: tuple[float, float, float]) -> Claim:
     number = {2: "two", 3: "three"}.get(len(purity.parts), "several")
     names = " and ".join(f"{part.name} ({percent(part.share)} of the signal)" for part in purity.parts)
     text = (
-        f"No claim: {number} compounds together explain this spectrum far better than one: {names}. "
-        "All probabilities suppose a single compound; take a cleaner spectrum or search what is left over."
+        f"No claim: {number} entries together explain {percent(purity.explained_share)} of this spectrum, far more than one "
+        f"does, for instance {names}. All probabilities suppose a single compound; take a cleaner spectrum or search what "
+        "is left over."
     )
     return _claim(ClaimLevel.NO_CLAIM, text, 1.0 - levels[0], tuple(part.name for part in purity.parts), levels)
 

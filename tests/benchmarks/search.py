@@ -11,7 +11,7 @@ answer ends the run with an error.
 Baselines get the easier job: the same weights as float32 with norms over the whole spectrum, cosine and reverse match of
 every entry and the best 100 by each, but no range rule and no exact rescoring.
 
-Run it alone on the machine (`flock /tmp/heavy.lock` where others work on it too).
+Run it alone on the machine.
 """
 
 from __future__ import annotations

@@ -149,10 +149,10 @@ def test_percent_never_rounds_to_certainty() -> None:
 
 def test_of_a_mixture_no_compound_group_or_class_is_claimed() -> None:
     parts = (Part("naphthalene", "A1", 0.7), Part("dodecane", "A2", 0.3))
-    mixed = Purity(Verdict.CONFLICTS, "Two entries together explain it.", parts)
+    mixed = Purity(Verdict.CONFLICTS, "Two entries together explain it.", parts, explained_share=0.92)
     claim = claim_of([0.99], 0.005, 0.005, evidence=(build_item("molecular ion", 0.5),), purity=mixed)
     assert claim.level is ClaimLevel.NO_CLAIM
-    assert "two compounds together" in claim.statement
+    assert "two entries together explain 92 % of this spectrum" in claim.statement
     assert "naphthalene (70 % of the signal) and dodecane (30 % of the signal)" in claim.statement
     assert "take a cleaner spectrum" in claim.statement
     assert claim.members == ("naphthalene", "dodecane")
