@@ -21,21 +21,7 @@ from identify.records import (
 )
 from identify.settings import Settings
 from identify.spectra.align import align
-
-ACETOPHENONE = {
-    39: 8.0,
-    43: 21.9,
-    50: 20.2,
-    51: 41.9,
-    63: 3.8,
-    77: 100.0,
-    78: 10.4,
-    105: 80.8,
-    106: 6.0,
-    120: 23.1,
-    121: 2.0,
-}
-"""Public-domain JCAMP-DX spectrum, standards.md 5.1 [F]."""
+from tests.builders import ACETOPHENONE
 
 
 def clean(peaks: dict[int, float]) -> CleanSpectrum:

@@ -10,6 +10,7 @@ from identify.evidence.facts import build_query_facts, formula_facts
 from identify.evidence.isotope_cluster import LOOKED_FOR, fit_cluster
 from identify.evidence.isotopes import CarbonCount, check_carbon_count, check_isotope_pattern, count_carbons
 from identify.records import Verdict
+from tests.builders import ACETOPHENONE
 
 
 def cluster(formula: str, height: float = 60.0, **others: float) -> dict[int, float]:
@@ -45,22 +46,6 @@ def test_siloxane_207_does_not_read_nineteen_carbons(build) -> None:
     count = count_carbons(query, formula_facts("C5H15O3Si3"))
     assert isinstance(count, CarbonCount)
     assert count.counted == pytest.approx(5.0, abs=0.3)
-
-
-ACETOPHENONE = {
-    39: 8.0,
-    43: 21.9,
-    50: 20.2,
-    51: 41.9,
-    63: 3.8,
-    77: 100.0,
-    78: 10.4,
-    105: 80.8,
-    106: 6.0,
-    120: 23.1,
-    121: 2.0,
-}
-"""Public-domain JCAMP-DX spectrum, standards.md 5.1 [F]: M+1/M is 8.66 %, theory 8.78 %."""
 
 
 def test_public_acetophenone_spectrum_counts_eight_carbons(build) -> None:

@@ -16,21 +16,8 @@ from identify.evidence.mass_features import (
 from identify.evidence.mass_model import Trees, load_model, softmax
 from identify.evidence.molecular_ion import estimate_molecular_ion
 from identify.evidence.shifted import SPAN, build_shift_table, match_shifted
+from tests.builders import ACETOPHENONE
 
-ACETOPHENONE = {
-    39: 8.0,
-    43: 21.9,
-    50: 20.2,
-    51: 41.9,
-    63: 3.8,
-    77: 100.0,
-    78: 10.4,
-    105: 80.8,
-    106: 6.0,
-    120: 23.1,
-    121: 2.0,
-}
-"""Public-domain JCAMP-DX spectrum, standards.md 5.1 [F]."""
 PALMITATE = {43: 30.0, 55: 20.0, 74: 100.0, 75: 18.0, 87: 65.0, 143: 15.0, 227: 9.0, 239: 7.0, 270: 10.0, 271: 1.9}
 STEARATE = {43: 30.0, 55: 21.0, 74: 100.0, 75: 18.0, 87: 66.0, 143: 16.0, 255: 9.0, 267: 6.0, 298: 10.0, 299: 2.1}
 """Invented, from general knowledge: methyl esters with the rearrangement ions 74 and 87, losses of 31 and 43 from M."""
