@@ -461,7 +461,7 @@ def build_large_report(n_queries: int = 200, n_candidates: int = 25, n_peaks: in
     return build_report(*found)
 
 
-ACETOPHENONE = {
+PUBLISHED_ACETOPHENONE = {
     39: 8.0, 43: 21.9, 50: 20.2, 51: 41.9, 63: 3.8, 77: 100.0, 78: 10.4, 105: 80.8, 106: 6.0, 120: 23.1, 121: 2.0,
 }  # fmt: skip
 """Public-domain JCAMP-DX spectrum, standards.md 5.1 [F]: M+1/M is 8.66 %, theory 8.78 %."""

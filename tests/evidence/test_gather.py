@@ -21,7 +21,7 @@ from identify.records import (
 )
 from identify.settings import Settings
 from identify.spectra.align import align
-from tests.builders import ACETOPHENONE
+from tests.builders import PUBLISHED_ACETOPHENONE
 
 
 def clean(peaks: dict[int, float]) -> CleanSpectrum:
@@ -48,7 +48,7 @@ def gather(peaks: dict[int, float], entry: Entry) -> dict[str, Verdict]:
 
 
 def test_acetophenone_agrees_with_itself() -> None:
-    verdicts = gather(ACETOPHENONE, make_entry(ACETOPHENONE, "C8H8O"))
+    verdicts = gather(PUBLISHED_ACETOPHENONE, make_entry(PUBLISHED_ACETOPHENONE, "C8H8O"))
     for kind in (
         "molecular ion",
         "carbon count",
@@ -61,12 +61,14 @@ def test_acetophenone_agrees_with_itself() -> None:
 
 
 def test_lighter_candidate_conflicts_through_ions_above_its_molecule() -> None:
-    verdicts = gather(ACETOPHENONE, make_entry({77: 100.0, 105: 90.0, 106: 60.0, 51: 30.0}, "C7H6O"))
+    verdicts = gather(PUBLISHED_ACETOPHENONE, make_entry({77: 100.0, 105: 90.0, 106: 60.0, 51: 30.0}, "C7H6O"))
     assert verdicts["ions above M"] is Verdict.CONFLICTS
 
 
 @pytest.mark.parametrize("formula", ["", "not a formula", "C8H8O", "C60H122Br10", "H", "B12H14", "C5[2H]5N"])
-@pytest.mark.parametrize("peaks", [{}, {43: 100.0}, {1: 1.0}, ACETOPHENONE, dict.fromkeys(range(1, 900), 50.0)])
+@pytest.mark.parametrize(
+    "peaks", [{}, {43: 100.0}, {1: 1.0}, PUBLISHED_ACETOPHENONE, dict.fromkeys(range(1, 900), 50.0)]
+)
 def test_no_check_raises_and_silence_has_a_reason(formula: str, peaks: dict[int, float]) -> None:
     query, entry = make_query(peaks), make_entry(peaks, formula)
     items = gather_evidence(query, entry, align(query.spectrum, entry.spectrum), Settings())

@@ -10,7 +10,7 @@ from identify.evidence.facts import build_query_facts, formula_facts
 from identify.evidence.isotope_cluster import LOOKED_FOR, fit_cluster
 from identify.evidence.isotopes import CarbonCount, check_carbon_count, check_isotope_pattern, count_carbons
 from identify.records import Verdict
-from tests.builders import ACETOPHENONE
+from tests.builders import PUBLISHED_ACETOPHENONE
 
 
 def cluster(formula: str, height: float = 60.0, **others: float) -> dict[int, float]:
@@ -49,7 +49,7 @@ def test_siloxane_207_does_not_read_nineteen_carbons(build) -> None:
 
 
 def test_public_acetophenone_spectrum_counts_eight_carbons(build) -> None:
-    query = build_query_facts(build.query(ACETOPHENONE, instrument_type="GC-EI-IT"))
+    query = build_query_facts(build.query(PUBLISHED_ACETOPHENONE, instrument_type="GC-EI-IT"))
     count = count_carbons(query, formula_facts("C8H8O"))
     assert isinstance(count, CarbonCount)
     assert round(count.counted) == 8

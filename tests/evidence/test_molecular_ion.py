@@ -16,7 +16,7 @@ from identify.evidence.mass_features import (
 from identify.evidence.mass_model import Trees, load_model, softmax
 from identify.evidence.molecular_ion import estimate_molecular_ion
 from identify.evidence.shifted import SPAN, build_shift_table, match_shifted
-from tests.builders import ACETOPHENONE
+from tests.builders import PUBLISHED_ACETOPHENONE
 
 PALMITATE = {43: 30.0, 55: 20.0, 74: 100.0, 75: 18.0, 87: 65.0, 143: 15.0, 227: 9.0, 239: 7.0, 270: 10.0, 271: 1.9}
 STEARATE = {43: 30.0, 55: 21.0, 74: 100.0, 75: 18.0, 87: 66.0, 143: 16.0, 255: 9.0, 267: 6.0, 298: 10.0, 299: 2.1}
@@ -24,7 +24,7 @@ STEARATE = {43: 30.0, 55: 21.0, 74: 100.0, 75: 18.0, 87: 66.0, 143: 16.0, 255: 9
 
 
 def test_molecular_ion_on_top_is_found_without_neighbours(build) -> None:
-    estimate = estimate_molecular_ion(build.spectrum(ACETOPHENONE), [])
+    estimate = estimate_molecular_ion(build.spectrum(PUBLISHED_ACETOPHENONE), [])
     assert estimate.estimates[0].nominal_mass == 120
     assert estimate.estimates[0].probability > 0.5
     assert estimate.not_observed_probability < 0.5
