@@ -6,8 +6,10 @@ analyst's name (the Origin header), and must not read or frame an answer (the he
 
 from __future__ import annotations
 
+import asyncio
 import re
 from collections.abc import Awaitable, Callable, Iterable, MutableMapping
+from contextlib import suppress
 from typing import Any
 
 Scope = MutableMapping[str, Any]
@@ -18,6 +20,7 @@ App = Callable[[Scope, Receive, Send], Awaitable[None]]
 
 MAX_UPLOAD_BYTES = 256 * 2**20
 MAX_FORM_BYTES = 2**20
+READ_OFF_S = 2.0
 UPLOAD_PATH = re.compile(r"(/api)?/(uploads|runs/\d+/again)")
 SAFE_METHODS = ("GET", "HEAD", "OPTIONS")
 HEADERS = {
@@ -69,9 +72,13 @@ class Guard:
             await self._app(scope, receive, send_with_headers)
             return
         status, text = refusal
+        body = text.encode()
         headers = [(b"content-type", b"text/plain; charset=utf-8"), (b"connection", b"close")]
+        headers.append((b"content-length", str(len(body)).encode()))
         await send_with_headers({"type": "http.response.start", "status": status, "headers": headers})
-        await send({"type": "http.response.body", "body": text.encode()})
+        await send({"type": "http.response.body", "body": body, "more_body": True})
+        await _read_off(receive)
+        await send({"type": "http.response.body", "body": b""})
 
     def _refuse(self, scope: Scope) -> tuple[int, str] | None:
         headers: dict[str, list[str]] = {}
@@ -98,6 +105,15 @@ class Guard:
         else:
             is_ours = headers.get("sec-fetch-site") == ["same-origin"]
         return None if is_ours else (403, "Changes are taken from our own pages only (Origin header).")
+
+
+async def _read_off(receive: Receive) -> None:
+    """Take and forget what a refused request still sends, for a while: closed on unread bytes, a connection is reset
+    and the sender never sees our answer."""
+    with suppress(TimeoutError):
+        async with asyncio.timeout(READ_OFF_S):
+            while (await receive()).get("more_body", False):
+                pass
 
 
 def _refuse_size(headers: dict[str, list[str]], path: str) -> tuple[int, str] | None:

@@ -222,6 +222,18 @@ def test_an_upload_that_is_too_large_is_refused_before_it_is_read(
     assert answer.startswith(f"HTTP/1.1 {status} "), "answered although not one byte of the body was sent"
 
 
+def test_a_refusal_arrives_although_the_body_is_still_under_way(used_bench: Bench) -> None:
+    head = f"POST /pasted HTTP/1.1\r\nhost: 127.0.0.1:{used_bench.port}\r\norigin: http://attacker.example\r\n"
+    with socket.create_connection(("127.0.0.1", used_bench.port), timeout=10.0) as connection:
+        connection.sendall(f"{head}content-length: 10\r\n\r\n".encode())
+        answer = connection.recv(4096)
+        for part in (b"peaks", b"=43 1"):
+            connection.sendall(part)
+        while more := connection.recv(4096):  # a reset connection raises here
+            answer += more
+    assert answer.startswith(b"HTTP/1.1 403 ") and answer.endswith(b"(Origin header).")
+
+
 def test_a_zip_bomb_costs_a_message(bench: Bench) -> None:
     bomb = io.BytesIO()
     with zipfile.ZipFile(bomb, "w", zipfile.ZIP_DEFLATED) as archive:
