@@ -9,6 +9,7 @@ from importlib import resources
 from fastapi import APIRouter, FastAPI, Request
 from fastapi.exceptions import RequestValidationError
 from fastapi.responses import JSONResponse, RedirectResponse, Response
+from starlette.exceptions import HTTPException
 
 from identify import __version__
 from identify.errors import IonwitnessError, LibraryBusy, LibraryConflict
@@ -81,18 +82,18 @@ def build_app(bench: Workbench, hosts: Iterable[str]) -> App:
     app.include_router(twins)
     app.add_exception_handler(IonwitnessError, show_error)  # type: ignore[arg-type]
     app.add_exception_handler(RequestValidationError, show_invalid)  # type: ignore[arg-type]
-    app.add_exception_handler(404, show_missing)
+    app.add_exception_handler(HTTPException, show_refused)  # type: ignore[arg-type]
     return Guard(app, hosts=hosts)
 
 
-def show_error(request: Request, error: IonwitnessError) -> Response:
-    """An error as a page, or as JSON below ``/api``."""
+def show_error(request: Request, error: IonwitnessError, status: int = 422) -> Response:
+    """An error as a page, or as JSON below ``/api``; its status where its kind does not say one."""
     is_data = request.url.path.startswith("/api/")
     if isinstance(error, NotSignedIn):
         if is_data:
             return JSONResponse({"error": {"what": error.what, "found": error.found, "expected": error.expected}}, 401)
         return RedirectResponse("/sign-in", status_code=303)
-    status = next((status for kind, status in STATUS if isinstance(error, kind)), 422)
+    status = next((status for kind, status in STATUS if isinstance(error, kind)), status)
     told = {"what": error.what, "found": error.found, "expected": error.expected, "hint": error.hint}
     if is_data:
         return JSONResponse({"error": told}, status)
@@ -107,9 +108,12 @@ def show_invalid(request: Request, error: RequestValidationError) -> Response:
     )
 
 
-def show_missing(request: Request, error: Exception) -> Response:
-    """No page at this address."""
-    return show_error(request, NotFound("page", found="nothing at this address", expected="one of the pages"))
+def show_refused(request: Request, error: HTTPException) -> Response:
+    """No page at this address, or a request that no page can have sent."""
+    if error.status_code == 404:
+        return show_error(request, NotFound("page", found="nothing at this address", expected="one of the pages"))
+    told = IonwitnessError("request", found=str(error.detail), expected="what our own pages send")
+    return show_error(request, told, error.status_code)
 
 
 @cache

@@ -55,30 +55,44 @@ class Guard:
         self._scheme = scheme
 
     async def __call__(self, scope: Scope, receive: Receive, send: Send) -> None:
-        """Answer a request, or refuse it."""
+        """Answer a request, or refuse it.
+
+        Whatever is answered before all of a request has arrived (a refusal, no such page), the rest is taken and forgotten
+        before the answer ends: a connection closed on unread bytes is reset, and the sender never sees our answer.
+        """
         if scope["type"] != "http":
             if scope["type"] == "lifespan":
                 await self._app(scope, receive, send)
             return  # there are no web sockets here
 
-        async def send_with_headers(message: Message) -> None:
+        is_read = scope["method"] in SAFE_METHODS
+
+        async def receive_and_note() -> Message:
+            nonlocal is_read
+            message = await receive()
+            is_read = is_read or not message.get("more_body", False)
+            return message
+
+        async def send_closed(message: Message) -> None:
             if message["type"] == "http.response.start":
                 own = [(name, value) for name, value in message.get("headers", []) if name.decode() not in HEADERS]
                 message["headers"] = own + [(name.encode(), value.encode()) for name, value in HEADERS.items()]
+            elif not is_read and not message.get("more_body", False):
+                await send({**message, "more_body": True})
+                await _read_off(receive)
+                message = {"type": "http.response.body", "body": b""}
             await send(message)
 
         refusal = self._refuse(scope)
         if refusal is None:
-            await self._app(scope, receive, send_with_headers)
+            await self._app(scope, receive_and_note, send_closed)
             return
         status, text = refusal
         body = text.encode()
         headers = [(b"content-type", b"text/plain; charset=utf-8"), (b"connection", b"close")]
         headers.append((b"content-length", str(len(body)).encode()))
-        await send_with_headers({"type": "http.response.start", "status": status, "headers": headers})
-        await send({"type": "http.response.body", "body": body, "more_body": True})
-        await _read_off(receive)
-        await send({"type": "http.response.body", "body": b""})
+        await send_closed({"type": "http.response.start", "status": status, "headers": headers})
+        await send_closed({"type": "http.response.body", "body": body})
 
     def _refuse(self, scope: Scope) -> tuple[int, str] | None:
         headers: dict[str, list[str]] = {}
@@ -108,8 +122,7 @@ class Guard:
 
 
 async def _read_off(receive: Receive) -> None:
-    """Take and forget what a refused request still sends, for a while: closed on unread bytes, a connection is reset
-    and the sender never sees our answer."""
+    """Take and forget what a request still sends, for a while."""
     with suppress(TimeoutError):
         async with asyncio.timeout(READ_OFF_S):
             while (await receive()).get("more_body", False):

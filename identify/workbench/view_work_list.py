@@ -45,10 +45,10 @@ def show_work_list(
     components: Annotated[bool, Query()] = False,
 ) -> View:
     """Queries with what the data support and what was decided, runs, and work in the background."""
+    jobs = _jobs_shown(desk)  # before the queries: a page whose jobs are over must show everything they found
     counts = desk.case.count_queries(text=text, in_runs=components)
     rows = desk.case.queries(state=state, text=text, in_runs=components, limit=PAGE_SIZE, offset=(page - 1) * PAGE_SIZE)
     total = counts[state] if state else sum(counts.values())
-    jobs = _jobs_shown(desk)
     data = {
         "counts": counts, "state": state, "text": text, "page": page, "pages": max(1, -(-total // PAGE_SIZE)),
         "queries": [query_line(row) for row in rows],

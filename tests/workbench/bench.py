@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+import socket
 import threading
 import time
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -24,6 +25,14 @@ DEMO = ROOT / "fixtures" / "demo" / "unknowns"
 PASSWORD = "a long enough password"
 ACETONE = "15 34, 27 8, 39 4, 42 7, 43 100, 44 3, 58 38, 59 1.5"
 """An invented spectrum of acetone's kind."""
+
+
+def wait_until(condition: Callable[[], object], limit_s: float = 240.0) -> None:
+    """Return once a condition holds; a limit that only a program that stands still can reach."""
+    end = time.monotonic() + limit_s
+    while not condition():
+        assert time.monotonic() < end, "it never came"
+        time.sleep(0.02)
 
 
 @dataclass
@@ -62,15 +71,14 @@ class Bench:
         assert answer.headers["location"] == "/"
         return client
 
-    def wait(self, client: httpx.Client | None = None, limit_s: float = 240.0) -> list[dict[str, Any]]:
+    def count_queries(self) -> int:
+        """How many queries are on the bench."""
+        return sum(self.client.get("/api/work-list").json()["counts"].values())
+
+    def wait(self) -> list[dict[str, Any]]:
         """Jobs once all of them are over."""
-        end = time.monotonic() + limit_s
-        while time.monotonic() < end:
-            told = (client or self.client).get("/api/jobs").json()
-            if not told["is_busy"]:
-                return list(told["jobs"])
-            time.sleep(0.05)
-        raise AssertionError("jobs did not end")
+        wait_until(lambda: not self.client.get("/api/jobs").json()["is_busy"])
+        return list(self.client.get("/api/jobs").json()["jobs"])
 
     def upload(self, *files: tuple[str, bytes]) -> list[dict[str, Any]]:
         """Jobs after these files were taken."""
@@ -105,17 +113,16 @@ class Bench:
 
 
 @contextmanager
-def running_bench(folder: Path, *, port: int = 0) -> Iterator[Bench]:
-    """A workbench on the library in a folder, served from a thread."""
-    listener = bind("127.0.0.1", port)
+def running_bench(folder: Path, listener: socket.socket | None = None) -> Iterator[Bench]:
+    """A workbench on the library in a folder, served from a thread, on a port of its own or one that is held already."""
+    listener = listener or bind("127.0.0.1", 0)
     address = Address("127.0.0.1", listener.getsockname()[1])
     library, case = folder / "lab.ionlib", folder / "lab.ioncase"
     with listener, open_workbench([library], case, Settings(), address, local_user="Ada") as opened:
         server = make_server(opened)
         thread = threading.Thread(target=server.run, kwargs={"sockets": [listener]}, daemon=True)
         thread.start()
-        while not server.started:
-            time.sleep(0.01)
+        wait_until(lambda: server.started)
         bench = Bench(address.port, opened.link, opened.bench.desk, opened.bench.sessions)
         try:
             yield bench
@@ -123,4 +130,5 @@ def running_bench(folder: Path, *, port: int = 0) -> Iterator[Bench]:
             for client in bench.clients:
                 client.close()
             server.should_exit = True
-            thread.join(timeout=15.0)
+            thread.join(timeout=60.0)
+            assert not thread.is_alive(), "the server does not end"

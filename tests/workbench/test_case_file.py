@@ -3,18 +3,16 @@
 from __future__ import annotations
 
 import os
-import signal
 import sqlite3
 import subprocess
 import sys
 import threading
-import time
 from pathlib import Path
 from typing import Any
 
 import httpx
 import pytest
-from bench import ACETONE, ROOT, running_bench
+from bench import ACETONE, ROOT, running_bench, wait_until
 
 from identify.errors import LibraryConflict, LibraryDamaged, LibraryError, UsageError
 from identify.records import Rejection, Source, SpectrumRecord
@@ -212,7 +210,8 @@ def test_killed_in_the_middle_of_decisions_each_is_there_or_not(folder: Path) ->
     acknowledged: list[tuple[int, str]] = []
 
     def decide_on(query_id: int, cookies: httpx.Cookies) -> None:
-        with httpx.Client(base_url=origin, cookies=cookies, headers={"origin": origin}, trust_env=False) as client:
+        headers = {"origin": origin}
+        with httpx.Client(base_url=origin, cookies=cookies, headers=headers, trust_env=False, timeout=60.0) as client:
             seen = 0
             for number in range(10_000):
                 form = {"kind": "note", "note": f"{query_id}: {number}", "result": query_id, "seen": seen}
@@ -224,16 +223,17 @@ def test_killed_in_the_middle_of_decisions_each_is_there_or_not(folder: Path) ->
                 seen = answer.json()["decision"]["seq"]
                 acknowledged.append((seen, answer.json()["decision"]["hash"]))
 
-    with process, httpx.Client(trust_env=False) as client:
+    with process, httpx.Client(trust_env=False, timeout=60.0) as client:
         assert client.get(link).status_code == 303
         threads = [threading.Thread(target=decide_on, args=(query_id, client.cookies)) for query_id in queries]
         for thread in threads:
             thread.start()
-        while len(acknowledged) < 20:
-            time.sleep(0.01)
-        process.send_signal(signal.SIGKILL)
+        try:
+            wait_until(lambda: len(acknowledged) >= 20)
+        finally:
+            process.kill()
         for thread in threads:
-            thread.join(timeout=30.0)
+            thread.join()
     with open_case(folder / "lab.ioncase") as case:
         assert find_fault(case) == ""
         kept = {(made.seq, made.hash) for made in list_decisions(case)}
@@ -245,12 +245,13 @@ def test_a_job_cut_off_by_a_kill_is_finished_at_the_next_start(folder: Path) -> 
     process, link = _serve(folder)
     origin = link.partition("/open/")[0]
     text = "".join(f"NAME: peak {n}\nNum Peaks: 3\n15 {30 + n % 9}\n43 100\n58 {20 + n % 30}\n\n" for n in range(60))
-    with process, httpx.Client(base_url=origin, headers={"origin": origin}, trust_env=False, timeout=30.0) as client:
+    with process, httpx.Client(base_url=origin, headers={"origin": origin}, trust_env=False, timeout=60.0) as client:
         client.get(link)
         client.post("/uploads", files=[("files", ("many.msp", text.encode()))])
-        while sum(client.get("/api/work-list").json()["counts"].values()) < 10:
-            time.sleep(0.02)
-        process.send_signal(signal.SIGKILL)
+        try:
+            wait_until(lambda: sum(client.get("/api/work-list").json()["counts"].values()) >= 10)
+        finally:
+            process.kill()
     with running_bench(folder) as bench:
         (job,) = bench.wait()
         assert (job["state"], job["message"]) == ("done", "60 queries identified")

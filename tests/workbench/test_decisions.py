@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
-from bench import DEMO, Bench
+from bench import DEMO, Bench, wait_until
 
 PROPOSAL = {"supplier": "an invented supplier", "lot": "L-1", "purity": "99 %", "measured_on": "2026-01-04"}
 
@@ -171,13 +171,11 @@ def test_work_can_be_cancelled(bench: Bench) -> None:
     text = "".join(f"NAME: peak {n}\nNum Peaks: 3\n15 30\n43 100\n58 {1 + n % 90}\n\n" for n in range(3000))
     answer = bench.client.post("/api/uploads", files=[("files", ("many.msp", text.encode()))])
     job = answer.json()["jobs"][0]
-    while not sum(bench.client.get("/api/work-list").json()["counts"].values()):
-        pass
+    wait_until(bench.count_queries)
     assert bench.client.post(f"/jobs/{job}/cancel").status_code == 303
     (told,) = bench.wait()
     assert told["state"] == "cancelled"
-    n_kept = sum(bench.client.get("/api/work-list").json()["counts"].values())
-    assert 0 < n_kept < 3000
+    assert 0 < bench.count_queries() < 3000
 
 
 def test_what_could_not_be_used_is_listed_with_its_reason(bench: Bench) -> None:

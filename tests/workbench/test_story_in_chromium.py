@@ -27,6 +27,8 @@ FLAGS = (
     "--no-first-run",
 )  # fmt: skip
 WIDTHS = (1280, 390)
+TIMEOUT_MS = 120_000
+"""For each step; only a page that stands still reaches it."""
 UNKNOWNS = ("03-drum-liquid.csv", "04-drum-liquid.msp", "12-hose-rinse.txt")
 WIDER = """width => [...document.querySelectorAll("main *, header *, footer *")]
     .filter(part => part.getBoundingClientRect().right > width + 1)
@@ -53,7 +55,7 @@ class Visitor:
     def __init__(self, browser: Any, origin: str, width: int) -> None:
         self.context = browser.new_context(viewport={"width": width, "height": 900 if width > 600 else 844})
         self.page = self.context.new_page()
-        self.page.set_default_timeout(15_000)
+        self.page.set_default_timeout(TIMEOUT_MS)
         self.origin, self.width = origin, width
         self.complaints: list[str] = []
         self.page.on("console", lambda message: self.complaints.append(message.text))
@@ -62,6 +64,11 @@ class Visitor:
     def go(self, path: str) -> None:
         self.page.goto(f"{self.origin}{path}")
         self.look()
+
+    def follow(self, selector: str) -> None:
+        """Click what leads to another page, and be there."""
+        with self.page.expect_navigation():
+            self.page.click(selector)
 
     def look(self) -> None:
         """The page fits its window, passes axe when that is at hand, and its console is silent."""
@@ -95,7 +102,7 @@ def _run_axe(page: Any, script: Path) -> list[str]:
 
 
 def _wait_for_work(visitor: Visitor) -> None:
-    visitor.page.wait_for_selector("#jobs:not([data-busy])", state="attached", timeout=60_000)
+    visitor.page.wait_for_selector("#jobs:not([data-busy])", state="attached")
 
 
 @pytest.mark.slow
@@ -107,10 +114,10 @@ def test_the_whole_story(bench: Bench, width: int) -> None:
         ada.page.goto(_fresh_link(bench))
         assert "Nothing on the bench yet" in ada.text()
         ada.page.set_input_files("input[name=files]", [str(DEMO / name) for name in UNKNOWNS])
-        ada.page.click("form.drop >> button:has-text('Identify')")
+        ada.follow("form.drop >> button:has-text('Identify')")
         _wait_for_work(ada)
         ada.look()
-        ada.page.click("table.work a:has-text('peak 5')")
+        ada.follow("table.work a:has-text('peak 5')")
         ada.look()
         text = ada.text()
         for words in ("limonene", "molecular ion", "agrees", "log-odds", "Why not"):
@@ -118,20 +125,20 @@ def test_the_whole_story(bench: Bench, width: int) -> None:
         assert ada.page.locator("svg.plot").first.is_visible()
 
         ada.page.fill("input[name=why_not]", "alpha-terpinene")
-        ada.page.click("button:has-text('Explain')")
+        ada.follow("button:has-text('Explain')")
         assert "alpha-terpinene" in ada.page.inner_text("#why-not")
         ada.look()
 
         ada.page.fill("textarea[name=note]", "fits the smell of the drum")
-        ada.page.click("button:has-text('Keep the decision')")
+        ada.follow("button:has-text('Keep the decision')")
         assert "Accepted" in ada.page.inner_text("#decide") and "Ada" in ada.page.inner_text("#decide")
         ada.look()
 
-        ada.page.click("a:has-text('Propose this spectrum as a standard')")
+        ada.follow("a:has-text('Propose this spectrum as a standard')")
         assert ada.page.input_value("#propose input[name=name]") == "limonene"
         ada.page.fill("#propose input[name=supplier]", "an invented supplier")
         ada.page.fill("#propose input[name=lot]", "L-7")
-        ada.page.click("#propose >> button:has-text('Propose')")
+        ada.follow("#propose >> button:has-text('Propose')")
         assert "a second person must review it" in ada.text()
         ada.look()
 
@@ -139,22 +146,22 @@ def test_the_whole_story(bench: Bench, width: int) -> None:
         eve.go("/sign-in")
         eve.page.fill("input[name=name]", "Eve")
         eve.page.fill("input[name=password]", PASSWORD)
-        eve.page.click("button:has-text('Sign in')")
+        eve.follow("button:has-text('Sign in')")
         eve.go("/standards")
         eve.page.fill("article.proposal textarea[name=reason]", "lot sheet seen")
-        eve.page.click("article.proposal >> button:has-text('Accept')")
+        eve.follow("article.proposal >> button:has-text('Accept')")
         assert "OWN-000001" in eve.text() and "No standard waits for review" in eve.text()
         eve.look()
 
         ada.go("/")
-        ada.page.click("table.work a:has-text('peak 5')")
-        ada.page.click("button:has-text('Identify again')")
+        ada.follow("table.work a:has-text('peak 5')")
+        ada.follow("button:has-text('Identify again')")
         assert "own standard" in ada.text()
         ada.look()
 
-        eve.page.click("a:has-text('limonene')")
+        eve.follow("a:has-text('limonene')")
         eve.page.fill("textarea[name=reason]", "lot was mixed up")
-        eve.page.click("button:has-text('Withdraw the entry')")
+        eve.follow("button:has-text('Withdraw the entry')")
         assert "not found by searches" in eve.text()
         eve.look()
 
@@ -180,17 +187,18 @@ def test_keys_lead_everywhere_and_can_be_switched_off(bench: Bench) -> None:
         keyboard = visitor.page.keyboard
         keyboard.press("j")
         keyboard.press("j")
-        keyboard.press("Enter")
-        visitor.page.wait_for_url("**/queries/*")
+        with visitor.page.expect_navigation(url="**/queries/*"):
+            keyboard.press("Enter")
         first = visitor.page.url
-        keyboard.press("n")
-        visitor.page.wait_for_function(f"location.href !== '{first}'")
+        with visitor.page.expect_navigation():
+            keyboard.press("n")
+        assert visitor.page.url != first
         keyboard.press("d")
         assert visitor.page.evaluate("document.activeElement.id") == "decide-head"
         for key, path in (("l", "/library"), ("s", "/standards"), ("f", "/follow-up"), ("t", "/trail"), ("w", "/")):
             keyboard.press("g")
-            keyboard.press(key)
-            visitor.page.wait_for_url(f"{bench.origin}{path}")
+            with visitor.page.expect_navigation(url=f"{bench.origin}{path}"):
+                keyboard.press(key)
         keyboard.press("/")
         assert visitor.page.evaluate("document.activeElement.name") == "text"
         visitor.page.click("footer summary")
@@ -217,17 +225,18 @@ def test_dropped_files_are_taken_and_pages_work_without_scripts(bench: Bench) ->
         assert "dropped.csv" in visitor.text()
         bare = browser.new_context(java_script_enabled=False)
         page = bare.new_page()
+        page.set_default_timeout(TIMEOUT_MS)
         page.goto(_fresh_link(bench))
         page.fill("textarea[name=peaks]", "43 100, 58 30, 15 20")
         page.click("button:has-text('Identify the list')")
         page.wait_for_url("**/?said=received")
         bench.wait()
         page.goto(bench.origin)
-        page.click("text=pasted peaks >> nth=-1")
         page.goto(f"{bench.origin}/queries/1")
         page.check("input[value=reject]")
         page.fill("textarea[name=note]", "only a test")
-        page.click("button:has-text('Keep the decision')")
+        with page.expect_navigation():
+            page.click("button:has-text('Keep the decision')")
         assert "Rejected" in page.inner_text("#decide")
 
 

@@ -30,8 +30,9 @@
     });
   }
 
-  // While there is work in the background, its list and the queries are fetched again.
+  // While there is work in the background, its list and the queries are fetched again; not under somebody who types in them.
   const refresh = async () => {
+    let isOld = false;
     try {
       const answer = await fetch(location.href);
       if (!answer.ok) return;
@@ -39,15 +40,16 @@
       ["jobs", "list"].forEach((id) => {
         const old = document.getElementById(id), fresh = page.getElementById(id);
         if (!old || !fresh || old.innerHTML === fresh.innerHTML) return;
-        if (old.contains(document.activeElement) && document.activeElement.matches("input, a, button")) {
-          if (id === "list") return;
-        }
+        const focus = old.contains(document.activeElement) ? document.activeElement : null;
+        if (focus && focus.matches("input")) { isOld = true; return; }
+        const address = focus && focus.getAttribute("href");
         old.innerHTML = fresh.innerHTML;
         old.toggleAttribute("data-busy", fresh.hasAttribute("data-busy"));
-        if (!fresh.hasAttribute("data-busy")) old.removeAttribute("data-busy");
+        const again = address && $(`a[href="${CSS.escape(address)}"]`, old);
+        if (again) again.focus();
       });
     } catch { /* the server is gone; the page stays as it is */ }
-    if ($("#jobs[data-busy]")) setTimeout(refresh, 1000);
+    if (isOld || $("#jobs[data-busy]")) setTimeout(refresh, 1000);
   };
   if ($("#jobs[data-busy]")) setTimeout(refresh, 700);
 
@@ -97,7 +99,7 @@
       return;
     }
     const keys = {
-      g: () => { leading = true; setTimeout(() => { leading = false; }, 1200); },
+      g: () => { leading = true; },
       j: () => step(1),
       k: () => step(-1),
       n: () => follow("a[rel=next]"),
