@@ -19,6 +19,8 @@ from typing import Any
 import numpy as np
 
 from identify.errors import InputError
+from identify.explanations import Explanation as Explanation
+from identify.explanations import Terms as Terms
 from identify.peaks import FloatArray as FloatArray
 from identify.peaks import Peaks as Peaks
 from identify.peaks import read_only as read_only
@@ -262,20 +264,6 @@ class EvidenceItem:
         silent = self.verdict in (Verdict.INCONCLUSIVE, Verdict.NOT_ASSESSED)
         if silent and self.log_odds != 0.0:
             raise ValueError(f"{self.kind}: a verdict '{self.verdict}' carries no log-odds")
-
-
-@dataclass(frozen=True, slots=True)
-class Explanation:
-    """A number and the parts it is the sum of."""
-
-    label: str
-    value: float
-    detail: str = ""
-    parts: tuple[Explanation, ...] = ()
-
-    def __post_init__(self) -> None:
-        if self.parts and abs(sum(part.value for part in self.parts) - self.value) > 1e-9:
-            raise ValueError(f"parts of '{self.label}' do not add up to {self.value}")
 
 
 @dataclass(frozen=True, slots=True)

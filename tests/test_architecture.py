@@ -13,7 +13,8 @@ PACKAGE = Path(__file__).resolve().parent.parent / "identify"
 
 LAYERS: dict[str, float] = {
     "errors": 0,
-    "peaks": 0.5,  # the lowest noun, offered by records
+    "peaks": 0.5,  # the lowest nouns, offered by records
+    "explanations": 0.5,
     "records": 1,
     "settings": 1,
     "chem": 2,

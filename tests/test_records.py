@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 
 from identify.errors import LibraryMissing, SpectrumError
-from identify.records import EvidenceItem, Explanation, Peaks, Source, SpectrumRecord, Verdict
+from identify.records import EvidenceItem, Explanation, Peaks, Source, SpectrumRecord, Terms, Verdict
 
 
 @pytest.mark.parametrize(
@@ -46,6 +46,15 @@ def test_parts_of_an_explanation_add_up() -> None:
     assert Explanation("all", 2.0, parts=(part,)).value == 2.0
     with pytest.raises(ValueError, match="do not add up"):
         Explanation("all", 3.0, parts=(part,))
+
+
+def test_terms_are_parts_as_any_other() -> None:
+    terms = Terms(("a", "b"), (1.0, 2.0), ("seen", ""))
+    assert list(terms) == [terms[0], terms[1]] == [Explanation("a", 1.0, "seen"), Explanation("b", 2.0)]
+    assert list(terms[1:]) == [Explanation("b", 2.0)]
+    assert Explanation("all", 3.0, parts=terms).parts[-1].value == 2.0
+    with pytest.raises(ValueError, match="do not add up"):
+        Explanation("all", 4.0, parts=terms)
 
 
 def test_a_silent_verdict_carries_no_weight() -> None:

@@ -29,7 +29,7 @@ from identify.ranking.alternatives import ELSEWHERE_NAMES, UNLISTED_NAMES
 from identify.ranking.coefficients import COEFFICIENTS
 from identify.ranking.features import NAMES
 from identify.ranking.ions import CLOSE_NAMES, COUNTED, ION_NAMES, LEVELS, STATES
-from identify.records import EvidenceItem, Explanation, FloatArray, MolecularIonEstimate
+from identify.records import EvidenceItem, Explanation, FloatArray, MolecularIonEstimate, Terms
 
 HEADINGS: Final = {
     "likeness": ("cosine", "reverse", "forward"),
@@ -51,7 +51,10 @@ _PLACES: Final = {
     )
     for heading in HEADINGS
 }
-"""Columns of all but the ions under each heading."""
+_SHOWN: Final = {
+    heading: (places, tuple(SPECTRAL_NAMES[place] for place in places)) for heading, places in _PLACES.items()
+}
+"""Columns of all but the ions under each heading, and their names."""
 IONS_HEADING: Final = "ions one by one"
 _FIRST_ION: Final = len(SPECTRAL_NAMES) - len(ION_NAMES)
 _ION_SHAPE: Final = (len(COUNTED), len(LEVELS), len(STATES))
@@ -177,35 +180,36 @@ def default_model() -> RankingModel:
     return build_model(COEFFICIENTS)
 
 
-def explain_spectra(model: RankingModel, features: FloatArray) -> Explanation:
-    """What the spectra say for one entry, under the headings of `HEADINGS` and, ion by ion, under `IONS_HEADING`.
+def explain_spectra(model: RankingModel, features: FloatArray) -> list[Explanation]:
+    """What the spectra say for each entry, under the headings of `HEADINGS` and, ion by ion, under `IONS_HEADING`.
 
     Parameters
     ----------
     model : RankingModel
-    features : array of shape (n_features,)
+    features : array of shape (n_entries, n_features)
         In the order of `SPECTRAL_NAMES`.
 
     Returns
     -------
-    Explanation
-        Its value is ``model.spectra.value(features)``.
+    list of Explanation
+        Their values are ``model.spectra.value(features)``.
     """
+    n = len(features)
     weighed = model.spectra.parts(features)
-    values, seen = weighed.tolist(), np.round(features, 9).tolist()
-    parts = []
-    for heading, places in _PLACES.items():
-        found = tuple([Explanation(SPECTRAL_NAMES[place], values[place], f"{seen[place]:.3g}") for place in places])
-        parts.append(Explanation(heading, _total(found), parts=found))
-    of_state = weighed[_FIRST_ION:].reshape(_ION_SHAPE).sum(axis=(0, 1)).tolist()
-    n_ions = features[_FIRST_ION:].reshape(_ION_SHAPE)[0].sum(axis=0).tolist()  # counted as one each, not by m/z
-    states = tuple(
-        [Explanation(state, value, f"{n:.0f} ions") for state, value, n in zip(STATES, of_state, n_ions, strict=True)]
-    )
-    parts.append(Explanation(IONS_HEADING, _total(states), parts=states))
-    if model.spectra.constant:
-        parts.append(Explanation("constant", model.spectra.constant))
-    return Explanation("spectra", _total(parts), parts=tuple(parts))
+    values, seen = weighed[:, :_FIRST_ION].tolist(), np.round(features[:, :_FIRST_ION], 9).tolist()
+    of_state = weighed[:, _FIRST_ION:].reshape(n, *_ION_SHAPE).sum(axis=(1, 2)).tolist()
+    n_ions = features[:, _FIRST_ION:].reshape(n, *_ION_SHAPE)[:, 0].sum(axis=1).tolist()  # counted as one, not by m/z
+    constant = [Explanation("constant", model.spectra.constant)] if model.spectra.constant else []
+    told = []
+    for row, shown, ions, numbers in zip(values, seen, of_state, n_ions, strict=True):
+        parts = []
+        for heading, (places, names) in _SHOWN.items():
+            details = [f"{shown[place]:.3g}" for place in places]
+            parts.append(_sum_up(heading, names, [row[place] for place in places], details))
+        parts.append(_sum_up(IONS_HEADING, STATES, ions, [f"{n:.0f} ions" for n in numbers]))
+        parts += constant
+        told.append(Explanation("spectra", _total(parts), parts=tuple(parts)))
+    return told
 
 
 def explain_candidate(
@@ -231,12 +235,9 @@ def explain_candidate(
     -------
     Explanation
     """
-    told = tuple(
-        Explanation(item.kind, model.evidence_weights.get(item.kind, 1.0) * item.log_odds, item.reason)
-        for item in evidence
-        if item.log_odds
-    )
-    parts = [spectra, Explanation("evidence", _total(told), parts=told)]
+    told = [item for item in evidence if item.log_odds]
+    worth = [model.evidence_weights.get(item.kind, 1.0) * item.log_odds for item in told]
+    parts = [spectra, _sum_up("evidence", [item.kind for item in told], worth, [item.reason for item in told])]
     if nominal_mass is not None and molecular_ion.estimates:
         value = model.mass_weight * mass_log_odds(nominal_mass, molecular_ion)
         parts.append(Explanation("nominal mass", value, f"{nominal_mass} among the masses estimated from the query"))
@@ -258,6 +259,10 @@ def mass_log_odds(nominal_mass: int, molecular_ion: MolecularIonEstimate) -> flo
     """
     chance = sum(item.probability for item in molecular_ion.estimates if item.nominal_mass == nominal_mass)
     return float(np.log(max(chance, MASS_FLOOR) / MASS_FLOOR))
+
+
+def _sum_up(heading: str, labels: Sequence[str], values: Sequence[float], details: Sequence[str]) -> Explanation:
+    return Explanation(heading, float(sum(values)), parts=Terms(tuple(labels), tuple(values), tuple(details)))
 
 
 def _total(parts: Sequence[Explanation]) -> float:

@@ -179,10 +179,10 @@ def rank(
             reverse=draft.reverse,
             evidence=items[place],
             probability=float(chances.listed[place]),
-            explanation=_explain_odds(told[place], chances, place),
+            explanation=explained,
             n_entries=draft.n_entries,
         )
-        for place, draft in enumerate(drafts)
+        for place, (draft, explained) in enumerate(zip(drafts, _explain_odds(told, chances), strict=True))
     )
     claim = make_claim(candidates, chances, model, settings, purity)
     follow_up = propose_follow_up(query, candidates, chances)
@@ -202,14 +202,15 @@ def _log_sums(log_odds: FloatArray, groups: Groups) -> FloatArray:
     return logs
 
 
-def _explain_odds(told: Explanation, chances: Chances, place: int) -> Explanation:
-    """Natural log of the candidate's odds against all other answers: what speaks for it, less what speaks for the rest."""
-    chance = float(np.clip(chances.listed[place], 1e-12, 1 - 1e-12))
-    others = float(chances.listed.sum()) - chance
-    odds = float(np.log(chance / (1.0 - chance)))
-    detail = (
-        f"other compounds listed {others:.3g}, isomers without an entry {float(chances.unlisted.sum()):.3g}, "
-        f"something else {chances.elsewhere:.3g}"
-    )
-    against = Explanation("against all other answers", odds - told.value, detail)
-    return Explanation("log-odds", told.value + against.value, parts=(told, against))
+def _explain_odds(told: Sequence[Explanation], chances: Chances) -> list[Explanation]:
+    """Natural log of each candidate's odds against all other answers: what speaks for it, less what speaks for the rest."""
+    listed, unlisted = float(chances.listed.sum()), float(chances.unlisted.sum())
+    chance = np.clip(chances.listed, 1e-12, 1 - 1e-12)
+    odds = np.log(chance / (1.0 - chance))
+    beside = f"isomers without an entry {unlisted:.3g}, something else {chances.elsewhere:.3g}"
+    explained = []
+    for one, own, others in zip(told, odds.tolist(), (listed - chance).tolist(), strict=True):
+        detail = f"other compounds listed {others:.3g}, {beside}"
+        against = Explanation("against all other answers", own - one.value, detail)
+        explained.append(Explanation("log-odds", one.value + against.value, parts=(one, against)))
+    return explained

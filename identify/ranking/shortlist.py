@@ -90,9 +90,11 @@ def shortlist(
     closer = compare_closely(spectrum, [entries[place].spectrum for place in places])
     rows = np.concatenate([features[places], closer], axis=1)
     order = np.argsort(-np.round(model.spectra.value(rows), EQUAL), kind="stable")
+    chosen = order[: max(settings.top, N_DRAFTS)].tolist()
+    told = explain_spectra(model, rows[chosen])
     drafts = []
-    for number in order[: max(settings.top, N_DRAFTS)].tolist():
-        match, row = matches[places[number]], rows[number]
+    for number, explained in zip(chosen, told, strict=True):
+        match = matches[places[number]]
         drafts.append(
             Draft(
                 keys[number],
@@ -101,8 +103,8 @@ def shortlist(
                 align(spectrum, match.entry.spectrum),
                 match.hit.cosine,
                 match.hit.reverse,
-                row,
-                explain_spectra(model, row),
+                rows[number],
+                explained,
                 n_entries[keys[number]],
             )
         )

@@ -10,7 +10,7 @@ from collections.abc import Iterable, Iterator, Mapping, Sequence
 from functools import cache, lru_cache
 from importlib import resources
 from json.encoder import encode_basestring
-from math import floor
+from math import floor, isfinite
 from operator import sub
 from pathlib import Path
 from typing import Any
@@ -28,6 +28,7 @@ from identify.records import (
     Purity,
     Rejection,
     Report,
+    Terms,
 )
 from identify.writers.files import open_atomically
 
@@ -219,7 +220,8 @@ def _rounded(explanation: Explanation, units: int, scale: int) -> Explanation:
 
 def _share_units(parts: Sequence[Explanation], units: int, scale: int) -> list[int]:
     """Units of the last digit for each part, adding up to `units` (see `round_explanation`)."""
-    scaled = [part.value * scale for part in parts]
+    values = parts.values if isinstance(parts, Terms) else [part.value for part in parts]
+    scaled = [value * scale for value in values]
     shares = list(map(floor, scaled))
     missing = units - sum(shares) if shares else 0
     if missing > 0:
@@ -375,28 +377,36 @@ def _hit(candidate: Candidate) -> dict[str, Any]:
     }
 
 
-@lru_cache(maxsize=4096)  # two thirds of the items of a query stand under several of its candidates
+@lru_cache(maxsize=8192)  # two thirds of the items of a query stand under several of its candidates
 def _evidence_text(item: EvidenceItem) -> str:
-    values = {
-        "kind": item.kind,
-        "verdict": item.verdict.value,
-        "reason": item.reason,
-        "observed": item.observed,
-        "expected": item.expected,
-        "uncertainty": item.uncertainty,
-        "log_odds": _number(item.log_odds),
-        "source": item.source,
-    }
-    return _dumps(values)
+    q = encode_basestring
+    return (
+        f'{{"kind": {q(item.kind)}, "verdict": {q(item.verdict.value)}, "reason": {q(item.reason)}, '
+        f'"observed": {q(item.observed)}, "expected": {q(item.expected)}, "uncertainty": {q(item.uncertainty)}, '
+        f'"log_odds": {_number(item.log_odds)}, "source": {q(item.source)}}}'
+    )
 
 
 def _explanation_text(tree: Explanation, units: int) -> str:
     """JSON of what `round_explanation` gives for a root of `units` / `SCALE`, without making the rounded tree first."""
-    parts = ""
-    if tree.parts:
-        parts = ", ".join(map(_explanation_text, tree.parts, _share_units(tree.parts, units, SCALE)))
+    parts, shares = tree.parts, _share_units(tree.parts, units, SCALE)
+    told = _terms_text(parts, shares) if isinstance(parts, Terms) else ", ".join(map(_explanation_text, parts, shares))
     label, detail = encode_basestring(tree.label), encode_basestring(tree.detail)
-    return f'{{"label": {label}, "value": {units / SCALE}, "detail": {detail}, "parts": [{parts}]}}'
+    return f'{{"label": {label}, "value": {units / SCALE}, "detail": {detail}, "parts": [{told}]}}'
+
+
+def _terms_text(terms: Terms, shares: Sequence[int]) -> str:
+    texts = [
+        f'{head}{share / SCALE}, "detail": {encode_basestring(detail)}, "parts": []}}'
+        for head, share, detail in zip(_heads(terms.labels), shares, terms.details, strict=True)
+    ]
+    return ", ".join(texts)
+
+
+@lru_cache(maxsize=4096)
+def _heads(labels: tuple[str, ...]) -> tuple[str, ...]:
+    """Beginnings of the JSON of explanations; the same labels stand under every candidate."""
+    return tuple(f'{{"label": {encode_basestring(label)}, "value": ' for label in labels)
 
 
 def _follow_up(plan: FollowUp) -> dict[str, Any]:
@@ -431,8 +441,10 @@ def _rejection(item: Rejection) -> dict[str, Any]:
 
 
 def _number(value: float) -> float:
-    # Adding 0.0 turns -0.0 into 0.0, so that equal results are equal text.
-    return round(float(value), DECIMALS) + 0.0
+    rounded = round(float(value), DECIMALS)
+    if not isfinite(rounded):
+        raise ValueError(f"a result holds {rounded}, which JSON cannot say")
+    return rounded + 0.0  # turns -0.0 into 0.0, so that equal results are equal text
 
 
 def _optional(value: float | None) -> float | None:

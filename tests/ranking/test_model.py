@@ -37,12 +37,12 @@ def test_a_table_that_lacks_a_feature_is_refused() -> None:
 
 def test_the_explanation_of_the_spectra_is_their_log_odds() -> None:
     model = default_model()
-    row = np.random.default_rng(4).uniform(0, 1, len(SPECTRAL_NAMES))
-    assert explain_spectra(model, row).value == pytest.approx(float(model.spectra.value(row)))
+    rows = np.random.default_rng(4).uniform(0, 1, (3, len(SPECTRAL_NAMES)))
+    assert [told.value for told in explain_spectra(model, rows)] == pytest.approx(model.spectra.value(rows).tolist())
 
 
 def test_every_feature_is_shown_under_one_heading_and_no_name_counts_records() -> None:
-    explained = explain_spectra(default_model(), np.zeros(len(SPECTRAL_NAMES)))
+    (explained,) = explain_spectra(default_model(), np.zeros((1, len(SPECTRAL_NAMES))))
     shown = {heading.label: [part.label for part in heading.parts] for heading in explained.parts}
     assert shown.pop(IONS_HEADING) == list(STATES)
     assert sorted(name for names in shown.values() for name in names) == sorted(set(SPECTRAL_NAMES) - set(ION_NAMES))

@@ -13,7 +13,7 @@ import jsonschema
 import pytest
 
 from identify.errors import UsageError
-from identify.records import Explanation
+from identify.records import EvidenceItem, Explanation, Identification, Terms, Verdict
 from identify.writers.results_json import (
     load_schema,
     report_to_dict,
@@ -211,10 +211,30 @@ def test_numbers_are_rounded_and_intensities_keep_their_digits() -> None:
     assert found["cleaning"][1]["removed"] == [[28.0, 4120.0], [32.0, 1015.0]]
 
 
-def test_a_number_that_is_not_finite_never_reaches_a_file(tmp_path: Path) -> None:
-    broken = build_report(replace(build_identification(), in_library_probability=float("nan")))
-    with pytest.raises(ValueError, match="JSON compliant"):
-        write_json(tmp_path / "out.json", broken)
+NAN = float("nan")
+
+
+@pytest.mark.parametrize(
+    "broken",
+    [
+        replace(build_identification(), in_library_probability=NAN),
+        replace(build_identification(), candidates=(build_candidate(cosine=NAN),)),
+        replace(
+            build_identification(),
+            candidates=(replace(build_candidate(), evidence=(EvidenceItem("x", Verdict.AGREES, "y", log_odds=NAN),)),),
+        ),
+        replace(
+            build_identification(),
+            candidates=(
+                replace(build_candidate(), explanation=Explanation("x", NAN, parts=Terms(("a",), (NAN,), ("",)))),
+            ),
+        ),
+    ],
+    ids=["query", "candidate", "evidence", "explanation"],
+)
+def test_a_number_that_is_not_finite_never_reaches_a_file(tmp_path: Path, broken: Identification) -> None:
+    with pytest.raises(ValueError, match=r"JSON|NaN"):
+        write_json(tmp_path / "out.json", build_report(broken))
     assert list(tmp_path.iterdir()) == []
 
 
