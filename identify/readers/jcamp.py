@@ -55,6 +55,7 @@ class _Block:
     labels: dict[str, _Label] = field(default_factory=dict)
     pairs: list[tuple[str, str]] = field(default_factory=list)
     comments: list[str] = field(default_factory=list)
+    n_lines: int = 0
     error: InputError | None = None
     page: dict[str, _Label] = field(default_factory=dict)
     n_pages: int = 0
@@ -143,7 +144,9 @@ class _Reader:
     def take(self, label: _Label) -> Iterator[SpectrumRecord]:
         """Records that `label` completes."""
         if label.label == "$$":
-            (self._open[-1].comments if self._open else self._comments).append(label.lines[0])
+            comments = self._open[-1].comments if self._open else self._comments
+            if len(comments) < MAX_RECORD_LINES:
+                comments.append(label.lines[0])
         elif label.label == "TITLE":
             if self._open and not self._open[-1].is_link:
                 self._reject_open(label)
@@ -254,7 +257,8 @@ def _add_label(block: _Block, label: _Label, path: str) -> None:
     if not label.label:
         block.comments.append(cut_field(label.value))
         return
-    if sum(len(known.lines) for known in block.labels.values()) > MAX_RECORD_LINES:
+    block.n_lines += len(label.lines)
+    if block.n_lines > MAX_RECORD_LINES:
         block.error = block.error or fault(
             "block", path, block.line, found=f"more than {MAX_RECORD_LINES} lines", expected="fewer"
         )

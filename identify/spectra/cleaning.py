@@ -27,8 +27,11 @@ Mask = NDArray[np.bool_]
 MAX_PEAKS = 100_000
 """More peaks than any centroided EI spectrum has; a list this long is profile data or an attack."""
 MAX_MZ = 10_000.0
-PROFILE_SPACING_DA = 0.15
-PROFILE_MIN_PEAKS = 60
+"""Far above any electron-ionization spectrum; it bounds the m/z axis."""
+DENSE_SPACING_DA = 0.15
+DENSE_FRACTION = 0.8
+DENSE_MIN_PEAKS = 60
+"""So many points, and so large a share of them so near to the next, are no list of peaks (judgement)."""
 
 SILOXANE_PATTERNS: dict[int, tuple[float, float]] = {
     207: (0.209, 0.125),
@@ -55,6 +58,7 @@ class StepResult(NamedTuple):
 
 
 Step = Callable[[FloatArray, FloatArray, CleaningSettings], StepResult]
+"""Takes m/z (whole numbers, increasing), intensity (positive) and the settings; decides which of the peaks stay."""
 
 
 def clean_spectrum(record: SpectrumRecord, settings: CleaningSettings) -> CleanSpectrum:
@@ -90,8 +94,8 @@ def clean_spectrum(record: SpectrumRecord, settings: CleaningSettings) -> CleanS
             "spectrum", where=where, found="no peak with positive m/z and intensity", expected="at least one",
             hint="Check that the columns are m/z and intensity, in this order.",
         )  # fmt: skip
-    accurate = Peaks(mz, intensity) if is_accurate_mz(mz, intensity) else None
-    nominal, summed, rounding = _to_nominal(mz, intensity)
+    assigned = np.maximum(nominal_mz(mz), 1)
+    nominal, summed, rounding = _sum_at_nominal(assigned, intensity)
     steps.append(rounding)
     lowest = _lowest_mz(record, int(nominal[0]))
     for name, enabled, step in STEPS:
@@ -100,11 +104,11 @@ def clean_spectrum(record: SpectrumRecord, settings: CleaningSettings) -> CleanS
         keep, reason = step(nominal, summed, settings)
         steps.append(_log(name, reason, nominal, summed, keep))
         nominal, summed = nominal[keep], summed[keep]
-    kept = Peaks(nominal, summed)
-    if accurate is not None:
-        in_kept = np.isin(nominal_mz(accurate.mz), kept.mz.astype(np.int64))
-        accurate = Peaks(accurate.mz[in_kept], accurate.intensity[in_kept])
-    return CleanSpectrum(kept, accurate, lowest, tuple(steps))
+    accurate = None
+    if is_accurate_mz(mz, intensity):
+        in_kept = np.isin(assigned, nominal)
+        accurate = Peaks(mz[in_kept], intensity[in_kept])
+    return CleanSpectrum(Peaks(nominal, summed), accurate, lowest, tuple(steps))
 
 
 def _refuse_unusable(record: SpectrumRecord, where: str) -> None:
@@ -113,30 +117,22 @@ def _refuse_unusable(record: SpectrumRecord, where: str) -> None:
             "spectrum", where=where, found=f"{record.mz.size:,} peaks", expected=f"at most {MAX_PEAKS:,}",
             hint="Centroid the spectrum (peak picking) and try again.",
         )  # fmt: skip
-    if record.is_profile or looks_like_profile(record.mz):
+    if record.is_profile or _is_too_dense(record.mz):
         raise SpectrumError(
             "spectrum", where=where, found="profile data", expected="a centroided peak list",
             hint="Centroid the spectrum (peak picking) in the data system, export it and try again.",
         )  # fmt: skip
 
 
-def looks_like_profile(mz: FloatArray) -> bool:
-    """Whether points lie so densely and evenly that they sample peak shapes rather than list peaks.
+def _is_too_dense(mz: FloatArray) -> bool:
+    """Whether points, in any order, lie too densely to be peaks.
 
-    Parameters
-    ----------
-    mz : ndarray of shape (n_points,)
-        m/z in any order.
-
-    Returns
-    -------
-    bool
-        True when there are at least 60 points and 80 % of the gaps are below 0.15 Da.
+    Readers look at the shape as well (`identify.readers.profile`); this holds for records from anywhere.
     """
-    if mz.size < PROFILE_MIN_PEAKS:
+    if mz.size < DENSE_MIN_PEAKS:
         return False
     gaps = np.diff(np.sort(mz))
-    return bool(np.mean((gaps > 0) & (gaps < PROFILE_SPACING_DA)) > 0.8)
+    return bool(np.mean((gaps > 0) & (gaps < DENSE_SPACING_DA)) > DENSE_FRACTION)
 
 
 def _usable_peaks(record: SpectrumRecord) -> tuple[FloatArray, FloatArray, list[CleaningStep]]:
@@ -153,13 +149,11 @@ def _usable_peaks(record: SpectrumRecord) -> tuple[FloatArray, FloatArray, list[
     return mz[first], intensity[first], steps
 
 
-def _to_nominal(mz: FloatArray, intensity: FloatArray) -> tuple[FloatArray, FloatArray, CleaningStep]:
-    nominal = np.maximum(nominal_mz(mz), 1)
-    axis, inverse = np.unique(nominal, return_inverse=True)
+def _sum_at_nominal(assigned: NDArray[np.int64], intensity: FloatArray) -> tuple[FloatArray, FloatArray, CleaningStep]:
+    axis, inverse = np.unique(assigned, return_inverse=True)
     summed = np.bincount(inverse, weights=intensity, minlength=axis.size).astype(np.float64)
-    merged = mz.size - axis.size
     reason = "m/z rounded to nominal by the spectrum's own mass defect; peaks at the same nominal m/z summed"
-    return axis.astype(np.float64), summed, CleaningStep("nominal m/z", reason, mz.size, mz.size - merged)
+    return axis.astype(np.float64), summed, CleaningStep("nominal m/z", reason, assigned.size, axis.size)
 
 
 def _lowest_mz(record: SpectrumRecord, lowest_peak: int) -> int:

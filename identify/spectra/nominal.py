@@ -15,6 +15,8 @@ already assigned before it rounds.
 
 from __future__ import annotations
 
+from math import floor
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -24,8 +26,12 @@ SAFE_MZ = 400.0
 """Below this, plain rounding is right: |defect| of CH2 chains (+0.00112 per Da) and bromine (−0.00103) stays under 0.45."""
 SLOPE_LIMITS = (-0.00105, 0.00118)
 """Mass defect per dalton of 79Br (78.9183/79) and of CH2 with end hydrogens (14.01565/14): AME2020 masses."""
+WINDOW_DA = 150.0
+"""How far below a peak its neighbours tell the slope: wide enough to hold some, near enough to be of the same compound class."""
 ACCURATE_DECIMALS = 3
+"""Decimals that an accurate m/z has at least."""
 MIN_ACCURATE_FRACTION = 0.9
+"""Share of the intensity that must lie at possible mass defects."""
 
 
 def nominal_mz(mz: FloatArray) -> NDArray[np.int64]:
@@ -44,8 +50,8 @@ def nominal_mz(mz: FloatArray) -> NDArray[np.int64]:
     Notes
     -----
     Peaks up to `SAFE_MZ` are rounded half up. A peak above is rounded after subtracting ``slope * mz``, where `slope` is
-    the mean defect per dalton of the peaks assigned in the 150 Da below it (weighted by m/z), clipped to `SLOPE_LIMITS`.
-    With no peak there the slope is 0 and the rule falls back to plain rounding. O(n).
+    the mean defect per dalton of the peaks assigned in the `WINDOW_DA` below it (weighted by m/z), clipped to
+    `SLOPE_LIMITS`. With no peak there the slope stays that of the peak before, 0 (plain rounding) for the first. O(n).
 
     Examples
     --------
@@ -56,20 +62,25 @@ def nominal_mz(mz: FloatArray) -> NDArray[np.int64]:
     first_high = int(np.searchsorted(mz, SAFE_MZ, side="right"))
     if first_high == mz.size or not np.any(mz[first_high:] != nominal[first_high:]):
         return nominal
-    slope = _mean_slope(mz, nominal, first_high)
+    # Sums over the window below the peak at hand move along with it: a dense list costs no more than a sparse one.
+    start, slope = int(np.searchsorted(mz, mz[first_high] - WINDOW_DA)), 0.0
+    mass = float(mz[start:first_high].sum())
+    defect = float((mz[start:first_high] - nominal[start:first_high]).sum())
+    masses, assigned = mz.tolist(), nominal.tolist()
     for position in range(first_high, mz.size):
-        slope = _mean_slope(mz, nominal, position, default=slope)
-        nominal[position] = int(np.floor(mz[position] * (1.0 - slope) + 0.5))
-    return nominal
-
-
-def _mean_slope(mz: FloatArray, nominal: NDArray[np.int64], end: int, default: float = 0.0) -> float:
-    start = int(np.searchsorted(mz, (mz[end] if end < mz.size else mz[-1]) - 150.0))
-    if start >= end:
-        return default
-    window = mz[start:end]
-    slope = float(np.sum(window - nominal[start:end]) / np.sum(window))
-    return min(max(slope, SLOPE_LIMITS[0]), SLOPE_LIMITS[1])
+        here = masses[position]
+        while start < position and masses[start] < here - WINDOW_DA:
+            mass -= masses[start]
+            defect -= masses[start] - assigned[start]
+            start += 1
+        if start == position:
+            mass = defect = 0.0  # nothing left over of rounding errors
+        else:
+            slope = min(max(defect / mass, SLOPE_LIMITS[0]), SLOPE_LIMITS[1])
+        assigned[position] = floor(here * (1.0 - slope) + 0.5)
+        mass += here
+        defect += here - assigned[position]
+    return np.array(assigned, dtype=np.int64)
 
 
 def is_accurate_mz(mz: FloatArray, intensity: FloatArray) -> bool:

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import io
 import itertools
+import time
+import tracemalloc
 
 import jcamp
 import numpy as np
@@ -12,6 +14,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from identify.readers import read_pasted
+from identify.readers.jcamp import parse_jcamp
 from identify.records import Rejection, SpectrumRecord
 
 # Acetophenone, GC, TRAP, EI+, DATA CLASS XYPOINTS, 19 points: public-domain spectrum found in standards.md 5.1 [F].
@@ -205,3 +208,23 @@ def test_differences_are_decoded_as_encoded_and_as_the_jcamp_package_does(values
     assert record.intensity.tolist() == values
     _, y = read_with_jcamp(text)
     np.testing.assert_allclose(y, values)
+
+
+def test_a_block_of_very_many_labels_is_read_in_time_that_grows_with_their_number() -> None:
+    # Each label once recounted the lines of all before it: 60,000 labels (1 MB) took minutes.
+    labels = "".join(f"##$L{number}= x\n" for number in range(30_000))
+    started = time.process_time()
+    record = read_one(BLOCK.replace("##XUNITS=", f"{labels}##XUNITS="))
+    assert time.process_time() - started < 8.0
+    assert record.extra["L29999"] == "x"
+
+
+def test_comments_between_labels_cost_bounded_memory(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("identify.readers.jcamp.MAX_RECORD_LINES", 60)
+    lines = (line for number in range(4000) for line in (f"##$L{number}= x", "$$ " + f"{number} said " * 100))
+    tracemalloc.start()
+    try:
+        assert list(parse_jcamp(itertools.chain(["##TITLE= a"], lines), "a.jdx", lambda _: None)) == []
+        assert tracemalloc.get_traced_memory()[1] < 1_000_000
+    finally:
+        tracemalloc.stop()
