@@ -19,6 +19,7 @@ import numpy as np
 
 from identify.records import FloatArray, Peaks
 from identify.runs.clusters import Cluster, cluster_ion_peaks
+from identify.runs.flanks import assign_flanks
 from identify.runs.hidden import find_hidden
 from identify.runs.ion_peaks import IonPeaks, correct_skew, estimate_skew, estimate_width, find_ion_peaks
 from identify.runs.kinds import find_kind
@@ -110,7 +111,7 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
     stage = Stage(matrix, residual, level, noise, width, float(significant.sum()), _detector_ceiling(matrix))
     shapes, extracted = _extract_all(clusters, stage)
     large = [_from_overload(overload, stage) for overload in overloads]
-    unassigned = _unassigned(extracted, shapes, stage)
+    extracted, unassigned = _with_flanks(extracted, shapes, stage)
     found = [c for c in extracted if c and not any(_is_drift(c, whole) for whole in large)] + large
     found.sort(key=lambda component: component.time_s)
     components = tuple(replace(c, number=n, **find_kind(c, found, blank)) for n, c in enumerate(found, start=1))
@@ -153,7 +154,7 @@ def _extract_all(clusters: Sequence[Cluster], stage: Stage) -> tuple[Sequence[Sh
     rest = _rest(extracted, shapes, stage)
     sigma = stage.noise.sigma(stage.level + stage.signal)
     hidden = find_hidden(
-        _left(rest, stage, sigma), stage.signal * (stage.signal > SIGNIFICANT_SIGMA * sigma), sigma, stage.width
+        _left(rest, stage.signal, sigma), stage.signal * (stage.signal > SIGNIFICANT_SIGMA * sigma), sigma, stage.width
     )
     if hidden:
         given = {id(cluster): shape for cluster, shape in hidden}
@@ -191,9 +192,9 @@ def _rest(extracted: Sequence[Component | None], shapes: Sequence[Shape], stage:
     return rest
 
 
-def _left(rest: FloatArray, stage: Stage, sigma: FloatArray) -> FloatArray:
-    """The part of a rest above noise and misfit that lasts for two scans at least, 0 elsewhere."""
-    over = rest > np.maximum(SIGNIFICANT_SIGMA * sigma, FIT_ERROR * stage.signal)
+def _left(rest: FloatArray, of: FloatArray, sigma: FloatArray) -> FloatArray:
+    """The part of a rest above noise and `FIT_ERROR` of what it is left of that lasts for two scans at least, 0 elsewhere."""
+    over = rest > np.maximum(SIGNIFICANT_SIGMA * sigma, FIT_ERROR * of)
     beside = np.zeros_like(over)
     beside[1:] |= over[:-1]
     beside[:-1] |= over[1:]
@@ -205,10 +206,24 @@ def _is_remnant(component: Component) -> bool:
     return len(component.peaks) <= REMNANT_IONS and component.purity < REMNANT_PURITY
 
 
-def _unassigned(extracted: Sequence[Component | None], shapes: Sequence[Shape], stage: Stage) -> FloatArray:
-    """Signal of each scan above its noise that no component explains, shape ``(n_scans,)``."""
+def _with_flanks(
+    extracted: Sequence[Component | None], shapes: Sequence[Shape], stage: Stage
+) -> tuple[list[Component | None], FloatArray]:
+    """Components whose areas follow their own traces at the flanks, and signal of each scan that none explains."""
     sigma = stage.noise.sigma(stage.level + stage.signal)
-    return np.asarray(_left(_rest(extracted, shapes, stage), stage, sigma).sum(axis=1))
+    rest = _rest(extracted, shapes, stage)
+    misfit = _left(rest, stage.signal, sigma) - _left(-rest, stage.signal - rest, sigma)
+    gains, unassigned = assign_flanks(extracted, shapes, stage.matrix.mz, misfit, stage.width)
+    grown = [
+        component and _with_area(component, component.area + float(gain) * stage.matrix.scan_time_s, stage)
+        for component, gain in zip(extracted, gains, strict=True)
+    ]
+    return grown, np.asarray(unassigned.sum(axis=1))
+
+
+def _with_area(component: Component, area: float, stage: Stage) -> Component:
+    share = area / (stage.total * stage.matrix.scan_time_s) if stage.total > 0 else 0.0
+    return replace(component, area=area, share_of_signal=min(1.0, share))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
