@@ -13,7 +13,7 @@ from identify.ranking.ions import compare_closely
 from identify.ranking.model import RankingModel, default_model, explain_spectra
 from identify.records import AlignedPeaks, CleanSpectrum, Entry, Explanation, FloatArray
 from identify.settings import Settings
-from identify.spectra.align import align
+from identify.spectra.align import align_all
 
 N_CLOSER = 50
 """Compounds whose best entry is compared ion by ion."""
@@ -92,15 +92,16 @@ def shortlist(
     order = np.argsort(-np.round(model.spectra.value(rows), EQUAL), kind="stable")
     chosen = order[: max(settings.top, N_DRAFTS)].tolist()
     told = explain_spectra(model, rows[chosen])
+    pairs = align_all(spectrum, [entries[places[number]].spectrum for number in chosen])
     drafts = []
-    for number, explained in zip(chosen, told, strict=True):
+    for number, explained, aligned in zip(chosen, told, pairs, strict=True):
         match = matches[places[number]]
         drafts.append(
             Draft(
                 keys[number],
                 match.entry,
                 match.library,
-                align(spectrum, match.entry.spectrum),
+                aligned,
                 match.hit.cosine,
                 match.hit.reverse,
                 rows[number],

@@ -7,6 +7,9 @@ above a spectrum's highest peak means "no ions there".
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from itertools import pairwise
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -30,20 +33,48 @@ def align(query: CleanSpectrum, entry: CleanSpectrum) -> AlignedPeaks:
     -----
     O(n log n) in the number of peaks. Symmetric: swapping the arguments swaps the columns.
     """
-    lowest = max(query.lowest_mz, entry.lowest_mz)
-    query_mz, entry_mz = query.nominal.mz, entry.nominal.mz
-    query_start = int(np.searchsorted(query_mz, lowest))
-    entry_start = int(np.searchsorted(entry_mz, lowest))
-    query_mz, entry_mz = query_mz[query_start:], entry_mz[entry_start:]
-    both = np.concatenate([query_mz, entry_mz])
-    both.sort()
-    is_first = np.ones(both.size, dtype=np.bool_)
-    np.not_equal(both[1:], both[:-1], out=is_first[1:])
-    axis = both[is_first]
-    query_intensity, entry_intensity = np.zeros(axis.size), np.zeros(axis.size)
-    query_intensity[np.searchsorted(axis, query_mz)] = query.nominal.relative[query_start:]
-    entry_intensity[np.searchsorted(axis, entry_mz)] = entry.nominal.relative[entry_start:]
-    return AlignedPeaks(axis, query_intensity, entry_intensity, lowest)
+    return align_all(query, [entry])[0]
+
+
+def align_all(query: CleanSpectrum, entries: Sequence[CleanSpectrum]) -> list[AlignedPeaks]:
+    """`align` of a query with each of many entries, several times as fast as one by one.
+
+    Parameters
+    ----------
+    query : CleanSpectrum
+    entries : sequence of CleanSpectrum
+
+    Returns
+    -------
+    list of AlignedPeaks
+        In the order of the entries.
+
+    Notes
+    -----
+    All pairs lie on one long axis, each at ``number of the pair · span + m/z``, which is then cut.
+    """
+    if not entries:
+        return []
+    n, query_mz = len(entries), query.nominal.mz
+    lowest = np.maximum(query.lowest_mz, np.array([entry.lowest_mz for entry in entries], dtype=np.int64))
+    entry_mz = np.concatenate([entry.nominal.mz for entry in entries])
+    entry_owner = np.repeat(np.arange(n), [len(entry.nominal) for entry in entries])
+    span = float(max(query_mz.max(initial=0.0), entry_mz.max(initial=0.0), lowest.max())) + 1.0
+    query_owner, place = np.nonzero(query_mz >= lowest[:, np.newaxis])
+    kept = entry_mz >= lowest[entry_owner]
+    query_key = query_owner * span + query_mz[place]
+    entry_key = (entry_owner * span + entry_mz)[kept]
+    axis = np.union1d(query_key, entry_key)
+    query_column, entry_column = np.zeros(axis.size), np.zeros(axis.size)
+    query_column[np.searchsorted(axis, query_key)] = query.nominal.relative[place]
+    relative = np.concatenate([entry.nominal.relative for entry in entries])
+    entry_column[np.searchsorted(axis, entry_key)] = relative[kept]
+    mz = axis % span
+    cuts = pairwise(np.searchsorted(axis, np.arange(n + 1) * span).tolist())
+    return [
+        AlignedPeaks(mz[start:end], query_column[start:end], entry_column[start:end], low)
+        for (start, end), low in zip(cuts, lowest.tolist(), strict=True)
+    ]
 
 
 def align_accurate(

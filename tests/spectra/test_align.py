@@ -7,7 +7,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from identify.records import CleanSpectrum, Peaks
-from identify.spectra.align import align
+from identify.spectra.align import align, align_all
 
 spectra = st.builds(
     lambda peaks, low: CleanSpectrum(
@@ -35,3 +35,21 @@ def test_swapping_the_spectra_swaps_the_columns(first: CleanSpectrum, second: Cl
     assert np.array_equal(one.mz, other.mz)
     assert np.array_equal(one.query, other.entry)
     assert np.array_equal(one.entry, other.query)
+
+
+@given(spectra, st.lists(spectra, max_size=5))
+def test_many_at_once_are_aligned_as_one_by_one_by_the_plain_definition(
+    query: CleanSpectrum, entries: list[CleanSpectrum]
+) -> None:
+    found = align_all(query, entries)
+    assert len(found) == len(entries)
+    for aligned, entry in zip(found, entries, strict=True):
+        lowest = max(query.lowest_mz, entry.lowest_mz)
+        own, theirs = (
+            dict(zip(one.nominal.mz.tolist(), one.nominal.relative.tolist(), strict=True)) for one in (query, entry)
+        )
+        axis = sorted(mz for mz in {*own, *theirs} if mz >= lowest)
+        assert aligned.lowest_mz == lowest
+        assert aligned.mz.tolist() == axis
+        assert aligned.query.tolist() == [own.get(mz, 0.0) for mz in axis]
+        assert aligned.entry.tolist() == [theirs.get(mz, 0.0) for mz in axis]
