@@ -35,7 +35,7 @@ from identify.report.words import (
     signed_text,
     visible_text,
 )
-from identify.writers.results_json import round_explanation
+from identify.writers.explanation_json import round_explanation
 
 
 class SourceList:

@@ -9,20 +9,16 @@ import json
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from functools import cache, lru_cache
 from importlib import resources
-from itertools import chain, islice
 from json.encoder import encode_basestring
 from math import isfinite
 from pathlib import Path
 from typing import Any
-
-import numpy as np
 
 from identify.records import (
     Candidate,
     Claim,
     CleaningStep,
     EvidenceItem,
-    Explanation,
     FollowUp,
     Identification,
     LibraryState,
@@ -30,8 +26,8 @@ from identify.records import (
     Purity,
     Rejection,
     Report,
-    Terms,
 )
+from identify.writers.explanation_json import write_explanations
 from identify.writers.files import open_atomically
 
 SCHEMA_NAME = "ionwitness.result/1"
@@ -40,7 +36,6 @@ _LISTS = ("queries", "rejected")
 """Parts of a result with a line for each row; the last ones."""
 DECIMALS = 6
 """Decimals of scores, probabilities, log-odds and m/z: far below what any of them means, so no information is lost."""
-SCALE = 10**DECIMALS
 SIGNIFICANT_DIGITS = 6
 """Digits of intensities, which come in any unit."""
 
@@ -78,7 +73,7 @@ def report_to_dict(report: Report) -> dict[str, Any]:
     -----
     ``library`` is the first library searched and ``libraries`` all of them. Scores, probabilities and log-odds carry
     `DECIMALS` decimals; parts of an explanation are rounded together so that the printed parts add up to the printed
-    value (`round_explanation`). Same report, same dict: nothing here reads a clock, a locale or the environment. The dict is
+    value (`identify.writers.explanation_json`). Same report, same dict: nothing here reads a clock, a locale or the environment. The dict is
     the text of `report_to_json`, read back: what a result says is decided once.
     """
     document: dict[str, Any] = json.loads(report_to_json(report))
@@ -183,63 +178,6 @@ def write_json_stream(path: Path, frame: Report, queries: Iterable[str], rejecte
         for piece in _json_pieces(frame, queries, rejected):
             # A lone surrogate cannot be UTF-8; its backslash form is the JSON escape of the same character.
             file.write(piece.encode("utf-8", "backslashreplace"))
-
-
-def round_explanation(explanation: Explanation, decimals: int = DECIMALS) -> Explanation:
-    """The same tree with every value rounded to `decimals`, so that rounded parts still add up to rounded values.
-
-    Parameters
-    ----------
-    explanation : Explanation
-    decimals : int
-        Decimals kept, 0–12.
-
-    Returns
-    -------
-    Explanation
-
-    Notes
-    -----
-    Top down: the root is rounded as usual; below it, each value is rounded down and the missing units of the last digit go to the
-    parts with the largest remainders (largest-remainder apportionment). No part moves by more than one unit of the last digit.
-
-    Examples
-    --------
-    >>> third = [Explanation(name, 1 / 3) for name in "abc"]
-    >>> tree = round_explanation(Explanation("all", 1.0, parts=tuple(third)), decimals=1)
-    >>> [part.value for part in tree.parts]
-    [0.4, 0.3, 0.3]
-    """
-    scale = 10**decimals
-    return _rounded(explanation, round(explanation.value * scale), scale)
-
-
-def _rounded(explanation: Explanation, units: int, scale: int) -> Explanation:
-    shares = _share_units([explanation], [units], scale)
-    parts = tuple(_rounded(part, share, scale) for part, share in zip(explanation.parts, shares, strict=True))
-    return Explanation(explanation.label, units / scale, explanation.detail, parts)
-
-
-def _share_units(trees: Sequence[Explanation], units: Sequence[int], scale: int) -> list[int]:
-    """Units of the last digit for the parts of all trees, one after the other, adding up to `units` (`round_explanation`)."""
-    sizes = np.array([len(tree.parts) for tree in trees], dtype=np.int64)
-    values = np.array(list(chain.from_iterable(map(_values_of, trees)))) * scale
-    if not np.isfinite(values).all():
-        raise ValueError("a part of an explanation is no number, which JSON cannot say")
-    lower = np.floor(values)
-    owner = np.repeat(np.arange(sizes.size), sizes)
-    missing = np.array(units) - np.bincount(owner, lower, minlength=sizes.size).astype(np.int64)
-    by_remainder = np.lexsort((lower - values, owner))  # stable: of equal remainders the first comes first
-    place = np.empty_like(owner)
-    place[by_remainder] = np.arange(owner.size) - np.repeat(np.cumsum(sizes) - sizes, sizes)
-    laps, rest = np.divmod(np.maximum(missing, 0), np.maximum(sizes, 1))
-    shares: list[int] = (lower.astype(np.int64) + laps[owner] + (place < rest[owner])).tolist()
-    return shares
-
-
-def _values_of(tree: Explanation) -> Sequence[float]:
-    parts = tree.parts
-    return parts.values if isinstance(parts, Terms) else [part.value for part in parts]
 
 
 def _frame(report: Report) -> dict[str, Any]:
@@ -356,7 +294,7 @@ def _claim(claim: Claim) -> dict[str, Any]:
 def _hit_texts(candidates: Sequence[Candidate]) -> Iterator[str]:
     """JSON of each candidate."""
     trees = [candidate.explanation for candidate in candidates]
-    explanations = _explanation_texts(trees, [round(tree.value * SCALE) for tree in trees])
+    explanations = write_explanations(trees, DECIMALS)
     for candidate, told in zip(candidates, explanations, strict=True):
         evidence = ", ".join(map(_evidence_text, candidate.evidence))
         notes = _dumps(list(candidate.notes))
@@ -396,43 +334,6 @@ def _evidence_text(item: EvidenceItem) -> str:
         f'"observed": {q(item.observed)}, "expected": {q(item.expected)}, "uncertainty": {q(item.uncertainty)}, '
         f'"log_odds": {_number(item.log_odds)}, "source": {q(item.source)}}}'
     )
-
-
-def _explanation_texts(trees: Sequence[Explanation], units: Sequence[int]) -> list[str]:
-    """JSON of what `round_explanation` gives for roots of `units` / `SCALE`, written straight away and level by level.
-
-    Explanations are half of a result; by way of rounded trees and dicts of them it takes four times as long.
-    """
-    shares = iter(_share_units(trees, units, SCALE))
-    of_tree = [list(islice(shares, len(tree.parts))) for tree in trees]
-    branches = [
-        (tree.parts, own) for tree, own in zip(trees, of_tree, strict=True) if not isinstance(tree.parts, Terms)
-    ]
-    below: Iterator[str] = iter(())
-    if any(parts for parts, _ in branches):
-        children = [part for parts, _ in branches for part in parts]
-        below = iter(_explanation_texts(children, [share for _, own in branches for share in own]))
-    texts = []
-    for tree, total, own in zip(trees, units, of_tree, strict=True):
-        parts = tree.parts
-        told = _terms_text(parts, own) if isinstance(parts, Terms) else ", ".join(islice(below, len(parts)))
-        label, detail = encode_basestring(tree.label), encode_basestring(tree.detail)
-        texts.append(f'{{"label": {label}, "value": {total / SCALE}, "detail": {detail}, "parts": [{told}]}}')
-    return texts
-
-
-def _terms_text(terms: Terms, shares: Sequence[int]) -> str:
-    texts = [
-        f'{head}{share / SCALE}, "detail": {encode_basestring(detail)}, "parts": []}}'
-        for head, share, detail in zip(_heads(terms.labels), shares, terms.details, strict=True)
-    ]
-    return ", ".join(texts)
-
-
-@lru_cache(maxsize=4096)
-def _heads(labels: tuple[str, ...]) -> tuple[str, ...]:
-    """Beginnings of the JSON of explanations; the same labels stand under every candidate."""
-    return tuple(f'{{"label": {encode_basestring(label)}, "value": ' for label in labels)
 
 
 def _follow_up(plan: FollowUp) -> dict[str, Any]:

@@ -14,11 +14,11 @@ import pytest
 
 from identify.errors import UsageError
 from identify.records import EvidenceItem, Explanation, Identification, Terms, Verdict
+from identify.writers.explanation_json import round_explanation
 from identify.writers.results_json import (
     load_schema,
     report_to_dict,
     report_to_json,
-    round_explanation,
     write_json,
 )
 from tests.builders import build_candidate, build_identification, build_large_report, build_report
@@ -198,6 +198,11 @@ def test_rounded_parts_add_up_and_stay_within_one_unit(decimals: int) -> None:
     assert round(sum(part.value for part in found.parts[0].parts) * units) == round(found.parts[0].value * units)
     for before, after in zip(inner, found.parts[0].parts, strict=True):
         assert abs(before.value - after.value) <= 1 / units + 1e-12
+
+
+def test_a_query_without_candidates_has_no_hits() -> None:
+    found = report_to_dict(build_report(replace(build_identification(), candidates=())))
+    assert found["queries"][0]["hits"] == []
 
 
 def test_same_report_gives_the_same_text() -> None:
