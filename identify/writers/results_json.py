@@ -73,8 +73,8 @@ def report_to_dict(report: Report) -> dict[str, Any]:
     -----
     ``library`` is the first library searched and ``libraries`` all of them. Scores, probabilities and log-odds carry
     `DECIMALS` decimals; parts of an explanation are rounded together so that the printed parts add up to the printed
-    value (`identify.writers.explanation_json`). Same report, same dict: nothing here reads a clock, a locale or the environment. The dict is
-    the text of `report_to_json`, read back: what a result says is decided once.
+    value (`identify.writers.explanation_json`). Same report, same dict: nothing here reads a clock, a locale or the
+    environment. The dict is the text of `report_to_json`, read back: what a result says is decided once.
     """
     document: dict[str, Any] = json.loads(report_to_json(report))
     return document
