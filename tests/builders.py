@@ -7,7 +7,9 @@ candidates), one without claim. Nothing here is reference data, and nothing is c
 from __future__ import annotations
 
 import random
-from collections.abc import Mapping, Sequence
+import time
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from dataclasses import replace
 from types import MappingProxyType
 
@@ -58,6 +60,17 @@ CHLORO_UNKNOWN = {36: 4, 50: 9, 51: 6, 62: 5, 63: 9, 74: 12, 75: 22, 85: 5, 99: 
                   147: 10, 173: 42, 175: 27, 177: 4.5, 188: 3, 201: 100, 202: 9, 203: 64, 204: 6, 205: 10, 216: 34, 217: 4,
                   218: 22, 220: 3.5}  # fmt: skip
 BACKGROUND = {55: 3, 69: 2, 73: 6, 147: 2, 207: 9, 208: 2, 281: 3}
+
+
+@contextmanager
+def at_most(seconds: float) -> Iterator[None]:
+    """A block that takes no more processor time than this, however busy the machine is with other work."""
+    before = time.process_time()
+    try:
+        yield
+    finally:
+        took = time.process_time() - before
+        assert took < seconds
 
 
 def build_peaks(peaks: Mapping[float, float]) -> Peaks:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import math
+import sys
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any, TypeVar
@@ -92,7 +92,8 @@ class _Table:
 
     def number(self, name: str) -> float:
         found = self.value.get(name)
-        if isinstance(found, bool) or not isinstance(found, int | float) or not math.isfinite(found):
+        # Not `isfinite`, which fails on a whole number that no float can hold.
+        if isinstance(found, bool) or not isinstance(found, int | float) or not abs(found) <= sys.float_info.max:
             raise self.refuse(name, found, "a number")
         return float(found)
 

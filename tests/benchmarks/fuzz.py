@@ -1,6 +1,7 @@
 """Coverage-guided fuzzing (atheris) of everything that takes bytes from outside.
 
-``python tests/benchmarks/fuzz.py TARGET [--seconds 200] [--corpus DIR]`` with TARGET one of those in `TARGETS`.
+``python tests/benchmarks/fuzz.py TARGET [--seconds 200] [--corpus DIR]`` with TARGET one of those in `TARGETS`; `http` sends
+requests to the workbench in this process, as `tests/workbench/http_surface.py` makes them of choices.
 
 Needs atheris, which no dependency list of this package names: it is a tool for contributors. Seeds are the files of
 `fixtures/broken` and the demo case; what is found is kept by libFuzzer as ``crash-*`` in the working folder and becomes a
@@ -140,9 +141,45 @@ def fuzz_library(data: bytes) -> None:
             pass
 
 
+class Chosen:
+    """Choices of the fuzzer: the bytes of one input, zeros after their end."""
+
+    def __init__(self, data: bytes) -> None:
+        self._provider = atheris.FuzzedDataProvider(data)
+
+    def below(self, limit: int) -> int:
+        return int(self._provider.ConsumeIntInRange(0, limit - 1))
+
+    def text(self) -> str:
+        return str(self._provider.ConsumeUnicode(20))
+
+    def data(self) -> bytes:
+        return bytes(self._provider.ConsumeBytes(60))
+
+
+SURFACES: list[Any] = []
+N_ON_ONE_SURFACE = 500
+"""Requests after which the library and the case are those of the start again."""
+
+
+def fuzz_http(data: bytes) -> None:
+    """A request to the workbench."""
+    from http_surface import check_answer, choose_request, fresh_surface
+
+    if not SURFACES or SURFACES[2] == 0:
+        if SURFACES:
+            SURFACES[1].__exit__(None, None, None)
+        opened = fresh_surface(FOLDER / "made", FOLDER / "attacked")
+        SURFACES[:] = [opened.__enter__(), opened, N_ON_ONE_SURFACE]
+    SURFACES[2] -= 1
+    surface = SURFACES[0]
+    asked = choose_request(surface, Chosen(data))
+    check_answer(surface, asked, surface.ask(asked))
+
+
 TARGETS: dict[str, Callable[[bytes], None]] = {
     "lines": fuzz_lines, "files": fuzz_files, "pasted": fuzz_pasted, "runs": fuzz_runs, "settings": fuzz_settings,
-    "results": fuzz_results, "library": fuzz_library,
+    "results": fuzz_results, "library": fuzz_library, "http": fuzz_http,
 }  # fmt: skip
 MAX_SECONDS = 2.0
 
@@ -169,6 +206,8 @@ def seed(target: str, corpus: Path) -> None:
         (corpus / "made.cdf").write_bytes(_small_run())
     if target == "results":
         _make_result(corpus)
+    if target == "http":
+        _make_surface(corpus)
     if target == "library":
         _make_small_library()
         size = (FOLDER / "good.ionlib").stat().st_size
@@ -183,6 +222,18 @@ def _small_run() -> bytes:
     path = FOLDER / "seed.cdf"
     write_andi(path)
     return path.read_bytes()
+
+
+def _make_surface(corpus: Path) -> None:
+    import random
+
+    sys.path[:0] = [str(ROOT), str(ROOT / "tests" / "workbench")]
+    with atheris.instrument_imports(include=["identify", "fastapi", "starlette", "multipart", "python_multipart"]):
+        from http_surface import make_folder
+    make_folder(FOLDER / "made")
+    chance = random.Random(5)
+    for number in range(200):
+        (corpus / str(number)).write_bytes(chance.randbytes(chance.randint(1, 80)))
 
 
 def _make_library() -> None:

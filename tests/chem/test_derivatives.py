@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import pytest
-from hypothesis import given, settings
+from hypothesis import given
 from hypothesis import strategies as st
 
 from identify.chem.derivatives import (
@@ -103,7 +103,6 @@ def test_names_and_absence_are_no_derivative(text: str) -> None:
     assert find_derivative(text) is None
 
 
-@settings(deadline=None)
 @given(st.text(alphabet="TMSBDEOXFAPHC nx0123456789;,()[]-+_ae\x00", max_size=80))
 def test_any_text_is_read_without_failing(text: str) -> None:
     found = find_derivative(text)
@@ -202,7 +201,6 @@ def test_two_unknown_numbers_share_the_bound() -> None:
     assert totals == [2, 3, 3]
 
 
-@settings(deadline=None)
 @given(st.sampled_from(sorted(GROUPS)), st.integers(1, 4))
 def test_each_group_is_added_as_often_as_stated(group: str, number: int) -> None:
     parent = Formula.from_counts({"C": 20, "H": 40, "O": 10})

@@ -6,7 +6,7 @@ import random
 
 import molmass
 import pytest
-from hypothesis import given, settings
+from hypothesis import given
 from hypothesis import strategies as st
 
 from identify.chem.formula import (
@@ -121,7 +121,6 @@ def test_refusal_names_the_file_when_told() -> None:
         parse_formula("Cx", where="a.txt:7")
 
 
-@settings(deadline=None)
 @given(st.text(alphabet="CHNOSiClBrD[](){}0123456789+-^.·*• x\x00٣", max_size=60))
 def test_any_text_gives_a_formula_or_a_formula_error(text: str) -> None:
     try:
@@ -132,13 +131,11 @@ def test_any_text_gives_a_formula_or_a_formula_error(text: str) -> None:
     assert 0 < formula.nominal_mass <= MAX_NOMINAL_MASS
 
 
-@settings(deadline=None)
 @given(formulas.filter(lambda formula: bool(formula.counts)))
 def test_hill_text_reads_back_as_the_same_formula(formula: Formula) -> None:
     assert parse_formula(formula.hill) == formula
 
 
-@settings(deadline=None)
 @given(formulas, formulas)
 def test_masses_counts_and_charges_add_up(one: Formula, two: Formula) -> None:
     total = one + two
@@ -151,7 +148,6 @@ def test_masses_counts_and_charges_add_up(one: Formula, two: Formula) -> None:
     assert rings_plus_double_bonds(total) == rings_plus_double_bonds(one) + rings_plus_double_bonds(two) - 1
 
 
-@settings(deadline=None)
 @given(formulas)
 def test_order_of_atoms_does_not_matter(formula: Formula) -> None:
     shuffled = list(formula.counts)

@@ -6,7 +6,7 @@ from collections.abc import Iterator, Sequence
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from identify.errors import IndexDamaged, SpectrumError, UsageError
@@ -18,7 +18,7 @@ from identify.similarity.scores import cosine_score, reverse_score
 from identify.spectra.align import align
 
 WEIGHTINGS = (Weighting(), Weighting(0.0, 1.0), Weighting(3.0, 0.6))
-relaxed = settings(max_examples=20, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+relaxed = settings(max_examples=20)
 
 
 def spectrum(peaks: dict[int, float], lowest_mz: int | None = None) -> CleanSpectrum:

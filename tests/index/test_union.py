@@ -20,7 +20,7 @@ def spectrum(peaks: dict[int, float]) -> CleanSpectrum:
     return CleanSpectrum(Peaks(mz, [peaks[m] for m in mz]), None, 38)
 
 
-@settings(max_examples=30, deadline=None)
+@settings(max_examples=30)
 @given(library=st.lists(peak_maps, max_size=20), query=peak_maps, n_parts=st.integers(1, 4), k=st.integers(1, 5))
 def test_parts_unite_to_the_answer_of_the_whole(
     library: list[dict[int, float]], query: dict[int, float], n_parts: int, k: int

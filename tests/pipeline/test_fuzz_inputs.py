@@ -14,7 +14,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from identify.chem.formula import parse_formula
@@ -28,10 +28,9 @@ from identify.pipeline.files import search_pasted
 from identify.retention import parse_ladder
 from identify.settings import Settings, resolve
 from identify.writers.results_json import report_to_dict
+from tests.builders import at_most
 
-quiet = settings(
-    max_examples=60, deadline=2000, suppress_health_check=[HealthCheck.too_slow, HealthCheck.function_scoped_fixture]
-)
+quiet = settings(max_examples=60)
 WORDS = st.sampled_from(
     ["top", "=", "25", "[cleaning]", "[weighting]", "mz_power", "nan", "inf", "-1", "1e999", "true", '"x"', "[", "]", "\n", ".",
      "noise_fraction", "claim_threshold", "'''",
@@ -47,7 +46,8 @@ TEXTS = st.one_of(
 @given(text=TEXTS)
 def test_any_text_is_taken_or_refused_in_words(take: Callable[[str], object], text: str) -> None:
     try:
-        take(text)
+        with at_most(seconds=2.0):
+            take(text)
     except IonwitnessError as error:
         assert error.found and error.expected and len(error.message) < 1000
 
@@ -97,10 +97,25 @@ def test_a_result_with_odd_values_is_compared_or_refused_in_words(
     path = tmp_path / "odd.json"
     path.write_text(json.dumps(document), "utf-8")
     try:
-        found = compare_results(good, read_result(path), ("a", "b"))
+        with at_most(seconds=2.0):
+            found = compare_results(good, read_result(path), ("a", "b"))
         assert found.n_same >= 0
     except IonwitnessError as error:
         assert error.message and len(error.message) < 5000
+
+
+@pytest.mark.parametrize(
+    "value", [10**400, -(10**400), float("nan"), float("inf"), True, "1"], ids=lambda v: str(v)[:5]
+)
+def test_a_number_that_no_float_can_hold_is_refused_in_words(
+    value: object, good: dict[str, Any], tmp_path: Path
+) -> None:
+    document = copy.deepcopy(good)
+    document["queries"][0]["hits"][0]["probability"] = value
+    path = tmp_path / "odd.json"
+    path.write_text(json.dumps(document), "utf-8")
+    with pytest.raises(IonwitnessError, match="probability.*expected a number"):
+        compare_results(good, read_result(path), ("a", "b"))
 
 
 @settings(quiet, max_examples=40)
@@ -117,7 +132,8 @@ def test_a_library_with_bytes_changed_is_read_or_refused_in_words(
     path.write_bytes(bytes(content[: data.draw(st.sampled_from([len(content), len(content) // 2, 5000, 90]))]))
     for use in (verify_library, _read_all):
         try:
-            use(path)
+            with at_most(seconds=2.0):
+                use(path)
         except IonwitnessError as error:
             assert error.message
 

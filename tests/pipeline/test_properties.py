@@ -19,7 +19,7 @@ from typing import Any
 import jsonschema
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from identify.library.build import build_library
@@ -138,9 +138,7 @@ def spectra(draw: st.DrawFn) -> SpectrumRecord:
     return SpectrumRecord(Source("made.csv", 1), np.array(mz, float), np.array([peaks[m] for m in mz]), title="made")
 
 
-@settings(
-    max_examples=40, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow]
-)
+@settings(max_examples=40)
 @given(record=spectra())
 def test_any_spectrum_gives_a_valid_result_that_claims_no_more_than_its_evidence(
     record: SpectrumRecord, opened: tuple[SearchableLibrary, ...], validator: Any
@@ -149,9 +147,7 @@ def test_any_spectrum_gives_a_valid_result_that_claims_no_more_than_its_evidence
     check_result(result(found), validator)
 
 
-@settings(
-    max_examples=10, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow]
-)
+@settings(max_examples=10)
 @given(record=spectra(), exponent=st.integers(-20, 40))
 def test_the_scale_of_the_intensities_changes_nothing(
     record: SpectrumRecord, exponent: int, opened: tuple[SearchableLibrary, ...]

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from identify.errors import FormatError, InputError, IonwitnessError
@@ -118,7 +118,7 @@ def test_a_missing_file_and_a_text_file_are_refused(tmp_path: Path) -> None:
     assert not is_run(tmp_path / "a.txt")
 
 
-@settings(max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@settings(max_examples=150)
 @given(
     flips=st.lists(st.tuples(st.integers(0, 5000), st.integers(0, 255)), min_size=1, max_size=6),
     cut=st.integers(0, 400),
@@ -188,7 +188,7 @@ def test_an_mzml_run_above_the_bound_is_not_read_to_its_end(tmp_path: Path, monk
         read_run(path)
 
 
-@settings(max_examples=80, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@settings(max_examples=80)
 @given(
     flips=st.lists(st.tuples(st.integers(0, 9000), st.integers(32, 126)), min_size=1, max_size=5),
     cut=st.integers(0, 900),

@@ -51,7 +51,7 @@ weightings = st.builds(Weighting, mz_power=st.floats(0.0, 3.0), intensity_power=
 
 
 @every_measure
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 @given(pair=pairs(), weighting=weightings)
 def test_every_score_is_in_the_unit_interval(
     measure: Callable[..., float], pair: AlignedPeaks, weighting: Weighting
@@ -60,7 +60,7 @@ def test_every_score_is_in_the_unit_interval(
 
 
 @symmetric_measure
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 @given(pair=pairs(), weighting=weightings)
 def test_symmetric_measures_ignore_which_spectrum_is_the_query(
     measure: Callable[..., float], pair: AlignedPeaks, weighting: Weighting
@@ -70,7 +70,7 @@ def test_symmetric_measures_ignore_which_spectrum_is_the_query(
 
 
 @every_measure
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 @given(pair=pairs(), weighting=weightings, factor=st.sampled_from([0.25, 3.0, 1000.0]))
 def test_scaling_one_spectrum_changes_no_score(
     measure: Callable[..., float], pair: AlignedPeaks, weighting: Weighting, factor: float
@@ -104,7 +104,7 @@ def test_cosine_with_weights_follows_the_equation() -> None:
     assert scores.cosine_score(pair, Weighting(mz_power=1.0, intensity_power=0.5)) == pytest.approx(expected, abs=1e-14)
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 @given(pair=pairs(), weighting=weightings)
 def test_contributions_add_up_to_the_cosine(pair: AlignedPeaks, weighting: Weighting) -> None:
     parts = scores.cosine_contributions(pair, weighting)
@@ -114,7 +114,7 @@ def test_contributions_add_up_to_the_cosine(pair: AlignedPeaks, weighting: Weigh
     assert parts.sum() == pytest.approx(scores.cosine_score(pair, weighting), abs=1e-12)
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 @given(pair=pairs(), weighting=weightings)
 def test_reverse_is_the_cosine_after_dropping_query_peaks_the_entry_lacks(
     pair: AlignedPeaks, weighting: Weighting

@@ -55,7 +55,7 @@ def test_the_common_range_starts_half_a_dalton_below_the_nominal_limit() -> None
     assert align_accurate(query, entry, 43, 10.0, 0.0).mz.tolist() == [42.6]
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=60)
 @given(query=peak_lists, entry=peak_lists, da=st.sampled_from([0.0, 0.001, 0.05, 3.0]))
 def test_alignment_is_symmetric_one_to_one_and_loses_no_peak(query: Peaks, entry: Peaks, da: float) -> None:
     forth, back = align_accurate(query, entry, 1, 0.0, da), align_accurate(entry, query, 1, 0.0, da)
@@ -67,7 +67,7 @@ def test_alignment_is_symmetric_one_to_one_and_loses_no_peak(query: Peaks, entry
     assert ((forth.query > 0) | (forth.entry > 0)).all()
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 @given(query=peak_lists, entry=peak_lists)
 def test_pairs_are_each_others_nearest(query: Peaks, entry: Peaks) -> None:
     tolerance = 0.5

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, assume, given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from identify.errors import FormatError, UsageError
@@ -84,9 +84,7 @@ heights = st.floats(1e-6, 1e12)
 
 
 @every_format
-@settings(
-    max_examples=25, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow]
-)
+@settings(max_examples=25)
 @given(
     peaks=st.lists(st.tuples(masses, heights), min_size=1, max_size=12),
     name=plain,
