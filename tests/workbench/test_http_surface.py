@@ -9,9 +9,9 @@ from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
+from http_surface import GOOD, Surface, check_answer, choose_request, fresh_surface, make_folder, request_of
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from http_surface import GOOD, Surface, check_answer, choose_request, fresh_surface, make_folder, request_of
 
 from tests.builders import at_most
 
