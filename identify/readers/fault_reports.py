@@ -8,6 +8,11 @@ from identify.errors import FormatError, InputError
 from identify.records import Rejection
 
 OnReject = Callable[[Rejection], None]
+NOT_EI = "not electron ionization"
+NOT_MS1 = "not a full-scan spectrum (MS1)"
+"""Reasons that readers and the library give in the same words, so that they are counted as one."""
+FOREIGN_FAULTS = (ValueError, KeyError, IndexError, TypeError, AttributeError, AssertionError, OverflowError)
+"""What parsers of other packages raise on input they do not expect, besides their own error classes."""
 
 
 def fault(what: str, path: str, line: int, *, found: str = "", expected: str = "", hint: str = "") -> FormatError:

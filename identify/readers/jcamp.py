@@ -14,7 +14,7 @@ from dataclasses import dataclass, field, replace
 from identify.errors import InputError, quote
 from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
 from identify.readers.jcamp_data import Axis, DataSection, Points, parse_data
-from identify.readers.limits import MAX_RECORD_LINES
+from identify.readers.limits import LINE_OVERHEAD_BYTES, MAX_RECORD_BYTES
 from identify.readers.named_fields import NamedFields, cut_field, record_from_fields
 from identify.readers.numbers import find_number, parse_number
 from identify.records import Source, SpectrumRecord
@@ -28,6 +28,10 @@ _SHAPE_LABELS = frozenset(
     | {"FIRST", "LAST", "MIN", "MAX", "FACTOR"}
 )
 """Labels that say how the block is built: read where they matter, not kept."""
+_MAX_NESTED = 16
+"""LINK blocks inside each other: one is usual."""
+_MAX_LOOSE_COMMENTS = 1000
+"""Comments kept of those before the first block."""
 _NO_LABEL = "?"
 _NOT_STATED = "not stated"
 _FREE_LICENCE = re.compile(r"public domain|\bCC0\b|\bCC[ -]BY", re.IGNORECASE)
@@ -41,6 +45,13 @@ class _Label:
     name: str
     lines: list[str]
     line: int
+    n_bytes: int = 0
+
+    def add(self, text: str) -> None:
+        """Take one more line; what passes the bound is passed over, and `n_bytes` says so."""
+        self.n_bytes += len(text) + LINE_OVERHEAD_BYTES
+        if self.n_bytes <= MAX_RECORD_BYTES:
+            self.lines.append(text)
 
     @property
     def value(self) -> str:
@@ -55,11 +66,23 @@ class _Block:
     labels: dict[str, _Label] = field(default_factory=dict)
     pairs: list[tuple[str, str]] = field(default_factory=list)
     comments: list[str] = field(default_factory=list)
-    n_lines: int = 0
+    n_bytes: int = 0
     error: InputError | None = None
     page: dict[str, _Label] = field(default_factory=dict)
     n_pages: int = 0
     n_inner: int = 0
+
+    def add_comment(self, text: str) -> None:
+        self.n_bytes += len(text) + LINE_OVERHEAD_BYTES
+        if self.n_bytes <= MAX_RECORD_BYTES:
+            self.comments.append(text)
+
+    def refuse_if_faulty(self, path: str) -> None:
+        if self.error is not None:
+            raise self.error
+        if self.n_bytes > MAX_RECORD_BYTES:
+            found = f"more than {MAX_RECORD_BYTES} bytes"
+            raise fault("block", path, self.line, found=found, expected="one spectrum with its metadata")
 
     def text(self, label: str) -> str:
         return self.labels[label].value if label in self.labels else ""
@@ -105,6 +128,7 @@ def parse_jcamp(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterato
 def _split_labels(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterator[_Label]:
     current: _Label | None = None
     comments: list[_Label] = []
+    n_said = 0
     for line_number, line in enumerate(lines, 1):
         text, mark, comment = line.partition("$$")
         stripped = text.strip()
@@ -112,20 +136,22 @@ def _split_labels(lines: Iterable[str], path: str, on_reject: OnReject) -> Itera
             if current is not None:
                 yield current
             yield from comments
-            comments = []
+            comments, n_said = [], 0
             name, equals, value = stripped[2:].partition("=")
             label = re.sub(r"[\s\-/_]", "", name).upper() if equals else _NO_LABEL
-            current = _Label(label, name.strip(), [value.strip()], line_number)
-        elif current is not None and len(current.lines) <= MAX_RECORD_LINES and (stripped or not mark):
-            current.lines.append(stripped)
+            current = _Label(label, name.strip(), [], line_number)
+            current.add(value.strip())
+        elif current is not None and (stripped or not mark):
+            current.add(stripped)
         elif stripped and current is None:
             error = fault("text before a label", path, line_number, found=quote(stripped), expected="'##TITLE='")
             on_reject(rejection_of(error, path))
             current = _Label("", "", [], line_number)
         elif current is not None:
             # A comment line keeps its place, so that line numbers of data rows stay right.
-            current.lines.append("")
-        if comment.strip() and len(comments) < MAX_RECORD_LINES:
+            current.add("")
+        n_said += len(comment) + LINE_OVERHEAD_BYTES
+        if comment.strip() and n_said <= MAX_RECORD_BYTES:
             comments.append(_Label("$$", "", [cut_field(comment.strip())], line_number))
     if current is not None:
         yield current
@@ -144,12 +170,16 @@ class _Reader:
     def take(self, label: _Label) -> Iterator[SpectrumRecord]:
         """Records that `label` completes."""
         if label.label == "$$":
-            comments = self._open[-1].comments if self._open else self._comments
-            if len(comments) < MAX_RECORD_LINES:
-                comments.append(label.lines[0])
+            if self._open:
+                self._open[-1].add_comment(label.lines[0])
+            elif len(self._comments) < _MAX_LOOSE_COMMENTS:
+                self._comments.append(label.lines[0])
         elif label.label == "TITLE":
             if self._open and not self._open[-1].is_link:
                 self._reject_open(label)
+            if len(self._open) == _MAX_NESTED:
+                found, expected = f"more than {_MAX_NESTED} blocks inside each other", "one LINK block around spectra"
+                raise fault("block", self._path, label.line, found=found, expected=expected)
             block = _Block(label.line, {"TITLE": label}, comments=self._comments)
             self._comments = []
             self._open.append(block)
@@ -183,8 +213,7 @@ class _Reader:
         if self._open:
             self._open[-1].n_inner += 1
         try:
-            if block.error is not None:
-                raise block.error
+            block.refuse_if_faulty(self._path)
             if block.is_link:
                 self._check_link(block)
                 return
@@ -217,8 +246,7 @@ class _Reader:
         block.n_pages += 1
         line = page["PAGE"].line if "PAGE" in page else block.line
         try:
-            if block.error is not None:
-                raise block.error
+            block.refuse_if_faulty(self._path)
             _check_kind(block, self._path)
             yield self._build(block, page, line)
         except InputError as error:
@@ -255,13 +283,10 @@ def _add_label(block: _Block, label: _Label, path: str) -> None:
         found = quote(f"##{label.name}")
         block.error = block.error or fault("label", path, label.line, found=found, expected="'##LABEL= value'")
     if not label.label:
-        block.comments.append(cut_field(label.value))
+        block.add_comment(cut_field(label.value))
         return
-    block.n_lines += len(label.lines)
-    if block.n_lines > MAX_RECORD_LINES:
-        block.error = block.error or fault(
-            "block", path, block.line, found=f"more than {MAX_RECORD_LINES} lines", expected="fewer"
-        )
+    block.n_bytes += label.n_bytes
+    if block.n_bytes > MAX_RECORD_BYTES:
         return
     block.labels[label.label] = label
     if label.label not in _SHAPE_LABELS:

@@ -12,11 +12,15 @@ MAX_PEAKS = 100_000
 MAX_LINE_BYTES = 4 * 1024 * 1024
 """Bytes of one line: `MAX_PEAKS` pairs written on a single line still fit."""
 
-MAX_RECORD_LINES = MAX_PEAKS * 3
-"""Lines of one record: peaks, their annotation and all metadata."""
+MAX_RECORD_BYTES = 16 * 1024 * 1024
+"""Bytes of one record with all metadata, `LINE_OVERHEAD_BYTES` added to each line: `MAX_PEAKS` lines, annotated, still fit."""
+
+LINE_OVERHEAD_BYTES = 32
+"""What a line costs beside its text, so that very many short lines count as well."""
 
 MAX_FILE_BYTES = 512 * 1024 * 1024
-"""Bytes of one text file, or of one member of an archive after unpacking."""
+"""Bytes of one mzML file, of one gzipped file, or of one member of an archive, after unpacking. Plain text has no such bound:
+it is read record by record."""
 
 MAX_ARCHIVE_BYTES = 4 * 1024 * 1024 * 1024
 """Bytes of all members of one archive together after unpacking."""

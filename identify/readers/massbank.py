@@ -14,7 +14,7 @@ import numpy as np
 
 from identify.errors import InputError, quote
 from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
-from identify.readers.limits import MAX_FIELD_CHARS, MAX_RECORD_LINES
+from identify.readers.named_fields import cut_field
 from identify.readers.numbers import parse_columns
 from identify.readers.statements import (
     ionization_of_instrument_type,
@@ -23,6 +23,7 @@ from identify.readers.statements import (
     read_mass_range,
     read_retention,
 )
+from identify.readers.text_lines import RecordLines
 from identify.records import Acquisition, FloatArray, Identity, Source, SpectrumRecord
 
 END = "//"
@@ -61,46 +62,38 @@ def parse_massbank(lines: Iterable[str], path: str, on_reject: OnReject) -> Iter
         ``TAG`` or ``TAG SUBTAG``, repeated ones joined by line feeds. A retention index that cannot be one (0, NA, equal
         to the retention time) is left out and kept in `extra` with the reason.
     """
-    for number, (block, first_line, is_closed) in enumerate(_split_records(lines), 1):
+    for number, (block, is_closed) in enumerate(_split_records(lines), 1):
         try:
+            block.refuse_if_full(path)
             if not is_closed:
                 raise fault(
-                    "record without end",
-                    path,
-                    first_line + len(block) - 1,
-                    found=quote(block[-1]),
-                    expected="a line '//'",
+                    "record without end", path, block.last_line, found=quote(block.lines[-1]), expected="a line '//'",
                     hint="The file may be truncated.",
-                )
-            yield _parse_record(block, first_line, path, number)
+                )  # fmt: skip
+            yield _parse_record(block.lines, block.first_line, path, number)
         except InputError as error:
-            on_reject(rejection_of(error, path, first_line))
+            on_reject(rejection_of(error, path, block.first_line))
 
 
-def _split_records(lines: Iterable[str]) -> Iterator[tuple[list[str], int, bool]]:
-    block: list[str] = []
-    first_line = 1
+def _split_records(lines: Iterable[str]) -> Iterator[tuple[RecordLines, bool]]:
+    """Lines of each record, and whether its end mark is there."""
+    block = RecordLines()
     for line_number, line in enumerate(lines, 1):
-        if line[:2] == "  " and block:
-            # Lines beyond the bound are passed over; the record then has more peaks than any reader takes.
-            if len(block) < MAX_RECORD_LINES:
-                block.append(line)
-        elif line.rstrip() == END:
+        if line.rstrip() == END:
             if block:
-                yield block, first_line, True
-            block = []
-        elif block and line.startswith("ACCESSION:"):
-            yield block, first_line, False
-            block, first_line = [line], line_number
-        elif block or line.strip():
-            if not block:
-                first_line = line_number
-            if len(block) < MAX_RECORD_LINES:
-                block.append(line)
-    while block and not block[-1].strip():
-        block.pop()
+                yield block, True
+            block = RecordLines()
+            continue
+        if block and line.startswith("ACCESSION:"):
+            yield block, False
+            block = RecordLines()
+        if block or line.strip():
+            block.add(line, line_number)
+    while block and not block.lines[-1].strip():
+        block.lines.pop()
+        block.last_line -= 1
     if block:
-        yield block, first_line, False
+        yield block, False
 
 
 class _Fields:
@@ -134,7 +127,7 @@ class _Fields:
 def _parse_record(block: list[str], first_line: int, path: str, number: int) -> SpectrumRecord:
     fields = _split_fields(block, first_line, path)
     mz, intensity = _parse_peaks(fields, path)
-    title = _cut(fields.take("RECORD_TITLE"))
+    title = cut_field(fields.take("RECORD_TITLE"))
     energy, energy_note = read_energy(
         fields.take(f"{_SPECTROMETRY} IONIZATION_ENERGY") or fields.take(f"{_SPECTROMETRY} IONIZATION_POTENTIAL")
     )
@@ -159,7 +152,7 @@ def _parse_record(block: list[str], first_line: int, path: str, number: int) -> 
         "comments": tuple(fields.values.pop("COMMENT", ())),
     }
     notes = energy_note | retention_notes
-    extra = {key: _cut("\n".join(values)) for key, values in fields.values.items()} | notes
+    extra = {key: cut_field("\n".join(values)) for key, values in fields.values.items()} | notes
     source = Source(path, first_line, number)
     return SpectrumRecord(source, mz, intensity, title=title, retention=retention, extra=extra, **record)  # type: ignore[arg-type]
 
@@ -234,13 +227,13 @@ def _take_identity(fields: _Fields) -> Identity:
     if len(cas_numbers) > 1:
         fields.add("CH$LINK CAS", " ".join(cas_numbers), 0)
     return Identity(
-        name=_cut(names[0]),
+        name=cut_field(names[0]),
         formula=fields.take("CH$FORMULA"),
         smiles=fields.take("CH$SMILES"),
         inchi=fields.take("CH$IUPAC"),
         inchikey=fields.take_first("CH$LINK INCHIKEY"),
         cas=cas_numbers[0] if cas_numbers else "",
-        other_names=tuple(_cut(name) for name in names[1:]),
+        other_names=tuple(cut_field(name) for name in names[1:]),
     )
 
 
@@ -259,7 +252,7 @@ def _take_acquisition(fields: _Fields, energy_ev: float | None) -> Acquisition:
             fields.add(f"{_SPECTROMETRY} {subtag}", text, 0)
     separation = instrument_type.partition("-")[0] if instrument_type.startswith(("GC-", "LC-", "CE-")) else ""
     return Acquisition(
-        instrument=_cut(fields.take("AC$INSTRUMENT")),
+        instrument=cut_field(fields.take("AC$INSTRUMENT")),
         instrument_type=instrument_type,
         ionization=ionization_of_instrument_type(instrument_type) or stated.upper(),
         energy_ev=energy_ev,
@@ -279,7 +272,3 @@ def _take_derivative(fields: _Fields, title: str) -> str:
         if comment.startswith("DERIVATIVE_TYPE "):
             return comment.removeprefix("DERIVATIVE_TYPE ").partition("; DERIVATIVE_")[0].strip()
     return read_derivative_segments(title)
-
-
-def _cut(text: str) -> str:
-    return text if len(text) <= MAX_FIELD_CHARS else f"{text[:MAX_FIELD_CHARS]} … (cut)"

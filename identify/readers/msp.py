@@ -14,9 +14,10 @@ import numpy as np
 
 from identify.errors import InputError, quote
 from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
-from identify.readers.limits import MAX_PEAKS, MAX_RECORD_LINES
+from identify.readers.limits import MAX_PEAKS
 from identify.readers.named_fields import NamedFields, bare_name, record_from_fields, split_statement
 from identify.readers.numbers import parse_tokens, too_many_peaks
+from identify.readers.text_lines import RecordLines
 from identify.records import FloatArray, Source, SpectrumRecord
 
 _COUNT_NAMES = frozenset({"numpeaks", "numpeak", "numberofpeaks", "npeaks"})
@@ -50,46 +51,38 @@ def parse_msp(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterator[
     by blanks, commas, semicolons, colons or brackets; text in double quotes is an annotation and is left out.
     """
     for number, block in enumerate(_split_records(lines), 1):
-        first_line = block[0][0]
         try:
+            block.refuse_if_full(path)
             yield _parse_record(block, path, number)
         except InputError as error:
-            on_reject(rejection_of(error, path, first_line))
+            on_reject(rejection_of(error, path, block.first_line))
 
 
-def _split_records(lines: Iterable[str]) -> Iterator[list[_Line]]:
-    block: list[_Line] = []
-    in_peaks = False
-    n_lines = 0
+def _split_records(lines: Iterable[str]) -> Iterator[RecordLines]:
+    block = RecordLines()
+    in_peaks = has_name = False
     for line_number, line in enumerate(lines, 1):
-        if not line or line.isspace():
-            if in_peaks and block:
-                yield block
-                block, in_peaks, n_lines = [], False, 0
-            continue
-        pair = split_statement(line)
-        if pair is not None:
-            name = bare_name(pair[0])
-            starts = name == "name" and any(_is_name(text) for _, text in block)
-            if block and ((in_peaks and name not in _COUNT_NAMES) or starts):
-                yield block
-                block, in_peaks, n_lines = [], False, 0
-            in_peaks = in_peaks or name in _COUNT_NAMES
-        n_lines += 1
-        if n_lines <= MAX_RECORD_LINES:
-            block.append((line_number, line))
+        is_blank = not line or line.isspace()
+        pair = None if is_blank else split_statement(line)
+        name = "" if pair is None else bare_name(pair[0])
+        is_count = name in _COUNT_NAMES
+        ends_peaks = in_peaks and (is_blank or (pair is not None and not is_count))
+        starts_anew = has_name and name == "name"
+        if ends_peaks or starts_anew:
+            yield block
+            block, in_peaks, has_name = RecordLines(), False, False
+        in_peaks, has_name = in_peaks or is_count, has_name or name == "name"
+        if block or not is_blank:
+            block.add(line, line_number)
     if block:
         yield block
 
 
-def _is_name(line: str) -> bool:
-    return line.lstrip()[:5].lower() in ("name:", "name ")
-
-
-def _parse_record(block: list[_Line], path: str, number: int) -> SpectrumRecord:
+def _parse_record(block: RecordLines, path: str, number: int) -> SpectrumRecord:
     pairs: list[tuple[str, str]] = []
     count_line, stated, rest = 0, "", 0
-    for position, (line_number, line) in enumerate(block):
+    numbered = [pair for pair in enumerate(block.lines, block.first_line) if pair[1] and not pair[1].isspace()]
+    for position, (line_number, line) in enumerate(numbered):
         pair = split_statement(line)
         if pair is None and line.lstrip()[:1].isdigit():
             raise fault(_NO_COUNT, path, line_number, found=quote(line), expected="'Num Peaks: n' before the peaks")
@@ -102,9 +95,9 @@ def _parse_record(block: list[_Line], path: str, number: int) -> SpectrumRecord:
             break
         pairs.append((name.rstrip("#"), value))
     if not count_line:
-        raise fault(_NO_COUNT, path, block[0][0], found="none", expected="'Num Peaks: n'")
-    mz, intensity = _parse_peaks(block[rest:], stated, count_line, path)
-    return record_from_fields(NamedFields(pairs), Source(path, block[0][0], number), mz, intensity)
+        raise fault(_NO_COUNT, path, block.first_line, found="none", expected="'Num Peaks: n'")
+    mz, intensity = _parse_peaks(numbered[rest:], stated, count_line, path)
+    return record_from_fields(NamedFields(pairs), Source(path, block.first_line, number), mz, intensity)
 
 
 def _parse_peaks(rows: list[_Line], stated: str, count_line: int, path: str) -> tuple[FloatArray, FloatArray]:

@@ -1,27 +1,19 @@
 """mzML runs: the full scans (MS1) of a GC-MS acquisition, read one after another.
 
-The guards against hostile XML are those of `identify.readers.foreign_formats`. Profile scans are centroided (`centroid_scan`).
+The guards against hostile XML are those of `identify.readers.mzml`. Profile scans are centroided (`centroid_scan`).
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from pathlib import Path
-from typing import IO, Any, cast
+from typing import Any
 
 import numpy as np
 
 from identify.errors import FormatError, InputError, quote
-from identify.readers.foreign_formats import (
-    _FOREIGN_FAULTS,
-    _copy_xml,
-    _plain_mzml,
-    _read_ion_sources,
-    _unpack_array,
-    _without_warnings,
-)
+from identify.readers.mzml import IonSources, ionization_of, open_mzml, unpack_array
 from identify.readers.profile import looks_like_profile
-from identify.readers.statements import IONIZATION_TERMS
 from identify.readers.text_lines import PeekedStream
 from identify.records import FloatArray, Source
 from identify.runs.model import Run
@@ -52,21 +44,10 @@ def read_mzml_run(path: Path) -> Run:
         For damaged XML, another ionization, selected-ion scans, negative ions, no first-level scan, or more than `MAX_POINTS`
         points.
     """
-    import tempfile
-
-    from lxml.etree import LxmlError
-    from pyteomics.auxiliary import PyteomicsError
-
     where = str(path)
     try:
-        with path.open("rb") as raw, tempfile.TemporaryFile() as spool:
-            _copy_xml(PeekedStream(raw), cast(IO[bytes], spool), where)
-            try:
-                return _collect(cast(IO[bytes], spool), where)
-            except (LxmlError, PyteomicsError, *_FOREIGN_FAULTS) as error:
-                found = quote(str(error).replace("\n", " "), 200)
-                hint = "The file may be truncated."
-                raise FormatError("mzML", where=where, found=found, expected="well-formed mzML", hint=hint) from None
+        with path.open("rb") as stream, open_mzml(PeekedStream(stream), where) as (items, sources):
+            return _collect(items, sources, where)
     except OSError as error:
         raise InputError("run", where=where, found=error.strerror or str(error), expected="a readable file") from None
 
@@ -104,14 +85,12 @@ def centroid_scan(mz: FloatArray, intensity: FloatArray) -> tuple[FloatArray, Fl
     return centre[kept] / total[kept], total[kept]
 
 
-def _collect(spool: IO[bytes], where: str) -> Run:
-    sources = _read_ion_sources(spool)
-    spool.seek(0)
+def _collect(items: Iterable[dict[str, Any]], sources: IonSources, where: str) -> Run:
     times: list[float] = []
     mzs: list[np.ndarray[Any, np.dtype[np.float32]]] = []
     intensities: list[np.ndarray[Any, np.dtype[np.float32]]] = []
     n_points, counts = 0, {"higher": 0, "profile": 0, "untimed": 0, "faulty": 0}
-    for item in _without_warnings(_plain_mzml(spool)):
+    for item in items:
         scan = _read_scan(item, sources, where, counts)
         if scan is None:
             continue
@@ -150,7 +129,7 @@ def _ordered(times: list[float], counts: Mapping[str, int]) -> tuple[list[int], 
 
 
 def _read_scan(
-    item: dict[str, Any], sources: Mapping[str, list[str]], where: str, counts: dict[str, int]
+    item: dict[str, Any], sources: IonSources, where: str, counts: dict[str, int]
 ) -> tuple[float, FloatArray, FloatArray] | None:
     """Time and points of one scan; None (counted) for one that does not belong."""
     if int(item.get("ms level", 1)) != 1:
@@ -164,7 +143,7 @@ def _read_scan(
         return None
     time_s = float(time) * SECONDS.get(str(getattr(time, "unit_info", "") or "minute"), 60.0)
     try:
-        mz, intensity = (np.asarray(_unpack_array(item, f"{name} array", where)) for name in ("m/z", "intensity"))
+        mz, intensity = (np.asarray(unpack_array(item, f"{name} array", where)) for name in ("m/z", "intensity"))
     except FormatError:
         counts["faulty"] += 1
         return None
@@ -182,10 +161,9 @@ def _read_scan(
 
 
 def _refuse_other_experiments(
-    item: Mapping[str, Any], scan: Mapping[str, Any], sources: Mapping[str, list[str]], where: str
+    item: Mapping[str, Any], scan: Mapping[str, Any], sources: IonSources, where: str
 ) -> None:
-    terms = sources.get(str(scan.get("instrumentConfigurationRef", "")), sources.get("", []))
-    ionization = next((IONIZATION_TERMS[name] for name in terms if name in IONIZATION_TERMS), "")
+    ionization = ionization_of(scan, sources)
     if ionization not in ("", "EI"):
         raise FormatError(
             "run", where=where, found=quote(ionization), expected="electron ionization",

@@ -13,9 +13,10 @@ import numpy as np
 
 from identify.errors import InputError, quote
 from identify.readers.fault_reports import OnReject, counted, fault, rejection_of
-from identify.readers.limits import MAX_PEAKS, MAX_RECORD_LINES
+from identify.readers.limits import MAX_PEAKS
 from identify.readers.named_fields import NamedFields, record_from_fields
 from identify.readers.numbers import parse_columns, too_many_peaks
+from identify.readers.text_lines import RecordLines
 from identify.records import FloatArray, Source, SpectrumRecord
 
 FIRST_LINE = "<mzSpecLib>"
@@ -61,30 +62,29 @@ def parse_mzspeclib(lines: Iterable[str], path: str, on_reject: OnReject) -> Ite
     """
     common: list[_Attribute] = []
     number = 0
-    for block, first_line in _split_spectra(lines):
-        if not number and _SPECTRUM.fullmatch(block[0]) is None:
-            common = _attributes_of_set(block)
+    for block in _split_spectra(lines):
+        if not number and _SPECTRUM.fullmatch(block.lines[0]) is None:
+            common = _attributes_of_set(block.lines)
             continue
         number += 1
         try:
-            yield _parse_spectrum(block, first_line, common, Source(path, first_line, number))
+            block.refuse_if_full(path)
+            yield _parse_spectrum(block.lines, block.first_line, common, Source(path, block.first_line, number))
         except InputError as error:
-            on_reject(rejection_of(error, path, first_line))
+            on_reject(rejection_of(error, path, block.first_line))
 
 
-def _split_spectra(lines: Iterable[str]) -> Iterator[tuple[list[str], int]]:
-    block: list[str] = []
-    first_line = 1
+def _split_spectra(lines: Iterable[str]) -> Iterator[RecordLines]:
+    """Lines of the head of the file, then of each spectrum; comments as blanks, so that line numbers stay right."""
+    block = RecordLines()
     for line_number, line in enumerate(lines, 1):
         line = line.rstrip()
-        if line.startswith("<Spectrum="):
-            yield block or [FIRST_LINE], first_line
-            block, first_line = [line], line_number
-        elif len(block) <= MAX_RECORD_LINES:
-            # Comments and blank lines stay as blanks, so that line numbers stay right.
-            block.append("" if line.startswith("#") else line)
+        if line.startswith("<Spectrum=") and block:
+            yield block
+            block = RecordLines()
+        block.add("" if line.startswith("#") else line, line_number)
     if block:
-        yield block, first_line
+        yield block
 
 
 def _attributes_of_set(block: list[str]) -> list[_Attribute]:

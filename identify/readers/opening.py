@@ -11,10 +11,11 @@ from typing import BinaryIO, cast
 from identify.errors import InputError
 from identify.readers.containers import OpenFile, open_files
 from identify.readers.fault_reports import OnReject, rejection_of
-from identify.readers.foreign_formats import parse_mgf, read_mzml
 from identify.readers.jcamp import parse_jcamp
 from identify.readers.massbank import parse_massbank
+from identify.readers.mgf import parse_mgf
 from identify.readers.msp import parse_msp
+from identify.readers.mzml import read_mzml
 from identify.readers.mzspeclib import parse_mzspeclib
 from identify.readers.profile import looks_like_profile
 from identify.readers.recognize import recognize_format

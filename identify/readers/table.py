@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 
 from identify.errors import FormatError, InputError, quote
 from identify.readers.fault_reports import OnReject, fault, rejection_of
-from identify.readers.limits import MAX_PEAKS, MAX_RECORD_LINES
+from identify.readers.limits import LINE_OVERHEAD_BYTES, MAX_PEAKS, MAX_RECORD_BYTES
 from identify.readers.named_fields import (
     SPELLINGS,
     NamedFields,
@@ -37,6 +37,7 @@ class _Draft:
     statements: list[tuple[str, str]] = field(default_factory=list)
     comments: list[str] = field(default_factory=list)
     first_line: int = 0
+    n_bytes: int = 0
     rows: RowReader | None = None
     peaks: list[tuple[float, float]] = field(default_factory=list)
     error: InputError | None = None
@@ -143,8 +144,10 @@ def _take_line(draft: _Draft, text: str, line_number: int, path: str, *, is_firs
     else:
         expected = "a row of numbers" if draft.rows is not None else "a heading, a row of numbers or 'name: value'"
         draft.error = fault("table line", path, line_number, found=quote(text), expected=expected)
-    if len(draft.comments) + len(draft.statements) > MAX_RECORD_LINES:
-        raise _no_table(path, f"more than {MAX_RECORD_LINES} lines without a row of numbers")
+    draft.n_bytes += len(text) + LINE_OVERHEAD_BYTES
+    if draft.n_bytes > MAX_RECORD_BYTES:
+        found, expected = f"more than {MAX_RECORD_BYTES} bytes", "one spectrum with its metadata"
+        draft.error = fault("table", path, draft.first_line, found=found, expected=expected)
 
 
 def _take_row(draft: _Draft, text: str, line_number: int, path: str) -> None:

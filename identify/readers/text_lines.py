@@ -5,10 +5,11 @@ from __future__ import annotations
 import codecs
 import io
 from collections.abc import Iterator
+from dataclasses import dataclass, field
 from typing import BinaryIO
 
 from identify.errors import FormatError
-from identify.readers.limits import CHUNK_BYTES, HEAD_BYTES, MAX_LINE_BYTES
+from identify.readers.limits import CHUNK_BYTES, HEAD_BYTES, LINE_OVERHEAD_BYTES, MAX_LINE_BYTES, MAX_RECORD_BYTES
 
 _BYTE_ORDER_MARKS = (
     (codecs.BOM_UTF8, "utf-8"),
@@ -171,6 +172,52 @@ class LineDecoder:
             found=f"more than {MAX_LINE_BYTES} bytes",
             expected=f"lines of at most {MAX_LINE_BYTES} bytes",
         )
+
+
+@dataclass(slots=True)
+class RecordLines:
+    """Consecutive lines of one record while they come in, within `MAX_RECORD_BYTES`; what is more is passed over.
+
+    False while there is none.
+    """
+
+    lines: list[str] = field(default_factory=list)
+    first_line: int = 0
+    last_line: int = 0
+    n_bytes: int = 0
+
+    def __bool__(self) -> bool:
+        return bool(self.lines)
+
+    def add(self, line: str, line_number: int) -> None:
+        """Take one more line."""
+        self.n_bytes += len(line) + LINE_OVERHEAD_BYTES
+        self.first_line = self.first_line or line_number
+        self.last_line = line_number
+        if self.n_bytes <= MAX_RECORD_BYTES:
+            self.lines.append(line)
+
+    def refuse_if_full(self, path: str) -> None:
+        """Refuse a record that did not fit.
+
+        Parameters
+        ----------
+        path : str
+            File, for the message.
+
+        Raises
+        ------
+        FormatError
+            If a line was passed over.
+        """
+        if self.n_bytes > MAX_RECORD_BYTES:
+            raise FormatError(
+                "record",
+                where=f"{path}:{self.first_line}",
+                found=f"more than {MAX_RECORD_BYTES} bytes",
+                expected="one spectrum with its metadata",
+                hint="Profile data must be centroided; else the mark between two records may be missing.",
+            )
 
 
 def _last_line_end(data: bytes) -> int:

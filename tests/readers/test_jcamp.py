@@ -5,7 +5,6 @@ from __future__ import annotations
 import io
 import itertools
 import time
-import tracemalloc
 
 import jcamp
 import numpy as np
@@ -14,7 +13,6 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from identify.readers import read_pasted
-from identify.readers.jcamp import parse_jcamp
 from identify.records import Rejection, SpectrumRecord
 
 # Acetophenone, GC, TRAP, EI+, DATA CLASS XYPOINTS, 19 points: public-domain spectrum found in standards.md 5.1 [F].
@@ -217,14 +215,3 @@ def test_a_block_of_very_many_labels_is_read_in_time_that_grows_with_their_numbe
     record = read_one(BLOCK.replace("##XUNITS=", f"{labels}##XUNITS="))
     assert time.process_time() - started < 8.0
     assert record.extra["L29999"] == "x"
-
-
-def test_comments_between_labels_cost_bounded_memory(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr("identify.readers.jcamp.MAX_RECORD_LINES", 60)
-    lines = (line for number in range(4000) for line in (f"##$L{number}= x", "$$ " + f"{number} said " * 100))
-    tracemalloc.start()
-    try:
-        assert list(parse_jcamp(itertools.chain(["##TITLE= a"], lines), "a.jdx", lambda _: None)) == []
-        assert tracemalloc.get_traced_memory()[1] < 1_000_000
-    finally:
-        tracemalloc.stop()

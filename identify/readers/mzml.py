@@ -1,36 +1,32 @@
-"""mzML (through pyteomics) and MGF (through matchms) → spectrum records: the one adapter to those packages.
+"""mzML (through pyteomics) → spectrum records; what reading spectra and reading runs (`identify.readers.mzml_run`) share.
 
-Both are imported inside the functions that need them: matchms takes seconds to import. Their errors are translated here.
-What they pass over in silence is guarded: an MGF record is checked for its rows before, and compared after; binary arrays are
-unpacked by this module within bounds; nothing is fetched from a network.
+pyteomics and lxml are imported inside the functions that need them. What they would do for a hostile file is guarded: a
+document that defines entities is refused, binary arrays are unpacked by this module within bounds, and no vocabulary is
+fetched from a network.
 """
 
 from __future__ import annotations
 
 import base64
 import binascii
-import io
-import re
 import tempfile
 import warnings
 import zlib
 from collections.abc import Iterable, Iterator, Mapping
+from contextlib import contextmanager
 from typing import IO, Any, ClassVar, cast
 
 import numpy as np
 
 from identify.errors import FormatError, InputError, quote
-from identify.readers.fault_reports import OnReject, fault, rejection_of
-from identify.readers.limits import CHUNK_BYTES, MAX_FILE_BYTES, MAX_PEAKS, MAX_RECORD_LINES
+from identify.readers.fault_reports import FOREIGN_FAULTS, NOT_EI, NOT_MS1, OnReject
+from identify.readers.limits import CHUNK_BYTES, MAX_FILE_BYTES, MAX_PEAKS
 from identify.readers.named_fields import NamedFields, record_from_fields
-from identify.readers.numbers import parse_columns, too_many_peaks
+from identify.readers.numbers import too_many_peaks
 from identify.readers.statements import IONIZATION_TERMS, read_ionization
 from identify.readers.text_lines import PeekedStream
 from identify.records import FloatArray, Rejection, Source, SpectrumRecord, read_only
 
-NOT_EI = "not electron ionization"
-NOT_MS1 = "not a full-scan spectrum (MS1)"
-_FORBIDDEN = re.compile(rb"<!(?:DOCTYPE|ENTITY)")
 _STRUCTURE = frozenset({"index", "count", "defaultArrayLength", "encodedLength", "arrayLength"})
 _MZML_NAMES = {
     "spectrum title": "title",
@@ -39,101 +35,8 @@ _MZML_NAMES = {
     "id": "spectrum id in file",
 }
 _SPOOL_BYTES = 16 * 1024 * 1024
-_FOREIGN_FAULTS = (ValueError, KeyError, IndexError, TypeError, AttributeError, AssertionError, OverflowError)
-"""What the two packages raise on input they do not expect, besides their own error classes."""
-
-
-def parse_mgf(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterator[SpectrumRecord]:
-    """Spectrum records of a text in MGF.
-
-    Parameters
-    ----------
-    lines : iterable of str
-        Lines without their ends.
-    path : str
-        File, for provenance and messages.
-    on_reject : callable
-        Takes the `Rejection` of each record with a fault, and of each one that matchms would lose or change.
-
-    Yields
-    ------
-    SpectrumRecord
-        Peaks sorted by m/z (matchms sorts them). `source.line` is the line of ``BEGIN IONS``.
-
-    Notes
-    -----
-    Each record is handed over by itself, so that one bad record costs one rejection and keeps its line number.
-    """
-    for number, (block, first_line) in enumerate(_split_mgf(lines), 1):
-        try:
-            if block[-1] != "END IONS":
-                hint = "The file may be truncated."
-                line = first_line + len(block) - 1
-                raise fault("record without end", path, line, found=quote(block[-1]), expected="'END IONS'", hint=hint)
-            yield _parse_mgf_record(block, Source(path, first_line, number))
-        except InputError as error:
-            on_reject(rejection_of(error, path, first_line))
-
-
-def _split_mgf(lines: Iterable[str]) -> Iterator[tuple[list[str], int]]:
-    block: list[str] = []
-    first_line = 1
-    for line_number, line in enumerate(lines, 1):
-        text = line.strip()
-        if text == "BEGIN IONS":
-            if block:
-                yield block, first_line
-            block, first_line = [text], line_number
-        elif block:
-            if len(block) < MAX_RECORD_LINES or text == "END IONS":
-                block.append(text)
-            if text == "END IONS":
-                yield block, first_line
-                block = []
-    if block:
-        yield block, first_line
-
-
-def _parse_mgf_record(block: list[str], source: Source) -> SpectrumRecord:
-    path, first_line = source.path, source.line or 1
-    rows: list[list[str]] = []
-    lines: list[int] = []
-    for line_number, text in enumerate(block, first_line):
-        if text and text not in ("BEGIN IONS", "END IONS") and "=" not in text and text[0] not in "#;!/":
-            rows.append(text.split()[:2])
-            lines.append(line_number)
-    expected = "'m/z intensity'"
-    if rows and len(rows[0]) != 2:
-        raise fault("peak row", path, lines[0], found=quote(" ".join(rows[0])), expected=expected)
-    stated = parse_columns(rows, lines, path, expected)
-    if not rows:
-        raise fault("no peaks", path, first_line, found="0 rows", expected="at least one")
-    mz, intensity, metadata = _load_with_matchms(block, path, first_line)
-    order = np.argsort(stated[:, 0], kind="stable")
-    same_intensities = np.array_equal(np.sort(intensity), np.sort(stated[:, 1]))
-    if not (np.array_equal(mz, stated[order, 0]) and same_intensities):
-        found, expected = f"{mz.size} peaks from the MGF parser", f"the {len(rows)} rows of the record unchanged"
-        raise fault("peak count", path, first_line, found=found, expected=expected)
-    in_seconds = any(text.upper().startswith("RTINSECONDS=") for text in block)
-    pairs = [(str(name), str(value)) for name, value in metadata.items() if value is not None]
-    return record_from_fields(NamedFields(pairs), source, mz, intensity, default_time_unit="s" if in_seconds else "")
-
-
-def _load_with_matchms(block: list[str], path: str, line: int) -> tuple[FloatArray, FloatArray, Mapping[str, Any]]:
-    from matchms.importing import load_from_mgf
-    from pyteomics.auxiliary import PyteomicsError
-
-    try:
-        spectra = list(load_from_mgf(io.StringIO("\n".join(block) + "\n"), metadata_harmonization=False))
-    except (PyteomicsError, *_FOREIGN_FAULTS) as error:
-        found = quote(str(error).replace("\n", " "), 200)
-        raise fault("MGF record", path, line, found=found, expected="what the MGF parser can read") from None
-    if len(spectra) != 1:
-        raise fault(
-            "MGF record", path, line, found=f"{len(spectra)} spectra", expected="one between BEGIN and END IONS"
-        )
-    peaks = spectra[0].peaks
-    return read_only(peaks.mz), read_only(peaks.intensities), spectra[0].metadata
+IonSources = Mapping[str, list[str]]
+"""Names of the terms under each instrument configuration; those of the run's default also under ``""``."""
 
 
 def read_mzml(stream: PeekedStream, path: str, on_reject: OnReject) -> Iterator[SpectrumRecord]:
@@ -159,27 +62,55 @@ def read_mzml(stream: PeekedStream, path: str, on_reject: OnReject) -> Iterator[
     FormatError
         For XML that is damaged or defines entities, and for a file that is too large.
     """
+    with open_mzml(stream, path) as (items, sources):
+        for number, item in enumerate(items, 1):
+            source = Source(path, None, number)
+            try:
+                yield _build_record(item, sources, source)
+            except InputError as error:
+                found = f"{error.found} in spectrum {number}"
+                on_reject(Rejection(path, None, error.what, found, error.expected, error.hint))
+
+
+@contextmanager
+def open_mzml(stream: PeekedStream, path: str) -> Iterator[tuple[Iterator[dict[str, Any]], IonSources]]:
+    """Spectra of an mzML file as the parser gives them (all values still text), and its ion sources (see `ionization_of`).
+
+    Parameters
+    ----------
+    stream : PeekedStream
+        Bytes; copied to a temporary file, because the parser goes back and forth.
+    path : str
+        File, for messages.
+
+    Raises
+    ------
+    FormatError
+        For XML that is damaged or defines entities, and for a file that is too large; on iteration, too.
+    """
     from lxml.etree import LxmlError
     from pyteomics.auxiliary import PyteomicsError
 
-    with tempfile.SpooledTemporaryFile(max_size=_SPOOL_BYTES) as spool:
-        _copy_xml(stream, cast(IO[bytes], spool), path)
+    with tempfile.SpooledTemporaryFile(max_size=_SPOOL_BYTES) as held:
+        spool = cast(IO[bytes], held)
+        _copy_bounded(stream, spool, path)
         try:
-            yield from _iterate_mzml(cast(IO[bytes], spool), path, on_reject)
-        except (LxmlError, PyteomicsError, *_FOREIGN_FAULTS) as error:
-            found = quote(str(error).replace("\n", " "), 200)
-            raise FormatError("mzML", where=path, found=found, expected="well-formed mzML 1.1") from None
+            sources = _read_ion_sources(spool, path)
+            spool.seek(0)
+            yield _without_warnings(_plain_mzml(spool)), sources
+        except (LxmlError, PyteomicsError, *FOREIGN_FAULTS) as error:
+            raise FormatError(
+                "mzML", where=path, found=quote(str(error).replace("\n", " "), 200), expected="well-formed mzML 1.1",
+                hint="The file may be truncated.",
+            ) from None  # fmt: skip
 
 
-def _copy_xml(stream: PeekedStream, spool: IO[bytes], path: str) -> None:
-    n_bytes, tail = 0, b""
+def _copy_bounded(stream: PeekedStream, spool: IO[bytes], path: str) -> None:
+    n_bytes = 0
     while chunk := stream.read(CHUNK_BYTES):
         n_bytes += len(chunk)
-        if _FORBIDDEN.search(tail + chunk):
-            raise FormatError("mzML", where=path, found="a document type definition", expected="plain mzML without one")
         if n_bytes > MAX_FILE_BYTES:
             raise FormatError("size", where=path, found=f"more than {MAX_FILE_BYTES} bytes", expected="a smaller file")
-        tail = chunk[-16:]
         spool.write(chunk)
     spool.seek(0)
 
@@ -211,26 +142,14 @@ class _NoVocabulary:
         return _NoTerm()
 
 
-def _iterate_mzml(spool: IO[bytes], path: str, on_reject: OnReject) -> Iterator[SpectrumRecord]:
-    sources = _read_ion_sources(spool)
-    spool.seek(0)
-    for number, item in enumerate(_without_warnings(_plain_mzml(spool)), 1):
-        source = Source(path, None, number)
-        try:
-            yield _build_mzml_record(item, sources, source)
-        except InputError as error:
-            on_reject(
-                Rejection(path, None, error.what, f"{error.found} in spectrum {number}", error.expected, error.hint)
-            )
-
-
-def _read_ion_sources(spool: IO[bytes]) -> dict[str, list[str]]:
-    """Names of the terms under each instrument configuration; that of the run's default also under ``""``."""
+def _read_ion_sources(spool: IO[bytes], path: str) -> IonSources:
     from lxml.etree import iterparse
 
     groups: dict[str, list[str]] = {}
     found: dict[str, list[str]] = {}
     for event, element in iterparse(spool, events=("start", "end"), huge_tree=False, resolve_entities=False):
+        if element.getroottree().docinfo.internalDTD is not None:
+            raise FormatError("mzML", where=path, found="a document type definition", expected="plain mzML without one")
         kind = str(element.tag).rpartition("}")[2]
         if event == "start" and kind == "run":
             default = element.get("defaultInstrumentConfigurationRef", "")
@@ -242,6 +161,18 @@ def _read_ion_sources(spool: IO[bytes]) -> dict[str, list[str]]:
                 names += groups.get(str(reference.get("ref")), [])
             (groups if kind == "referenceableParamGroup" else found)[str(element.get("id"))] = names
     return found
+
+
+def ionization_of(scan: Mapping[str, Any], sources: IonSources) -> str:
+    """Ionization code of the instrument configuration a scan names, else of the run's own; empty where none is stated.
+
+    Examples
+    --------
+    >>> ionization_of({}, {"": ["electron ionization"]})
+    'EI'
+    """
+    terms = sources.get(str(scan.get("instrumentConfigurationRef", "")), sources.get("", []))
+    return next((IONIZATION_TERMS[name] for name in terms if name in IONIZATION_TERMS), "")
 
 
 def _without_warnings(items: Iterable[dict[str, Any]]) -> Iterator[dict[str, Any]]:
@@ -256,21 +187,19 @@ def _without_warnings(items: Iterable[dict[str, Any]]) -> Iterator[dict[str, Any
         yield item
 
 
-def _build_mzml_record(item: dict[str, Any], sources: Mapping[str, list[str]], source: Source) -> SpectrumRecord:
+def _build_record(item: dict[str, Any], sources: IonSources, source: Source) -> SpectrumRecord:
     where = source.path
     level = item.pop("ms level", None)
     if level is not None and int(level) != 1:
         raise FormatError(NOT_MS1, where=where, found=f"MS level {level}", expected="MS1")
     scan = (item.pop("scanList", {}).get("scan") or [{}])[0]
-    terms = sources.get(str(scan.get("instrumentConfigurationRef", "")), sources.get("", []))
-    ionization = next((IONIZATION_TERMS[name] for name in terms if name in IONIZATION_TERMS), "")
-    ionization = ionization or read_ionization(str(item.get("ionization", "")))[0]
+    ionization = ionization_of(scan, sources) or read_ionization(str(item.get("ionization", "")))[0]
     if ionization not in ("", "EI"):
         raise FormatError(NOT_EI, where=where, found=quote(ionization), expected="EI")
     packing = [name for name in item if "compression" in name]
     if packing:
         raise FormatError("peak list", where=where, found=quote(packing[0]), expected="zlib or no compression")
-    mz, intensity = (_unpack_array(item, f"{name} array", where) for name in ("m/z", "intensity"))
+    mz, intensity = (unpack_array(item, f"{name} array", where) for name in ("m/z", "intensity"))
     if mz.size != intensity.size:
         found = f"{mz.size} m/z and {intensity.size} intensities"
         raise FormatError("peak list", where=where, found=found, expected="as many")
@@ -302,7 +231,27 @@ def _pairs_of_mzml(item: dict[str, Any], scan: Mapping[str, Any]) -> list[tuple[
     return pairs
 
 
-def _unpack_array(item: dict[str, Any], name: str, where: str) -> FloatArray:
+def unpack_array(item: dict[str, Any], name: str, where: str) -> FloatArray:
+    """Numbers of one binary array, taken out of the parser's item of a spectrum.
+
+    Parameters
+    ----------
+    item : dict
+        Loses the array.
+    name : str
+        ``m/z array`` or ``intensity array``.
+    where : str
+        File, for messages.
+
+    Returns
+    -------
+    ndarray of shape (n_peaks,), read-only
+
+    Raises
+    ------
+    FormatError
+        If there is no such array, it is packed in an unknown way or damaged, longer than `MAX_PEAKS`, or not all finite.
+    """
     record = item.pop(name, None)
     if record is None:
         raise FormatError("peak list", where=where, found=f"no {name}", expected="an m/z and an intensity array")
