@@ -114,7 +114,7 @@ def test_a_number_that_no_float_can_hold_is_refused_in_words(
     document["queries"][0]["hits"][0]["probability"] = value
     path = tmp_path / "odd.json"
     path.write_text(json.dumps(document), "utf-8")
-    with pytest.raises(IonwitnessError, match="probability.*expected a number"):
+    with pytest.raises(IonwitnessError, match=r"probability.*expected a number"):
         compare_results(good, read_result(path), ("a", "b"))
 
 

@@ -1,7 +1,7 @@
 """The workbench without a socket, and requests made of choices: what a hostile page, script or colleague can send it.
 
-`tests/workbench/test_http_surface.py` lets hypothesis choose, `tests/benchmarks/fuzz.py http` a coverage-guided fuzzer. Routes and
-their fields are taken from the application's own schema, so that a new one is attacked without a word here.
+`tests/workbench/test_http_surface.py` lets hypothesis choose, `tests/benchmarks/fuzz.py http` a coverage-guided fuzzer. Routes
+and their fields are taken from the application's own schema, so that a new one is attacked without a word here.
 """
 
 from __future__ import annotations
@@ -273,9 +273,9 @@ GOOD: Mapping[str, Mapping[str, str]] = {
 }
 """Fields of requests that are accepted, by path without ``/api``; numbers in paths are 1."""
 ODD = (
-    "", "0", "1", "2", "3", "-1", "9", "1e3", "1.5", "nan", "inf", "true", "on", "None", "null", "99999999999999999999", "2" * 400,
-    "x", " ", "\0", "\n", "\r\nset-cookie: a=b", MARK, "../../etc/passwd", "a" * 300, "b" * 5000, "é", "٣", "\u202e", "\ud800",
-    "\U0001f9ea", "C3H6O", "C9999999", "CC(C)=O", "C1CC", "[Xx]", "43 100", "43,100;58:30", "m/z", "91 92", "58", "1 TMS", "n TMS",
+    "", "0", "1", "2", "3", "-1", "9", "1e3", "1.5", "nan", "inf", "true", "on", "None", "null", "9" * 20, "2" * 400, "x",
+     " ", "\0", "\n", "\r\nset-cookie: a=b", MARK, "../../etc/passwd", "a" * 300, "b" * 5000, "é", "٣", "\u202e", "\ud800",
+    "\U0001f9ea", "C3H6O", "C9999999", "CC(C)=O", "C1CC", "[Xx]", "43 100", "43,100;58:30", "m/z", "91 92", "58", "n TMS",
     "accept", "refuse", "reject", "reopen", "note", "follow-up", "confirmed", "class", "supported", "claimed", "all", "run",
     "C10 8.0", "C10 8.0\nC10 8.0", "acetone", "toluene", "STARTER-000001", "%00", "%", "_", "'; DROP TABLE query; --", "{{7*7}}",
 )  # fmt: skip
@@ -345,40 +345,21 @@ def _heads(surface: Surface, choices: Choices) -> tuple[tuple[bytes, bytes], ...
     )
     twist = choices.below(40)
     odd = choices.data()[:60].translate(None, b"\0\r\n") if twist < 6 else b""
+    own = ((b"host", host), (b"origin", origin))
+    signed = (*own, (b"cookie", cookie))
     if twist == 0:
-        return ((b"host", host), (b"origin", origin), (b"cookie", odd))
+        return (*own, (b"cookie", odd))
     if twist == 1:
         return ((b"host", host), (b"origin", odd), (b"cookie", cookie))
     if twist == 2:
         return ((b"host", odd), (b"origin", origin), (b"cookie", cookie))
     if twist == 3:
-        return (
-            (b"host", host),
-            (b"origin", origin),
-            (b"cookie", cookie),
-            (b"sec-fetch-site", odd),
-            (b"sec-fetch-mode", b"no-cors"),
-        )
+        return (*signed, (b"sec-fetch-site", odd), (b"sec-fetch-mode", b"no-cors"))
     if twist == 4:
-        return (
-            (b"host", host),
-            (b"origin", origin),
-            (b"cookie", cookie),
-            (b"accept", odd),
-            (b"range", odd),
-            (b"if-none-match", odd),
-        )
+        return (*signed, (b"accept", odd), (b"range", odd), (b"if-none-match", odd))
     if twist == 5:
-        return (
-            (b"host", host),
-            (b"origin", origin),
-            (b"cookie", cookie + b"; " + odd),
-            (b"cookie", odd),
-            (b"expect", odd),
-        )
-    if twist == 6:
-        return ((b"host", host), (b"origin", origin))
-    return ((b"host", host), (b"origin", origin), (b"cookie", cookie))
+        return (*own, (b"cookie", cookie + b"; " + odd), (b"cookie", odd), (b"expect", odd))
+    return own if twist == 6 else signed
 
 
 def _build(route: Route, values: list[tuple[str, str]], heads: tuple[tuple[bytes, bytes], ...]) -> Asked:
