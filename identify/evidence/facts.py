@@ -10,7 +10,6 @@ from dataclasses import dataclass
 from functools import cached_property, lru_cache
 
 import numpy as np
-from numpy.typing import NDArray
 
 from identify.chem.derivatives import find_derivative, possible_formulas
 from identify.chem.formula import Formula, parse_formula, rings_plus_double_bonds
@@ -127,9 +126,9 @@ class FormulaFacts:
         return max(last + FIRST_OFFSET, 0)
 
     @cached_property
-    def reachable(self) -> NDArray[np.bool_]:
+    def reachable(self) -> tuple[bool, ...]:
         """Index m is True when a subformula has nominal mass m."""
-        return reachable_nominal(self.formula)
+        return tuple(reachable_nominal(self.formula).tolist())
 
     def ratio(self, offset: int) -> float:
         """Isotope peak at M + `offset` relative to M."""

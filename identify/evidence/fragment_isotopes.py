@@ -45,7 +45,11 @@ def find_halogen_clusters(facts: QueryFacts) -> tuple[ClusterFit, ...]:
             and 2.0 * max(dense[mz - 1], dense[mz - 2]) < value + second
         ):
             starts.append((value, mz))
-    fits = (fit_cluster(facts, mz) for _, mz in sorted(starts, reverse=True)[:MOST_FITS])
+    strongest = [mz for _, mz in sorted(starts, reverse=True)[:MOST_FITS]]
+    # A fit takes a millisecond: it is not made where no outcome would convince.
+    fits = [
+        fit_cluster(facts, mz) for mz in strongest if mz >= LOWEST and (facts.at(mz + 4) > 0 or _is_alone(facts, mz))
+    ]
     return tuple(fit for fit in fits if _convinces(fit, facts))
 
 
@@ -57,13 +61,18 @@ def _convinces(fit: ClusterFit, facts: QueryFacts) -> bool:
     """
     if fit.reason or not {"Cl", "Br"} & set(fit.supported):
         return False
-    if fit.mz < LOWEST or fit.misfit > CLOSE_FIT or fit.parts[2] < PURE:
+    if fit.misfit > CLOSE_FIT or fit.parts[2] < PURE:
         return False
     if fit.count("Cl") + fit.count("Br") >= 2:
         return facts.at(fit.mz + 4) > 0
-    around = max(facts.at(fit.mz + offset) for offset in (-16, -15, -14, -13, -12, -4, -3, 4, 5, 12, 13, 14, 15, 16))
-    isotopes = facts.at(fit.mz + 1) > 0 and facts.at(fit.mz + 3) > 0
-    return isotopes and around < 0.1 * facts.at(fit.mz)
+    return _is_alone(facts, fit.mz)
+
+
+def _is_alone(facts: QueryFacts, mz: int) -> bool:
+    """Whether a cluster has its 13C peaks and hardly an ion around it."""
+    around = max(facts.at(mz + offset) for offset in (-16, -15, -14, -13, -12, -4, -3, 4, 5, 12, 13, 14, 15, 16))
+    isotopes = facts.at(mz + 1) > 0 and facts.at(mz + 3) > 0
+    return isotopes and around < 0.1 * facts.at(mz)
 
 
 def check_fragment_halogens(facts: QueryFacts, formula: FormulaFacts | None) -> Finding:

@@ -38,10 +38,11 @@ def check_missing_ions(facts: QueryFacts, aligned: AlignedPeaks) -> Finding:
     Finding
         An ion weaker than the query could record is not missed.
     """
-    if not aligned.mz.size or not aligned.entry.any():
+    total = float(aligned.entry @ aligned.mz)
+    if not total:
         return not_assessed(MISSING, "There is no m/z range that both spectra cover.")
     lost = _strongest_alone(aligned.mz, aligned.entry, aligned.query, max(NOTABLE, 2.0 * facts.floor))
-    share = sum(mz * value for mz, value in lost) / float(aligned.entry @ aligned.mz)
+    share = sum(mz * value for mz, value in lost) / total
     named = _list([mz for mz, _ in lost])
     size = _size_of(share)
     if size == "none":
@@ -76,11 +77,12 @@ def check_extra_ions(facts: QueryFacts, aligned: AlignedPeaks, formula: FormulaF
     -------
     Finding
     """
-    if not aligned.mz.size or not aligned.query.any():
+    total = float(aligned.query @ aligned.mz)
+    if not total:
         return not_assessed(EXTRA, "There is no m/z range that both spectra cover.")
     found = _strongest_alone(aligned.mz, aligned.query, aligned.entry, NOTABLE)
     counted = [(mz, value) for mz, value in found if mz not in BACKGROUND]
-    share = sum(mz * value for mz, value in counted) / float(aligned.query @ aligned.mz)
+    share = sum(mz * value for mz, value in counted) / total
     named = _list([mz for mz, _ in counted])
     background = sorted({BACKGROUND[mz] for mz, _ in found if mz in BACKGROUND})
     size = _size_of(share)
@@ -109,15 +111,14 @@ def check_extra_ions(facts: QueryFacts, aligned: AlignedPeaks, formula: FormulaF
 
 
 def _reachable(formula: FormulaFacts, mz: int) -> bool:
-    reachable = formula.reachable
-    return any(0 < place < reachable.size and bool(reachable[place]) for place in (mz, mz - 1, mz - 2))
+    return any(formula.reachable[max(mz - 2, 1) : mz + 1])  # an isotope peak lies one or two above
 
 
 def _strongest_alone(mz: FloatArray, own: FloatArray, other: FloatArray, least: float) -> list[tuple[int, float]]:
     """Peaks of at least `least` of which the other spectrum has a tenth or less, strongest first."""
-    strong = (own >= least).nonzero()[0]
-    chosen = zip(mz[strong].tolist(), own[strong].tolist(), other[strong].tolist(), strict=True)
-    return sorted([(int(place), value) for place, value, rest in chosen if rest <= 0.1 * value], key=lambda p: -p[1])
+    alone = ((own >= least) & (other <= 0.1 * own)).nonzero()[0]
+    chosen = zip(mz[alone].astype(int).tolist(), own[alone].tolist(), strict=True)
+    return sorted(chosen, key=lambda peak: -peak[1])
 
 
 def _size_of(share: float) -> str:

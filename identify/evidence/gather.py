@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 from identify.evidence.accurate_check import check_accurate_mass
 from identify.evidence.composition import check_explained, check_formula_rules
-from identify.evidence.facts import QueryFacts, build_query_facts, entry_formula
+from identify.evidence.facts import FormulaFacts, QueryFacts, build_query_facts, entry_formula
 from identify.evidence.finding import Finding, weigh
 from identify.evidence.fragment_isotopes import check_fragment_halogens
 from identify.evidence.fragments import check_extra_ions, check_missing_ions
@@ -45,17 +47,31 @@ def examine(
     """Findings of all checks, before they are weighed (see `gather_evidence`)."""
     facts = facts or build_query_facts(query)
     formula, n_groups = entry_formula(entry, facts)
+    pattern, halogens, carbons, rules, explained, accurate = _examine_formula(facts, formula, settings)
     return (
         check_molecular_ion(facts, formula, entry, n_groups),
+        pattern,
+        halogens,
+        carbons,
+        check_losses(facts, formula, entry),
+        check_ions_above(facts, formula, entry),
+        rules,
+        explained,
+        check_missing_ions(facts, aligned),
+        check_extra_ions(facts, aligned, formula),
+        accurate,
+        check_retention(query, entry),
+    )
+
+
+@lru_cache(maxsize=64)  # many candidates of a query are isomers of each other
+def _examine_formula(facts: QueryFacts, formula: FormulaFacts | None, settings: Settings) -> tuple[Finding, ...]:
+    """Findings of the checks that look at the formula of a candidate only, not at its spectrum."""
+    return (
         check_isotope_pattern(facts, formula),
         check_fragment_halogens(facts, formula),
         check_carbon_count(facts, formula),
-        check_losses(facts, formula, entry),
-        check_ions_above(facts, formula, entry),
         check_formula_rules(facts, formula),
         check_explained(facts, formula),
-        check_missing_ions(facts, aligned),
-        check_extra_ions(facts, aligned, formula),
         check_accurate_mass(facts, formula, settings),
-        check_retention(query, entry),
     )
