@@ -86,6 +86,6 @@ def _replacing(path: Path) -> Iterator[IO[bytes]]:
 
 
 def _umask() -> int:
-    mask = os.umask(0o022)
+    mask = os.umask(0o077)  # it can only be read by being set: for a moment, to the safest
     os.umask(mask)
     return mask

@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 
 from identify.records import SpectrumRecord
-from identify.writers.named_values import display_name, named_values, number_text, one_line
+from identify.writers.named_values import display_name, named_values, one_line, peak_rows
 
 _LABELS = {
     "Formula": "MOLFORM",
@@ -57,7 +57,7 @@ def render_jcamp(record: SpectrumRecord) -> str:
         "##YFACTOR= 1",
         f"##NPOINTS= {record.mz.size}",
     ]
-    rows = [f"{number_text(mz)}, {number_text(height)}" for mz, height in zip(record.mz, record.intensity, strict=True)]
+    rows = peak_rows(record, ", ")
     return "\n".join([*lines, f"##{data_class}= (XY..XY)", *rows, "##END=", ""])
 
 

@@ -2,8 +2,12 @@
 
 from __future__ import annotations
 
+import re
+
 from identify.records import SpectrumRecord
-from identify.writers.named_values import display_name, named_values, number_text
+from identify.writers.named_values import display_name, named_values, peak_rows
+
+_COUNT = re.compile(r"n(?:um(?:ber[\W_]*of)?)?[\W_]*peaks?[\W_]*", re.IGNORECASE)
 
 
 def render_msp(record: SpectrumRecord) -> str:
@@ -25,6 +29,7 @@ def render_msp(record: SpectrumRecord) -> str:
     pairs = named_values(record)
     if not record.identity.name:
         pairs.insert(0, ("Name", display_name(record)))
-    lines = [f"{name}: {value}" for name, value in pairs]
-    rows = [f"{number_text(mz)} {number_text(height)}" for mz, height in zip(record.mz, record.intensity, strict=True)]
+    # A further value of the source may be called like the count, behind which readers expect the peaks.
+    lines = [f"{'x ' if _COUNT.fullmatch(name) else ''}{name}: {value}" for name, value in pairs]
+    rows = peak_rows(record, " ")
     return "\n".join([*lines, f"Num Peaks: {len(rows)}", *rows]) + "\n\n"

@@ -8,7 +8,7 @@ package), are not written: an electron-ionization spectrum has no precursor, and
 from __future__ import annotations
 
 from identify.records import SpectrumRecord
-from identify.writers.named_values import display_name, exact_mass_text, named_values, number_text, one_line
+from identify.writers.named_values import display_name, exact_mass_text, named_values, one_line, peak_rows
 
 _SPECTRUM_TERMS = {"SPLASH": "MS:1002599|splash key"}
 _ANALYTE_TERMS = {
@@ -77,7 +77,7 @@ def render_mzspeclib(record: SpectrumRecord, number: int = 1) -> str:
             group += 1
             target = analyte if name in _ANALYTE_NAMES else lines
             target += _grouped(group, name, value)
-    rows = [f"{number_text(mz)}\t{number_text(height)}" for mz, height in zip(record.mz, record.intensity, strict=True)]
+    rows = peak_rows(record, "\t")
     return "\n".join([*lines, "<Analyte=1>", *analyte, "<Peaks>", *rows, "", ""])
 
 

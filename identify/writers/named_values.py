@@ -27,6 +27,12 @@ def number_text(value: float) -> str:
     return np.format_float_positional(float(value), trim="-")
 
 
+def peak_rows(record: SpectrumRecord, separator: str) -> list[str]:
+    """One row ``m/z<separator>intensity`` per peak, in the order of the record, without loss (see `number_text`)."""
+    pairs = zip(record.mz.tolist(), record.intensity.tolist(), strict=True)
+    return [f"{number_text(mz)}{separator}{number_text(height)}" for mz, height in pairs]
+
+
 def one_line(text: str) -> str:
     """`text` with line breaks and other control characters as blanks, and none of them at its ends.
 

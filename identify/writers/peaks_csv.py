@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from identify.records import SpectrumRecord
-from identify.writers.named_values import display_name, named_values, number_text
+from identify.writers.named_values import display_name, named_values, peak_rows
 
 
 def render_peaks_csv(record: SpectrumRecord) -> str:
@@ -26,5 +26,5 @@ def render_peaks_csv(record: SpectrumRecord) -> str:
     if not record.identity.name:
         pairs.insert(0, ("Name", display_name(record)))
     cells = [f"{name}: {value}".replace('"', '""') for name, value in pairs]
-    rows = [f"{number_text(mz)},{number_text(height)}" for mz, height in zip(record.mz, record.intensity, strict=True)]
+    rows = peak_rows(record, ",")
     return "\n".join([*[f'"{cell}"' for cell in cells], "m/z,intensity", *rows]) + "\n\n"

@@ -8,6 +8,7 @@ from typing import Any
 
 from identify.records import Candidate, EvidenceItem, Identification, LibraryState, Report, Verdict
 from identify.writers.files import write_atomically
+from identify.writers.rows_csv import make_harmless
 
 COLUMNS = (
     "query_id",
@@ -42,8 +43,6 @@ COLUMNS = (
     "library_fingerprint",
     "program_version",
 )
-FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r", "\n")
-"""First characters at which spreadsheets take text for a formula, or skip to the one that follows."""
 DECIMALS = 6
 
 
@@ -86,26 +85,6 @@ def report_to_csv(report: Report) -> str:
     frame = pandas.DataFrame(list(_rows(report)), columns=list(COLUMNS), dtype=object)
     text: str = frame.to_csv(index=False, lineterminator="\r\n", na_rep="")
     return text
-
-
-def make_harmless(text: str) -> str:
-    """The text, with an apostrophe in front where a spreadsheet would take it for a formula.
-
-    Parameters
-    ----------
-    text : str
-
-    Returns
-    -------
-    str
-
-    Examples
-    --------
-    >>> make_harmless("=1+1"), make_harmless("  @x"), make_harmless("1-butanol"), make_harmless("(-)-menthol")
-    ("'=1+1", "'  @x", '1-butanol', '(-)-menthol')
-    """
-    # Leading blanks are stripped by some importers before they look at the first character.
-    return f"'{text}" if text.startswith(FORMULA_STARTS) or text.lstrip().startswith(FORMULA_STARTS) else text
 
 
 def _rows(report: Report) -> Iterator[dict[str, Any]]:

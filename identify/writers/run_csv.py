@@ -2,15 +2,12 @@
 
 from __future__ import annotations
 
-import csv
-import io
 from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
 from identify.runs.findings import RunsReport
-from identify.writers.files import write_atomically
-from identify.writers.results_csv import make_harmless
+from identify.writers.rows_csv import write_rows
 
 COLUMNS = (
     "run", "source", "component", "query_id", "unknown", "retention_time_min", "start_min", "end_min", "retention_index",
@@ -21,7 +18,7 @@ COLUMNS = (
 
 
 def write_run_csv(path: Path, found: RunsReport) -> None:
-    """Nothing comes out; afterwards `path` holds one row per component (RFC 4180, UTF-8), whole or not at all.
+    """Nothing comes out; afterwards `path` holds one row per component in the order of elution, run by run.
 
     Parameters
     ----------
@@ -33,30 +30,7 @@ def write_run_csv(path: Path, found: RunsReport) -> None:
     UsageError
         If the file cannot be written.
     """
-    write_atomically(path, runs_to_csv(found).encode("utf-8", "backslashreplace"))
-
-
-def runs_to_csv(found: RunsReport) -> str:
-    """CSV text: the header of `COLUMNS`, then one row per component in the order of elution, run by run.
-
-    Parameters
-    ----------
-    found : RunsReport
-
-    Returns
-    -------
-    str
-        Lines end with CR LF; text that a spreadsheet would run as a formula gets an apostrophe in front.
-    """
-    stream = io.StringIO()
-    writer = csv.writer(stream, lineterminator="\r\n")
-    writer.writerow(COLUMNS)
-    for row in _rows(found):
-        cells = (row.get(name) for name in COLUMNS)
-        writer.writerow(
-            ["" if cell is None else make_harmless(cell) if isinstance(cell, str) else cell for cell in cells]
-        )
-    return stream.getvalue()
+    write_rows(path, COLUMNS, ([row.get(name) for name in COLUMNS] for row in _rows(found)))
 
 
 def _rows(found: RunsReport) -> Iterator[dict[str, Any]]:

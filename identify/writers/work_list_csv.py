@@ -2,20 +2,18 @@
 
 from __future__ import annotations
 
-import csv
-import io
+from collections.abc import Iterator
 from pathlib import Path
 
 from identify.ranking.follow_up import build_work_list
 from identify.records import Report
-from identify.writers.files import write_atomically
-from identify.writers.results_csv import make_harmless
+from identify.writers.rows_csv import write_rows
 
 COLUMNS = ("place", "measurement", "priority", "n_queries", "query_ids", "query_names", "reasons", "what_decides")
 
 
 def write_work_list(path: Path, report: Report) -> None:
-    """Nothing comes out; afterwards `path` holds the work list (RFC 4180, UTF-8), whole or not at all.
+    """Nothing comes out; afterwards `path` holds the follow-up of all queries as CSV, whole or not at all.
 
     Parameters
     ----------
@@ -26,34 +24,25 @@ def write_work_list(path: Path, report: Report) -> None:
     ------
     UsageError
         If the file cannot be written.
+
+    Notes
+    -----
+    What helps several queries comes once, with its priorities added; its cells for several queries are separated by " | ",
+    in the same order.
     """
-    write_atomically(path, work_list_to_csv(report).encode("utf-8", "backslashreplace"))
+    write_rows(path, COLUMNS, _rows(report))
 
 
-def work_list_to_csv(report: Report) -> str:
-    """CSV text of the follow-up of all queries: what helps several queries comes once, with its priorities added.
-
-    Parameters
-    ----------
-    report : Report
-
-    Returns
-    -------
-    str
-        The header of `COLUMNS`, then one row per measurement; lines end with CR LF. Cells for several queries are separated by
-        " | ", in the same order.
-    """
+def _rows(report: Report) -> Iterator[tuple[object, ...]]:
     names = {
         found.query.id: found.query.record.identity.name or found.query.record.title for found in report.identifications
     }
     decides = {
         (found.query.id, plan.action): plan.decides for found in report.identifications for plan in found.follow_up
     }
-    stream = io.StringIO()
-    writer = csv.writer(stream, lineterminator="\r\n")
-    writer.writerow(COLUMNS)
     for place, item in enumerate(build_work_list(report.identifications), start=1):
-        cells = (
+        yield (
+            place,
             item.action,
             round(item.priority, 4),
             len(item.queries),
@@ -62,5 +51,3 @@ def work_list_to_csv(report: Report) -> str:
             " | ".join(item.reasons),
             " | ".join(decides[query, item.action] for query in item.queries),
         )
-        writer.writerow((place, *(make_harmless(cell) if isinstance(cell, str) else cell for cell in cells)))
-    return stream.getvalue()

@@ -1,4 +1,4 @@
-"""MassBank records: fields, retention data, derivatives, and every record of the open release."""
+"""MassBank records: fields, retention data, derivatives, and every record of the open release with its SPLASH key."""
 
 from __future__ import annotations
 
@@ -10,6 +10,7 @@ import pytest
 from identify.readers import read_pasted, read_spectra
 from identify.readers.massbank import parse_massbank
 from identify.records import Rejection, SpectrumRecord
+from identify.spectra.splash import verify_splash
 
 RECORD = """ACCESSION: INVNT-Invented-IN000001
 RECORD_TITLE: Inventol; GC-EI-TOF; MS; 2 TMS
@@ -193,6 +194,9 @@ def test_the_whole_open_release_is_read(shared_data: Path) -> None:
     assert len(rejected) == 4 and {item.reason for item in rejected} == {"unknown format"}
     assert len({record.accession for record in records}) == 14_155
     assert all(record.licence and record.authors and record.identity.name for record in records)
+    # One pass for both: that the peaks are read as they were written is what the keys say.
+    assert all(record.splash for record in records)
+    assert [fault for fault in map(verify_splash, records) if fault] == []
     indices = [record.retention.index for record in records if record.retention.index is not None]
     assert min(indices) > 200
     assert all(not record.is_profile for record in records if record.acquisition.ionization == "EI")

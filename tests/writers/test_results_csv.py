@@ -12,7 +12,8 @@ from pathlib import Path
 import pytest
 
 from identify.records import Report
-from identify.writers.results_csv import COLUMNS, make_harmless, report_to_csv, write_csv
+from identify.writers.results_csv import COLUMNS, report_to_csv, write_csv
+from identify.writers.rows_csv import make_harmless
 from tests.builders import build_candidate, build_identification, build_report
 
 

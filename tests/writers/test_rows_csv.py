@@ -28,7 +28,7 @@ def test_a_formula_is_made_harmless(tmp_path: Path) -> None:
 def test_no_rows_leave_the_heading(tmp_path: Path) -> None:
     path = tmp_path / "a.csv"
     assert write_rows(path, ("name",), []) == 0
-    assert path.read_text(encoding="utf-8") == "name\n"
+    assert path.read_bytes() == b"name\r\n"
 
 
 def test_a_missing_folder_is_said(tmp_path: Path) -> None:

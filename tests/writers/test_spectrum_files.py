@@ -139,6 +139,14 @@ def test_an_old_file_survives_a_failed_write(file_format: str, tmp_path: Path) -
     assert path.read_text() == "old" and len(list(tmp_path.iterdir())) == 1
 
 
+@pytest.mark.parametrize("name", ["NUM PEAKS", "Numpeak", "Number of Peaks", "n_peaks"])
+def test_a_further_value_called_like_the_peak_count_hides_no_peaks(name: str, tmp_path: Path) -> None:
+    record = build_record(extra={name: "7"})
+    (found,) = write_and_read(tmp_path, [record], "msp")
+    assert found.mz.tolist() == record.mz.tolist()
+    assert found.extra[f"x {name}"] == "7"
+
+
 def test_an_unknown_format_is_refused(tmp_path: Path) -> None:
     with pytest.raises(UsageError, match=r"format: found 'docx', expected one of massbank, jcamp, msp"):
         write_spectra(tmp_path / "a", [build_record()], "docx")
