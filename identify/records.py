@@ -293,6 +293,8 @@ class Part:
     name: str
     accession: str
     share: float
+    formula: str = ""
+    """As measured; empty where not known."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)

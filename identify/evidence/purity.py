@@ -331,7 +331,8 @@ def _describe(
 
 
 def _part(entry: Entry, share: float) -> Part:
-    return Part(entry.identity.name or entry.accession, entry.accession, share)
+    name = entry.identity.name or entry.accession
+    return Part(name, entry.accession, share, entry.formula_as_measured)
 
 
 def _residual(left: FloatArray, axis: FloatArray) -> tuple[Peaks | None, tuple[str, ...]]:

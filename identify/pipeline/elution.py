@@ -1,9 +1,10 @@
 """Candidates too large to have eluted so early: the order of boiling points, by number of heavy atoms.
 
 On every column the most branched alkane is the least retained compound of its size, so that a compound of n carbon, nitrogen,
-oxygen, sulfur, chlorine and bromine atoms has a retention index of at least about ``90 n − 140`` (textbook knowledge; checked by
-hand on the smallest known: diethyl ether 494 ≥ 310, diisopropyl ether 602 ≥ 490, 2,2,4-trimethylpentane 690 ≥ 580,
-2,2,4,4-tetramethylpentane 773 ≥ 670; indices from memory). Fluorine and silicon compounds boil lower and are not judged.
+oxygen, sulfur, chlorine and bromine atoms has a retention index of at least about ``85 n − 40`` (textbook knowledge; held against
+indices from memory, not verified: neopentane 413 ≥ 385, diethyl ether 494, 2,2-dimethylbutane 537 ≥ 470, diisopropyl ether 602 ≥
+555, 2,2,4-trimethylpentane 690 ≥ 640, 2,2,4,4-tetramethylpentane 773 ≥ 725, 2,2,4,4,6,8,8-heptamethylnonane 1320 ≥ 1320).
+Fluorine and silicon compounds boil lower and are not judged.
 """
 
 from __future__ import annotations
@@ -14,18 +15,19 @@ from math import log
 
 from identify.chem.formula import Formula, parse_formula
 from identify.errors import FormulaError
-from identify.pipeline.joint import COMPOUND_LEVELS, claim_from_run, lower_claim
+from identify.pipeline.joint import COMPOUND_LEVELS, claim_what_is_left, lower_claim
 from identify.records import Candidate, ClaimLevel, EvidenceItem, Explanation, Identification, Verdict
 from identify.retention import linear_index
 from identify.runs.findings import Finding, RetentionScale
 from identify.settings import Settings
 
 KIND = "order of elution"
-PER_ATOM, OFFSET, MOST_ATOMS = 90.0, 140.0, 20
+PER_ATOM, OFFSET, MOST_ATOMS = 85.0, 40.0, 20
 JUDGED = frozenset({"C", "H", "N", "O", "S", "Cl", "Br"})
 TOO_LARGE_ODDS = 50.0
 """How much less likely such a candidate becomes: the bound is a rule of thumb, no law."""
-SLACK = 30.0
+SLACK, SLACK_BEFORE = 30.0, 60.0
+"""Index units, between rungs and before the first one."""
 WORTH_A_NOTE = 0.02
 
 
@@ -52,9 +54,10 @@ def weigh_by_elution(
     judged = []
     for finding in findings:
         found = finding.identification
-        highest = _highest_index(finding.component.time_s / 60.0, scale)
+        highest = highest_index(finding.component.time_s / 60.0, scale)
         if found is not None and highest is not None:
-            finding = replace(finding, identification=_weigh(found, highest, settings))
+            found = _weigh(_without_impossible_mixture(found, highest, settings), highest, settings)
+            finding = replace(finding, identification=found)
         judged.append(finding)
     return tuple(judged)
 
@@ -73,7 +76,7 @@ def least_index(formula: Formula) -> float | None:
     Examples
     --------
     >>> least_index(parse_formula("C10H20O2")), least_index(parse_formula("C4H12Si"))
-    (940.0, None)
+    (980.0, None)
     """
     elements = {symbol for symbol, _ in formula.counts}
     heavy = sum(count for symbol, count in formula.counts if symbol != "H")
@@ -82,16 +85,62 @@ def least_index(formula: Formula) -> float | None:
     return PER_ATOM * heavy - OFFSET
 
 
-def _highest_index(minutes: float, scale: RetentionScale) -> float | None:
-    """Index of a time, or the first rung's for times before it; None after the last."""
-    index = linear_index(minutes, scale.ladder)
-    if index is None and minutes < scale.ladder.times[0]:
-        index = 100.0 * scale.ladder.carbons[0]
-    return index
+def highest_index(minutes: float, scale: RetentionScale) -> float | None:
+    """The largest retention index a peak at this time may have; None after the last rung.
+
+    Parameters
+    ----------
+    minutes : float
+    scale : RetentionScale
+
+    Returns
+    -------
+    float or None
+        With slack for the scale. Before the first rung the first two are extrapolated as at constant temperature (Kovats 1958),
+        which gives too low an index where the oven already warms up: `SLACK_BEFORE` covers 50 units for the petrol run's
+        pentane. Without a hold-up time it is the first rung's.
+
+    Examples
+    --------
+    >>> from identify.retention import Ladder
+    >>> scale = RetentionScale(Ladder((7, 8), (3.0, 5.0)), "by hand", 5.0, hold_up=1.0)
+    >>> [highest_index(minutes, scale) for minutes in (4.0, 2.0, 0.9, 5.1)]
+    [780.0, 660.0, 0.0, None]
+    """
+    ladder = scale.ladder
+    index = linear_index(minutes, ladder)
+    if index is not None:
+        return index + SLACK
+    if minutes > ladder.times[0]:
+        return None
+    first = 100.0 * ladder.carbons[0]
+    if scale.hold_up is None:
+        return first + SLACK
+    if minutes <= scale.hold_up:
+        return 0.0
+    here, early, late = (log(time - scale.hold_up) for time in (minutes, *ladder.times[:2]))
+    step = 100.0 * (ladder.carbons[1] - ladder.carbons[0]) / (late - early)
+    return min(first + SLACK, max(0.0, first + step * (here - early) + SLACK_BEFORE))
+
+
+def _without_impossible_mixture(found: Identification, highest: float, settings: Settings) -> Identification:
+    """The identification without its doubt about purity, where that rests on parts too large to be there."""
+    purity = found.purity
+    if purity is None or purity.verdict is not Verdict.CONFLICTS or not found.candidates:
+        return found
+    impossible = [part.name for part in purity.parts if _is_too_large(part.formula, highest)]
+    if not impossible:
+        return found
+    note = f"Not the mixture that its spectrum alone suggests: too large to elute so early are {'; '.join(impossible)}."
+    reason = f"{purity.reason} But these cannot elute so early: {'; '.join(impossible)}."
+    cleared = replace(
+        found, purity=replace(purity, verdict=Verdict.INCONCLUSIVE, reason=reason), notes=(*found.notes, note)
+    )
+    return claim_what_is_left(cleared, settings.claim_threshold)
 
 
 def _weigh(found: Identification, highest: float, settings: Settings) -> Identification:
-    too_large = [_is_too_large(candidate, highest) for candidate in found.candidates]
+    too_large = [_is_too_large(candidate.entry.formula_as_measured, highest) for candidate in found.candidates]
     lost = sum(c.probability for c, flag in zip(found.candidates, too_large, strict=True) if flag)
     if lost < WORTH_A_NOTE:
         return found
@@ -110,17 +159,19 @@ def _weigh(found: Identification, highest: float, settings: Settings) -> Identif
         without = replace(changed.claim, level=ClaimLevel.TENTATIVE, group_probability=0.0)
         return lower_claim(replace(changed, claim=without), note, settings.claim_threshold)
     changed = replace(changed, notes=(*changed.notes, note))
-    if found.claim.level is ClaimLevel.NO_CLAIM and ranked[0].probability >= settings.claim_threshold:
-        return claim_from_run(changed)
-    return changed
+    if found.claim.level is not ClaimLevel.NO_CLAIM:
+        return changed
+    of_group = ranked[0].probability if too_large[0] else min(1.0, found.claim.group_probability / whole)
+    claim = replace(changed.claim, compound_probability=ranked[0].probability, group_probability=of_group)
+    return claim_what_is_left(replace(changed, claim=claim), settings.claim_threshold)
 
 
-def _is_too_large(candidate: Candidate, highest: float) -> bool:
+def _is_too_large(formula: str, highest: float) -> bool:
     try:
-        least = least_index(parse_formula(candidate.entry.formula_as_measured))
+        least = least_index(parse_formula(formula))
     except FormulaError:
         return False
-    return least is not None and least > highest + SLACK
+    return least is not None and least > highest
 
 
 def _with_probability(candidate: Candidate, probability: float, highest: float, is_too_large: bool) -> Candidate:

@@ -10,6 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import replace
 
+from identify.chem.constitution import is_only_isomer
 from identify.ranking.claim import PUBLISHED_LEVELS, percent
 from identify.records import Candidate, Claim, ClaimLevel, Identification, Verdict
 from identify.retention import doubt_about_index, phase_class, series_key
@@ -61,21 +62,13 @@ def _without_mixture_doubt(finding: Finding, threshold: float) -> Finding:
     found = finding.identification
     if found is None or not finding.component.is_saturated or not found.candidates or found.purity is None:
         return finding
-    best, claim = found.candidates[0], found.claim
-    formula = best.entry.formula_as_measured
+    formula, claim = found.candidates[0].entry.formula_as_measured, found.claim
     open_levels = (ClaimLevel.CLASS, ClaimLevel.NO_CLAIM)
     doubted = found.purity.verdict is Verdict.CONFLICTS and claim.level in open_levels
     if not (doubted and formula and claim.group_probability >= threshold):
         return finding
-    names = tuple(c.entry.identity.name for c in found.candidates if c.entry.formula_as_measured == formula)
-    msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.ISOMER_GROUP]
-    text = f"One of the isomers of {formula} ({percent(claim.group_probability)}): {'; '.join(names)}."
-    group = replace(
-        claim, level=ClaimLevel.ISOMER_GROUP, statement=text, probability=claim.group_probability, members=names,
-        msi_2007=msi, schymanski_2014=schymanski,
-    )  # fmt: skip
     note = "The peak is overloaded and its ion ratios drift: that two entries explain it better than one is no sign of a mixture."
-    return replace(finding, identification=replace(found, claim=group, notes=(*found.notes, note)))
+    return replace(finding, identification=replace(_claim_group(found), notes=(*found.notes, note)))
 
 
 def lower_claim(found: Identification, reason: str, threshold: float) -> Identification:
@@ -261,18 +254,44 @@ def claim_class(found: Identification, name: str, probability: float) -> Identif
     return replace(found, claim=claim)
 
 
-def claim_from_run(found: Identification) -> Identification:
-    """The identification with its best candidate as a tentative claim: what the run as a whole adds made it probable enough.
+def claim_what_is_left(found: Identification, threshold: float) -> Identification:
+    """The identification with the strongest claim that the probabilities of its claim allow: compound, isomer group, none.
 
     Parameters
     ----------
     found : Identification
-        With at least one candidate.
+        With at least one candidate, and no claim: what the run as a whole adds has changed its probabilities.
+    threshold : float
 
     Returns
     -------
     Identification
     """
+    best = found.candidates[0]
+    if best.probability >= threshold:
+        return _claim_compound(found)
+    if best.entry.formula_as_measured and found.claim.group_probability >= threshold:
+        return _claim_group(found)
+    text = f"No claim: the best match, {best.entry.identity.name}, reaches {percent(best.probability)} only."
+    claim = replace(found.claim, statement=text, probability=1.0 - found.in_library_probability, members=())
+    return replace(found, claim=claim)
+
+
+def _claim_group(found: Identification) -> Identification:
+    formula, claim = found.candidates[0].entry.formula_as_measured, found.claim
+    if is_only_isomer(formula):
+        return _claim_compound(found)
+    names = tuple(c.entry.identity.name for c in found.candidates if c.entry.formula_as_measured == formula)
+    msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.ISOMER_GROUP]
+    text = f"One of the isomers of {formula} ({percent(claim.group_probability)}): {'; '.join(names)}."
+    group = replace(
+        claim, level=ClaimLevel.ISOMER_GROUP, statement=text, probability=claim.group_probability, members=names,
+        msi_2007=msi, schymanski_2014=schymanski,
+    )  # fmt: skip
+    return replace(found, claim=group)
+
+
+def _claim_compound(found: Identification) -> Identification:
     best = found.candidates[0]
     msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.TENTATIVE]
     shown = percent(best.probability)

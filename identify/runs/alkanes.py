@@ -17,6 +17,8 @@ from identify.runs.model import Component, ComponentKind
 
 MIN_SERIES_SHARE = 0.9
 """Share of the signal from m/z 39 in the series CnH2n+1, CnH2n and CnH2n-1, and the molecular ion."""
+LEAST_PROPYL, LEAST_BUTYL, LEAST_PENTYL = 0.3, 0.15, 0.08
+"""Relative intensity of C3H7+ or C4H9+, of the other one, and of C5H11+: 2,3,4-trimethylpentane has little C4H9+."""
 MIN_MOLECULAR_ION = 0.002
 MOST_ABOVE = 0.003
 """Smallest molecular ion, and largest ion allowed above its isotope peak; relative to the base peak."""
@@ -49,7 +51,8 @@ def alkane_carbons(component: Component, series_share: float = MIN_SERIES_SHARE)
         return None
     mz, relative = mz[inside], relative[inside]
     values = dict(zip(mz.tolist(), relative.tolist(), strict=True))
-    if min(values.get(43, 0.0), values.get(57, 0.0)) < 0.3 or values.get(71, 0.0) < 0.08:
+    smaller, larger = sorted((values.get(43, 0.0), values.get(57, 0.0)))
+    if smaller < LEAST_BUTYL or larger < LEAST_PROPYL or values.get(71, 0.0) < LEAST_PENTYL:
         return None
     chain = np.isin(mz % 14, (0, 1, 13))
     carbons = _from_molecular_ion(values)

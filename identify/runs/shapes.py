@@ -98,7 +98,7 @@ def _differs(own: Shape, usual: Shape) -> bool:
     extent = float(usual.values.sum())
     ratio = float(own.values.sum()) / extent
     form = float(np.abs(own.values - usual.on(own.first, own.first + own.values.size)).sum()) / extent
-    return 0.35 <= ratio <= 0.85 or 1.18 <= ratio <= 2.2 or (0.85 < ratio < 1.18 and form >= MIN_OTHER_FORM)
+    return 0.35 <= ratio <= 0.85 or 1.15 <= ratio <= 2.2 or (0.85 < ratio < 1.15 and form >= MIN_OTHER_FORM)
 
 
 def _own_shape(cluster: Cluster, signal: FloatArray, half: int) -> Shape | None:

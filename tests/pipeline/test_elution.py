@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 
 from identify.chem.formula import parse_formula
-from identify.pipeline.elution import least_index, weigh_by_elution
-from identify.records import Claim, ClaimLevel, Identification, Peaks, Verdict
+from identify.pipeline.elution import highest_index, least_index, weigh_by_elution
+from identify.records import Claim, ClaimLevel, Identification, Part, Peaks, Purity, Verdict
 from identify.retention import Ladder
 from identify.runs.findings import Finding, RetentionScale
 from identify.runs.model import Component
@@ -45,7 +45,7 @@ def test_a_candidate_of_twelve_heavy_atoms_before_heptane_falls_behind() -> None
     assert found.candidates[0].probability == pytest.approx(0.7843, abs=1e-4)
     assert [c.rank for c in found.candidates] == [1, 2]
     assert found.candidates[1].evidence[-1].verdict is Verdict.CONFLICTS
-    assert found.notes[-1].startswith("Too large to elute before index 700")
+    assert found.notes[-1].startswith("Too large to elute before index 730")
 
 
 def test_what_is_left_nearly_certain_is_claimed_tentatively() -> None:
@@ -71,9 +71,53 @@ def test_without_a_scale_nothing_is_judged() -> None:
 
 
 @pytest.mark.parametrize(
-    ("formula", "index"), [("C4H10O", 494), ("C6H14O", 602), ("C8H18", 690), ("C9H20", 773), ("C6H6", 654)]
+    ("formula", "index"),
+    [
+        ("C5H12", 413),
+        ("C4H10O", 494),
+        ("C6H14", 537),
+        ("C6H14O", 602),
+        ("C8H18", 690),
+        ("C9H20", 773),
+        ("C16H34", 1320),
+        ("C6H6", 654),
+    ],
 )
 def test_the_bound_lies_below_known_indices(formula: str, index: int) -> None:
-    # Indices on non-polar columns from memory, not verified: diethyl ether, diisopropyl ether, 2,2,4-trimethylpentane,
-    # 2,2,4,4-tetramethylpentane, benzene.
+    # Indices on non-polar columns from memory, not verified: neopentane, diethyl ether, 2,2-dimethylbutane, diisopropyl ether,
+    # 2,2,4-trimethylpentane, 2,2,4,4-tetramethylpentane, 2,2,4,4,6,8,8-heptamethylnonane, benzene.
     assert least_index(parse_formula(formula)) <= index
+
+
+def test_before_the_first_rung_the_scale_is_extrapolated_from_the_hold_up_time() -> None:
+    # ln of the adjusted times 0.5, 2 and 4 min: 200 units before C7 where C7 to C8 are 100, by hand.
+    scale = RetentionScale(Ladder((7, 8), (3.0, 5.0)), "by hand", 5.0, hold_up=1.0)
+    assert highest_index(1.5, scale) == pytest.approx(500.0 + 60.0)
+    assert highest_index(2.5, scale) < highest_index(3.0, scale) == 730.0
+    assert highest_index(1.5, replace(scale, hold_up=None)) == 730.0
+    assert judge(finding(1.5, ("C8H18", 0.5), ("C4H8O", 0.4)), scale).candidates[0].entry.identity.name == "compound 2"
+
+
+def mixture(found: Finding, *formulas: str) -> Finding:
+    """The finding with the doubt that its spectrum is a mixture of compounds with these formulas."""
+    parts = tuple(Part(f"part {n}", f"P{n}", 0.5, formula) for n, formula in enumerate(formulas, start=1))
+    doubted = replace(found.identification, purity=Purity(Verdict.CONFLICTS, "two entries.", parts, 0.8))
+    return replace(found, identification=doubted)
+
+
+def test_a_mixture_with_a_part_too_large_for_its_time_is_no_mixture() -> None:
+    before = finding(2.0, ("C5H12O", 0.96), ("C5H10O", 0.01))
+    assert judge(mixture(before, "C4H8O", "C5H12O")).claim.level is ClaimLevel.NO_CLAIM
+    found = judge(mixture(before, "C10H20O2", "C5H12O"))
+    assert (found.claim.level, found.claim.members) == (ClaimLevel.TENTATIVE, ("compound 1",))
+    assert found.purity.verdict is Verdict.INCONCLUSIVE
+    assert found.notes == ("Not the mixture that its spectrum alone suggests: too large to elute so early are part 1.",)
+
+
+def test_isomers_that_are_left_nearly_certain_together_are_claimed_as_a_group() -> None:
+    before = finding(2.0, ("C5H12O", 0.5), ("C10H20O2", 0.3))
+    claim = replace(before.identification.claim, group_probability=0.69)
+    found = judge(replace(before, identification=replace(before.identification, claim=claim)))
+    # 0.69 / (1 - 0.3 * 49 / 50), by hand.
+    assert (found.claim.level, round(found.claim.probability, 3)) == (ClaimLevel.ISOMER_GROUP, 0.977)
+    assert found.claim.members == ("compound 1",)

@@ -54,7 +54,7 @@ def test_a_claim_that_stands_is_not_touched() -> None:
     assert name_class(found.identification, component(), Settings()) is found.identification
 
 
-ALKANE_IONS = {41: 35, 42: 25, 43: 100, 55: 14, 56: 20, 57: 22, 70: 20, 71: 30, 84: 20, 85: 70, 86: 5, 100: 6}
+ALKANE_IONS = {41: 35, 42: 25, 43: 100, 55: 14, 56: 20, 57: 14, 70: 20, 71: 30, 84: 20, 85: 70, 86: 5, 100: 6}
 ETHER_IONS = {41: 15, 43: 14, 45: 12, 55: 6, 57: 30, 59: 40, 73: 100, 74: 5, 87: 8, 88: 1}
 
 
@@ -105,6 +105,19 @@ def test_a_clear_molecular_ion_gives_the_carbon_number_where_the_order_of_elutio
     run = [replace(f, identification=replace(f.identification, molecular_ion=sure)) for f in run]
     claim = name_classes(run, Settings(), scale)[0].identification.claim
     assert claim.statement.startswith(f"{expected}, no single compound")
+
+
+BRANCHED = {41: 22, 42: 8, 43: 100, 55: 18, 56: 6, 57: 20, 58: 30, 70: 60, 71: 95, 85: 8, 114: 1}
+"""A branched octane, invented, with 8 % of its signal at an ion that no alkane has."""
+
+
+@pytest.mark.parametrize(("minutes", "is_named"), [(5.6, True), (3.4, False), (6.5, False)])
+def test_an_alkane_with_a_strange_ion_is_named_only_where_the_order_of_elution_fits(minutes, is_named) -> None:
+    made = with_ions(finding(*UNKNOWN), BRANCHED, minutes)
+    scale = RetentionScale(Ladder((5, 7, 9), (3.0, 5.0, 7.0)), "by hand", 5.0)
+    claim = name_class(made.identification, made.component, Settings(), scale).claim
+    assert claim.statement.startswith("Alkane with 8 carbons") is is_named
+    assert name_class(made.identification, made.component, Settings()).claim.level is ClaimLevel.NO_CLAIM
 
 
 def test_the_share_of_a_class_is_estimated_cautiously() -> None:
