@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -42,6 +42,7 @@ class Peaks:
 
     mz: FloatArray
     intensity: FloatArray
+    _relative: FloatArray | None = field(default=None, init=False, repr=False)
 
     def __post_init__(self) -> None:
         mz, intensity = read_only(self.mz), read_only(self.intensity)
@@ -71,8 +72,13 @@ class Peaks:
 
     @property
     def relative(self) -> FloatArray:
-        """Intensities with the base peak at 100."""
-        return self.intensity * (100.0 / self.intensity.max()) if self.intensity.size else self.intensity
+        """Intensities with the base peak at 100; worked out once, for a search asks for them some five times."""
+        if self._relative is None:
+            relative = self.intensity * (100.0 / self.intensity.max()) if len(self) else self.intensity
+            relative.setflags(write=False)
+            object.__setattr__(self, "_relative", relative)
+            return relative
+        return self._relative
 
     def intensity_at(self, nominal_mz: int) -> float:
         """Intensity at an integer m/z of a nominal peak list; 0 where there is no peak."""

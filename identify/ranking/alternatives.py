@@ -120,34 +120,35 @@ def group_isomers(entries: Sequence[Entry], features: FloatArray, log_odds: Floa
     places: dict[str, int] = {}
     keys = [isomer_key(entry) for entry in entries]
     of_candidate = np.array([places.setdefault(key or f"#{n}", len(places)) for n, key in enumerate(keys)])
-    rows, best_of_group = [], []
-    for group in range(len(places)):
-        members = np.flatnonzero(of_candidate == group)
-        members = members[np.argsort(-log_odds[members], kind="stable")]
-        best = int(members[0])
-        best_of_group.append(float(log_odds[best]))
-        lead = float(log_odds[best] - log_odds[members[1]]) if members.size > 1 else MOST_LEAD
-        share = 1.0 / float(np.exp(log_odds[members] - log_odds[best]).sum())
-        rows.append(
-            [
-                float(log_odds[best]),
-                min(lead, MOST_LEAD),
-                share,
-                float(np.log(members.size)),
-                *describe_composition(entries[best]),
-                float(not keys[best]),
-                float(bool(entries[best].measured_as)),
-                *features[best, _COLUMNS],
-            ]
-        )
-    ranked = sorted(best_of_group, reverse=True)
-    lead = ranked[0] - ranked[1] if len(ranked) > 1 else MOST_LEAD
-    top = int(np.argmax(log_odds))
+    ranked = np.argsort(-log_odds, kind="stable")
+    groups, first = np.unique(of_candidate[ranked], return_index=True)  # every group has a member: 0, 1, 2, …
+    best = ranked[first]
+    own = log_odds[best]
+    lead = np.full(groups.size, MOST_LEAD)
+    after = np.delete(ranked, first)
+    others, second = np.unique(of_candidate[after], return_index=True)
+    lead[others] = np.minimum(own[others] - log_odds[after[second]], MOST_LEAD)
+    odds = np.bincount(of_candidate, np.exp(log_odds - own[of_candidate]))
+    rows = np.column_stack(
+        [
+            own,
+            lead,
+            1.0 / odds,
+            np.log(np.bincount(of_candidate)),
+            [describe_composition(entries[place]) for place in best],
+            [not keys[place] for place in best],
+            [bool(entries[place].measured_as) for place in best],
+            features[best][:, _COLUMNS],
+        ]
+    )
+    top = int(ranked[0])
+    rivals = np.sort(own)[::-1]
+    formula_lead = min(float(rivals[0] - rivals[1]), MOST_LEAD) if rivals.size > 1 else MOST_LEAD
     derivative = float(bool(entries[top].measured_as))
     behind = measure_distances(log_odds)
-    elsewhere = np.array([log_odds[top], min(lead, MOST_LEAD), derivative, *behind, *features[top, _COLUMNS]])
+    elsewhere = np.array([log_odds[top], formula_lead, derivative, *behind, *features[top, _COLUMNS]])
     names = tuple("" if key.startswith("#") else key for key in places)
-    return Groups(of_candidate, names, np.array(rows), elsewhere)
+    return Groups(of_candidate, names, rows, elsewhere)
 
 
 def measure_distances(log_odds: FloatArray) -> list[float]:
