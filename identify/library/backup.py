@@ -10,8 +10,15 @@ from dataclasses import dataclass
 from datetime import datetime
 from pathlib import Path
 
-from identify.errors import LibraryConflict, LibraryDamaged, LibraryError, LibraryVersionError
-from identify.library.connection import check_not_on_network, connect_any_version, read_version, transaction, translated
+from identify.errors import LibraryConflict, LibraryDamaged, LibraryError
+from identify.library.connection import (
+    check_not_on_network,
+    connect_any_version,
+    read_version,
+    transaction,
+    translated,
+    wrong_version,
+)
 from identify.library.events import append_event
 from identify.library.new_file import hold_exclusively, remove_with_side_files, sync_to_disk
 from identify.library.schema import MIGRATIONS, SCHEMA_VERSION, apply_migrations
@@ -206,10 +213,7 @@ def migrate_library(path: Path | str, *, who: str, when: datetime) -> MigrationR
                     "library", where=str(path), found=f"schema version {version}", expected="an older one to migrate"
                 )
             if version > SCHEMA_VERSION:
-                raise LibraryVersionError(
-                    "library", where=str(path), found=f"schema version {version}",
-                    expected=f"at most version {SCHEMA_VERSION}", hint="Update ionwitness to open it.",
-                )  # fmt: skip
+                raise wrong_version(path, version)
             copy = _copy(path, _free_name(path, f"schema-{version}-backup"), None)
             with transaction(connection):
                 if read_version(connection, path) != version:

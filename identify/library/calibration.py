@@ -101,7 +101,7 @@ def read_calibration(library: Library) -> Calibration | None:
         told = json.loads(content)
         values = [float(told[name]) for name in ("sharpness", "unlisted", "elsewhere")]
         note = str(told["note"])
-    except (ValueError, TypeError, KeyError, RecursionError):
+    except (ValueError, TypeError, KeyError, OverflowError, RecursionError):
         raise LibraryError("calibration", where=where, found=quote(str(content)), expected="its numbers") from None
     sharpness, unlisted, elsewhere = values
     sound = all(map(math.isfinite, values)) and 1 / LARGEST_SHARPNESS <= sharpness <= LARGEST_SHARPNESS

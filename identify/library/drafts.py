@@ -16,6 +16,7 @@ from identify.library.blobs import FLOAT32, FLOAT64, UINT16, pack
 from identify.library.events import canonical_json
 from identify.library.licences import normalise_licence
 from identify.library.rows import CompoundKey, Draft, Value, steps_text
+from identify.readers.fault_reports import NOT_EI, NOT_MS1
 from identify.records import CleanSpectrum, EntryStatus, Identity, Rejection, SpectrumRecord
 from identify.settings import REFERENCE_CLEANING
 from identify.spectra.cleaning import clean_spectrum
@@ -27,9 +28,7 @@ if TYPE_CHECKING:
 DEFAULT_ENERGY_EV = 70.0
 """What a record that states no electron energy is taken to be measured at: the standard energy of the trade."""
 MAX_TEXT = 10_000
-NOT_EI = "not electron ionization"
 NOT_POSITIVE = "not positive ions"
-NOT_MS1 = "not a full-scan spectrum (MS1)"
 LICENCE = "licence not accepted"
 UNUSABLE = "unusable spectrum"
 NAMELESS = "no name, formula or structure"
@@ -71,7 +70,7 @@ def judge_record(record: SpectrumRecord, policy: Policy) -> Draft | Rejection:
     Returns
     -------
     Draft or Rejection
-        Reasons are the constants of this module and ``splash mismatch``: countable, the same words each time.
+        Reasons are the constants of this module, of the readers and of `identify.spectra.splash`: the same words each time.
     """
     fault = _find_wrong_kind(record) or _find_wrong_licence(record, policy) or verify_splash(record)
     if fault:

@@ -18,7 +18,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from typing import Any
 
-from identify.errors import UsageError, quote
+from identify.errors import LibraryDamaged, UsageError, quote
 
 GENESIS = "0" * 64
 """Previous hash of the first event."""
@@ -45,8 +45,22 @@ class Event:
 
     @property
     def details(self) -> dict[str, Any]:
-        """The content, parsed."""
-        parsed: dict[str, Any] = json.loads(self.content)
+        """The content, parsed.
+
+        Raises
+        ------
+        LibraryDamaged
+            If it is no JSON object: somebody, or a flipped bit, changed the file.
+        """
+        try:
+            parsed = json.loads(self.content)
+        except (ValueError, RecursionError):
+            parsed = None
+        if not isinstance(parsed, dict):
+            raise LibraryDamaged(
+                "library", found=f"event {self.seq} with content that is no JSON object", expected="an intact file",
+                hint="Run `ionwitness library verify`, and restore the last backup.",
+            )  # fmt: skip
         return parsed
 
 
@@ -168,12 +182,12 @@ def _check_text(what: str, text: str, limit: int) -> str:
     return text
 
 
-def read_events(connection: sqlite3.Connection, upto: int | None = None) -> Iterator[Event]:
-    """Events in order, the first `upto` of them."""
+def read_events(connection: sqlite3.Connection, upto: int | None = None, start: int = 1) -> Iterator[Event]:
+    """Events in order, from number `start` to `upto` (or the last)."""
     rows = connection.execute(
         "SELECT seq, at, who, kind, reason, content, content_hash, previous_hash, hash FROM event"
-        " WHERE ? IS NULL OR seq <= ? ORDER BY seq",
-        (upto, upto),
+        " WHERE seq >= ? AND (? IS NULL OR seq <= ?) ORDER BY seq",
+        (start, upto, upto),
     )
     for row in rows:
         yield Event(*row)

@@ -20,9 +20,11 @@ from urllib.parse import urljoin
 from identify import __version__
 from identify.errors import FetchError, UsageError
 from identify.library.build import BuildReport, build_library
-from identify.library.drafts import NOT_EI, NOT_MS1, NOT_POSITIVE, OTHER_FILE
+from identify.library.drafts import NOT_POSITIVE, OTHER_FILE
 from identify.library.intake import Progress
 from identify.library.recipe import Recipe, check_address, read_recipe
+from identify.readers.fault_reports import NOT_EI, NOT_MS1
+from identify.spectra.splash import MISMATCH
 
 if TYPE_CHECKING:
     from requests import Response, Session
@@ -118,7 +120,7 @@ def check_counts(report: BuildReport, recipe: Recipe) -> None:
                 "release", where=recipe.url, found=f"{found:,} {what}", expected=f"at least {least:,}",
                 hint="The release has changed or the download is not whole; nothing was built.",
             )  # fmt: skip
-    mismatches = report.n_rejected.get("splash mismatch", 0)
+    mismatches = report.n_rejected.get(MISMATCH, 0)
     if mismatches > recipe.splash_mismatches_at_most:
         raise FetchError(
             "release", where=recipe.url, found=f"{mismatches:,} records whose peaks do not fit their SPLASH",
@@ -152,6 +154,15 @@ def download(recipe: Recipe, folder: Path, progress: Download | None = None) -> 
     FetchError
         If it cannot be downloaded or is not what the recipe expects.
     """
+    try:
+        return _download(recipe, folder, progress)
+    except OSError as error:
+        raise FetchError(
+            "download", where=str(folder), found=error.strerror or str(error), expected="a folder to write to"
+        ) from None
+
+
+def _download(recipe: Recipe, folder: Path, progress: Download | None) -> tuple[Path, bool]:
     import requests
 
     folder.mkdir(parents=True, exist_ok=True)

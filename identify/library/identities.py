@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import re
+
 from identify.errors import StructureError, UsageError, quote
 from identify.library.drafts import normalised_name
 from identify.library.standing import ALL_STATUSES
 from identify.library.store import Library
 from identify.records import Entry, Identity
+
+_CAS_NUMBER = re.compile(r"\d{2,7}-\d\d-\d", re.ASCII)
 
 
 def resolve_identity(
@@ -96,9 +100,7 @@ def is_cas_number(text: str) -> bool:
     >>> is_cas_number("67-64-1"), is_cas_number("67-64-2"), is_cas_number("x")
     (True, False, False)
     """
-    parts = text.split("-")
-    shapes = [2 <= len(parts[0]) <= 7] + [len(part) == size for part, size in zip(parts[1:], (2, 1), strict=False)]
-    if len(parts) != 3 or not all(shapes) or not "".join(parts).isdecimal() or not text.isascii():
+    if not _CAS_NUMBER.fullmatch(text):
         return False
-    digits = (parts[0] + parts[1])[::-1]
-    return sum(weight * int(digit) for weight, digit in enumerate(digits, 1)) % 10 == int(parts[2])
+    check, *digits = (int(digit) for digit in reversed(text.replace("-", "")))
+    return sum(weight * digit for weight, digit in enumerate(digits, 1)) % 10 == check

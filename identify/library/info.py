@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Mapping
 from dataclasses import dataclass
 
@@ -53,25 +54,21 @@ def describe_library(library: Library) -> LibraryInfo:
         "id, initial_status, licence, instrument_type, energy_ev, measured_as, is_labelled,"
         " accurate_mz IS NOT NULL, retention_index IS NOT NULL, inchikey = '' AND smiles = ''"
     )
-    status: dict[str, int] = {}
-    licence: dict[str, int] = {}
-    instrument: dict[str, int] = {}
-    energy: dict[str, int] = {}
-    derivative: dict[str, int] = {}
+    status, licence, instrument, energy, derivative = (Counter[str]() for _ in range(5))
     labelled = accurate = indexed = without_structure = 0
     standings = library.standings()
     with library.reading() as connection:
         rows = connection.execute(f"SELECT {columns} FROM entry WHERE event_seq <= ?", (library.last_event,))  # noqa: S608
         for entry_id, initial, held, kind, energy_ev, measured_as, *marks in rows:
             standing = standings.get(entry_id, initial)
-            _count(status, str(standing))
+            status[str(standing)] += 1
             if standing not in SEARCHABLE:
                 continue
-            _count(licence, held)
-            _count(instrument, kind or "not stated")
-            _count(energy, "not stated" if energy_ev is None else f"{energy_ev:g} eV")
+            licence[held] += 1
+            instrument[kind or "not stated"] += 1
+            energy["not stated" if energy_ev is None else f"{energy_ev:g} eV"] += 1
             if measured_as:
-                _count(derivative, measured_as)
+                derivative[measured_as] += 1
             labelled, accurate = labelled + marks[0], accurate + marks[1]
             indexed, without_structure = indexed + marks[2], without_structure + marks[3]
     return LibraryInfo(
@@ -80,9 +77,5 @@ def describe_library(library: Library) -> LibraryInfo:
     )  # fmt: skip
 
 
-def _count(counts: dict[str, int], key: str) -> None:
-    counts[key] = counts.get(key, 0) + 1
-
-
-def _sorted(counts: dict[str, int]) -> dict[str, int]:
+def _sorted(counts: Counter[str]) -> dict[str, int]:
     return dict(sorted(counts.items(), key=lambda item: (-item[1], item[0])))

@@ -17,14 +17,14 @@ from identify.library.events import Event
 from identify.library.insertion import Insertion
 from identify.library.rows import Draft
 from identify.readers import read_spectra
+from identify.readers.fault_reports import OnReject
+from identify.readers.recognize import UNKNOWN_FORMAT
 from identify.records import Rejection, SpectrumRecord
 
 Progress = Callable[[int, str], None]
 """Called with the number of records read and the name of the source, about every 100 records."""
-OnReject = Callable[[Rejection], None]
 
 DUPLICATE = "duplicate accession"
-UNKNOWN_FORMAT = "unknown format"
 MAX_LISTED = 20_000
 """Rejections listed one by one; the counts are always complete."""
 _PROGRESS_EVERY = 100

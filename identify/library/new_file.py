@@ -238,10 +238,14 @@ def write_new_file(path: Path, data: bytes, *, mode: int = 0o666) -> None:
     """
     try:
         descriptor = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL, mode)
-        with os.fdopen(descriptor, "wb") as stream:
-            stream.write(data)
-            stream.flush()
-            os.fsync(stream.fileno())
+        try:
+            with os.fdopen(descriptor, "wb") as stream:
+                stream.write(data)
+                stream.flush()
+                os.fsync(stream.fileno())
+        except BaseException:
+            path.unlink()  # half a file would stand in the way of the next try
+            raise
     except FileExistsError:
         raise UsageError("file", where=str(path), found="one that already exists", expected="a new name") from None
     except OSError as error:

@@ -7,7 +7,7 @@ finds does not depend on it.
 from __future__ import annotations
 
 import sqlite3
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import astuple, dataclass
 from datetime import datetime
 
@@ -16,7 +16,7 @@ from identify.library.drafts import tidy
 from identify.library.events import GENESIS, canonical_json, format_time, sha256_of
 from identify.library.standing import get_entry
 from identify.library.store import Library
-from identify.records import Report
+from identify.records import EntryStatus, Report
 
 _COLUMNS = (
     "at", "who", "result", "query_id", "query_name", "query_source", "fingerprint", "entry_id", "rank", "probability",
@@ -146,7 +146,7 @@ def find_affected(library: Library, accession: str) -> tuple[ReportedQuery, ...]
         If there is no such entry.
     """
     entry = get_entry(library, accession)
-    return tuple(_read(library, "WHERE entry_id = ? ORDER BY id", (entry.id,)))
+    return _read(library, entry.id)
 
 
 def find_affected_by_all_withdrawn(library: Library) -> dict[str, tuple[ReportedQuery, ...]]:
@@ -160,15 +160,17 @@ def find_affected_by_all_withdrawn(library: Library) -> dict[str, tuple[Reported
     moved = library.standings()
     out: dict[str, tuple[ReportedQuery, ...]] = {}
     for entry in library.get_entries(sorted(moved)):
-        if entry.status.value in ("withdrawn", "quarantined"):
-            rows = tuple(_read(library, "WHERE entry_id = ? ORDER BY id", (entry.id,)))
+        if entry.status in (EntryStatus.WITHDRAWN, EntryStatus.QUARANTINED):
+            rows = _read(library, entry.id)
             if rows:
                 out[entry.accession] = rows
     return out
 
 
-def _read(library: Library, clause: str, values: tuple[object, ...]) -> Iterator[ReportedQuery]:
+def _read(library: Library, entry_id: int) -> tuple[ReportedQuery, ...]:
     with library.reading() as connection:
-        rows = connection.execute(f"SELECT {', '.join(_COLUMNS)} FROM reported {clause}", values).fetchall()  # noqa: S608
-    for row in rows:
-        yield ReportedQuery(*row)
+        rows = connection.execute(
+            f"SELECT {', '.join(_COLUMNS)} FROM reported WHERE entry_id = ? ORDER BY id",  # noqa: S608
+            (entry_id,),
+        )
+        return tuple(ReportedQuery(*row) for row in rows)

@@ -9,7 +9,6 @@
 from __future__ import annotations
 
 import unicodedata
-from collections.abc import Mapping
 from dataclasses import asdict, dataclass, replace
 from datetime import datetime
 from pathlib import Path
@@ -19,7 +18,7 @@ from identify.library.audit import EntryAudit, audit_entry
 from identify.library.cache import load_index
 from identify.library.conflicts import Conflict, find_conflicts
 from identify.library.drafts import Policy, judge_record, tidy
-from identify.library.events import Event
+from identify.library.events import Event, read_events
 from identify.library.insertion import Insertion
 from identify.library.rows import Draft
 from identify.library.standing import get_entry, move_entries
@@ -293,6 +292,5 @@ def read_standard_details(library: Library, accession: str) -> StandardDetails:
     entry = get_entry(library, accession)
     with library.reading() as connection:
         (seq,) = connection.execute("SELECT event_seq FROM entry WHERE id = ?", (entry.id,)).fetchone()
-    event = library.events()[seq - 1]
-    known: Mapping[str, str] = event.details.get("standard", {})
+        known: dict[str, str] = next(read_events(connection, seq, seq)).details.get("standard", {})
     return StandardDetails(**known)

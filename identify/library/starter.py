@@ -22,6 +22,7 @@ from identify.chem.formula import Formula, parse_formula, rings_plus_double_bond
 from identify.chem.isotopes import isotope_pattern
 from identify.errors import FormatError, FormulaError, StructureError, quote
 from identify.library.build import BuildReport, build_from_records
+from identify.library.identities import is_cas_number
 from identify.library.shipped import find_shipped
 from identify.records import Acquisition, EntryStatus, Identity, Retention, Source, SpectrumRecord, read_only
 
@@ -38,7 +39,6 @@ _ENTRY_KEYS: Final = MappingProxyType(
     {"name": str, "smiles": str, "cas": str, "derivative": str, "retention_index": int, "ions": str}
 )
 _ION: Final = re.compile(r"([A-Z][A-Za-z0-9]*(?:\^2\+)?)=(\d{1,3})")
-_CAS: Final = re.compile(r"\d{2,7}-\d\d-\d")
 
 
 @dataclass(frozen=True, slots=True)
@@ -260,7 +260,7 @@ def _entry_of(file: str, number: int, content: Mapping[str, Any], table: Mapping
     from identify.chem.structures import formula_of
 
     name, derivative, cas = table["name"], table.get("derivative", ""), table.get("cas", "")
-    if cas and not _is_cas(cas):
+    if cas and not is_cas_number(cas):
         raise _fault(file, name, f"cas {quote(cas)}", "a registry number with a right check digit")
     try:
         formula = formula_of(table["smiles"])
@@ -315,11 +315,3 @@ def _ions_of(file: str, name: str, text: str, measured: Formula, lowest_mz: int)
     if max(ions.values(), default=0) != 100:
         raise _fault(file, name, f"a strongest ion of {max(ions.values(), default=0)}", "100")
     return tuple(ions.items())
-
-
-def _is_cas(text: str) -> bool:
-    """Whether the check digit fits: digits from the right, each times its place, summed modulo 10."""
-    if not _CAS.fullmatch(text):
-        return False
-    digits = [int(digit) for digit in reversed(text.replace("-", ""))]
-    return sum(place * digit for place, digit in enumerate(digits)) % 10 == digits[0]

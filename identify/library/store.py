@@ -75,13 +75,12 @@ def _marks(values: Collection[object]) -> str:
 
 
 def _find_event(connection: sqlite3.Connection, wanted: int | str, path: Path) -> int:
-    text = str(wanted).strip().lower()
+    text, rows = str(wanted).strip().lower(), []
     if text.isdecimal() and len(text) < 16:
         rows = connection.execute("SELECT seq FROM event WHERE seq = ?", (int(text),)).fetchall()
-    elif len(text) >= 8 and set(text) <= set("0123456789abcdef"):
+    # One hash in forty begins with eight digits and no letter.
+    if not rows and len(text) >= 8 and set(text) <= set("0123456789abcdef"):
         rows = connection.execute("SELECT seq FROM event WHERE substr(hash, 1, ?) = ?", (len(text), text)).fetchall()
-    else:
-        rows = []
     if len(rows) != 1:
         raise UsageError(
             "event", where=str(path), found=f"{len(rows)} events for {quote(text)}",
@@ -188,9 +187,13 @@ class Library:
         LibraryError
             If there is no event.
         """
+        return self._hash_of_event(self.last_event)
+
+    def _hash_of_event(self, last: int) -> str:
+        """Hash of event `last`, or of the last one before it."""
         with self.reading() as connection:
             row = connection.execute(
-                "SELECT hash FROM event WHERE seq <= ? ORDER BY seq DESC LIMIT 1", (self.last_event,)
+                "SELECT hash FROM event WHERE seq <= ? ORDER BY seq DESC LIMIT 1", (last,)
             ).fetchone()
         if row is None:
             raise LibraryError("library", where=str(self.path), found="no event", expected="at least one")
@@ -198,15 +201,20 @@ class Library:
 
     @property
     def search_fingerprint(self) -> str:
-        """Hash of the last event that changed what a search can find; names a search index."""
+        """Hash of the last event that changed what a search can find; names a search index.
+
+        Raises
+        ------
+        LibraryError
+            If there is no event.
+        """
         with self.reading() as connection:
             (last,) = connection.execute(
                 "SELECT max(seq) FROM (SELECT max(event_seq) AS seq FROM entry WHERE event_seq <= ?"
                 " UNION ALL SELECT max(event_seq) FROM standing WHERE event_seq <= ?)",
                 (self.last_event, self.last_event),
             ).fetchone()
-            (found,) = connection.execute("SELECT hash FROM event WHERE seq = ?", (last or 1,)).fetchone()
-        return str(found)
+        return self._hash_of_event(last or 1)
 
     def state(self) -> LibraryState:
         """Fingerprint, and how many searchable entries and compounds there are."""

@@ -18,9 +18,25 @@ _BINARY_KINDS = (
     (b"PK\x03\x04", "an archive inside an archive"),
     (b"\x1f\x8b", "an archive inside an archive"),
     (b"\xd0\xcf\x11\xe0", "an office document"),
+    (b"7z\xbc\xaf", "an archive of a kind that is not read"),
+    (b"\xfd7zXZ", "an archive of a kind that is not read"),
+    (b"BZh", "an archive of a kind that is not read"),
+    (b"Rar!", "an archive of a kind that is not read"),
 )
+UNKNOWN_FORMAT = "unknown format"
 _MSP_COUNT = re.compile(r"(?:^|[\r\n])[ \t]*num(?:ber[ _]of)?[ _]*peaks?[ \t]*:", re.IGNORECASE)
 FORMATS = "MassBank record, JCAMP-DX, name/value text (.msp), mzSpecLib text, mzML, MGF or a table of m/z and intensity"
+
+
+_HINTS = {
+    "a netCDF file": "Read a run with the command for runs.",
+    "an archive of a kind that is not read": "Unpack it, or pack it as zip or tar.gz.",
+}
+
+
+def unknown_format(where: str, found: str, hint: str = "") -> FormatError:
+    """The error for a file or text that no reader takes, the same from everywhere."""
+    return FormatError(UNKNOWN_FORMAT, where=where, found=found, expected=FORMATS, hint=hint)
 
 
 def recognize_format(head: bytes, path: str) -> str:
@@ -51,16 +67,14 @@ def recognize_format(head: bytes, path: str) -> str:
     """
     for magic, kind in _BINARY_KINDS:
         if head.startswith(magic):
-            hint = "Read a run with the command for runs." if "netCDF" in kind else ""
-            raise FormatError("unknown format", where=path, found=kind, expected=FORMATS, hint=hint)
+            raise unknown_format(path, kind, _HINTS.get(kind, ""))
     if is_binary(head):
-        hint = "If it is text, save it as UTF-8."
-        raise FormatError("unknown format", where=path, found="binary data", expected=FORMATS, hint=hint)
+        raise unknown_format(path, "binary data", "If it is text, save it as UTF-8.")
     encoding, mark_length = find_byte_order_mark(head)
     text = head[mark_length:].decode(encoding or "utf-8", "replace")
     start = text.lstrip()
     if not start:
-        raise FormatError("unknown format", where=path, found="no text", expected=FORMATS, hint="The file is empty.")
+        raise unknown_format(path, "no text", "The file is empty.")
     return _recognize_text(start, path)
 
 
@@ -73,11 +87,9 @@ def _recognize_text(text: str, path: str) -> str:
     if text.startswith("<"):
         if re.search(r"<(?:indexedmzML|mzML)\b", text):
             return "mzml"
-        raise FormatError(
-            "unknown format", where=path, found=quote(first), expected=FORMATS, hint="This is markup of another kind."
-        )
+        raise unknown_format(path, quote(first), "This is markup of another kind.")
     if first.startswith(("{", "[")):
-        raise FormatError("unknown format", where=path, found=quote(first), expected=FORMATS, hint="JSON is not read.")
+        raise unknown_format(path, quote(first), "JSON is not read.")
     lines = [line.strip() for line in re.split(r"\r\n|\r|\n", text)]
     content = [line for line in lines if line and not line.startswith("$$")]
     if content and content[0].startswith("##") and "=" in content[0]:

@@ -22,7 +22,7 @@ from identify.readers.named_fields import (
     split_statement,
 )
 from identify.readers.numbers import too_many_peaks
-from identify.readers.recognize import FORMATS
+from identify.readers.recognize import unknown_format
 from identify.readers.table_rows import RowReader, find_heading, looks_like_row, settle_rows
 from identify.records import Source, SpectrumRecord, read_only
 
@@ -89,7 +89,7 @@ def parse_table(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterato
             draft = _Draft()
         _take_line(draft, text, line_number, path, is_first=number == 0)
     if not draft.has_rows and not number:
-        raise _no_table(path, "no row of numbers")
+        raise unknown_format(path, "no row of numbers")
     if draft.has_rows or draft.statements or draft.rows is not None:
         yield from _finish(draft, path, number + 1, on_reject)
 
@@ -100,11 +100,6 @@ def _single_cell(text: str) -> str:
         return text
     inner = text[1:-1]
     return text if '"' in inner.replace('""', "") else inner.replace('""', '"').strip()
-
-
-def _no_table(path: str, found: str, line: int | None = None) -> FormatError:
-    where = path if line is None else f"{path}:{line}"
-    return FormatError("unknown format", where=where, found=found, expected=FORMATS)
 
 
 def _starts_anew(text: str, draft: _Draft) -> bool:
@@ -140,7 +135,7 @@ def _take_line(draft: _Draft, text: str, line_number: int, path: str, *, is_firs
     elif draft.rows is None and (statement := split_statement(text, ":=")) is not None:
         draft.statements.append(statement)
     elif is_first and draft.rows is None:
-        raise _no_table(path, quote(text), line_number)
+        raise unknown_format(f"{path}:{line_number}", quote(text))
     else:
         expected = "a row of numbers" if draft.rows is not None else "a heading, a row of numbers or 'name: value'"
         draft.error = fault("table line", path, line_number, found=quote(text), expected=expected)

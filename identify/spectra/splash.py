@@ -15,6 +15,8 @@ from identify.records import FloatArray, Rejection, SpectrumRecord
 
 EPSILON = 1e-7
 """Added before every truncation, so that 0.9999999… counts as 1; part of the published algorithm."""
+MISMATCH = "splash mismatch"
+"""Reason of a rejection for a key that does not agree with the peaks."""
 DIGITS = "0123456789abcdefghijklmnopqrstuvwxyz"
 
 
@@ -76,7 +78,7 @@ def verify_splash(record: SpectrumRecord) -> Rejection | None:
     Returns
     -------
     Rejection or None
-        Reason ``splash mismatch`` with stated and computed key.
+        Reason `MISMATCH` with stated and computed key.
 
     Notes
     -----
@@ -93,7 +95,7 @@ def verify_splash(record: SpectrumRecord) -> Rejection | None:
     return Rejection(
         source=record.source.path,
         line=record.source.line,
-        reason="splash mismatch",
+        reason=MISMATCH,
         found=record.splash,
         expected=f"{computed}, computed from the peaks",
         hint="The peaks were changed after the key was made, or the key belongs to another spectrum.",

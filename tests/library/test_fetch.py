@@ -271,3 +271,10 @@ def test_the_shipped_recipe_can_be_read_by_name() -> None:
     assert recipe.records_at_least >= 14_155
     with pytest.raises(UsageError, match="no file 'nothing'"):
         read_recipe("nothing")
+
+
+def test_a_folder_that_cannot_be_written_is_said(tmp_path: Path) -> None:
+    (tmp_path / "file").write_text("in the way")
+    recipe = Recipe("invented", "https://localhost/a.zip", "a.zip", 1000)
+    with pytest.raises(FetchError, match=r"download in .*file.*found .*, expected a folder to write to"):
+        download(recipe, tmp_path / "file" / "below")

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import errno
 import json
+import os
 import stat
 from pathlib import Path
 
@@ -30,6 +32,18 @@ def signed(library_path: Path, key: Path, tmp_path: Path) -> Path:
     with open_library(library_path) as library:
         assert sign_head(library, key, path, who=WHO, when=WHEN).agrees
     return path
+
+
+def test_a_key_that_does_not_fit_on_the_disk_leaves_no_half_file(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def refuse(_: int) -> None:
+        raise OSError(errno.ENOSPC, "No space left on device")
+
+    monkeypatch.setattr(os, "fsync", refuse)
+    with pytest.raises(UsageError, match="No space left"):
+        create_signing_key(tmp_path / "key.pem")
+    assert list(tmp_path.iterdir()) == []
 
 
 def test_the_key_is_readable_by_its_owner_only_and_never_overwritten(key: Path) -> None:

@@ -22,9 +22,11 @@ from identify.errors import (
     UsageError,
 )
 from identify.library import connection
+from identify.library.calibration import read_calibration
 from identify.library.connection import connect, file_system_of
 from identify.library.events import append_event
 from identify.library.schema import SCHEMA_VERSION
+from identify.library.standing import entry_history
 from identify.library.store import open_library
 from identify.records import EntryStatus
 
@@ -116,6 +118,54 @@ def test_as_of_shows_the_library_as_it_stood(library_path: Path) -> None:
             assert library.get_entries([2])[0].status is EntryStatus.REFERENCE
     with pytest.raises(UsageError, match="0 events for '77'"):
         open_library(library_path, as_of=77)
+
+
+def test_as_of_takes_a_hash_that_begins_with_digits_only(library_path: Path) -> None:
+    # One hash in forty does; its first eight digits once counted as the number of an event that is not there.
+    with open_library(library_path, writable=True) as library:
+        for number in range(1000):
+            with library.writing() as raw:
+                append_event(raw, kind="noted", who="tester", when=WHEN, reason=str(number), content={})
+            wanted = library.fingerprint
+            if wanted[:8].isdecimal():
+                break
+    assert wanted[:8].isdecimal(), "no such hash among a thousand"
+    with open_library(library_path, as_of=wanted[:8]) as library:
+        assert library.fingerprint == wanted
+
+
+def test_an_event_whose_content_is_no_object_is_damage(library_path: Path) -> None:
+    for number, content in enumerate(("no JSON", "[1]", "[" * 100_000)):
+        path = library_path.with_name(f"{number}.ionlib")
+        shutil.copy(library_path, path)
+        raw = sqlite3.connect(path)
+        raw.execute("DROP TRIGGER event_no_update")
+        raw.execute("UPDATE event SET content = ? WHERE seq = 2", (content,))
+        raw.commit()
+        raw.close()
+        with open_library(path) as library, pytest.raises(LibraryDamaged, match="event 2 with content that is no JSON"):
+            entry_history(library, "TEST-1")
+
+
+def test_a_library_without_events_is_an_error_and_no_bug(library_path: Path) -> None:
+    raw = sqlite3.connect(library_path)
+    raw.execute("DROP TRIGGER event_no_delete")
+    raw.execute("DELETE FROM event")
+    raw.commit()
+    raw.close()
+    with open_library(library_path) as library:
+        for name in ("fingerprint", "search_fingerprint"):
+            with pytest.raises(LibraryError, match="no event"):
+                getattr(library, name)
+
+
+def test_a_calibration_with_a_number_beyond_all_bounds_is_refused(library_path: Path) -> None:
+    content = {"sharpness": 10**400, "unlisted": 0.0, "elsewhere": 0.0, "note": "forged"}
+    with open_library(library_path, writable=True) as library:
+        with library.writing() as raw:
+            append_event(raw, kind="calibrated", who="tester", when=WHEN, reason="forged", content=content)
+        with pytest.raises(LibraryError, match="calibration"):
+            read_calibration(library)
 
 
 def test_a_library_serves_several_threads(library_path: Path) -> None:
