@@ -158,7 +158,8 @@ def _weigh(found: Identification, highest: float, settings: Settings) -> Identif
     if too_large[0] and found.claim.level in (*COMPOUND_LEVELS, ClaimLevel.ISOMER_GROUP):
         without = replace(changed.claim, level=ClaimLevel.TENTATIVE, group_probability=0.0)
         return lower_claim(replace(changed, claim=without), note, settings.claim_threshold)
-    changed = replace(changed, notes=(*changed.notes, note))
+    if too_large[0]:  # else the candidates' own evidence says it: nobody would have looked at them first
+        changed = replace(changed, notes=(*changed.notes, note))
     if found.claim.level is not ClaimLevel.NO_CLAIM:
         return changed
     of_group = ranked[0].probability if too_large[0] else min(1.0, found.claim.group_probability / whole)

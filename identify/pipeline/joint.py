@@ -247,11 +247,17 @@ def claim_class(found: Identification, name: str, probability: float) -> Identif
     msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.CLASS]
     shown = percent(probability)
     claim = Claim(
-        ClaimLevel.CLASS, f"{name[:1].upper()}{name[1:]}, no single compound ({shown}).", probability,
+        ClaimLevel.CLASS, f"{_capitalized(name)}, no single compound ({shown}).", probability, (name,),
         compound_probability=found.claim.compound_probability, group_probability=found.claim.group_probability,
         class_probability=probability, msi_2007=msi, schymanski_2014=schymanski,
     )  # fmt: skip
     return replace(found, claim=claim)
+
+
+def _capitalized(name: str) -> str:
+    """A class as it begins a sentence; the prefix of "n-alkane" stays small."""
+    prefix, hyphen, rest = name.partition("-") if name[1:2] == "-" else ("", "", name)
+    return f"{prefix}{hyphen}{rest[:1].upper()}{rest[1:]}"
 
 
 def claim_what_is_left(found: Identification, threshold: float) -> Identification:

@@ -176,7 +176,7 @@ def _with_carbons(finding: Finding, settings: Settings, scale: RetentionScale | 
     found = finding.identification
     if found is None or found.claim.level is not ClaimLevel.CLASS or not found.molecular_ion.estimates:
         return finding
-    if found.claim.statement.partition(",")[0].lower() not in (HYDROCARBON, "n-alkane", "branched alkane"):
+    if not {HYDROCARBON, "n-alkane", "branched alkane"} & set(found.claim.members):
         return finding
     likely = max(found.molecular_ion.estimates, key=lambda estimate: estimate.probability)
     kind = _aliphatic_kind(finding.component, likely.nominal_mass, scale)

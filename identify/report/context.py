@@ -59,12 +59,12 @@ from identify.report.words import (
 LONG_REPORT = 40
 """Above this many queries the browser lays out only what is looked at."""
 DETAILED = 5
-"""Candidates shown with mirror plot, evidence and explanation; the rest are table rows."""
+"""Candidates shown with mirror plot, evidence and explanation, unless the caller wants fewer."""
 MAX_IONS_NAMED = 12
 MAX_REMOVED_SHOWN = 40
 
 
-def build_page(report: Report, *, date: str = "") -> PageContext:
+def build_page(report: Report, *, date: str = "", detailed: int = DETAILED) -> PageContext:
     """Context of the whole page.
 
     Parameters
@@ -72,6 +72,8 @@ def build_page(report: Report, *, date: str = "") -> PageContext:
     report : Report
     date : str
         Shown in the head; the report itself knows no clock.
+    detailed : int
+        Candidates of each query shown with mirror plot, evidence and explanation; the rest are table rows.
 
     Returns
     -------
@@ -80,7 +82,8 @@ def build_page(report: Report, *, date: str = "") -> PageContext:
     sheet, sources = StructureSheet(), SourceList()
     threshold = float(report.settings.get("claim_threshold", 0.95))
     queries = tuple(
-        _query(number, found, threshold, sheet, sources) for number, found in enumerate(report.identifications, start=1)
+        _query(number, found, threshold, detailed, sheet, sources)
+        for number, found in enumerate(report.identifications, start=1)
     )
     libraries = ", ".join(file_name(state.path) for state in report.libraries) or "no library"
     return PageContext(
@@ -136,12 +139,12 @@ def _summary(found: Identification, query: QueryContext) -> SummaryRow:
 
 
 def _query(
-    number: int, found: Identification, threshold: float, sheet: StructureSheet, sources: SourceList
+    number: int, found: Identification, threshold: float, detailed: int, sheet: StructureSheet, sources: SourceList
 ) -> QueryContext:
     anchor = f"query-{number}"
     record = found.query.record
     name = visible_text(record.identity.name or record.title) or f"Query {number}"
-    shown, further = found.candidates[:DETAILED], found.candidates[DETAILED:]
+    shown, further = found.candidates[:detailed], found.candidates[detailed:]
     table = build_candidate_table(shown, anchor, sheet, f"Candidates for {name}, one for each compound, best first")
     rest = f"{counted(len(further), 'more candidate')} for {name}"
     return QueryContext(

@@ -17,11 +17,11 @@ from identify.report.words import visible_text
 from identify.runs.findings import Finding, RunFindings
 from identify.runs.model import ComponentKind
 
-WIDTH, HEIGHT = 1120.0, 460.0
-LEFT, RIGHT, BAND, BASE = 56.0, 12.0, 170.0, 418.0
+WIDTH, HEIGHT = 1120.0, 480.0
+LEFT, RIGHT, BAND, BASE = 56.0, 12.0, 190.0, 438.0
 """The plot lies between `LEFT` and ``WIDTH - RIGHT``, `BAND` (labels above it) and `BASE`."""
 LABEL_WIDTH = 15.0
-MAX_LABEL = 19
+MAX_LABEL = 22
 MAX_MARKS = 150
 """Components the script may label, largest first."""
 BUCKETS = 1100

@@ -2,18 +2,24 @@
 
 from __future__ import annotations
 
-import base64
-import hashlib
+from collections import Counter
 from dataclasses import dataclass, replace
 from pathlib import Path
 
 from identify.records import ClaimLevel
 from identify.report.context import build_page
 from identify.report.contexts import Fact
-from identify.report.html import _environment as environment
-from identify.report.html import _source as source_of
+from identify.report.html import open_templates, read_template, script_digest
 from identify.report.run_chart import chart_data, chart_marks, chromatogram_svg
-from identify.report.run_words import ComponentRow, Plan, component_row, follow_up_plans, share_lines, share_text
+from identify.report.run_words import (
+    ComponentRow,
+    Plan,
+    component_row,
+    date_text,
+    follow_up_plans,
+    share_lines,
+    share_text,
+)
 from identify.report.words import counted, file_name, minutes_text, sentence, visible_text
 from identify.runs.findings import Finding, RunFindings, RunsReport
 from identify.runs.model import ComponentKind
@@ -21,8 +27,12 @@ from identify.writers.files import write_atomically
 
 SECTION_SHARE, MAX_SECTIONS = 0.001, 60
 """Components from this share of the signal have a section of their own, at most so many; all stand in the table."""
+DETAILED = 2
+"""Candidates of a component shown in detail, the best and its rival: a run has ten times the queries of other reports."""
 LISTED_SHARE = 0.0005
 MAX_UNEXPLAINED = 15
+REPEATED = 4
+"""A remark on more components than this is said once, below the table."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,6 +57,7 @@ class RunContext:
     chart_json: str
     shares: tuple[Fact, ...]
     has_index: bool
+    remarks: tuple[str, ...]
     rows: tuple[RowContext, ...]
     small: tuple[RowContext, ...]
     small_title: str
@@ -71,13 +82,12 @@ def render_run_html(found: RunsReport, *, date: str = "") -> str:
     chosen = _chosen(found)
     anchors = {id(finding): f"query-{place}" for place, finding in enumerate(chosen, start=1)}
     report = replace(found.report, identifications=tuple(f.identification for f in chosen if f.identification))
-    page = build_page(report, date=date)
-    script = source_of("run.js")
-    digests = [base64.b64encode(hashlib.sha256(script.encode()).digest()).decode()]
+    page = build_page(report, date=date, detailed=DETAILED)
+    script = read_template("run.js")
     runs = tuple(_run(run, anchors) for run in found.runs)
     names = ", ".join(file_name(run.run.source.path) for run in found.runs)
     return (
-        environment()
+        open_templates("identify.report")
         .get_template("run.html")
         .render(
             page=replace(
@@ -87,9 +97,9 @@ def render_run_html(found: RunsReport, *, date: str = "") -> str:
             plans=tuple(_plan(plan, len(runs) > 1) for plan in follow_up_plans(found.runs)),
             unknowns=tuple(_unknown(found, number) for number in range(len(found.unknowns))),
             sections_note=f"Components from {share_text(SECTION_SHARE)} of the signal, at most {MAX_SECTIONS}, have a section.",
-            style=source_of("page.css") + source_of("plots.css") + source_of("run.css"),
+            style=read_template("page.css") + read_template("plots.css") + read_template("run.css"),
             script=script,
-            script_digests=digests,
+            script_digest=script_digest(script),
         )
     )
 
@@ -137,6 +147,7 @@ def _run(run: RunFindings, anchors: dict[int, str]) -> RunContext:
         rows.append(RowContext(anchor, link, component_row(finding, total), style))
         targets.append(link or anchor)
     marks = chart_marks(run, targets)
+    rows, repeated = _said_once(rows)
     is_small = [not f.is_background and f.component.area < LISTED_SHARE * total for f in run.findings]
     small = tuple(row for row, flag in zip(rows, is_small, strict=True) if flag)
     place = {id(f): row for f, row in zip(run.findings, rows, strict=True)}
@@ -149,12 +160,22 @@ def _run(run: RunFindings, anchors: dict[int, str]) -> RunContext:
         chart_json=chart_data(run, marks),
         shares=tuple(Fact(name, value) for name, value in share_lines(run)),
         has_index=any(f.retention_index is not None for f in run.findings),
+        remarks=repeated,
         rows=tuple(row for row, flag in zip(rows, is_small, strict=True) if not flag),
         small=small,
         small_title=f"{counted(len(small), 'component')} below {share_text(LISTED_SHARE)} of the signal each",
         blank=tuple(place[id(f)] for f in run.findings if f.component.kind is ComponentKind.BLANK),
         unexplained=tuple(place[id(f)] for f in run.unexplained[:MAX_UNEXPLAINED]),
     )
+
+
+def _said_once(rows: list[RowContext]) -> tuple[list[RowContext], tuple[str, ...]]:
+    """Rows that name by number what more than `REPEATED` of them would say, and these remarks."""
+    counts = Counter(text for row in rows for text in row.row.remarks)
+    repeated = tuple(text for text, count in counts.items() if count > REPEATED)
+    short = {text: f"Note {number}." for number, text in enumerate(repeated, start=1)}
+    shown = [replace(row.row, remarks=tuple(short.get(text, text) for text in row.row.remarks)) for row in rows]
+    return [replace(row, row=texts) for row, texts in zip(rows, shown, strict=True)], repeated
 
 
 def _facts(run: RunFindings) -> tuple[Fact, ...]:
@@ -164,7 +185,8 @@ def _facts(run: RunFindings) -> tuple[Fact, ...]:
         Fact("scans", f"{run.run.n_scans}, {minutes_text(float(first))} to {minutes_text(float(last))}"),
         Fact("components", str(len(run.findings))),
     ]
-    for name, value in (("sample", run.run.title), ("instrument", run.run.instrument), ("acquired", run.run.acquired)):
+    acquired = date_text(run.run.acquired)
+    for name, value in (("sample", run.run.title), ("instrument", run.run.instrument), ("acquired", acquired)):
         if value:
             facts.append(Fact(name, visible_text(value)))
     if run.scale:

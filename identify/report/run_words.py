@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from datetime import datetime
 
 from identify.records import ClaimLevel, FollowUp
 from identify.report.words import NO_BREAK, NONE, probability_text, sentence, visible_text
@@ -95,8 +96,34 @@ def answer_text(finding: Finding) -> str:
     if level is ClaimLevel.ISOMER_GROUP:
         return f"{prefix}isomer of {visible_text(best.entry.formula_as_measured)} (such as {name})"
     if level is ClaimLevel.CLASS:
-        return prefix + sentence(found.claim.statement).split(", no single", maxsplit=1)[0].rstrip(".")
+        return prefix + visible_text(found.claim.members[0])
     return f"{prefix}not named; nearest {name}, {probability_text(best.probability)}"
+
+
+def date_text(stamp: str) -> str:
+    """A time stamp of a run file as date and time; as it stands where it is of no known form.
+
+    Parameters
+    ----------
+    stamp : str
+        As in ANDI files (ASTM E2077: YYYYMMDDhhmmss and the offset from UTC) or mzML (ISO 8601).
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> date_text("20210304050607+0100"), date_text("2021-03-04T05:06:07Z"), date_text("spring")
+    ('2021-03-04 05:06 UTC+01:00', '2021-03-04 05:06 UTC', 'spring')
+    """
+    for form in ("%Y%m%d%H%M%S%z", "%Y%m%d%H%M%S", "%Y-%m-%dT%H:%M:%S%z", "%Y-%m-%dT%H:%M:%S"):
+        try:
+            when = datetime.strptime(stamp.strip(), form)
+        except ValueError:
+            continue
+        return f"{when:%Y-%m-%d %H:%M} {when.tzname() or ''}".strip()
+    return visible_text(stamp)
 
 
 def share_text(share: float) -> str:
