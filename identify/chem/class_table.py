@@ -122,17 +122,3 @@ PATTERNS: Final[tuple[tuple[str, str], ...]] = (
 
 WHOLE: Final = frozenset({"fatty acid methyl ester", "fatty acid ethyl ester", "fatty acid", "fatty alcohol"})
 """Classes whose pattern must hold every atom of the molecule that is not carbon."""
-
-HYDROCARBON_CLASSES: Final = (
-    "n-alkane",
-    "branched alkane",
-    "cycloalkane",
-    "alkene",
-    "alkyne",
-    "alkylbenzene",
-    "polycyclic aromatic hydrocarbon",
-    "aromatic hydrocarbon",
-    "terpene",
-    "hydrocarbon",
-)
-"""Classes of compounds of carbon and hydrogen alone, given by rule."""

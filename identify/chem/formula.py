@@ -141,13 +141,6 @@ class Formula:
         """Whether any atom is a stated nuclide."""
         return any(symbol.startswith("[") for symbol, _ in self.counts)
 
-    @property
-    def unlabelled(self) -> Formula:
-        """The same atoms with natural isotopes: `C6H5[2H]` → `C6H6`."""
-        if not self.is_labelled:
-            return self
-        return Formula.from_counts([(element_of(symbol), count) for symbol, count in self.counts], self.charge)
-
     def count(self, symbol: str) -> int:
         """Number of atoms written with exactly this symbol (`C` does not count `[13C]`; `D` = `[2H]`)."""
         symbol = ALIASES.get(symbol, symbol)
@@ -263,25 +256,3 @@ def rings_plus_double_bonds(formula: Formula) -> float:
     (5.0, 0.5)
     """
     return 1.0 + 0.5 * sum(doubled_unsaturation(symbol) * count for symbol, count in formula.counts)
-
-
-def nitrogen_rule_holds(nominal_mass: int, n_nitrogen: int) -> bool:
-    """Whether a molecular mass has the parity its number of nitrogens asks for.
-
-    Parameters
-    ----------
-    nominal_mass : int
-        Mass of the unlabelled molecule or odd-electron ion.
-    n_nitrogen : int
-
-    Returns
-    -------
-    bool
-        Odd mass with an odd number of nitrogens, even mass with an even one.
-
-    Examples
-    --------
-    >>> nitrogen_rule_holds(121, 1), nitrogen_rule_holds(77, 0)
-    (True, False)
-    """
-    return (nominal_mass - n_nitrogen) % 2 == 0

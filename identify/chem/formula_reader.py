@@ -110,7 +110,7 @@ class _Reader:
         total: Counts = {}
         while True:
             char = self.peek()
-            if char in ("(", "[") and char:
+            if char in ("(", "["):
                 unit = self.group(char, depth)
             elif "A" <= char <= "Z":
                 unit = self.element()
@@ -179,7 +179,7 @@ class _Reader:
 
     def charge_with_digits_first(self) -> bool:
         rest = self.text[self.at :].lstrip(" ")
-        return rest[:1].isdigit() and rest.lstrip("0123456789")[:1] in ("+", "-") and bool(rest.lstrip("0123456789"))
+        return rest[:1].isdigit() and rest.lstrip("0123456789")[:1] in ("+", "-")
 
     def charge(self) -> int:
         """Charge and radical sign at the end of a component; 0 if there is none."""
@@ -189,7 +189,7 @@ class _Reader:
             self.at += 1
         value = self.digits() if (caret or self.charge_with_digits_first()) and self.peek().isdigit() else 0
         sign = self.peek()
-        if sign not in ("+", "-") or not sign:
+        if sign not in ("+", "-"):
             if caret or value:
                 raise self.fail("the sign of a charge")
             return 0

@@ -43,16 +43,6 @@ class IsotopePattern:
         position = self.nominal_mass - self.first_mass + offset_from_nominal
         return float(self.ratios[position]) if 0 <= position < self.ratios.size else 0.0
 
-    @property
-    def tallest_offset(self) -> int:
-        """Offset of the most intense peak from `nominal_mass` (the lowest one on a tie)."""
-        return int(np.argmax(self.ratios)) + self.first_mass - self.nominal_mass
-
-    @property
-    def nominal_fraction(self) -> float:
-        """Share of all ions that stand at `nominal_mass`, in (0, 1]."""
-        return float(1.0 / self.ratios.sum())
-
 
 @lru_cache(maxsize=256)
 def _element_ratios(symbol: str) -> tuple[int, FloatArray]:

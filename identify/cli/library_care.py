@@ -133,17 +133,13 @@ def affected(path: Path, accession: str | None, csv_path: Path | None) -> None:
 @click.argument("accession")
 def consensus(path: Path, accession: str) -> None:
     """Show the spectrum that the replicates of an entry of LIB agree on, and how far each ion scatters."""
-    from identify.library.consensus import build_consensus, find_replicates
+    from identify.library.replicates import build_consensus, find_replicates
     from identify.library.standing import get_entry
     from identify.library.store import open_library
 
     with open_library(path) as opened:
         entry = get_entry(opened, accession)
-        found = build_consensus(
-            find_replicates(
-                opened, entry.compound_id, measured_as=entry.measured_as, energy_ev=entry.acquisition.energy_ev
-            )
-        )
+        found = build_consensus(find_replicates(opened, entry))
     say(f"{entry.identity.name}: {len(found.accessions)} replicates: {', '.join(found.accessions)}")
     numbers = zip(found.mz, found.intensity, found.spread, found.n_showing, found.n_covering, strict=True)
     say_table(

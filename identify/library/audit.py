@@ -22,13 +22,13 @@ from identify.library.audit_cells import (
     SHIFT,
     Cell,
     Neighbour,
-    have_same_form,
     may_be_shifted,
     observe_entry,
     top_of_cluster,
 )
 from identify.library.audit_metadata import AuditFinding, Grade, check_statements
 from identify.library.audit_weights import BASE_LOG_ODDS, CAUTION_FROM, QUARANTINE_FROM, WEIGHTS
+from identify.library.replicates import are_replicates, find_replicates
 from identify.library.store import Library
 from identify.records import CleanSpectrum, Entry, EntryStatus, Peaks
 from identify.retention import find_suspect_indices
@@ -272,10 +272,10 @@ def look_around(
     hits = [hit for hit in found if hit.cosine >= LEAST_COSINE and hit.entry_id not in leave_out]
     entries = library.get_entries([hit.entry_id for hit in hits])
     neighbours = [Neighbour(other, hit.cosine) for other, hit in zip(entries, hits, strict=True)]
-    replicates = [neighbour for neighbour in neighbours if have_same_form(entry, neighbour.entry)]
+    replicates = [neighbour for neighbour in neighbours if are_replicates(entry, neighbour.entry)]
     seen = {neighbour.entry.id for neighbour in neighbours} | set(leave_out)
-    for other in library.find_entries(compound_id=entry.compound_id):
-        if other.id not in seen and have_same_form(entry, other):
+    for other in find_replicates(library, entry):
+        if other.id not in seen:
             cosine = cosine_score(align(entry.spectrum, other.spectrum), index.weighting)
             replicates.append(Neighbour(other, cosine))
     return neighbours, sorted(replicates, key=lambda neighbour: -neighbour.cosine)

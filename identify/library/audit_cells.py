@@ -20,7 +20,7 @@ from identify.evidence.facts import FormulaFacts, QueryFacts, entry_formula, spe
 from identify.evidence.finding import Finding
 from identify.evidence.high_mass import excess_above, improbable_loss
 from identify.evidence.isotopes import check_carbon_count, check_isotope_pattern
-from identify.library.conflicts import have_like_energy
+from identify.library.replicates import are_replicates
 from identify.records import Entry
 
 TOP = "highest ions"
@@ -96,7 +96,7 @@ def observe_entry(
         own = tuple(Cell(cell.kind, "", salt) if cell.kind in OF_MOLECULE else cell for cell in own)
     return (
         *own,
-        _neighbour_mass(formula, [found for found in neighbours if not have_same_form(entry, found.entry)]),
+        _neighbour_mass(formula, [found for found in neighbours if not are_replicates(entry, found.entry)]),
         _replicates(replicates),
         _related(entry, neighbours),
         _shift(neighbours, replicates, cosine_if_shifted),
@@ -350,12 +350,3 @@ def _related(entry: Entry, neighbours: Sequence[Neighbour]) -> Cell:
         cell += ", near"
     reason = f"The compounds with the most similar spectra are {cell.removesuffix(', near')} in structure."
     return Cell(RELATED, cell, reason, f"mean similarity {mean:.2f}", "similar spectra of similar structures")
-
-
-def have_same_form(entry: Entry, other: Entry) -> bool:
-    """Whether two entries are of one compound, measured in one form, at like energy."""
-    return (
-        entry.compound_id == other.compound_id
-        and entry.measured_as == other.measured_as
-        and have_like_energy(other, entry.acquisition.energy_ev)
-    )

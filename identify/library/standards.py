@@ -130,10 +130,7 @@ def propose_standard(
         )  # fmt: skip
     (entry,) = library.get_entries([entry_id])
     index = load_index(library, weighting or Weighting())
-    conflicts = find_conflicts(
-        library, index, entry.spectrum, compound_id=entry.compound_id, measured_as=entry.measured_as,
-        energy_ev=entry.acquisition.energy_ev, leave_out=entry.id,
-    )  # fmt: skip
+    conflicts = find_conflicts(library, index, entry)
     return ProposalReport(entry, details, event, audit_entry(library, index, entry), conflicts)
 
 

@@ -8,7 +8,7 @@ import pytest
 from library_builders import build_record, build_test_library
 
 from identify.errors import UsageError
-from identify.library.consensus import build_consensus, find_replicates
+from identify.library.replicates import build_consensus, find_replicates
 from identify.library.store import open_library
 from identify.records import Acquisition
 
@@ -26,7 +26,7 @@ def entries_of(path: Path, *spectra: dict[float, float], low: tuple[float | None
     ]
     build_test_library(path, records)
     with open_library(path) as library:
-        return find_replicates(library, 1)
+        return find_replicates(library, *library.get_entries([1]))
 
 
 def test_median_and_spread_by_hand(tmp_path: Path) -> None:
@@ -69,5 +69,6 @@ def test_low_energy_spectra_are_no_replicates_of_70_ev(tmp_path: Path) -> None:
         [build_record(f"R{energy}", "Thing", peaks, formula="C7H8", energy_ev=energy) for energy in (70.0, None, 12.0)],
     )
     with open_library(tmp_path / "a.ionlib") as library:
-        assert [entry.accession for entry in find_replicates(library, 1)] == ["R70.0", "RNone"]
-        assert [entry.accession for entry in find_replicates(library, 1, energy_ev=14.0)] == ["R12.0"]
+        usual, _, low = library.get_entries([1, 2, 3])
+        assert [entry.accession for entry in find_replicates(library, usual)] == ["R70.0", "RNone"]
+        assert [entry.accession for entry in find_replicates(library, low)] == ["R12.0"]

@@ -1,4 +1,4 @@
-"""The spectrum several replicates agree on, and how far each ion scatters between them."""
+"""Which entries are replicates of each other, and the spectrum they agree on."""
 
 from __future__ import annotations
 
@@ -8,13 +8,46 @@ from dataclasses import dataclass
 import numpy as np
 
 from identify.errors import UsageError
-from identify.library.conflicts import have_like_energy
 from identify.library.drafts import DEFAULT_ENERGY_EV
 from identify.library.store import Library
 from identify.records import Entry, FloatArray, read_only
 
+ENERGY_WINDOW_EV = 15.0
+"""Spectra at electron energies no further apart are alike (judgement)."""
 MAD_TO_SD = 1.4826
 """Standard deviation of a normal distribution per median absolute deviation."""
+
+
+def are_replicates(entry: Entry, other: Entry) -> bool:
+    """Whether two entries are of one compound, measured in one form, at about the same electron energy (unstated: 70 eV).
+
+    Parameters
+    ----------
+    entry, other : Entry
+
+    Returns
+    -------
+    bool
+    """
+    stated = (found.acquisition.energy_ev for found in (entry, other))
+    mine, theirs = (DEFAULT_ENERGY_EV if energy is None else energy for energy in stated)
+    same_form = (entry.compound_id, entry.measured_as) == (other.compound_id, other.measured_as)
+    return same_form and abs(mine - theirs) <= ENERGY_WINDOW_EV
+
+
+def find_replicates(library: Library, entry: Entry) -> list[Entry]:
+    """Searchable replicates of an entry, itself among them if it is one, by ascending id.
+
+    Parameters
+    ----------
+    library : Library
+    entry : Entry
+
+    Returns
+    -------
+    list of Entry
+    """
+    return [other for other in library.find_entries(compound_id=entry.compound_id) if are_replicates(entry, other)]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -78,23 +111,3 @@ def build_consensus(entries: Sequence[Entry]) -> Consensus:
         read_only(axis), read_only(middle), read_only(spread), read_only(n_covering), read_only(n_showing),
         tuple(entry.accession for entry in entries),
     )  # fmt: skip
-
-
-def find_replicates(
-    library: Library, compound_id: int, *, measured_as: str = "", energy_ev: float | None = DEFAULT_ENERGY_EV
-) -> list[Entry]:
-    """Searchable entries of one compound, measured in one form at about one energy.
-
-    Parameters
-    ----------
-    library : Library
-    compound_id : int
-    measured_as : str
-    energy_ev : float or None
-
-    Returns
-    -------
-    list of Entry
-    """
-    same = library.find_entries(compound_id=compound_id)
-    return [entry for entry in same if entry.measured_as == measured_as and have_like_energy(entry, energy_ev)]
