@@ -98,9 +98,9 @@ LOG_ODDS: dict[str, dict[str, float]] = {
         "even N, many even": -0.02,  # 131 right, 133 wrong
         "even N, some even": -0.47,  # 55 right, 88 wrong
         "impossible": -1.57,  # 0 right, 1 wrong
-        "no N, few even": 0.20,  # 811 right, 660 wrong
-        "no N, many even": -0.25,  # 205 right, 262 wrong
-        "no N, some even": 0.02,  # 813 right, 789 wrong
+        "no N, few even": 0.19,  # 811 right, 661 wrong
+        "no N, many even": -0.25,  # 204 right, 261 wrong
+        "no N, some even": 0.02,  # 814 right, 788 wrong
         "odd N, few even": -0.51,  # 48 right, 80 wrong
         "odd N, many even": 0.27,  # 284 right, 214 wrong
         "odd N, some even": -0.27,  # 116 right, 152 wrong
