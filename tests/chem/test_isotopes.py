@@ -333,11 +333,11 @@ def test_heaviest_formulas_stay_finite_bounded_and_quick(text: str) -> None:
     assert fractions.sum() <= 1.0 + 1e-9
 
 
-@settings(max_examples=60)
+@settings(max_examples=40)
 @given(st.dictionaries(st.sampled_from(["C", "H", "O", "Cl", "B", "Sn"]), st.integers(1, 6), min_size=1, max_size=4))
 def test_unit_pattern_is_the_sum_of_the_fine_one(counts: dict[str, int]) -> None:
     formula = Formula.from_counts(counts)
-    masses, fractions = fine_isotope_pattern(formula, 1e-5)
+    masses, fractions = fine_isotope_pattern(formula, 1e-4)
     offsets = np.rint(masses - formula.monoisotopic_mass).astype(int)
     pattern = isotope_pattern(formula)
     whole = pattern.ratios / pattern.ratios.sum()

@@ -34,7 +34,7 @@ small = st.builds(
 )
 
 
-@settings(max_examples=60)
+@settings(max_examples=30)
 @given(small)
 def test_reachable_masses_are_those_of_all_fragments(formula: Formula) -> None:
     expected = np.zeros(formula.nominal_mass + 1, dtype=bool)
