@@ -27,15 +27,16 @@ from identify.report.words import (
     count_verdicts,
     counted,
     file_name,
-    mz_text,
+    ions_text,
     probability_text,
-    relative_text,
     score_text,
     sentence,
     signed_text,
     visible_text,
 )
 from identify.writers.explanation_json import round_explanation
+
+MAX_UNMATCHED_NAMED = 6
 
 
 class SourceList:
@@ -165,8 +166,8 @@ def _candidate_facts(candidate: Candidate) -> tuple[Fact, ...]:
 def _mirror(candidate: Candidate, row: CandidateRow, query_name: str) -> Figure:
     aligned = candidate.aligned
     rows = list(zip(aligned.mz.tolist(), aligned.query.tolist(), aligned.entry.tolist(), strict=True))
-    only_query = _largest([(mz, query) for mz, query, entry in rows if entry <= 0])
-    only_entry = _largest([(mz, entry) for mz, query, entry in rows if query <= 0])
+    only_query = ions_text(((mz, query) for mz, query, entry in rows if entry <= 0), MAX_UNMATCHED_NAMED)
+    only_entry = ions_text(((mz, entry) for mz, query, entry in rows if query <= 0), MAX_UNMATCHED_NAMED)
     caption = (
         f"{aligned.n_matched} of {counted(len(rows), 'ion')} match, compared from m/z {aligned.lowest_mz}. "
         f"Only in the query: {only_query}. Only in the entry: {only_entry}."
@@ -175,14 +176,6 @@ def _mirror(candidate: Candidate, row: CandidateRow, query_name: str) -> Figure:
         aligned, name=f"{row.anchor}-mirror", title=f"Mirror plot: {query_name} and {row.name}", description=caption
     )
     return Figure(drawn, caption)
-
-
-def _largest(ions: Sequence[tuple[float, float]], limit: int = 6) -> str:
-    if not ions:
-        return "none"
-    order = sorted(ions, key=lambda ion: (-ion[1], ion[0]))
-    text = ", ".join(f"{mz_text(mz)} ({relative_text(value)})" for mz, value in order[:limit])
-    return text + (f" and {len(order) - limit} smaller" if len(order) > limit else "")
 
 
 def _evidence(item: EvidenceItem, sources: SourceList) -> EvidenceRow:

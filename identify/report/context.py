@@ -47,10 +47,11 @@ from identify.report.words import (
     claim_probability_text,
     counted,
     file_name,
+    ions_text,
     minutes_text,
     mz_text,
     probability_text,
-    relative_text,
+    rejection_text,
     sentence,
     source_text,
     visible_text,
@@ -106,7 +107,7 @@ def build_page(report: Report, *, date: str = "", detailed: int = DETAILED) -> P
             RejectionRow(
                 visible_text(item.source) + (f", line {item.line}" if item.line is not None else ""),
                 visible_text(item.reason),
-                _rejection_detail(item.found, item.expected, item.hint),
+                rejection_text(item),
             )
             for item in report.rejected
         ),
@@ -225,10 +226,8 @@ def _published(claim: Claim) -> str:
 
 def _spectrum(found: Identification, name: str, anchor: str) -> Figure:
     peaks = found.query.spectrum.nominal
-    order = sorted(zip(peaks.relative.tolist(), peaks.mz.tolist(), strict=True), key=lambda pair: (-pair[0], pair[1]))
-    ions = ", ".join(f"{mz_text(mz)} ({relative_text(value)})" for value, mz in order[:MAX_IONS_NAMED])
-    rest = len(order) - MAX_IONS_NAMED
-    caption = f"Principal ions, m/z (relative intensity): {ions}" + (f" and {rest} smaller." if rest > 0 else ".")
+    ions = ions_text(zip(peaks.mz.tolist(), peaks.relative.tolist(), strict=True), MAX_IONS_NAMED)
+    caption = f"Principal ions, m/z (relative intensity): {ions}."
     mark = None
     if found.molecular_ion.estimates:
         best = found.molecular_ion.estimates[0]
@@ -312,10 +311,3 @@ def _settings(settings: Mapping[str, object], prefix: str = "") -> list[Fact]:
         else:
             facts.append(Fact(visible_text(label), visible_text(value)))
     return facts
-
-
-def _rejection_detail(found: str, expected: str, hint: str) -> str:
-    facts = [f"found {visible_text(found)}"] if found else []
-    facts += [f"expected {visible_text(expected)}"] if expected else []
-    sentence = f"{', '.join(facts)}." if facts else ""
-    return " ".join(part for part in (sentence, visible_text(hint)) if part)

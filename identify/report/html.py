@@ -5,6 +5,7 @@ from __future__ import annotations
 import base64
 import hashlib
 from functools import cache
+from importlib import resources
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -30,14 +31,16 @@ def render_html(report: Report, *, date: str = "") -> str:
     str
         A document that loads nothing: its content security policy forbids every request and every script but its own.
     """
-    environment = _environment()
-    script = _source("page.js")
-    digest = base64.b64encode(hashlib.sha256(script.encode()).digest()).decode()
-    return environment.get_template("page.html").render(
-        page=build_page(report, date=date),
-        style=_source("page.css") + _source("plots.css"),
-        script=script,
-        script_digest=digest,
+    script = read_template("page.js")
+    return (
+        open_templates("identify.report")
+        .get_template("page.html")
+        .render(
+            page=build_page(report, date=date),
+            style=read_template("page.css") + read_template("plots.css"),
+            script=script,
+            script_digest=script_digest(script),
+        )
     )
 
 
@@ -60,11 +63,22 @@ def write_html(path: Path, report: Report, *, date: str = "") -> None:
 
 
 @cache
-def _environment() -> jinja2.Environment:
+def open_templates(*packages: str) -> jinja2.Environment:
+    """Templates of packages, the first that has a name wins; what they print is escaped.
+
+    Parameters
+    ----------
+    *packages : str
+        Each with a folder ``templates``.
+
+    Returns
+    -------
+    jinja2.Environment
+    """
     import jinja2
 
     return jinja2.Environment(
-        loader=jinja2.PackageLoader("identify.report", "templates"),
+        loader=jinja2.ChoiceLoader([jinja2.PackageLoader(package, "templates") for package in packages]),
         autoescape=True,
         undefined=jinja2.StrictUndefined,
         trim_blocks=True,
@@ -72,7 +86,29 @@ def _environment() -> jinja2.Environment:
     )
 
 
-def _source(name: str) -> str:
-    environment = _environment()
-    assert environment.loader is not None
-    return environment.loader.get_source(environment, name)[0]
+def read_template(name: str) -> str:
+    """Text of a file of this room's templates, as it stands.
+
+    Parameters
+    ----------
+    name : str
+
+    Returns
+    -------
+    str
+    """
+    return (resources.files("identify.report") / "templates" / name).read_text("utf-8")
+
+
+def script_digest(script: str) -> str:
+    """What a content security policy names a script by.
+
+    Parameters
+    ----------
+    script : str
+
+    Returns
+    -------
+    str
+    """
+    return base64.b64encode(hashlib.sha256(script.encode()).digest()).decode()

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from identify.records import Identification, Peaks, Verdict
-from identify.report.words import mz_text, probability_text, relative_text, score_text, sentence, visible_text
+from identify.records import Identification, Verdict
+from identify.report.words import ions_text, probability_text, score_text, sentence, visible_text
 
 MAX_LEFT_NAMED = 8
 MAX_CLASSES = 5
@@ -26,7 +26,8 @@ def purity_sentences(found: Identification) -> tuple[str, ...]:
         return ()
     said = [sentence(purity.reason)]
     if purity.residual is not None and purity.verdict is not Verdict.AGREES:
-        said.append(f"Left over, to be searched as a query of its own: m/z {_ions(purity.residual)}.")
+        left = zip(purity.residual.mz.tolist(), purity.residual.intensity.tolist(), strict=True)
+        said.append(f"Left over, to be searched as a query of its own: m/z {ions_text(left, MAX_LEFT_NAMED)}.")
     if purity.background:
         said.append(f"Known background among what is left over: {', '.join(map(visible_text, purity.background))}.")
     return tuple(said)
@@ -54,10 +55,3 @@ def nature_sentences(found: Identification) -> tuple[str, ...]:
         change = "of the same mass" if like.shift == 0 else f"{visible_text(like.text)} ({like.shift:+d} Da)"
         said.append(f"Like {visible_text(like.name)}, {change}; similarity after shifting {score_text(like.score)}.")
     return tuple(said)
-
-
-def _ions(peaks: Peaks) -> str:
-    pairs = sorted(zip(peaks.intensity.tolist(), peaks.mz.tolist(), strict=True), reverse=True)
-    named = ", ".join(f"{mz_text(mz)} ({relative_text(value)})" for value, mz in pairs[:MAX_LEFT_NAMED])
-    rest = len(pairs) - MAX_LEFT_NAMED
-    return named + (f" and {rest} smaller" if rest > 0 else "")

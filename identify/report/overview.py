@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from identify.records import Identification, Report
-from identify.report.terminal import print_notices
-from identify.report.words import claim_probability_text, minutes_text, sentence, visible_text
+from identify.records import Report
+from identify.report.terminal import print_notices, printable
+from identify.report.words import claim_probability_text, query_name, sentence
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -24,7 +24,6 @@ def render_overview(report: Report, console: Console) -> None:
     console : rich.console.Console
     """
     from rich.table import Table
-    from rich.text import Text
 
     table = Table(box=None, padding=(0, 1), pad_edge=False, header_style="bold")
     table.add_column("query", overflow="fold", max_width=34)
@@ -34,14 +33,11 @@ def render_overview(report: Report, console: Console) -> None:
     table.add_column("prob.", justify="right")
     for found in report.identifications:
         time_s = found.query.record.retention.time_s
-        minutes = minutes_text(time_s).removesuffix(" min") if time_s is not None else ""
-        cells = (_name(found), minutes, found.claim.level.value, sentence(found.claim.statement))
-        table.add_row(*(Text(cell) for cell in cells), Text(claim_probability_text(found.claim)))
+        minutes = f"{time_s / 60.0:.2f}" if time_s is not None else ""
+        claim = found.claim
+        said = (claim.level.value, sentence(claim.statement), claim_probability_text(claim))
+        cells = (query_name(found.query), minutes, *said)
+        table.add_row(*(printable(cell, console) for cell in cells))
     console.print(table)
     console.print()
     print_notices(report, console)
-
-
-def _name(found: Identification) -> str:
-    record = found.query.record
-    return visible_text(record.identity.name or record.title) or f"query {visible_text(found.query.id)}"

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import base64
-import hashlib
 from collections import Counter
 from dataclasses import dataclass, replace
 from pathlib import Path
@@ -11,8 +9,7 @@ from pathlib import Path
 from identify.records import ClaimLevel
 from identify.report.context import build_page
 from identify.report.contexts import Fact
-from identify.report.html import _environment as environment
-from identify.report.html import _source as source_of
+from identify.report.html import open_templates, read_template, script_digest
 from identify.report.run_chart import chart_data, chart_marks, chromatogram_svg
 from identify.report.run_words import (
     ComponentRow,
@@ -86,12 +83,11 @@ def render_run_html(found: RunsReport, *, date: str = "") -> str:
     anchors = {id(finding): f"query-{place}" for place, finding in enumerate(chosen, start=1)}
     report = replace(found.report, identifications=tuple(f.identification for f in chosen if f.identification))
     page = build_page(report, date=date, detailed=DETAILED)
-    script = source_of("run.js")
-    digests = [base64.b64encode(hashlib.sha256(script.encode()).digest()).decode()]
+    script = read_template("run.js")
     runs = tuple(_run(run, anchors) for run in found.runs)
     names = ", ".join(file_name(run.run.source.path) for run in found.runs)
     return (
-        environment()
+        open_templates("identify.report")
         .get_template("run.html")
         .render(
             page=replace(
@@ -101,9 +97,9 @@ def render_run_html(found: RunsReport, *, date: str = "") -> str:
             plans=tuple(_plan(plan, len(runs) > 1) for plan in follow_up_plans(found.runs)),
             unknowns=tuple(_unknown(found, number) for number in range(len(found.unknowns))),
             sections_note=f"Components from {share_text(SECTION_SHARE)} of the signal, at most {MAX_SECTIONS}, have a section.",
-            style=source_of("page.css") + source_of("plots.css") + source_of("run.css"),
+            style=read_template("page.css") + read_template("plots.css") + read_template("run.css"),
             script=script,
-            script_digests=digests,
+            script_digest=script_digest(script),
         )
     )
 

@@ -11,6 +11,7 @@ from identify.records import Candidate, FollowUp, Identification, Rejection, Rep
 from identify.report.nature import nature_sentences, purity_sentences
 from identify.report.words import (
     CAUTIONS,
+    LONG_TEXT,
     NO_BREAK,
     NONE,
     PLAIN_MARKS,
@@ -20,6 +21,7 @@ from identify.report.words import (
     counted,
     minutes_text,
     probability_text,
+    rejection_text,
     score_text,
     sentence,
     source_text,
@@ -95,10 +97,10 @@ def _print_identification(
     from rich.padding import Padding
 
     record = found.query.record
-    name = visible_text(record.identity.name or record.title) or f"query {visible_text(found.query.id)}"
     facts = [source_text(record.source.path, record.source.line)]
     facts += [minutes_text(record.retention.time_s)] if record.retention.time_s is not None else []
     facts += [f"retention index {record.retention.index:.0f}"] if record.retention.index is not None else []
+    name = visible_text(record.identity.name or record.title) or f"query {visible_text(found.query.id)}"
     _print(console, f"{name} ({', '.join(facts)})", style="underline")
     _print(console, sentence(found.claim.statement), style="bold", indent=2)
     _print(console, _levels_text(found), indent=2)
@@ -136,7 +138,7 @@ def _levels_text(found: Identification) -> str:
 
 
 def _follow_up_text(plan: FollowUp) -> str:
-    return f"Next: {sentence(plan.action)} {sentence(plan.reason)}"
+    return f"Next: {visible_text(plan.action, LONG_TEXT)}: {sentence(plan.reason)}"
 
 
 def _candidate_table(candidates: Sequence[Candidate], console: Console, marks: Mapping[Verdict, str]) -> RenderableType:
@@ -164,7 +166,7 @@ def _candidate_table(candidates: Sequence[Candidate], console: Console, marks: M
             cells.append(f"{formula}\nas {measured_as}" if measured_as else formula)
         cells += [score_text(candidate.cosine), score_text(candidate.reverse), probability_text(candidate.probability)]
         cells.append(_evidence_text(candidate, marks))
-        table.add_row(*(_printable(cell, console) for cell in cells))
+        table.add_row(*(printable(cell, console) for cell in cells))
     return table
 
 
@@ -178,10 +180,7 @@ def _print_rejected(rejected: Sequence[Rejection], console: Console, shown: int 
     _print(console, f"Not used: {counted(len(rejected), 'input')}", style="bold")
     for item in rejected[:shown]:
         where = visible_text(item.source) + (f":{item.line}" if item.line is not None else "")
-        facts = [f"found {visible_text(item.found)}"] if item.found else []
-        facts += [f"expected {visible_text(item.expected)}"] if item.expected else []
-        text = f"{where}: {visible_text(item.reason)}" + (f": {', '.join(facts)}" if facts else "") + "."
-        _print(console, text + (f" {visible_text(item.hint)}" if item.hint else ""), indent=2, hanging=4)
+        _print(console, f"{where}: {visible_text(item.reason)}: {rejection_text(item)}", indent=2, hanging=4)
     if len(rejected) > shown:
         _print(console, f"and {counted(len(rejected) - shown, 'more')} in the full result", indent=2)
     console.print()
@@ -209,11 +208,22 @@ def _print(console: Console, text: str, *, style: str = "", indent: int = 0, han
         break_long_words=False,  # a path cut in two cannot be copied
     )
     for line in lines:
-        console.print(_printable(line, console, style), no_wrap=True, overflow="ignore", crop=False)
+        console.print(printable(line, console, style), no_wrap=True, overflow="ignore", crop=False)
 
 
-def _printable(text: str, console: Console, style: str = "") -> Text:
-    """Text without markup in the characters that the terminal's encoding has."""
+def printable(text: str, console: Console, style: str = "") -> Text:
+    """Text without markup in the characters that the terminal's encoding has.
+
+    Parameters
+    ----------
+    text : str
+    console : rich.console.Console
+    style : str
+
+    Returns
+    -------
+    rich.text.Text
+    """
     from rich.text import Text
 
     text = text.replace(NO_BREAK, " ")

@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 import unicodedata
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from pathlib import PurePath
 
-from identify.records import Claim, ClaimLevel, EvidenceItem, Verdict
+from identify.records import Claim, ClaimLevel, EvidenceItem, Query, Rejection, Verdict
 
 MAX_TEXT, LONG_TEXT = 300, 2000
 """Longest name and longest sentence shown, in characters."""
@@ -76,6 +76,43 @@ def probability_text(probability: float) -> str:
 def claim_probability_text(claim: Claim) -> str:
     """Probability of what is claimed; a dash where nothing is, so that no number is read as one of a name."""
     return NONE if claim.level is ClaimLevel.NO_CLAIM else probability_text(claim.probability)
+
+
+def query_name(query: Query) -> str:
+    """What a query is called: its name or title, else where it was read."""
+    record = query.record
+    return visible_text(record.identity.name or record.title) or source_text(record.source.path, record.source.line)
+
+
+def ions_text(ions: Iterable[tuple[float, float]], limit: int) -> str:
+    """The tallest ions with their relative intensities, tallest first, the rest counted.
+
+    Parameters
+    ----------
+    ions : iterable of (float, float)
+        m/z and relative intensity in percent.
+    limit : int
+        Most ions named.
+
+    Returns
+    -------
+    str
+
+    Examples
+    --------
+    >>> ions_text([(15.0, 20.0), (43.0, 100.0), (58.0, 34.0)], 2).replace(NO_BREAK, " ")
+    '43 (100 %), 58 (34 %) and 1 smaller'
+    """
+    order = sorted(ions, key=lambda ion: (-ion[1], ion[0]))
+    named = ", ".join(f"{mz_text(mz)} ({relative_text(value)})" for mz, value in order[:limit])
+    return (named or "none") + (f" and {len(order) - limit} smaller" if len(order) > limit else "")
+
+
+def rejection_text(item: Rejection) -> str:
+    """What was found in an input that was left out, what was expected, and what to do about it."""
+    facts = [f"found {visible_text(item.found)}"] if item.found else []
+    facts += [f"expected {visible_text(item.expected)}"] if item.expected else []
+    return " ".join(part for part in (sentence(", ".join(facts)), visible_text(item.hint)) if part)
 
 
 def score_text(score: float) -> str:

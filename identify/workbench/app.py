@@ -13,6 +13,7 @@ from starlette.exceptions import HTTPException
 
 from identify import __version__
 from identify.errors import IonwitnessError, LibraryBusy, LibraryConflict
+from identify.report.html import read_template
 from identify.workbench import (
     view_entrance,
     view_follow_up,
@@ -118,9 +119,8 @@ def show_refused(request: Request, error: HTTPException) -> Response:
 
 @cache
 def _static(name: str) -> str | None:
-    report = resources.files("identify.report").joinpath("templates")
     if name == "report.css":
-        return "".join(report.joinpath(part).read_text("utf-8") for part in ("page.css", "plots.css"))
+        return read_template("page.css") + read_template("plots.css")
     if name in ("workbench.css", "workbench.js"):
         return resources.files("identify.workbench").joinpath("static", name).read_text("utf-8")
     return None

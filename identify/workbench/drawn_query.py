@@ -75,7 +75,7 @@ def draw_result(desk: Desk, query_id: int, result_id: int) -> DrawnQuery:
     context = {
         "page": page,
         "shown": page.queries[0],
-        "entries": {candidate.rank: entry_address(desk, candidate) for candidate in found.candidates},
+        "entries": {str(candidate.rank): entry_address(desk, candidate) for candidate in found.candidates},
         "cleaning": settings_of({"settings": shown.report.settings}).cleaning,
         "query_id": query_id,
         "made_at": made_at,

@@ -11,7 +11,7 @@ from collections.abc import Mapping
 from functools import partial
 from typing import Any
 
-from identify.errors import InputError, IonwitnessError, SpectrumError
+from identify.errors import InputError, IonwitnessError, LibraryError, SpectrumError
 from identify.library.verify import verify_library
 from identify.records import Rejection, SpectrumRecord
 from identify.report.words import counted
@@ -90,18 +90,28 @@ class JobRunner:
         if process:
             process.end()
         else:
-            finish_job(self._desk.case, job_id, "cancelled", "cancelled before it started", self._desk.now())
+            finish_job(self._desk.case, job_id, "cancelled", "cancelled", self._desk.now())
 
     def _run(self) -> None:
         while True:
             with self._work:
                 if self._is_over:
                     return
-                job = next_job(self._desk.case)
+                job = self._next()
                 if job is None:
                     self._work.wait(timeout=2.0)
                     continue
-            self._do(job)
+            try:
+                self._do(job)
+            except LibraryError:
+                _LOG.exception("job %s could not be ended: it waits again at the next start", job.id)
+
+    def _next(self) -> Job | None:
+        try:
+            return next_job(self._desk.case)
+        except LibraryError:
+            _LOG.exception("the case file cannot be written: its work waits")
+            return None
 
     def _do(self, job: Job) -> None:
         work = {"spectra": self._identify, "run": self._run_file, "verify": self._verify}[job.kind]

@@ -8,7 +8,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Annotated, Any
 
-from fastapi import Depends, Request
+from fastapi import Depends, Path, Request
 from fastapi.responses import HTMLResponse, JSONResponse, RedirectResponse, Response
 
 from identify import __version__
@@ -98,6 +98,9 @@ def reviewer_of(request: Request) -> Person:
 TheDesk = Annotated[Desk, Depends(desk_of)]
 ThePerson = Annotated[Person, Depends(person_of)]
 TheReviewer = Annotated[Person, Depends(reviewer_of)]
+Id = Annotated[int, Path(ge=1, le=2**40)]
+"""Number of a query, job, run or entry in an address."""
+LibraryNumber = Annotated[int, Path(ge=1, le=1000)]
 
 SAID = {
     "received": "Received. The list below fills as spectra are identified.",

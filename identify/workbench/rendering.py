@@ -5,6 +5,7 @@ from __future__ import annotations
 from functools import cache
 from typing import TYPE_CHECKING
 
+from identify.report.html import open_templates
 from identify.report.words import visible_text
 
 if TYPE_CHECKING:
@@ -14,16 +15,7 @@ if TYPE_CHECKING:
 @cache
 def environment() -> jinja2.Environment:
     """Templates of the workbench, which may use those of the report."""
-    import jinja2
-
-    loaders = [
-        jinja2.PackageLoader("identify.workbench", "templates"),
-        jinja2.PackageLoader("identify.report", "templates"),
-    ]
-    made = jinja2.Environment(
-        loader=jinja2.ChoiceLoader(loaders), autoescape=True, undefined=jinja2.StrictUndefined, trim_blocks=True,
-        lstrip_blocks=True,
-    )  # fmt: skip
+    made = open_templates("identify.workbench", "identify.report")
     made.filters["visible"] = visible_text
     made.filters["day"] = lambda text: text[:16].replace("T", " ") if text else ""
     return made

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from dataclasses import asdict
 from typing import Annotated, Any
 
-from fastapi import APIRouter, Path, Query, Request
+from fastapi import APIRouter, Query, Request
 
 from identify.chem.formula import parse_formula
 from identify.errors import FormulaError, LibraryDamaged, LibraryError, UsageError, quote
@@ -17,15 +17,14 @@ from identify.pipeline.search import SearchableLibrary
 from identify.records import CleanSpectrum, Entry, Peaks
 from identify.report.plots import spectrum_svg
 from identify.report.structures import StructureSheet
-from identify.report.words import file_name, mz_text, relative_text, score_text, sentence, visible_text
+from identify.report.words import file_name, ions_text, relative_text, score_text, sentence, visible_text
 from identify.similarity.pair import score_pair
 from identify.workbench.desk import Desk, NotFound
-from identify.workbench.pages import TheDesk, ThePerson, View, add_view
+from identify.workbench.pages import Id, LibraryNumber, TheDesk, ThePerson, View, add_view
 
-Number = Annotated[int, Path(ge=1, le=1000)]
-EntryId = Annotated[int, Path(ge=1, le=2**40)]
 Word = Annotated[str, Query(max_length=200)]
 LIMIT = 200
+MAX_IONS_NAMED = 12
 MAX_IONS = 8
 
 
@@ -136,7 +135,7 @@ def entry_line(number: int, entry: Entry, share: str = "") -> dict[str, Any]:
     }  # fmt: skip
 
 
-def show_entry(desk: TheDesk, person: ThePerson, request: Request, library_number: Number, entry_id: EntryId) -> View:
+def show_entry(desk: TheDesk, person: ThePerson, request: Request, library_number: LibraryNumber, entry_id: Id) -> View:
     """One entry: spectrum, structure, provenance, audit, replicates, history.
 
     Raises
@@ -156,7 +155,7 @@ def show_entry(desk: TheDesk, person: ThePerson, request: Request, library_numbe
     data = {
         "entry": {**line, "facts": entry_facts(entry, library)},
         "peaks": [[mz, round(value, 3)] for mz, value in zip(peaks.mz.tolist(), peaks.relative.tolist(), strict=True)],
-        "standard": _standard_details(library, entry),
+        "standard": standard_details(library, entry),
         "audit": audit_lines(desk, library_number, entry),
         "replicates": _replicates(desk, library_number, entry),
         "history": history,
@@ -192,8 +191,7 @@ def find_entry(library: Library, entry_id: int) -> Entry:
 def _draw(entry: Entry) -> dict[str, Any]:
     name = visible_text(entry.identity.name) or entry.accession
     peaks = entry.spectrum.nominal
-    order = sorted(zip(peaks.relative.tolist(), peaks.mz.tolist(), strict=True), key=lambda pair: (-pair[0], pair[1]))
-    caption = ", ".join(f"{mz_text(mz)} ({relative_text(value)})" for value, mz in order[:12])
+    caption = ions_text(zip(peaks.mz.tolist(), peaks.relative.tolist(), strict=True), MAX_IONS_NAMED)
     sheet = StructureSheet()
     return {
         "plot_svg": spectrum_svg(
@@ -233,7 +231,18 @@ def entry_facts(entry: Entry, library: Library) -> dict[str, str]:
     return {name: visible_text(text, 600) for name, text in facts.items() if text.strip()}
 
 
-def _standard_details(library: Library, entry: Entry) -> dict[str, str]:
+def standard_details(library: Library, entry: Entry) -> dict[str, str]:
+    """What was stated of the material of a standard, in words; nothing for what was not.
+
+    Parameters
+    ----------
+    library : Library
+    entry : Entry
+
+    Returns
+    -------
+    dict of str to str
+    """
     from identify.library.standards import read_standard_details
 
     details = asdict(read_standard_details(library, entry.accession))

@@ -6,25 +6,23 @@ from collections.abc import Mapping
 from dataclasses import asdict, replace
 from typing import Annotated, Any, Literal
 
-from fastapi import APIRouter, Form, Path, Query, Request
+from fastapi import APIRouter, Form, Query, Request
 
 from identify.errors import UsageError, quote
-from identify.pipeline.why_not import WhyNot
+from identify.pipeline.why_not import WhyNot, explain_absence
 from identify.records import Candidate, ClaimLevel, EntryStatus, Identification
-from identify.report.words import visible_text
+from identify.report.words import LONG_TEXT, visible_text
 from identify.settings import CleaningSettings
 from identify.workbench.case_rows import Decision, QueryRow
 from identify.workbench.decisions import decide, list_decisions
 from identify.workbench.desk import Desk, NotFound
 from identify.workbench.drawn_query import draw_query
-from identify.workbench.pages import Outcome, TheDesk, ThePerson, View, add_action, add_view, workbench_of
+from identify.workbench.pages import Id, Outcome, TheDesk, ThePerson, View, add_action, add_view, workbench_of
 from identify.workbench.record_json import record_to_dict
 from identify.workbench.sessions import Person
 from identify.workbench.stored import settings_of
 from identify.workbench.view_work_list import query_line
-from identify.workbench.why_not import explain_absence
 
-Id = Annotated[int, Path(ge=1, le=2**40)]
 LEVELS = tuple(level for level in ClaimLevel if level is not ClaimLevel.NO_CLAIM)
 
 
@@ -93,7 +91,7 @@ def show_query(
     }
 
     def draw() -> dict[str, Any]:
-        return _draw(desk, row, result_id, decisions, absent)
+        return _draw(desk, row, result_id, decisions)
 
     def more() -> dict[str, Any]:
         return {"record": record_to_dict(desk.case.record(query_id)), "result": desk.case.document(result_id)}
@@ -109,30 +107,21 @@ def _explain(desk: Desk, query_id: int, result_id: int, asked: str) -> tuple[Why
 
 def _absence(item: WhyNot) -> dict[str, Any]:
     return {
-        "name": item.name, "accession": item.accession, "rank": item.rank, "reasons": list(item.reasons),
+        "name": visible_text(item.name), "accession": visible_text(item.accession), "rank": item.rank,
+        "reasons": [visible_text(reason, LONG_TEXT) for reason in item.reasons],
         "cosine": round(item.cosine, 6), "reverse": round(item.reverse, 6),
     }  # fmt: skip
 
 
-def _draw(
-    desk: Desk, row: QueryRow, result_id: int, decisions: list[Decision], absent: tuple[WhyNot, ...]
-) -> dict[str, Any]:
+def _draw(desk: Desk, row: QueryRow, result_id: int, decisions: list[Decision]) -> dict[str, Any]:
     return {
         "drawn": draw_query(desk, row.id, result_id),
         "is_latest": result_id == row.result_id,
         "result_id": result_id,
         "seen": decisions[-1].seq if decisions else 0,
         "decisions": decisions,
-        "absent": absent,
         "levels": LEVELS,
-        "status": _status(row),
     }
-
-
-def _status(row: QueryRow) -> str:
-    if row.state == "accepted":
-        return f"accepted as {visible_text(row.decided_compound)}, {row.decided_level}"
-    return row.state
 
 
 def add_decision(

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal
 
-from fastapi import APIRouter, File, Form, Path, Query, Request, UploadFile
+from fastapi import APIRouter, File, Form, Query, Request, UploadFile
 
 from identify.report.words import minutes_text, probability_text, relative_text, visible_text
 from identify.retention import parse_ladder
@@ -12,10 +12,9 @@ from identify.workbench.case_rows import QueryRow
 from identify.workbench.chromatogram import Mark, chromatogram_svg
 from identify.workbench.desk import Desk, NotFound
 from identify.workbench.job_list import find_job
-from identify.workbench.pages import Outcome, TheDesk, ThePerson, View, add_action, add_view, workbench_of
+from identify.workbench.pages import Id, Outcome, TheDesk, ThePerson, View, add_action, add_view, workbench_of
 from identify.workbench.view_work_list import display_name, keep_upload, query_line
 
-Id = Annotated[int, Path(ge=1, le=2**40)]
 Minutes = Annotated[float | None, Query(ge=0, le=100_000)]
 MAX_COMPONENTS = 5000
 MARGIN_MIN = 0.5

@@ -2,17 +2,15 @@
 
 from __future__ import annotations
 
-from dataclasses import asdict
 from typing import Annotated, Any, Literal
 
-from fastapi import APIRouter, Form, Path, Query, Request
+from fastapi import APIRouter, Form, Query, Request
 
 from identify.errors import UsageError
 from identify.library.identities import resolve_identity
 from identify.library.standards import (
     StandardDetails,
     propose_standard,
-    read_standard_details,
     review_standard,
 )
 from identify.library.standing import entry_history, withdraw_entry
@@ -20,13 +18,21 @@ from identify.library.store import Library
 from identify.records import Entry, EntryStatus
 from identify.report.words import file_name, visible_text
 from identify.workbench.desk import Desk
-from identify.workbench.pages import Outcome, TheDesk, ThePerson, TheReviewer, View, add_action, add_view
-from identify.workbench.view_library import audit_lines, entry_line, find_entry
+from identify.workbench.pages import (
+    Id,
+    LibraryNumber,
+    Outcome,
+    TheDesk,
+    ThePerson,
+    TheReviewer,
+    View,
+    add_action,
+    add_view,
+)
+from identify.workbench.view_library import audit_lines, entry_line, find_entry, standard_details
 from identify.workbench.view_query import find_query
 from identify.workbench.view_work_list import query_line
 
-Number = Annotated[int, Path(ge=1, le=1000)]
-EntryId = Annotated[int, Path(ge=1, le=2**40)]
 Line = Annotated[str, Form(max_length=300)]
 Long = Annotated[str, Form(max_length=2000)]
 
@@ -77,13 +83,9 @@ def _came(library: Library, entry: Entry) -> dict[str, str]:
 def _proposal(desk: Desk, number: int, entry: Entry, who: str) -> dict[str, Any]:
     library = desk.library(number)
     came = _came(library, entry)
-    details = {
-        name.replace("_", " "): visible_text(text, 600)
-        for name, text in asdict(read_standard_details(library, entry.accession)).items()
-        if text
-    }
     return {
-        **entry_line(number, entry), **came, "details": details, "audit": audit_lines(desk, number, entry),
+        **entry_line(number, entry), **came, "details": standard_details(library, entry),
+        "audit": audit_lines(desk, number, entry),
         "is_own": came["proposed_by"].casefold() == who.casefold(),
     }  # fmt: skip
 
@@ -138,8 +140,8 @@ def review(
     desk: TheDesk,
     person: TheReviewer,
     request: Request,
-    library_number: Number,
-    entry_id: EntryId,
+    library_number: LibraryNumber,
+    entry_id: Id,
     verdict: Annotated[Literal["accept", "refuse"], Form()],
     reason: Long = "",
 ) -> Outcome:
@@ -157,8 +159,8 @@ def withdraw(
     desk: TheDesk,
     person: TheReviewer,
     request: Request,
-    library_number: Number,
-    entry_id: EntryId,
+    library_number: LibraryNumber,
+    entry_id: Id,
     reason: Long = "",
 ) -> Outcome:
     """Take an entry out of use."""

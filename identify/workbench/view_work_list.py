@@ -7,21 +7,20 @@ from dataclasses import asdict
 from pathlib import PurePosixPath
 from typing import Annotated, Any, Literal
 
-from fastapi import APIRouter, File, Form, Path, Query, Request, UploadFile
+from fastapi import APIRouter, File, Form, Query, Request, UploadFile
 
 from identify.errors import InputError, UsageError
 from identify.records import ClaimLevel
-from identify.report.words import minutes_text, probability_text, sentence, visible_text
+from identify.report.words import NONE, minutes_text, probability_text, sentence, visible_text
 from identify.retention import parse_ladder
 from identify.workbench.case_rows import STATES, Job, QueryRow
 from identify.workbench.desk import Desk, NotFound
 from identify.workbench.job_list import find_job, list_jobs
-from identify.workbench.pages import Outcome, TheDesk, ThePerson, View, add_action, add_view, workbench_of
+from identify.workbench.pages import Id, Outcome, TheDesk, ThePerson, View, add_action, add_view, workbench_of
 
 PAGE_SIZE = 60
 MAX_FILES = 200
 MAX_PASTED = 900_000
-Id = Annotated[int, Path(ge=1, le=2**40)]
 RUN_HEADS = (b"CDF\x01", b"CDF\x02")
 
 
@@ -92,7 +91,8 @@ def query_line(row: QueryRow) -> dict[str, Any]:
         "source": visible_text(row.source),
         "statement": sentence(row.statement),
         "time": "" if row.time_s is None else minutes_text(row.time_s),
-        "probability_text": probability_text(row.probability),
+        # No number beside "no claim" that could be read as one of a name.
+        "probability_text": NONE if row.level == ClaimLevel.NO_CLAIM.value else probability_text(row.probability),
     }
 
 

@@ -5,7 +5,13 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
-from bench import DEMO, Bench, wait_until
+from bench import DEMO, Bench, running_bench, wait_until
+
+from identify.errors import LibraryError
+from identify.workbench import jobs
+from identify.workbench.case_file import CaseFile
+from identify.workbench.case_rows import Job
+from identify.workbench.job_list import next_job
 
 PROPOSAL = {"supplier": "an invented supplier", "lot": "L-1", "purity": "99 %", "measured_on": "2026-01-04"}
 
@@ -176,6 +182,21 @@ def test_work_can_be_cancelled(bench: Bench) -> None:
     (told,) = bench.wait()
     assert told["state"] == "cancelled"
     assert 0 < bench.count_queries() < 3000
+
+
+def test_a_case_file_that_cannot_be_written_for_a_while_stops_no_work(
+    folder: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    faults = iter([LibraryError("case file", found="no space left on the disk")] * 2)
+
+    def fails_at_first(case: CaseFile) -> Job | None:
+        for fault in faults:
+            raise fault
+        return next_job(case)
+
+    monkeypatch.setattr(jobs, "next_job", fails_at_first)
+    with running_bench(folder) as bench:
+        assert bench.paste() == 1
 
 
 def test_what_could_not_be_used_is_listed_with_its_reason(bench: Bench) -> None:
