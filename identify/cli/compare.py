@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from identify.cli.options import FILE, say, say_event
+from identify.cli.options import FILE, say, say_event, say_written
 
 
 @click.command()
@@ -35,7 +35,7 @@ def compare(first: Path, second: Path, library: Path | None, csv_path: Path | No
             for change in query.changes
         ]
         write_rows(csv_path, heading, rows)
-        click.echo(f"Written: {csv_path}", err=True)
+        say_written(csv_path)
     for cause in found.causes:
         say(f"{cause.what}: {cause.before} → {cause.after}")
     if not found.causes:

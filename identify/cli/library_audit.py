@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import click
 
-from identify.cli.options import FILE, WHO, WHY, check_outputs, now, say, say_event
+from identify.cli.options import FILE, WHO, WHY, check_outputs, now, say, say_event, say_written
 from identify.cli.progress import progress_bar
 from identify.errors import UsageError
 
@@ -90,7 +90,7 @@ def _write(path: Path, report: AuditReport, standing: dict[str, str]) -> None:
 
     rows = [row for item in report.audits if item.findings for row in _rows(item, standing[item.accession])]
     write_rows(path, HEADING, rows)
-    click.echo(f"Written: {path}", err=True)
+    say_written(path)
 
 
 def _rows(item: EntryAudit, standing: str) -> list[tuple[str, ...]]:

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from identify.cli.options import FILE, WHO, WHY, now, say, say_event
+from identify.cli.options import FILE, WHO, WHY, now, read_settings, say, say_event
 from identify.cli.progress import progress_bar
 
 
@@ -29,7 +29,6 @@ def calibrate(
     The order of candidates stays as it is. With too few replicates, or when the refitted numbers do no better on compounds held
     out, the shipped calibration stays. What is found is stored in LIB as an event, and results say which calibration they used.
     """
-    from identify.cli.search import read_settings
     from identify.pipeline.calibrate import calibrate_library, reset_calibration
     from identify.settings import resolve
 

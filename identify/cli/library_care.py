@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from identify.cli.options import FILE, WHO, WHY_REQUIRED, now, say, say_event, say_table
+from identify.cli.options import FILE, WHO, WHY_REQUIRED, now, say, say_event, say_table, say_written
 from identify.cli.progress import page_bar, progress_bar
 
 
@@ -122,7 +122,7 @@ def affected(path: Path, accession: str | None, csv_path: Path | None) -> None:
         from identify.writers.rows_csv import write_rows
 
         write_rows(csv_path, heading, rows)
-        say(f"Written: {csv_path}")
+        say_written(csv_path)
     say(f"recorded queries answered with {accession or 'entries that are now set aside'}: {len(rows):,}")
     if rows:
         say_table(heading, rows)

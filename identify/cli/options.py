@@ -51,6 +51,16 @@ WHO = click.option("--who", default=current_user, show_default="your login name"
 WHY = click.option("--why", default="", help="Reason written into the event.")
 WHY_REQUIRED = click.option("--why", required=True, help="Reason written into the event.")
 LIBRARY = click.option("--library", "path", required=True, type=FILE, metavar="LIB", help="Library the entry is in.")
+LIBRARIES = click.option(
+    "--library", "libraries", multiple=True, required=True, type=FILE, help="Library to search; repeatable."
+)
+JSON = click.option("--json", "json_path", type=FILE, help="Write the full result as JSON.")
+REPORT = click.option("--report", "html_path", type=FILE, help="Write a self-contained HTML report.")
+SETTINGS = click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
+RECORD = click.option(
+    "--record/--no-record", "is_recorded", default=None,
+    help="Remember in the library which entries answered (default: when a result file is written and the library allows).",
+)  # fmt: skip
 
 
 def read_text(path: Path, what: str, kind: type[IonwitnessError] = InputError) -> str:
@@ -85,6 +95,25 @@ def read_text(path: Path, what: str, kind: type[IonwitnessError] = InputError) -
     except UnicodeDecodeError:
         found = "bytes that are no UTF-8 text"
     raise kind(what, where=str(path), found=found, expected="a readable text file")
+
+
+def read_settings(path: Path | None) -> str:
+    """Text of a settings file; empty without a path.
+
+    Parameters
+    ----------
+    path : Path or None
+
+    Returns
+    -------
+    str
+
+    Raises
+    ------
+    UsageError
+        If the file cannot be read as text.
+    """
+    return "" if path is None else read_text(path, "settings", UsageError)
 
 
 def describe_os_error(error: OSError) -> str:
@@ -156,6 +185,16 @@ def say(text: str) -> None:
     click.echo(margin + visible_text(text, 4000))
 
 
+def say_written(path: Path) -> None:
+    """Nothing comes out; beside the answer it is said that a file was written.
+
+    Parameters
+    ----------
+    path : Path
+    """
+    click.echo(f"Written: {path}", err=True)
+
+
 def say_event(event: Event) -> None:
     """Nothing comes out; one line about an event is printed.
 
@@ -164,7 +203,8 @@ def say_event(event: Event) -> None:
     event : Event
     """
     reason = f": {event.reason}" if event.reason else ""
-    say(f"event {event.seq} · {event.at} · {event.kind} by {event.who}{reason} · {event.hash[:16]}")
+    at = event.at[:19].replace("T", " ")
+    say(f"event {event.seq} · {at} UTC · {event.kind} by {event.who}{reason} · {event.hash[:16]}")
 
 
 def say_table(heading: Sequence[str], rows: Iterable[Sequence[str]]) -> None:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from contextlib import contextmanager
+from functools import partial
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
@@ -27,22 +28,8 @@ def progress_bar(label: str) -> Iterator[Progress | None]:
     callable or None
         Takes how many are done, and the name of the one in hand.
     """
-    from rich.console import Console
-    from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
-
-    console = Console(stderr=True)
-    if not console.is_terminal:
-        yield None
-        return
-    columns = (
-        TextColumn("{task.description}", markup=False),  # names come from files
-        BarColumn(),
-        TextColumn("{task.completed:.0f}"),
-        TimeElapsedColumn(),
-    )
-    with Progress(*columns, console=console, transient=True) as bar:
-        task = bar.add_task(label, total=None)
-        yield lambda done, name: bar.update(task, completed=done, description=f"{label} {name[:40]}")
+    with _bar(label, "{task.completed:.0f}") as update:
+        yield update and (lambda done, name: update(completed=done, description=f"{label} {name[:40]}"))
 
 
 @contextmanager
@@ -58,14 +45,19 @@ def page_bar(label: str) -> Iterator[DoneOfTotal | None]:
     callable or None
         Takes how much is done and how much there is.
     """
+    with _bar(label, "{task.percentage:.0f} %") as update:
+        yield update and (lambda done, total: update(completed=done, total=total))
+
+
+@contextmanager
+def _bar(label: str, amount: str) -> Iterator[Callable[..., None] | None]:
     from rich.console import Console
-    from rich.progress import BarColumn, Progress, TaskProgressColumn, TextColumn, TimeElapsedColumn
+    from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
 
     console = Console(stderr=True)
     if not console.is_terminal:
         yield None
         return
-    columns = (TextColumn(label, markup=False), BarColumn(), TaskProgressColumn(), TimeElapsedColumn())
-    with Progress(*columns, console=console, transient=True) as bar:
-        task = bar.add_task(label, total=None)
-        yield lambda done, total: bar.update(task, completed=done, total=total)
+    words = TextColumn("{task.description}", markup=False)  # names come from files
+    with Progress(words, BarColumn(), TextColumn(amount), TimeElapsedColumn(), console=console, transient=True) as bar:
+        yield partial(bar.update, bar.add_task(label, total=None))

@@ -7,9 +7,22 @@ from typing import TYPE_CHECKING
 
 import click
 
-from identify.cli.options import FILE, WHO, check_outputs, read_text
+from identify.cli.options import (
+    FILE,
+    JSON,
+    LIBRARIES,
+    RECORD,
+    REPORT,
+    SETTINGS,
+    WHO,
+    check_outputs,
+    read_settings,
+    read_text,
+    say_written,
+)
 from identify.cli.progress import progress_bar
-from identify.cli.search import deliver, read_settings, remember
+from identify.cli.search import deliver, first_written, remember
+from identify.errors import UsageError
 
 if TYPE_CHECKING:
     from identify.pipeline.runs import RunOptions
@@ -18,7 +31,7 @@ if TYPE_CHECKING:
 
 @click.command()
 @click.argument("paths", metavar="RUN...", nargs=-1, required=True, type=FILE)
-@click.option("--library", "libraries", multiple=True, required=True, type=FILE, help="Library to search; repeatable.")
+@LIBRARIES
 @click.option("--blank", type=FILE, help="Blank run: what it shows too is marked.")
 @click.option("--ladder", type=FILE, help="n-Alkanes: a table (carbon number, minutes) or a run of an alkane mixture.")
 @click.option(
@@ -26,15 +39,12 @@ if TYPE_CHECKING:
 )
 @click.option("--at", "at", help="Search one spectrum by hand: minutes, or two for the mean of the scans between.")
 @click.option("--background", help="With --at: minutes of scans to subtract, separated by commas.")
-@click.option("--json", "json_path", type=FILE, help="Write the full result as JSON.")
+@JSON
 @click.option("--csv", "csv_path", type=FILE, help="Write one row per component as CSV.")
-@click.option("--report", "html_path", type=FILE, help="Write a self-contained HTML report.")
+@REPORT
 @click.option("--top", type=int, default=10, show_default=True, help="Candidates kept per component.")
-@click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
-@click.option(
-    "--record/--no-record", "is_recorded", default=None,
-    help="Remember in the library which entries answered (default: when a result file is written and the library allows).",
-)  # fmt: skip
+@SETTINGS
+@RECORD
 @WHO
 def run(
     paths: tuple[Path, ...],
@@ -52,21 +62,14 @@ def run(
     is_recorded: bool | None,
     who: str,
 ) -> int:
-    """Find and name everything that eluted in each RUN (ANDI-MS netCDF, mzML).
-
-    \b
-    Options that contradict each other are refused (UsageError).
-    """
-    from identify.errors import UsageError
+    """Find and name everything that eluted in each RUN (ANDI-MS netCDF, mzML)."""
     from identify.pipeline.runs import identify_scans, run_files
     from identify.settings import resolve
 
     settings = resolve(read_settings(settings_path), where=str(settings_path or "settings"), top=top)
     outputs = (json_path, csv_path, html_path)
     check_outputs(outputs, [*paths, *libraries, *(path for path in (blank, ladder, settings_path) if path)])
-    written = next((path for path in outputs if path), None)
-    if is_recorded and written is None:
-        raise UsageError("--record", found="no result file", expected="--json, --csv or --report with it")
+    written = first_written(outputs, is_recorded)
     if at is not None:
         if len(paths) != 1 or blank or ladder or column:
             beside = "several runs, a blank, a ladder or a column beside it"
@@ -102,19 +105,19 @@ def _write(found: RunsReport, json_path: Path | None, csv_path: Path | None, htm
     for path, write in ((json_path, write_run_json), (csv_path, write_run_csv), (html_path, write_run_html)):
         if path is not None:
             write(path, found)
-            click.echo(f"Written: {path}", err=True)
+            say_written(path)
 
 
 def _options(blank: Path | None, ladder: Path | None, column: str) -> RunOptions:
-    from identify.errors import UsageError
     from identify.pipeline.runs import RunOptions
     from identify.readers.runs import is_run
     from identify.retention import parse_ladder, phase_class
 
     if column and not phase_class(column):
         raise UsageError(
-            "--column", found=repr(column[:60]), expected="a column or phase name whose phase class is known"
-        )
+            "--column", found=repr(column[:60]), expected="a column or phase name whose phase class is known",
+            hint="Such as DB-5, DB-WAX or '5% phenyl methylpolysiloxane'.",
+        )  # fmt: skip
     if ladder is None:
         return RunOptions(blank=blank, column=column)
     if is_run(ladder):
@@ -125,8 +128,6 @@ def _options(blank: Path | None, ladder: Path | None, column: str) -> RunOptions
 
 def _minutes(text: str, option: str) -> tuple[float, ...]:
     import math
-
-    from identify.errors import UsageError
 
     values = []
     for part in text.split(","):

@@ -8,7 +8,21 @@ from typing import TYPE_CHECKING
 
 import click
 
-from identify.cli.options import FILE, MAX_TEXT_BYTES, WHO, check_outputs, now, read_text, say
+from identify.cli.options import (
+    FILE,
+    JSON,
+    LIBRARIES,
+    MAX_TEXT_BYTES,
+    RECORD,
+    REPORT,
+    SETTINGS,
+    WHO,
+    check_outputs,
+    now,
+    read_settings,
+    say,
+    say_written,
+)
 from identify.cli.progress import progress_bar
 from identify.errors import InputError, UsageError
 
@@ -18,20 +32,20 @@ if TYPE_CHECKING:
     from identify.records import Report
     from identify.settings import Settings
 
-__all__ = ["FILE", "deliver", "progress_bar", "read_settings", "search"]
+PASTED = Path("-")
 
 
 @click.command()
 @click.argument("queries", nargs=-1, required=True, type=FILE)
-@click.option("--library", "libraries", multiple=True, required=True, type=FILE, help="Library to search; repeatable.")
-@click.option("--json", "json_path", type=FILE, help="Write the full result as JSON.")
+@LIBRARIES
+@JSON
 @click.option("--csv", "csv_path", type=FILE, help="Write one row per candidate as CSV.")
-@click.option("--report", "html_path", type=FILE, help="Write a self-contained HTML report.")
+@REPORT
 @click.option(
     "--work-list", "work_list_path", type=FILE, help="Write the next measurements of all queries, ranked, as CSV."
 )
 @click.option("--top", type=int, help="Candidates reported per query (default 25).")
-@click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
+@SETTINGS
 @click.option(
     "--prefer-own/--no-prefer-own", default=None, help="Own standards before other entries that score the same."
 )
@@ -39,10 +53,7 @@ __all__ = ["FILE", "deliver", "progress_bar", "read_settings", "search"]
     "--as-of", metavar="EVENT", multiple=True,
     help="The library as it stood after this event (number or hash); with several libraries once for each, in order.",
 )  # fmt: skip
-@click.option(
-    "--record/--no-record", "is_recorded", default=None,
-    help="Remember in the library which entries answered (default: when a result file is written and the library allows).",
-)  # fmt: skip
+@RECORD
 @click.option(
     "--why-not", "why_not", metavar="COMPOUND",
     help="Say why this compound (name, InChIKey or SMILES) is not the answer to each query.",
@@ -72,16 +83,16 @@ def search(
     )
     outputs = (json_path, csv_path, html_path, work_list_path)
     check_outputs(outputs, (*queries, *libraries))
-    written = next((path for path in outputs if path), None)
-    if is_recorded and written is None:
-        _refuse_record()
-    if queries == (Path("-"),):
+    written = first_written(outputs, is_recorded)
+    if PASTED in queries and len(queries) > 1:
+        raise UsageError("QUERIES", found="- with other inputs", expected="files, or - alone for pasted peaks")
+    if queries == (PASTED,):
         report = search_pasted(_read_pasted(), libraries, settings, as_of=as_of)
     else:
         with progress_bar("Identifying") as progress:
             if json_path and not (csv_path or html_path or work_list_path or why_not):
                 report = search_to_json(queries, libraries, settings, json_path, progress, as_of=as_of)
-                click.echo(f"Written: {json_path}", err=True)
+                say_written(json_path)
                 json_path = None  # written already
             else:
                 report = search_files(queries, libraries, settings, progress, as_of=as_of)
@@ -90,7 +101,7 @@ def search(
         from identify.writers.work_list_csv import write_work_list
 
         write_work_list(work_list_path, report)
-        click.echo(f"Written: {work_list_path}", err=True)
+        say_written(work_list_path)
     if why_not:
         say_why_not(why_not, report, libraries, settings, as_of)
     if written and is_recorded is not False:
@@ -129,8 +140,28 @@ def say_why_not(
                 say(f"  {without}")
 
 
-def _refuse_record() -> None:
-    raise UsageError("--record", found="no result file", expected="--json, --csv or --report with it")
+def first_written(outputs: Sequence[Path | None], is_recorded: bool | None) -> Path | None:
+    """The file by which a recorded result can be found again: the first that is written.
+
+    Parameters
+    ----------
+    outputs : sequence of Path or None
+    is_recorded : bool or None
+        What was asked for; None for nothing.
+
+    Returns
+    -------
+    Path or None
+
+    Raises
+    ------
+    UsageError
+        If the answer is to be recorded, but no file is written.
+    """
+    written = next((path for path in outputs if path), None)
+    if is_recorded and written is None:
+        raise UsageError("--record", found="no result file", expected="--json, --csv or --report with it")
+    return written
 
 
 def remember(report: Report, result: Path, who: str, *, is_required: bool) -> None:
@@ -167,25 +198,6 @@ def _read_pasted() -> str:
     return data.decode("utf-8", "replace")
 
 
-def read_settings(path: Path | None) -> str:
-    """Text of a settings file; empty without a path.
-
-    Parameters
-    ----------
-    path : Path or None
-
-    Returns
-    -------
-    str
-
-    Raises
-    ------
-    UsageError
-        If the file cannot be read as text.
-    """
-    return "" if path is None else read_text(path, "settings", UsageError)
-
-
 def deliver(report: Report, json_path: Path | None, csv_path: Path | None, html_path: Path | None) -> int:
     """Exit code of the report, after writing the files asked for and showing it on the terminal.
 
@@ -214,7 +226,7 @@ def deliver(report: Report, json_path: Path | None, csv_path: Path | None, html_
     for path, write in writers:
         if path is not None:
             write(path, report)
-            click.echo(f"Written: {path}", err=True)
+            say_written(path)
     render = render_terminal if len(report.identifications) <= DETAILS_UP_TO else render_overview
     render(report, Console())
     return report.exit_code

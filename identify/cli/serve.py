@@ -6,7 +6,8 @@ from pathlib import Path
 
 import click
 
-from identify.cli.search import FILE, read_settings
+from identify.cli.options import FILE, SETTINGS, current_user, now, read_settings
+from identify.errors import UsageError
 
 
 @click.command()
@@ -15,7 +16,7 @@ from identify.cli.search import FILE, read_settings
 )
 @click.option("--case", "case_path", type=FILE, help="Case file (default: beside the first library).")
 @click.option("--port", type=click.IntRange(0, 65535), default=8377, show_default=True, help="0 takes any free port.")
-@click.option("--settings", "settings_path", type=FILE, help="TOML file with settings.")
+@SETTINGS
 @click.option("--browser/--no-browser", default=False, help="Open the link in a browser.")
 @click.option("--address", default="127.0.0.1", show_default=True, help="Address to serve on.")
 @click.option("--name", "names", multiple=True, help="Name by which other computers reach this one; repeatable.")
@@ -39,7 +40,6 @@ def serve(
     people: tuple[str, ...],
 ) -> int:
     """Open the workbench: a local page for the whole job."""
-    from identify.cli.options import current_user
     from identify.settings import resolve
 
     _check_packages()
@@ -67,8 +67,6 @@ def serve(
 def _check_packages() -> None:
     from importlib.util import find_spec
 
-    from identify.errors import UsageError
-
     missing = [name for name in ("fastapi", "uvicorn", "multipart", "argon2", "jinja2") if find_spec(name) is None]
     if missing:
         raise UsageError(
@@ -78,8 +76,6 @@ def _check_packages() -> None:
 
 
 def _check_address(is_loopback: bool, address: str, is_allowed: bool) -> None:
-    from identify.errors import UsageError
-
     if not is_loopback and not is_allowed:
         raise UsageError(
             "--address", found=address, expected="a loopback address",
@@ -88,7 +84,6 @@ def _check_address(is_loopback: bool, address: str, is_allowed: bool) -> None:
 
 
 def _add_people(case_path: Path, people: tuple[str, ...]) -> int:
-    from identify.cli.options import now
     from identify.library.events import format_time
     from identify.workbench.case_file import open_case
     from identify.workbench.people import set_person

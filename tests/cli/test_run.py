@@ -207,7 +207,7 @@ def test_a_ladder_that_is_no_text_or_not_there_says_so(tmp_path: Path, starter: 
         (["--at", "1.0,x"], "minutes separated by commas"),
         (["--at", "nan"], "minutes separated by commas"),
         (["--at", "50"], "a time within the run"),
-        (["--column", "a column"], "phase class is known"),
+        (["--column", "a column"], "phase class is known. Such as DB-5"),
     ],
 )
 def test_options_that_make_no_sense_say_so(starter: Path, sample: Path, options: list[str], message: str) -> None:

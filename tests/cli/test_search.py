@@ -37,6 +37,11 @@ def test_pasted_peaks_are_identified(run: Run, starter: Path) -> None:
     assert "acetone" in result.output
 
 
+def test_pasted_peaks_stand_alone(run: Run, starter: Path, unknown: Path) -> None:
+    with pytest.raises(UsageError, match="found - with other inputs, expected files, or - alone"):
+        run("search", "-", unknown, "--library", starter, text="43 100\n")
+
+
 def test_an_unreadable_file_is_listed_and_the_rest_goes_on(
     run: Run, starter: Path, unknown: Path, tmp_path: Path
 ) -> None:

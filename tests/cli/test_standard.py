@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Callable
 from pathlib import Path
 
@@ -36,7 +37,7 @@ def found_standing(run: Run, lab: Path, spectrum: Path, tmp_path: Path) -> list[
 def test_from_proposal_to_withdrawal(run: Run, lab: Path, unknown: Path, tmp_path: Path) -> None:
     said = propose(run, lab, unknown).output.splitlines()
     assert said[0] == "OWN-000001: acetone, new lot C3H6O"
-    assert said[1].startswith("event 3 · ")
+    assert re.match(r"event 3 · \d{4}-\d\d-\d\d \d\d:\d\d:\d\d UTC · proposed by ", said[1])
     assert "proposed by anna: new lot" in said[1]
     assert "own standard" not in found_standing(run, lab, unknown, tmp_path)
     waiting = run("standard", "waiting", "--library", lab).output.splitlines()
