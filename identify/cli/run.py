@@ -70,10 +70,8 @@ def run(
     outputs = (json_path, csv_path, html_path)
     check_outputs(outputs, [*paths, *libraries, *(path for path in (blank, ladder, settings_path) if path)])
     written = first_written(outputs, is_recorded)
+    _check_by_hand(at, background, len(paths) == 1 and not (blank or ladder or column))
     if at is not None:
-        if len(paths) != 1 or blank or ladder or column:
-            beside = "several runs, a blank, a ladder or a column beside it"
-            raise UsageError("--at", found=beside, expected="one run alone")
         report = identify_scans(
             paths[0], _minutes(at, "--at"), _minutes(background or "", "--background"), libraries, settings
         )
@@ -81,8 +79,6 @@ def run(
         if written and is_recorded is not False:
             remember(report, written, who, is_required=bool(is_recorded))
         return code
-    if background is not None:
-        raise UsageError("--background", found="no --at", expected="--at with the minutes of the peak")
     options = _options(blank, ladder, column)
     with progress_bar("Identifying") as progress:
         found = run_files(paths, libraries, settings, options, progress)
@@ -95,6 +91,15 @@ def run(
     if written and is_recorded is not False:
         remember(found.report, written, who, is_required=bool(is_recorded))
     return found.report.exit_code
+
+
+def _check_by_hand(at: str | None, background: str | None, is_alone: bool) -> None:
+    if at is not None and not is_alone:
+        raise UsageError(
+            "--at", found="several runs, a blank, a ladder or a column beside it", expected="one run alone"
+        )
+    if background is not None and at is None:
+        raise UsageError("--background", found="no --at", expected="--at with the minutes of the peak")
 
 
 def _write(found: RunsReport, json_path: Path | None, csv_path: Path | None, html_path: Path | None) -> None:

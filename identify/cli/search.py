@@ -84,8 +84,7 @@ def search(
     outputs = (json_path, csv_path, html_path, work_list_path)
     check_outputs(outputs, (*queries, *libraries))
     written = first_written(outputs, is_recorded)
-    if PASTED in queries and len(queries) > 1:
-        raise UsageError("QUERIES", found="- with other inputs", expected="files, or - alone for pasted peaks")
+    _check_pasted(queries)
     if queries == (PASTED,):
         report = search_pasted(_read_pasted(), libraries, settings, as_of=as_of)
     else:
@@ -138,6 +137,11 @@ def say_why_not(
             without = explain_without_entry(asked, found)
             if without:
                 say(f"  {without}")
+
+
+def _check_pasted(queries: Sequence[Path]) -> None:
+    if PASTED in queries and len(queries) > 1:
+        raise UsageError("QUERIES", found="- with other inputs", expected="files, or - alone for pasted peaks")
 
 
 def first_written(outputs: Sequence[Path | None], is_recorded: bool | None) -> Path | None:
