@@ -101,6 +101,14 @@ class CaseFile:
         with self._lock:
             self._connection.close()
 
+    def state(self) -> tuple[object, ...]:
+        """Something that is the same only as long as nobody, here or elsewhere, has written to the file."""
+        with self.reading() as connection:
+            (by_others,) = connection.execute("PRAGMA data_version").fetchone()
+            files = (self.path, self.path.with_name(self.path.name + "-wal"))
+            told = [(found.st_mtime_ns, found.st_size) for found in (path.stat() for path in files if path.exists())]
+            return (by_others, connection.total_changes, *told)
+
     @contextmanager
     def reading(self) -> Iterator[sqlite3.Connection]:
         """The connection, locked to this thread.

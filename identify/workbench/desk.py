@@ -20,6 +20,7 @@ from identify.pipeline.search import SearchableLibrary, open_libraries
 from identify.records import Entry, EntryStatus
 from identify.settings import Settings
 from identify.workbench.case_file import CaseFile, open_case
+from identify.workbench.decisions import find_fault
 from identify.workbench.stored import Rebuilt, rebuild
 
 MAX_REBUILT, MAX_DRAWN = 200, 400
@@ -51,6 +52,7 @@ class Desk:
     _rebuilt: OrderedDict[tuple[int, str], Rebuilt] = field(default_factory=OrderedDict)
     _standing: dict[tuple[int, EntryStatus], tuple[str, list[int]]] = field(default_factory=dict)
     _drawn: OrderedDict[tuple[int, str], Any] = field(default_factory=OrderedDict)
+    _checked: tuple[tuple[object, ...], str] = ((), "")
 
     def now(self) -> str:
         """UTC text of the present time."""
@@ -141,6 +143,13 @@ class Desk:
             ids = library.entry_ids({status})
             self._standing[number, status] = (fingerprint, ids)
         return library.get_entries(ids)
+
+    def find_fault(self) -> str:
+        """See `identify.workbench.decisions.find_fault`; every hash is computed again only when the case file has changed."""
+        state = self.case.state()
+        if self._checked[0] != state:
+            self._checked = (state, find_fault(self.case))
+        return self._checked[1]
 
     def _state(self) -> str:
         return ",".join(library.fingerprint for library in self.libraries)

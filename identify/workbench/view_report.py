@@ -13,7 +13,7 @@ from identify.report.context import build_page
 from identify.report.contexts import CandidateDetail
 from identify.report.words import visible_text
 from identify.workbench.case_rows import Decision, QueryRow
-from identify.workbench.decisions import find_fault, list_decisions
+from identify.workbench.decisions import list_decisions
 from identify.workbench.desk import Desk
 from identify.workbench.pages import TheDesk, ThePerson, View, add_view
 from identify.workbench.view_work_list import query_line
@@ -52,7 +52,7 @@ def show_report(
             {"path": item.state.path, "fingerprint": item.state.fingerprint, "entries": item.state.entries}
             for item in desk.searchable()
         ],
-        "fault": find_fault(desk.case),
+        "fault": desk.find_fault(),
     }
     return View("report.html", "Report of decisions", data, lambda: _draw(desk, shown, by_query))
 

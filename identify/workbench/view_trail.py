@@ -8,7 +8,7 @@ from typing import Annotated, Any
 from fastapi import APIRouter, Query, Request
 
 from identify.report.words import file_name, visible_text
-from identify.workbench.decisions import find_fault, list_decisions
+from identify.workbench.decisions import list_decisions
 from identify.workbench.job_list import list_jobs
 from identify.workbench.pages import Outcome, TheDesk, ThePerson, View, add_action, add_view, workbench_of
 from identify.workbench.view_work_list import job_line
@@ -54,7 +54,7 @@ def show_trail(
         "page": page,
         "pages": max(1, -(-longest // PAGE_SIZE)),
     }
-    return View("trail.html", "Trail", data, lambda: {"fault": find_fault(desk.case)})
+    return View("trail.html", "Trail", data, lambda: {"fault": desk.find_fault()})
 
 
 def verify(desk: TheDesk, person: ThePerson, request: Request) -> Outcome:

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import sqlite3
 from pathlib import Path
 
 import pytest
 from bench import DEMO, Bench, running_bench, wait_until
 
 from identify.errors import LibraryError
-from identify.workbench import jobs
+from identify.workbench import decisions, jobs
 from identify.workbench.case_file import CaseFile
 from identify.workbench.case_rows import Job
 from identify.workbench.job_list import next_job
@@ -182,6 +183,26 @@ def test_work_can_be_cancelled(bench: Bench) -> None:
     (told,) = bench.wait()
     assert told["state"] == "cancelled"
     assert 0 < bench.count_queries() < 3000
+
+
+def test_the_chain_is_computed_again_only_when_the_file_has_changed(
+    bench: Bench, folder: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    query_id = bench.paste()
+    assert bench.decide(query_id, kind="note", note="one").status_code == 201
+    computed: list[int] = []
+    monkeypatch.setattr(decisions, "decision_hash", lambda made, _: computed.append(made.seq) or made.hash)
+    for _ in range(3):
+        assert "every hash agrees" in bench.client.get("/trail").text
+        assert bench.client.get("/report").status_code == 200
+    assert computed == [1]
+    monkeypatch.undo()
+    with sqlite3.connect(folder / "lab.ioncase") as other:
+        other.execute("DROP TRIGGER decision_update")
+        other.execute("UPDATE decision SET note = 'other'")
+    other.close()
+    assert "not intact" in bench.client.get("/trail").text
+    assert "Do not sign" in bench.client.get("/report").text
 
 
 def test_a_case_file_that_cannot_be_written_for_a_while_stops_no_work(
