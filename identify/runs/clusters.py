@@ -106,11 +106,14 @@ def _assign(peaks: IonPeaks, weight: FloatArray, centres: FloatArray) -> list[Cl
 
 def _drop_satellites(found: list[Cluster], width: float) -> tuple[Cluster, ...]:
     """Clusters that are not mere scatter of a much larger neighbour's apexes."""
+    apexes, heights = np.array([c.apex for c in found]), np.array([float(c.height.sum()) for c in found])
+    reach = max(1.0, 0.5 * width)
     kept = []
-    for cluster in found:
-        near = [o for o in found if o is not cluster and abs(o.apex - cluster.apex) < max(1.0, 0.5 * width)]
-        larger = max((o.height.sum() for o in near), default=0.0)
+    for place, cluster in enumerate(found):
+        # Clusters come in the order of time: neighbours stand in one piece, and a run of noise has thousands.
+        near = slice(*np.searchsorted(apexes, (cluster.apex - reach, cluster.apex + reach)))
+        larger = float(heights[near].max())
         enough = np.count_nonzero(cluster.signal_to_noise >= 10.0) >= SATELLITE_IONS
-        if cluster.height.sum() >= larger or (enough and cluster.height.sum() >= SATELLITE_SHARE * larger):
+        if heights[place] >= larger or (enough and heights[place] >= SATELLITE_SHARE * larger):
             kept.append(cluster)
     return tuple(kept)
