@@ -31,7 +31,7 @@ def render_html(report: Report, *, date: str = "") -> str:
     str
         A document that loads nothing: its content security policy forbids every request and every script but its own.
     """
-    script = read_template("page.js")
+    script = read_template("details.js") + read_template("page.js")
     return (
         open_templates("identify.report")
         .get_template("page.html")

@@ -83,7 +83,7 @@ def render_run_html(found: RunsReport, *, date: str = "") -> str:
     anchors = {id(finding): f"query-{place}" for place, finding in enumerate(chosen, start=1)}
     report = replace(found.report, identifications=tuple(f.identification for f in chosen if f.identification))
     page = build_page(report, date=date, detailed=DETAILED)
-    script = read_template("run.js")
+    script = read_template("details.js") + read_template("run.js")
     runs = tuple(_run(run, anchors) for run in found.runs)
     names = ", ".join(file_name(run.run.source.path) for run in found.runs)
     return (

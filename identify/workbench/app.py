@@ -121,6 +121,8 @@ def show_refused(request: Request, error: HTTPException) -> Response:
 def _static(name: str) -> str | None:
     if name == "report.css":
         return read_template("page.css") + read_template("plots.css")
+    if name == "report.js":
+        return read_template("details.js")
     if name in ("workbench.css", "workbench.js"):
         return resources.files("identify.workbench").joinpath("static", name).read_text("utf-8")
     return None

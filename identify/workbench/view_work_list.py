@@ -117,6 +117,13 @@ def show_jobs(desk: TheDesk, person: ThePerson) -> dict[str, Any]:
     return {"jobs": [job_line(job) for job in jobs], "is_busy": _is_busy(jobs)}
 
 
+def _find_job(desk: Desk, job_id: int) -> Job:
+    job = find_job(desk.case, job_id)
+    if job is None:
+        raise NotFound("job", found=str(job_id), expected="a known number")
+    return job
+
+
 def show_job(desk: TheDesk, person: ThePerson, request: Request, job_id: Id) -> View:
     """One piece of background work and everything it could not use.
 
@@ -125,9 +132,7 @@ def show_job(desk: TheDesk, person: ThePerson, request: Request, job_id: Id) -> 
     NotFound
         If there is none.
     """
-    job = find_job(desk.case, job_id)
-    if job is None:
-        raise NotFound("job", found=str(job_id), expected="a known number")
+    job = _find_job(desk, job_id)
     rejected = [{**asdict(item), "message": item.message} for item in desk.case.rejections(job_id)]
     return View("job.html", visible_text(job.name), {"job": job_line(job), "rejected": rejected})
 
@@ -140,9 +145,7 @@ def cancel_job(desk: TheDesk, person: ThePerson, request: Request, job_id: Id) -
     NotFound
         If there is none.
     """
-    job = find_job(desk.case, job_id)
-    if job is None:
-        raise NotFound("job", found=str(job_id), expected="a known number")
+    _find_job(desk, job_id)
     workbench_of(request).jobs.cancel(job_id)
     return "/?said=cancelled", {"job": job_id}
 

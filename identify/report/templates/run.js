@@ -140,19 +140,4 @@
     svg.addEventListener("pointercancel", () => { if (box) box.remove(); start = null; });
     draw();
   });
-
-  // A link into a closed part opens it.
-  const reveal = () => {
-    const target = location.hash.length > 1 && document.getElementById(decodeURIComponent(location.hash.slice(1)));
-    const part = target && target.closest("details");
-    if (part) { part.open = true; target.scrollIntoView(); }
-  };
-  addEventListener("hashchange", reveal);
-  reveal();
-  let opened = [];
-  addEventListener("beforeprint", () => {
-    opened = [...document.querySelectorAll("details[data-print]:not([open])")];
-    opened.forEach((part) => { part.open = true; });
-  });
-  addEventListener("afterprint", () => { opened.forEach((part) => { part.open = false; }); opened = []; });
 })();

@@ -4,16 +4,6 @@
   const $ = (selector, root) => (root || document).querySelector(selector);
   const all = (selector, root) => [...(root || document).querySelectorAll(selector)];
 
-  // A link into a closed part opens it.
-  const reveal = () => {
-    const target = location.hash.length > 1 && document.getElementById(decodeURIComponent(location.hash.slice(1)));
-    if (!target) return;
-    const part = target.closest("details");
-    if (part) { part.open = true; target.scrollIntoView(); }
-  };
-  addEventListener("hashchange", reveal);
-  reveal();
-
   // Drop files anywhere on the work list.
   const drop = document.getElementById("drop");
   if (drop) {
@@ -109,12 +99,4 @@
     };
     if (keys[key]) { event.preventDefault(); keys[key](); }
   });
-
-  // On paper, records are always open.
-  let opened = [];
-  addEventListener("beforeprint", () => {
-    opened = all("details[data-print]:not([open])");
-    opened.forEach((part) => { part.open = true; });
-  });
-  addEventListener("afterprint", () => { opened.forEach((part) => { part.open = false; }); opened = []; });
 })();
