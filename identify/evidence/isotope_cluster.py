@@ -251,33 +251,6 @@ def _undecided(mz: int, reason: str) -> ClusterFit:
     return ClusterFit(mz, (), (), (), LOOKED_FOR, 0.0, (0.0,) * len(SHIFTS), reason)
 
 
-def find_clusters(facts: QueryFacts, count: int = 3) -> tuple[int, ...]:
-    """m/z of the all-light peaks of the strongest isotope clusters in the upper half of the spectrum, strongest first.
-
-    Parameters
-    ----------
-    facts : QueryFacts
-    count : int
-        How many at most.
-
-    Returns
-    -------
-    tuple of int
-        Where the molecular ion is missing, these big fragments carry the isotope evidence instead.
-
-    Notes
-    -----
-    A cluster begins at a peak of at least 5 % of base with less than a fifth of its height at each of the three m/z below it.
-    """
-    half = max(facts.top_mz // 2, facts.lowest_mz, 40)
-    starts = [
-        (value, mz)
-        for mz, value in enumerate(facts.dense[half:], start=half)
-        if value >= 5.0 and all(facts.at(mz - step) < 0.2 * value for step in (1, 2, 3))
-    ]
-    return tuple(mz for _, mz in sorted(starts, reverse=True)[:count])
-
-
 def element_words(fit: ClusterFit) -> str:
     """The elements of the best fit as a short text.
 

@@ -8,16 +8,10 @@ function                    answers                                             
 `reverse_score`             is the entry's pattern inside the query?                         its cosine on entry peaks
 `peak_ratio_score`          do neighbouring matched peaks keep their ratio?                  Stein & Scott 1994
 `composite_score`           cosine and peak ratios, weighed by their peak counts             Stein & Scott 1994
-`correlation_score`         do weighted intensities rise and fall together?                  Pearson
-`entropy_score`             how little does mixing the two spectra add to their entropy?     Li et al. 2021
-`overlap_score`             which share of the ion current lies on top of each other?        histogram intersection
-`shared_peaks_score`        which share of all peaks is in both, intensities aside?          Jaccard
-`query_explained_score`     which share of the query's ion current has an entry peak?        plain sum
-`entry_explained_score`     which share of the entry's ion current has a query peak?         plain sum
 =========================== =============================================================== =======================
 
-All but the last two, `reverse_score` and `composite_score` are symmetric in query and entry; none changes when one
-spectrum is multiplied by a constant. Where a score is not defined (a spectrum without peaks in the common m/z range, no
+All but `reverse_score` and `composite_score` are symmetric in query and entry; none changes when one spectrum is
+multiplied by a constant. Where a score is not defined (a spectrum without peaks in the common m/z range, no
 matched peaks) it is 0: nothing there speaks for likeness.
 
 Notes
@@ -28,7 +22,6 @@ References
 ----------
 Stein & Scott 1994, J. Am. Soc. Mass Spectrom. 5:859 (formulas from memory; the abstract was read).
 Kim et al. 2012, Bioinformatics 28:1158 (default exponents, from memory).
-Li et al. 2021, Nat. Methods 18:1524 (formula from memory).
 """
 
 from __future__ import annotations
@@ -36,7 +29,6 @@ from __future__ import annotations
 import math
 
 import numpy as np
-from numpy.typing import NDArray
 
 from identify.records import AlignedPeaks, FloatArray
 from identify.settings import Weighting
@@ -196,153 +188,6 @@ def composite_score(aligned: AlignedPeaks, weighting: Weighting) -> float:
     return (n_query * cosine + n_matched * ratio) / (n_query + n_matched)
 
 
-def correlation_score(aligned: AlignedPeaks, weighting: Weighting) -> float:
-    """Pearson correlation of the weights over all m/z with a peak in either spectrum, negative values as 0.
-
-    Parameters
-    ----------
-    aligned : AlignedPeaks
-        The two spectra on one m/z axis.
-    weighting : Weighting
-        Exponents of the peak weight.
-
-    Returns
-    -------
-    float
-        In [0, 1]; 0 where a spectrum has the same weight everywhere (no correlation defined).
-
-    Examples
-    --------
-    >>> pair = AlignedPeaks(np.array([50.0, 51.0, 52.0]), np.array([1.0, 2.0, 3.0]), np.array([2.0, 4.0, 6.0]), 50)
-    >>> round(correlation_score(pair, Weighting(mz_power=0.0, intensity_power=1.0)), 12)
-    1.0
-    """
-    query, entry = _weighted(aligned, weighting)
-    either = (query > 0) | (entry > 0)
-    if np.count_nonzero(either) < 2:
-        return 0.0
-    query, entry = query[either], entry[either]
-    if np.ptp(query) == 0 or np.ptp(entry) == 0:
-        return 0.0
-    return max(0.0, _signed_cosine(query - query.mean(), entry - entry.mean()))
-
-
-def entropy_score(aligned: AlignedPeaks) -> float:
-    """Unweighted spectral-entropy similarity, in [0, 1].
-
-    ``1 - (2 S((p + r) / 2) - S(p) - S(r)) / ln 4`` with ``p, r`` the spectra scaled to sum 1, ``S`` Shannon's entropy.
-
-    Parameters
-    ----------
-    aligned : AlignedPeaks
-        The two spectra on one m/z axis.
-
-    Returns
-    -------
-    float
-
-    Notes
-    -----
-    Li et al. 2021 reweight spectra of low entropy first; made for tandem spectra, so only a second opinion here.
-
-    Examples
-    --------
-    >>> entropy_score(AlignedPeaks(np.array([50.0, 51.0]), np.array([1.0, 0.0]), np.array([0.0, 1.0]), 50))
-    0.0
-    """
-    if not (aligned.query.any() and aligned.entry.any()):
-        return 0.0
-    query, entry = aligned.query / aligned.query.sum(), aligned.entry / aligned.entry.sum()
-    mixed = _entropy((query + entry) / 2)
-    return _to_unit(1.0 - (2 * mixed - _entropy(query) - _entropy(entry)) / math.log(4.0))
-
-
-def overlap_score(aligned: AlignedPeaks) -> float:
-    """Shared ion current, in [0, 1]: ``Σ min(p, r)`` of the spectra scaled to sum 1.
-
-    Equal to ``1 - Σ |p - r| / 2``, the absolute-value distance turned into a similarity.
-
-    Parameters
-    ----------
-    aligned : AlignedPeaks
-        The two spectra on one m/z axis.
-
-    Returns
-    -------
-    float
-
-    Examples
-    --------
-    >>> overlap_score(AlignedPeaks(np.array([50.0, 51.0]), np.array([1.0, 3.0]), np.array([2.0, 2.0]), 50))
-    0.75
-    """
-    if not (aligned.query.any() and aligned.entry.any()):
-        return 0.0
-    shared = np.minimum(aligned.query / aligned.query.sum(), aligned.entry / aligned.entry.sum())
-    return _to_unit(float(shared.sum()))
-
-
-def shared_peaks_score(aligned: AlignedPeaks) -> float:
-    """Share of all peaks that both spectra have, in [0, 1] (Jaccard's coefficient).
-
-    Parameters
-    ----------
-    aligned : AlignedPeaks
-        The two spectra on one m/z axis.
-
-    Returns
-    -------
-    float
-
-    Examples
-    --------
-    >>> shared_peaks_score(AlignedPeaks(np.array([50.0, 51.0]), np.array([1.0, 3.0]), np.array([2.0, 0.0]), 50))
-    0.5
-    """
-    n_either = int(np.count_nonzero((aligned.query > 0) | (aligned.entry > 0)))
-    return aligned.n_matched / n_either if n_either else 0.0
-
-
-def query_explained_score(aligned: AlignedPeaks) -> float:
-    """Share of the query's ion current at m/z where the entry has a peak, in [0, 1].
-
-    Parameters
-    ----------
-    aligned : AlignedPeaks
-        The two spectra on one m/z axis.
-
-    Returns
-    -------
-    float
-
-    Examples
-    --------
-    >>> query_explained_score(AlignedPeaks(np.array([50.0, 51.0]), np.array([1.0, 3.0]), np.array([2.0, 0.0]), 50))
-    0.25
-    """
-    return _share(aligned.query, aligned.entry > 0)
-
-
-def entry_explained_score(aligned: AlignedPeaks) -> float:
-    """Share of the entry's ion current at m/z where the query has a peak, in [0, 1].
-
-    Parameters
-    ----------
-    aligned : AlignedPeaks
-        The two spectra on one m/z axis.
-
-    Returns
-    -------
-    float
-
-    Examples
-    --------
-    >>> entry_explained_score(AlignedPeaks(np.array([50.0, 51.0]), np.array([0.0, 3.0]), np.array([1.0, 4.0]), 50))
-    0.8
-    """
-    return _share(aligned.entry, aligned.query > 0)
-
-
 def _weighted(aligned: AlignedPeaks, weighting: Weighting) -> tuple[FloatArray, FloatArray]:
     return (
         peak_weights(aligned.mz, aligned.query, weighting),
@@ -351,23 +196,9 @@ def _weighted(aligned: AlignedPeaks, weighting: Weighting) -> tuple[FloatArray, 
 
 
 def _cosine(query: FloatArray, entry: FloatArray) -> float:
-    return _to_unit(_signed_cosine(query, entry))
-
-
-def _signed_cosine(query: FloatArray, entry: FloatArray) -> float:
     # Two square roots, not the root of a product: the product of two small norms can underflow to 0.
     norm = math.sqrt(float(query @ query)) * math.sqrt(float(entry @ entry))
-    return min(1.0, float(query @ entry) / norm) if norm > 0 else 0.0
-
-
-def _entropy(shares: FloatArray) -> float:
-    present = shares[shares > 0]
-    return float(-(present * np.log(present)).sum())
-
-
-def _share(intensity: FloatArray, counted: NDArray[np.bool_]) -> float:
-    total = float(intensity.sum())
-    return _to_unit(float(intensity[counted].sum()) / total) if total > 0 else 0.0
+    return _to_unit(float(query @ entry) / norm) if norm > 0 else 0.0
 
 
 def _to_unit(value: float) -> float:
