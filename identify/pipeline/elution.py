@@ -15,7 +15,7 @@ from math import log
 
 from identify.chem.formula import Formula, parse_formula
 from identify.errors import FormulaError
-from identify.pipeline.joint import COMPOUND_LEVELS, claim_what_is_left, lower_claim
+from identify.pipeline.run_claims import COMPOUND_LEVELS, claim_what_is_left, lower_claim
 from identify.records import Candidate, ClaimLevel, EvidenceItem, Explanation, Identification, Verdict
 from identify.retention import linear_index
 from identify.runs.findings import Finding, RetentionScale

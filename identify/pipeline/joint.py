@@ -1,8 +1,8 @@
 """Identifications of one run seen together: what each says alone must fit what the others say.
 
 One compound per peak and one peak per compound; the order of elution must fit known retention indices and the order within a
-homologous series. Where it does not, claims are lowered, never raised: agreement among neighbours is no evidence of its own.
-(Classes, which do rest on the run as well, are named in `run_classes` and say so.)
+homologous series. Where it does not, claims are lowered; agreement among neighbours is no evidence of its own and raises none.
+(`elution` has judged each peak by its time before, `run_classes` names classes, which do rest on the run as well and say so.)
 """
 
 from __future__ import annotations
@@ -10,14 +10,12 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import replace
 
-from identify.chem.constitution import is_only_isomer
-from identify.ranking.claim import PUBLISHED_LEVELS, percent
-from identify.records import Candidate, Claim, ClaimLevel, Identification, Verdict
+from identify.pipeline.run_claims import COMPOUND_LEVELS, claim_group, lower_claim
+from identify.records import Candidate, ClaimLevel, Verdict
 from identify.retention import doubt_about_index, phase_class, series_key
 from identify.runs.findings import Finding
 from identify.settings import Settings
 
-COMPOUND_LEVELS = (ClaimLevel.SUPPORTED, ClaimLevel.TENTATIVE)
 RIVAL_PROBABILITY = 0.25
 RIVAL_AREA_SHARE = 0.01
 """A second peak with the same best compound counts from this probability and this share of the claimed peak's area."""
@@ -68,43 +66,7 @@ def _without_mixture_doubt(finding: Finding, threshold: float) -> Finding:
     if not (doubted and formula and claim.group_probability >= threshold):
         return finding
     note = "The peak is overloaded and its ion ratios drift: that two entries explain it better than one is no sign of a mixture."
-    return replace(finding, identification=replace(_claim_group(found), notes=(*found.notes, note)))
-
-
-def lower_claim(found: Identification, reason: str, threshold: float) -> Identification:
-    """The identification with its claim below the compound level, and a note that says why.
-
-    Parameters
-    ----------
-    found : Identification
-    reason : str
-        A sentence.
-    threshold : float
-        Probability that the isomer group must reach to be claimed.
-
-    Returns
-    -------
-    Identification
-        Claims that are not at compound level only get the note.
-    """
-    notes = (*found.notes, reason)
-    claim, best = found.claim, found.candidates[0] if found.candidates else None
-    if claim.level not in COMPOUND_LEVELS or best is None:
-        return replace(found, notes=notes)
-    formula = best.entry.formula_as_measured
-    group = [c for c in found.candidates if c is best or c.entry.formula_as_measured == formula]
-    if formula and claim.group_probability >= threshold:
-        level, probability = ClaimLevel.ISOMER_GROUP, claim.group_probability
-        text = f"One of the isomers of {formula}; best match {best.entry.identity.name}, which the run as a whole does not allow."
-    else:
-        level, probability, group = ClaimLevel.NO_CLAIM, 1.0 - found.in_library_probability, []
-        text = f"No claim: the best match, {best.entry.identity.name}, does not fit the run as a whole."
-    msi, schymanski = PUBLISHED_LEVELS[level]
-    lowered = replace(
-        claim, level=level, statement=text, probability=probability, msi_2007=msi, schymanski_2014=schymanski,
-        members=tuple(c.entry.identity.name for c in group),
-    )  # fmt: skip
-    return replace(found, claim=lowered, notes=notes)
+    return replace(finding, identification=replace(claim_group(found), notes=(*found.notes, note)))
 
 
 def compound_key(candidate: Candidate) -> str:
@@ -227,83 +189,3 @@ def _misfits(rows: Sequence[tuple[int, float, float]], fits: Callable[[float, fl
         chain.add(step)
         step = previous[step]
     return [rows[place][0] for place in range(len(rows)) if place not in chain]
-
-
-def claim_class(found: Identification, name: str, probability: float) -> Identification:
-    """The identification with a claim at class level where it had none.
-
-    Parameters
-    ----------
-    found : Identification
-    name : str
-        The class, as a noun phrase.
-    probability : float
-        In [0, 1].
-
-    Returns
-    -------
-    Identification
-    """
-    msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.CLASS]
-    shown = percent(probability)
-    claim = Claim(
-        ClaimLevel.CLASS, f"{_capitalized(name)}, no single compound ({shown}).", probability, (name,),
-        compound_probability=found.claim.compound_probability, group_probability=found.claim.group_probability,
-        class_probability=probability, msi_2007=msi, schymanski_2014=schymanski,
-    )  # fmt: skip
-    return replace(found, claim=claim)
-
-
-def _capitalized(name: str) -> str:
-    """A class as it begins a sentence; the prefix of "n-alkane" stays small."""
-    prefix, hyphen, rest = name.partition("-") if name[1:2] == "-" else ("", "", name)
-    return f"{prefix}{hyphen}{rest[:1].upper()}{rest[1:]}"
-
-
-def claim_what_is_left(found: Identification, threshold: float) -> Identification:
-    """The identification with the strongest claim that the probabilities of its claim allow: compound, isomer group, none.
-
-    Parameters
-    ----------
-    found : Identification
-        With at least one candidate, and no claim: what the run as a whole adds has changed its probabilities.
-    threshold : float
-
-    Returns
-    -------
-    Identification
-    """
-    best = found.candidates[0]
-    if best.probability >= threshold:
-        return _claim_compound(found)
-    if best.entry.formula_as_measured and found.claim.group_probability >= threshold:
-        return _claim_group(found)
-    text = f"No claim: the best match, {best.entry.identity.name}, reaches {percent(best.probability)} only."
-    claim = replace(found.claim, statement=text, probability=1.0 - found.in_library_probability, members=())
-    return replace(found, claim=claim)
-
-
-def _claim_group(found: Identification) -> Identification:
-    formula, claim = found.candidates[0].entry.formula_as_measured, found.claim
-    if is_only_isomer(formula):
-        return _claim_compound(found)
-    names = tuple(c.entry.identity.name for c in found.candidates if c.entry.formula_as_measured == formula)
-    msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.ISOMER_GROUP]
-    text = f"One of the isomers of {formula} ({percent(claim.group_probability)}): {'; '.join(names)}."
-    group = replace(
-        claim, level=ClaimLevel.ISOMER_GROUP, statement=text, probability=claim.group_probability, members=names,
-        msi_2007=msi, schymanski_2014=schymanski,
-    )  # fmt: skip
-    return replace(found, claim=group)
-
-
-def _claim_compound(found: Identification) -> Identification:
-    best = found.candidates[0]
-    msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.TENTATIVE]
-    shown = percent(best.probability)
-    claim = Claim(
-        ClaimLevel.TENTATIVE, f"{best.entry.identity.name}: library match and the run as a whole ({shown}).", best.probability,
-        (best.entry.identity.name,), best.probability, max(best.probability, found.claim.group_probability),
-        max(best.probability, found.claim.class_probability), msi_2007=msi, schymanski_2014=schymanski,
-    )  # fmt: skip
-    return replace(found, claim=claim)

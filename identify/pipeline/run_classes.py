@@ -25,7 +25,7 @@ import numpy as np
 
 from identify.chem.structures import compound_classes
 from identify.errors import StructureError
-from identify.pipeline.joint import claim_class
+from identify.pipeline.run_claims import claim_class
 from identify.ranking.claim import percent
 from identify.records import Candidate, ClaimLevel, Identification
 from identify.retention import linear_index

@@ -60,38 +60,6 @@ class RunOptions:
     self_calibrate: bool = True
 
 
-def run_file(
-    path: Path,
-    library_paths: Sequence[Path],
-    settings: Settings,
-    *,
-    blank: Path | None = None,
-    ladder: Ladder | None = None,
-    progress: Progress | None = None,
-) -> RunsReport:
-    """Everything that eluted in one run, with names; see `run_files`.
-
-    Parameters
-    ----------
-    path : Path
-    library_paths : sequence of Path
-    settings : Settings
-    blank : Path, optional
-    ladder : Ladder, optional
-    progress : callable, optional
-
-    Returns
-    -------
-    RunsReport
-
-    Raises
-    ------
-    InputError, LibraryError, UsageError
-        If the run, the blank or a library cannot be used.
-    """
-    return run_files([path], library_paths, settings, RunOptions(blank=blank, ladder=ladder), progress)
-
-
 def run_files(
     paths: Sequence[Path],
     library_paths: Sequence[Path],

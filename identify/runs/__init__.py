@@ -1,7 +1,8 @@
 """Here is a run: what eluted, when, how much, and with which spectrum?
 
-    Run ──build_ion_matrix──► IonMatrix ──split_background──► signal + background + noise model
-        ──find_ion_peaks──► apex times per ion ──find_components──► Component (spectrum, area, shape, purity)
+    Run ──traces──► ion traces, background, noise ──overload──► solvent fronts taken out ──ion_peaks──► apex of each ion peak
+        ──clusters──► moments of elution ──shapes, components──► Component (spectrum, area, purity)
+        ──hidden, flanks──► what the shapes left over: peaks without a common apex, fronts, tails ──kinds──► air, bleed …
 
-Not for: reading files (`readers`), naming components (`pipeline_runs` calls the same search as for any query), drawing.
+Not for: reading files (`readers`), naming components (`pipeline.runs` calls the same search as for any query), drawing.
 """

@@ -1,4 +1,4 @@
-"""Identifications of one run seen together: claims that contradict each other are lowered, none is raised."""
+"""Identifications of one run seen together: claims that contradict each other are lowered."""
 
 from __future__ import annotations
 

@@ -11,7 +11,7 @@ from pathlib import Path
 
 import pytest
 
-from identify.pipeline.runs import run_file
+from identify.pipeline.runs import RunOptions, run_files
 from identify.records import ClaimLevel
 from identify.runs.findings import Finding, RunsReport
 from identify.runs.model import ComponentKind
@@ -39,7 +39,8 @@ def petrol(shared_data: Path, tmp_path_factory: pytest.TempPathFactory) -> RunsR
     source = shared_data / "massbank-2025.05.1-ei.zip"
     build_library(path, [source], licences="all", who="test", when=datetime(2026, 1, 1, tzinfo=UTC))
     began = time.perf_counter()
-    found = run_file(shared_data / "runs" / "petrol-in-dichloromethane.cdf", [path], Settings())
+    run = shared_data / "runs" / "petrol-in-dichloromethane.cdf"
+    found = run_files([run], [path], Settings(), RunOptions())
     print(f"petrol run: {time.perf_counter() - began:.1f} s")
     return found
 
