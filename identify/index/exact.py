@@ -57,7 +57,7 @@ def _score_chunk(
 
     def total(values: FloatArray) -> FloatArray:
         # bincount adds in order of position; it answers integers when there is nothing to count.
-        return np.bincount(owner, weights=values, minlength=rows.size).astype(np.float64)
+        return np.bincount(owner, weights=values, minlength=rows.size).astype(np.float64, copy=False)
 
     dot, entry_square, matched_square = total(matched * entry), total(entry * entry), total(matched * matched)
     query_square = query.square_from(np.maximum(segment.lowest_mz[rows], np.uint16(query.lowest_mz)))

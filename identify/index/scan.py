@@ -162,12 +162,14 @@ def _sum_columns(segment: Segment, query: WeighedQuery) -> tuple[FloatArray, Flo
     for block in range(segment.n_blocks):
         here = slice(block * BLOCK_ENTRIES, (block + 1) * BLOCK_ENTRIES)
         columns = touched[is_dense & (block_of[touched] == block)]
-        codes = dense[segment.column_at[columns] // BLOCK_ENTRIES].astype(np.float32)
+        codes = dense[segment.column_at[columns] // BLOCK_ENTRIES]
         q, low = weight[columns], mz[columns] < query.lowest_mz
         # einsum, not a matrix product: too small for threads to help, and they would fight with other work.
-        dot[here] += np.einsum("i,ij->j", q, codes)
+        dot[here] += np.einsum("i,ij->j", q, codes.astype(np.float32))
         matched[here] += np.einsum("i,ij->j", q * q, (codes > 0).astype(np.float32))
-        below[here] += np.einsum("ij,ij->j", codes[low], codes[low], dtype=np.float64)
+        if low.any():
+            lost = codes[low].astype(np.float64)
+            below[here] += np.einsum("ij,ij->j", lost, lost)
     return dot[: segment.n_entries], matched[: segment.n_entries], below[: segment.n_entries]
 
 
@@ -184,9 +186,10 @@ def _sum_postings(
 
     def total(values: FloatArray) -> FloatArray:
         # Cut, because the two-byte row of a damaged posting may reach further; integers where there is nothing to count.
-        return np.bincount(rows, weights=values, minlength=n_rows)[:n_rows].astype(np.float64)
+        return np.bincount(rows, weights=values, minlength=n_rows)[:n_rows].astype(np.float64, copy=False)
 
-    return total(q * code), total(q * q), total(np.where(q > 0, 0.0, code * code))
+    low = q == 0
+    return total(q * code), total(q * q), total(np.where(low, code * code, 0.0)) if low.any() else np.zeros(n_rows)
 
 
 def _weight_of(mz: NDArray[np.int64], query: WeighedQuery) -> Float32Array:
