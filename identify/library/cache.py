@@ -80,7 +80,7 @@ def load_index(library: Library, weighting: Weighting, *, save: bool = True) -> 
             current = merge_index(current)
             save_index(library, current, now)
         return current
-    index = build_index(library.iter_peaks(), weighting)
+    index = build_index(library.iter_peaks(library.entry_ids()), weighting)
     if save and library.as_of is None:
         save_index(library, index, now)
     return index
@@ -147,7 +147,7 @@ def _bring_up_to_date(library: Library, index: SearchIndex, event: str) -> Searc
     missing = np.setdiff1d(wanted, held, assume_unique=True)
     surplus = np.setdiff1d(held, wanted, assume_unique=True)
     if missing.size:
-        index = add_entries(index, library.peaks_of(missing.tolist()))
+        index = add_entries(index, library.iter_peaks(missing.tolist()))
     return hide_entries(index, surplus.tolist()) if surplus.size else index
 
 

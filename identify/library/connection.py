@@ -16,7 +16,7 @@ from identify.errors import (
     LibraryMissing,
     LibraryVersionError,
 )
-from identify.library.schema import APPLICATION_ID, SCHEMA_VERSION, expected_objects, schema_objects
+from identify.library.schema import APPLICATION_ID, SCHEMA_VERSION, find_schema_faults
 
 BUSY_TIMEOUT_S = 5.0
 MAX_ROW_BYTES = 64 * 2**20
@@ -141,13 +141,11 @@ def connect(path: Path, *, writable: bool, busy_timeout_s: float = BUSY_TIMEOUT_
 
 def _check_rules(connection: sqlite3.Connection, path: Path) -> None:
     """Refuse to write where the triggers that protect what is written are gone."""
-    found, expected = schema_objects(connection), expected_objects()
-    for name in sorted(found.keys() | expected.keys()):
-        if found.get(name) != expected.get(name):
-            raise LibraryDamaged(
-                "library", where=str(path), found=f"{name} changed, missing or added", expected="the tables and rules as made",
-                hint="Somebody changed the file with another program: run `ionwitness library verify`, restore a backup.",
-            )  # fmt: skip
+    for name, fault in find_schema_faults(connection):
+        raise LibraryDamaged(
+            "library", where=str(path), found=f"{name}, which {fault}", expected="the tables and rules as made",
+            hint="Somebody changed the file with another program: run `ionwitness library verify`, restore a backup.",
+        )  # fmt: skip
 
 
 def keep_log(connection: sqlite3.Connection) -> None:

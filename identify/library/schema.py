@@ -13,7 +13,7 @@ is no part of the state a search depends on and has a chain of hashes of its own
 from __future__ import annotations
 
 import sqlite3
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from functools import cache
 from types import MappingProxyType
 from typing import NamedTuple
@@ -203,6 +203,18 @@ def schema_objects(connection: sqlite3.Connection) -> dict[str, str]:
     """Name and SQL text of every table, index and trigger of the program's own."""
     rows = connection.execute("SELECT name, sql FROM sqlite_master WHERE sql IS NOT NULL AND name NOT LIKE 'sqlite_%'")
     return {str(name): str(sql) for name, sql in rows}
+
+
+def find_schema_faults(connection: sqlite3.Connection, version: int = SCHEMA_VERSION) -> Iterator[tuple[str, str]]:
+    """Name of every table, index or trigger that is not as `version` made it, and what is wrong with it."""
+    found, expected = schema_objects(connection), expected_objects(version)
+    for name in sorted(found.keys() | expected.keys()):
+        if name not in found:
+            yield name, "is missing"
+        elif name not in expected:
+            yield name, "does not belong to a library"
+        elif found[name] != expected[name]:
+            yield name, "was changed"
 
 
 @cache

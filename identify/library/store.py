@@ -7,17 +7,14 @@ event, whatever is committed later.
 from __future__ import annotations
 
 import sqlite3
-import threading
 from collections import OrderedDict
 from collections.abc import Collection, Iterator, Sequence
-from contextlib import contextmanager
 from pathlib import Path
-from types import TracebackType
-from typing import Any, Self
+from typing import Any
 
-from identify.errors import LibraryDamaged, LibraryError, UsageError, quote
-from identify.library.connection import BUSY_TIMEOUT_S, connect, transaction, translated
-from identify.library.events import Event, read_events
+from identify.errors import LibraryError, UsageError, quote
+from identify.library.connection import BUSY_TIMEOUT_S, connect, translated
+from identify.library.library_file import LibraryFile
 from identify.library.rows import ENTRY_COLUMNS, RECORD_COLUMNS, entry_of, peaks_of, record_of
 from identify.records import Entry, EntryStatus, LibraryState, Peaks, SpectrumRecord
 
@@ -27,7 +24,6 @@ MAX_CACHED_ENTRIES = 20_000
 _ENTRY_SELECT = f"SELECT {', '.join(ENTRY_COLUMNS)} FROM entry"  # noqa: S608  (constant column names)
 _RECORD_SELECT = f"SELECT {', '.join('entry.' + name for name in RECORD_COLUMNS)}, mz, intensity FROM entry"  # noqa: S608
 _BATCH = 500
-_LATEST = 2**62
 
 
 def open_library(
@@ -74,6 +70,11 @@ def _marks(values: Collection[object]) -> str:
     return ", ".join("?" * len(values))
 
 
+def _batches(ids: Sequence[int]) -> Iterator[Sequence[int]]:
+    """Ids in lots that a statement has room for."""
+    return (ids[start : start + _BATCH] for start in range(0, len(ids), _BATCH))
+
+
 def _find_event(connection: sqlite3.Connection, wanted: int | str, path: Path) -> int:
     text, rows = str(wanted).strip().lower(), []
     if text.isdecimal() and len(text) < 16:
@@ -90,131 +91,16 @@ def _find_event(connection: sqlite3.Connection, wanted: int | str, path: Path) -
     return int(rows[0][0])
 
 
-class Library:
-    """Entries of one library file; made by `open_library`.
-
-    Attributes
-    ----------
-    path : Path
-    writable : bool
-    as_of : int or None
-        Last event that is taken into account; None for whatever is committed.
-    """
+class Library(LibraryFile):
+    """Entries of one library file; made by `open_library`."""
 
     def __init__(self, path: Path, connection: sqlite3.Connection, writable: bool, as_of: int | None) -> None:
-        self.path, self.writable, self.as_of = path, writable, as_of
-        self._connection = connection
-        self._lock = threading.RLock()
+        super().__init__(path, connection, writable, as_of)
         self._cache: OrderedDict[int, Entry] = OrderedDict()
-        self._standing: dict[int, EntryStatus] = {}
-        self._data_version = -1
-
-    def __enter__(self) -> Self:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        self.close()
-
-    def close(self) -> None:
-        """Close the file; a second call does nothing."""
-        with self._lock, translated(self.path):
-            self._connection.close()
-
-    @contextmanager
-    def reading(self) -> Iterator[sqlite3.Connection]:
-        """The connection, locked to this thread, with what is cached brought up to date.
-
-        Raises
-        ------
-        LibraryError
-            Translated from sqlite3.
-        """
-        with self._lock, translated(self.path):
-            (version,) = self._connection.execute("PRAGMA data_version").fetchone()
-            if version != self._data_version:
-                self._forget()
-                self._data_version = version
-            yield self._connection
-
-    @contextmanager
-    def writing(self) -> Iterator[sqlite3.Connection]:
-        """The connection inside one transaction: all of the block is committed, or nothing.
-
-        Raises
-        ------
-        UsageError
-            If the library was opened for reading.
-        LibraryBusy, LibraryError
-            Translated from sqlite3.
-        """
-        if not self.writable:
-            raise UsageError("library", where=str(self.path), found="opened for reading", expected="opened for writing")
-        with self._lock, translated(self.path):
-            try:
-                with transaction(self._connection):
-                    yield self._connection
-            finally:
-                self._data_version = -1
 
     def _forget(self) -> None:
         self._cache.clear()
-        rows = self._connection.execute(
-            "SELECT entry_id, status FROM standing WHERE event_seq <= ? ORDER BY event_seq", (self.last_event,)
-        )
-        self._standing = {entry_id: self._status(status) for entry_id, status in rows}
-
-    @property
-    def last_event(self) -> int:
-        """Number of the last event taken into account; very large when that is whatever is committed."""
-        return _LATEST if self.as_of is None else self.as_of
-
-    def _status(self, text: str) -> EntryStatus:
-        try:
-            return EntryStatus(text)
-        except ValueError:
-            raise LibraryError(
-                "entry status", where=str(self.path), found=quote(text), expected="a known standing"
-            ) from None
-
-    @property
-    def fingerprint(self) -> str:
-        """Hash of the last event (or of event `as_of`): 64 hexadecimal digits.
-
-        Raises
-        ------
-        LibraryError
-            If there is no event.
-        """
-        return self._hash_of_event(self.last_event)
-
-    def _hash_of_event(self, last: int) -> str:
-        """Hash of event `last`, or of the last one before it."""
-        with self.reading() as connection:
-            row = connection.execute(
-                "SELECT hash FROM event WHERE seq <= ? ORDER BY seq DESC LIMIT 1", (last,)
-            ).fetchone()
-        if row is None:
-            raise LibraryError("library", where=str(self.path), found="no event", expected="at least one")
-        return str(row[0])
-
-    @property
-    def search_fingerprint(self) -> str:
-        """Hash of the last event that changed what a search can find; names a search index.
-
-        Raises
-        ------
-        LibraryError
-            If there is no event.
-        """
-        with self.reading() as connection:
-            (last,) = connection.execute(
-                "SELECT max(seq) FROM (SELECT max(event_seq) AS seq FROM entry WHERE event_seq <= ?"
-                " UNION ALL SELECT max(event_seq) FROM standing WHERE event_seq <= ?)",
-                (self.last_event, self.last_event),
-            ).fetchone()
-        return self._hash_of_event(last or 1)
+        super()._forget()
 
     def state(self) -> LibraryState:
         """Fingerprint, and how many searchable entries and compounds there are."""
@@ -232,9 +118,7 @@ class Library:
     def _moved_compounds(self, connection: sqlite3.Connection) -> tuple[list[int], list[int]]:
         """Compound of every searchable entry, as the entries came and as they stand, for the compounds that changed."""
         before, after, compounds = list[int](), list[int](), set[int]()
-        moved = list(self._standing)
-        for start in range(0, len(moved), _BATCH):
-            batch = moved[start : start + _BATCH]
+        for batch in _batches(list(self._standing)):
             rows = connection.execute(f"SELECT compound_id FROM entry WHERE id IN ({_marks(batch)})", batch)  # noqa: S608
             compounds.update(row[0] for row in rows)
         for compound in compounds:
@@ -246,28 +130,6 @@ class Library:
                 before += [compound] * (status in SEARCHABLE)
                 after += [compound] * (self._standing.get(entry, status) in SEARCHABLE)
         return before, after
-
-    def standings(self) -> dict[int, EntryStatus]:
-        """Present standing of the entries that events have moved from the one they came with, by entry id."""
-        with self.reading():
-            return dict(self._standing)
-
-    def events(self) -> list[Event]:
-        """Events in order.
-
-        Raises
-        ------
-        LibraryDamaged
-            If a field of one is no text.
-        """
-        with self.reading() as connection:
-            events = list(read_events(connection, self.as_of))
-        for event in events:
-            fields = (event.at, event.who, event.kind, event.reason, event.content, event.hash)
-            if not all(isinstance(text, str) for text in fields):  # a flipped bit in the file
-                found = f"event {event.seq} with a field that is no text"
-                raise LibraryDamaged("library", where=str(self.path), found=found, expected="text")
-        return events
 
     def entry_ids(self, statuses: Collection[EntryStatus] = SEARCHABLE) -> list[int]:
         """Ids of the entries with one of these standings, ascending."""
@@ -301,8 +163,7 @@ class Library:
             cache = self._cache
             wanted = [entry_id for entry_id in ids if entry_id not in cache]
             found = {entry_id: cache[entry_id] for entry_id in ids if entry_id in cache}
-            for start in range(0, len(wanted), _BATCH):
-                batch = wanted[start : start + _BATCH]
+            for batch in _batches(wanted):
                 rows = connection.execute(
                     f"{_ENTRY_SELECT} WHERE id IN ({_marks(batch)}) AND event_seq <= ?", (*batch, self.last_event)
                 )
@@ -330,7 +191,7 @@ class Library:
         LibraryDamaged
             If an entry cannot be decoded.
         """
-        for batch in self._batches(statuses):
+        for batch in _batches(self.entry_ids(statuses)):
             with self.reading() as connection:
                 rows = connection.execute(
                     f"{_ENTRY_SELECT} WHERE id IN ({_marks(batch)}) ORDER BY id", batch
@@ -338,26 +199,20 @@ class Library:
                 entries = [self._decode(row) for row in rows]
             yield from entries
 
-    def iter_peaks(self, statuses: Collection[EntryStatus] = SEARCHABLE) -> Iterator[tuple[int, Peaks, int]]:
-        """Entry id, nominal peaks and lowest m/z, by ascending id: what an index is built from.
+    def iter_peaks(self, ids: Sequence[int] | None = None) -> Iterator[tuple[int, Peaks, int]]:
+        """Entry id, nominal peaks and lowest m/z of entries, by ascending id: what an index is built from.
+
+        Parameters
+        ----------
+        ids : sequence of int, optional
+            Ascending; all searchable entries by default.
 
         Raises
         ------
         LibraryDamaged
             If the peaks cannot be decoded.
         """
-        return self.peaks_of(self.entry_ids(statuses))
-
-    def peaks_of(self, ids: Sequence[int]) -> Iterator[tuple[int, Peaks, int]]:
-        """As `iter_peaks`, for ascending `ids`.
-
-        Raises
-        ------
-        LibraryDamaged
-            If the peaks cannot be decoded.
-        """
-        for start in range(0, len(ids), _BATCH):
-            batch = ids[start : start + _BATCH]
+        for batch in _batches(self.entry_ids() if ids is None else ids):
             with self.reading() as connection:
                 rows = connection.execute(
                     "SELECT id, nominal_mz, nominal_intensity, lowest_mz FROM entry"  # noqa: S608
@@ -366,11 +221,6 @@ class Library:
                 ).fetchall()
             for entry_id, mz, intensity, lowest_mz in rows:
                 yield entry_id, peaks_of(mz, intensity, f"{self.path}, entry {entry_id}"), lowest_mz
-
-    def _batches(self, statuses: Collection[EntryStatus]) -> Iterator[list[int]]:
-        ids = self.entry_ids(statuses)
-        for start in range(0, len(ids), _BATCH):
-            yield ids[start : start + _BATCH]
 
     def get_records(self, ids: Sequence[int]) -> list[SpectrumRecord]:
         """Records the entries were made of, in the order of `ids`: source peaks and metadata as stated.

@@ -18,7 +18,7 @@ from identify.library.events import Event, find_chain_fault, read_events, sha256
 from identify.library.insertion import digest_of
 from identify.library.reported import find_reported_fault
 from identify.library.rows import CONTENT_COLUMNS, content_hash
-from identify.library.schema import SCHEMA_VERSION, expected_objects, schema_objects
+from identify.library.schema import SCHEMA_VERSION, find_schema_faults
 
 Progress = Callable[[int, str], None]
 MAX_PROBLEMS = 100
@@ -111,7 +111,7 @@ def verify_library(path: Path | str, *, progress: Progress | None = None) -> Ver
 
 
 def _find_problems(connection: sqlite3.Connection, version: int, progress: Progress | None) -> Iterator[Problem]:
-    strange = list(_check_schema(connection, version))
+    strange = [Problem("schema", f"{name} {fault}") for name, fault in find_schema_faults(connection, version)]
     if strange:
         yield from strange
         return  # everything else reads these tables
@@ -135,17 +135,6 @@ def _check_file(connection: sqlite3.Connection) -> Iterator[Problem]:
             yield Problem("file", str(message).replace("\n", " "))
     for table, rowid, parent, _ in connection.execute("PRAGMA foreign_key_check"):
         yield Problem("file", f"row {rowid} of {table} points at a missing row of {parent}")
-
-
-def _check_schema(connection: sqlite3.Connection, version: int) -> Iterator[Problem]:
-    found, expected = schema_objects(connection), expected_objects(min(version, SCHEMA_VERSION))
-    for name in sorted(found.keys() | expected.keys()):
-        if name not in found:
-            yield Problem("schema", f"{name} is missing")
-        elif name not in expected:
-            yield Problem("schema", f"{name} does not belong to a library")
-        elif found[name] != expected[name]:
-            yield Problem("schema", f"{name} was changed")
 
 
 def _check_entries(connection: sqlite3.Connection, progress: Progress | None) -> Iterator[Problem]:

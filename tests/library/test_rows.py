@@ -56,6 +56,6 @@ def test_events_whose_fields_are_no_text_are_damage(tmp_path: Path, monkeypatch:
     with open_library(path) as library:
         (event, *rest) = library.events()
         odd = Event(event.seq, event.at, event.who, event.kind, None, *[""] * 4)  # type: ignore[arg-type]
-        monkeypatch.setattr("identify.library.store.read_events", lambda *_: iter([odd, *rest]))
+        monkeypatch.setattr("identify.library.library_file.read_events", lambda *_: iter([odd, *rest]))
         with pytest.raises(LibraryDamaged, match="event 1 with a field that is no text"):
             library.events()
