@@ -245,16 +245,17 @@ def name_class(
         return found
     threshold = settings.claim_threshold
     votes = _votes(found.candidates)
+    carbons = _alkane_in_order(component, scale) if threshold <= ALKANE_PROBABILITY else None
+    alkane = f"alkane with {carbons} carbons by ion series and molecular ion" if carbons else ""
     for name in _most_telling_first(found.candidates):
         probability = _class_probability(found.candidates, name)
         if votes.get(name, 0.0) >= VOTE_NEEDED.get(name, VOTE_NEEDED_OTHERWISE):
             probability = max(probability, VOTE_PROBABILITY)
         if probability >= threshold:
+            if name == HYDROCARBON and alkane:
+                break  # The carbon number tells more.
             return claim_class(found, name, min(probability, 1.0))
-    carbons = _alkane_in_order(component, scale)
-    if carbons and threshold <= ALKANE_PROBABILITY:
-        return claim_class(found, f"alkane with {carbons} carbons by ion series and molecular ion", ALKANE_PROBABILITY)
-    return found
+    return claim_class(found, alkane, ALKANE_PROBABILITY) if alkane else found
 
 
 def _alkane_in_order(component: Component, scale: RetentionScale | None) -> int | None:

@@ -120,6 +120,17 @@ def test_an_alkane_with_a_strange_ion_is_named_only_where_the_order_of_elution_f
     assert name_class(made.identification, made.component, Settings()).claim.level is ClaimLevel.NO_CLAIM
 
 
+def test_an_alkane_of_known_carbon_number_is_not_called_a_mere_hydrocarbon() -> None:
+    made = with_ions(finding((ALKANE, 0.5, 0.9), ("CC1=CCCC1", 0.48, 0.9)), BRANCHED | {58: 2}, 5.6)
+    scale = RetentionScale(Ladder((5, 7, 9), (3.0, 5.0, 7.0)), "by hand", 5.0)
+    for rungs, start in (
+        (scale, "Alkane with 8 carbons"),
+        (replace(scale, ladder=Ladder((9, 11), (3.0, 5.0))), "Hydro"),
+    ):
+        claim = name_class(made.identification, made.component, Settings(), rungs).claim
+        assert claim.statement.startswith(start)
+
+
 def test_the_share_of_a_class_is_estimated_cautiously() -> None:
     # 40 certain members of 50: the Wilson limit of 0.8 with n = 50 and z = 1.645 is 0.692, by hand.
     assert abs(estimate_share([1.0] * 40 + [0.0] * 10, 0.04) - 0.692) < 0.002
