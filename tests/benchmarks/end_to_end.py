@@ -6,6 +6,7 @@
 from __future__ import annotations
 
 import argparse
+import compileall
 import os
 import resource
 import subprocess
@@ -15,6 +16,7 @@ import time
 import zipfile
 from pathlib import Path
 
+import identify
 from identify.pipeline.batch import map_identifications
 from identify.pipeline.search import identify_records, open_libraries
 from identify.readers import read_spectra
@@ -39,6 +41,7 @@ def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--queries", type=int, default=400)
     n_queries: int = parser.parse_args().queries
+    compileall.compile_dir(Path(identify.__file__).parent, quiet=1)  # as an installation does
     with tempfile.TemporaryDirectory() as name:
         folder = Path(name)
         library = folder / "all.ionlib"
