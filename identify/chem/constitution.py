@@ -58,6 +58,14 @@ def has_one_constitution(formula: Formula) -> bool:
 def is_only_isomer(formula_text: str) -> bool:
     """`has_one_constitution` of a formula as text; False where it cannot be read or is empty.
 
+    Parameters
+    ----------
+    formula_text : str
+
+    Returns
+    -------
+    bool
+
     Examples
     --------
     >>> is_only_isomer("CHCl3"), is_only_isomer("C8H10"), is_only_isomer("")

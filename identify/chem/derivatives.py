@@ -97,7 +97,7 @@ _TOKEN: Final = re.compile(rf"(?:{_NUMBER}\s*[-x(]?\s*)?(?P<group>{_ANY_GROUP}|t
 _BETWEEN: Final = re.compile(r"[\s,+/_&]+|and\b", re.IGNORECASE)
 # A numbered group behind a name: "glucose 5TMS", "alanine, 2 TMS derivative", "serine_3TMS".
 _BEHIND: Final = re.compile(
-    rf"(?<![A-Za-z0-9.'’)\]-])(?:(?<=_)|\b)?{_NUMBER}[\s-]?\(?(?P<group>{_CAPITALS})\)?(?![A-Za-z0-9]|-(?!deriv))"
+    rf"(?<![A-Za-z0-9.'’)\]-]){_NUMBER}[\s-]?\(?(?P<group>{_CAPITALS})\)?(?![A-Za-z0-9]|-(?!deriv))"
 )
 _DERIVATIVE: Final = re.compile(rf"(?<![A-Za-z0-9-])(?P<group>{_CAPITALS})[\s-]+deriv")
 _MAYBE: Final = re.compile(r"tms|bdms|tbs|eox|mox|tfa|pfp|hfb|pfb|(?:^|[;(\[])\s*\(?\d", re.IGNORECASE)

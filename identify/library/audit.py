@@ -310,7 +310,13 @@ def weigh_cells(cells: Sequence[Cell]) -> tuple[float, list[AuditFinding]]:
 
 
 def propose(log_odds: float, stated: Sequence[AuditFinding]) -> str:
-    """What to do with an entry: `use`, `use with caution`, `quarantine`."""
+    """What to do with an entry: `use`, `use with caution`, `quarantine`.
+
+    Examples
+    --------
+    >>> propose(0.0, []), propose(3.0, [])
+    ('use', 'quarantine')
+    """
     grades = {finding.grade for finding in stated}
     if Grade.SERIOUS in grades or log_odds >= QUARANTINE_FROM:
         return QUARANTINE

@@ -293,7 +293,13 @@ def _neighbour_mass(formula: FormulaFacts | None, neighbours: Sequence[Neighbour
 
 @lru_cache(maxsize=50_000)
 def nominal_mass_of(formula: str) -> int:
-    """Nominal mass of a formula as text; 0 when there is none."""
+    """Nominal mass of a formula as text; 0 when there is none.
+
+    Examples
+    --------
+    >>> nominal_mass_of("C7H8"), nominal_mass_of("")
+    (92, 0)
+    """
     try:
         return parse_formula(formula).nominal_mass if formula else 0
     except FormulaError:

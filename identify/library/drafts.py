@@ -210,6 +210,16 @@ def read_chemistry(record: SpectrumRecord) -> Chemistry:
     Returns
     -------
     Chemistry
+
+    Examples
+    --------
+    >>> from identify.records import Source
+    >>> import numpy as np
+    >>> glycine = Identity("glycine", "C2H5NO2")
+    >>> record = SpectrumRecord(Source("a"), np.array([73.0]), np.array([1.0]), identity=glycine, derivative="2TMS")
+    >>> facts = read_chemistry(record)
+    >>> facts.measured_as, facts.formula_as_measured, facts.nominal_mass
+    ('2 TMS', 'C8H21NO2Si2', 219)
     """
     from identify.chem.derivatives import find_derivative, formula_as_measured
     from identify.chem.formula import parse_formula

@@ -118,6 +118,13 @@ def parse_jcamp(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterato
     Notes
     -----
     ``##OWNER`` becomes the licence only where it names one (public domain, CC …); ``##ORIGIN`` stands in for missing authors.
+
+    Examples
+    --------
+    >>> text = "##TITLE= acetone\\n##DATA TYPE= MASS SPECTRUM\\n##PEAK TABLE= (XY..XY)\\n43,100 58,23\\n##END="
+    >>> [record] = parse_jcamp(text.splitlines(), "a.jdx", print)
+    >>> record.identity.name, record.mz.tolist(), record.intensity.tolist()
+    ('acetone', [43.0, 58.0], [100.0, 23.0])
     """
     reader = _Reader(path, on_reject)
     for label in _split_labels(lines, path, on_reject):

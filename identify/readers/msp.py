@@ -49,6 +49,13 @@ def parse_msp(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterator[
     -----
     A record ends at a blank line behind its peaks, or where a name follows the peaks. Peaks are pairs of numbers separated
     by blanks, commas, semicolons, colons or brackets; text in double quotes is an annotation and is left out.
+
+    Examples
+    --------
+    >>> lines = ["Name: acetone", "Formula: C3H6O", "Num Peaks: 2", "43 100; 58 23"]
+    >>> [record] = parse_msp(lines, "a.msp", print)
+    >>> record.identity.formula, record.mz.tolist(), record.intensity.tolist()
+    ('C3H6O', [43.0, 58.0], [100.0, 23.0])
     """
     for number, block in enumerate(_split_records(lines), 1):
         try:

@@ -294,5 +294,11 @@ def _polarity(text: str) -> str:
 
 
 def cut_field(text: str) -> str:
-    """`text`, cut where it is longer than a metadata value may be, and saying so."""
+    """`text`, cut where it is longer than a metadata value may be, and saying so.
+
+    Examples
+    --------
+    >>> cut_field("short"), cut_field("x" * 20_000)[-9:]
+    ('short', 'x … (cut)')
+    """
     return text if len(text) <= MAX_FIELD_CHARS else f"{text[:MAX_FIELD_CHARS]} … (cut)"

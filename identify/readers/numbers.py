@@ -45,7 +45,13 @@ def parse_number(text: str) -> float | None:
 
 
 def find_number(text: str) -> float | None:
-    """First number in a metadata text such as ``70 eV``, or None."""
+    """First number in a metadata text such as ``70 eV``, or None.
+
+    Examples
+    --------
+    >>> find_number("70 eV"), find_number("about 12.5 min"), find_number("none")
+    (70.0, 12.5, None)
+    """
     match = _FIRST_NUMBER.search(text[:400])
     return None if match is None else parse_number(match.group())
 

@@ -94,6 +94,12 @@ def read_pasted(text: str, name: str, on_reject: OnReject) -> Iterator[SpectrumR
     ------
     FormatError
         If the text as a whole is empty or of no known format.
+
+    Examples
+    --------
+    >>> [record] = read_pasted("43:100 58:23, 15 30", "pasted", print)
+    >>> record.mz.tolist(), record.intensity.tolist()
+    ([43.0, 58.0, 15.0], [100.0, 23.0, 30.0])
     """
     stream = cast(BinaryIO, io.BytesIO(text.encode("utf-8", "replace")))
     yield from _read_file(OpenFile(name, stream, is_member=False), on_reject)

@@ -202,6 +202,11 @@ def read_retention(
     -------
     tuple of (Retention, dict)
         An index that is no number, not above 0, or equal to the retention time is not used; the note says so.
+
+    Examples
+    --------
+    >>> read_retention(time="7.5 min", indices=[("kovats", "0"), ("", "1065")], column="")[0].index
+    1065.0
     """
     notes: dict[str, str] = {}
     time_s = read_time_s(time, default_unit=default_unit)

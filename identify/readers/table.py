@@ -75,6 +75,12 @@ def parse_table(lines: Iterable[str], path: str, on_reject: OnReject) -> Iterato
     Notes
     -----
     A new spectrum starts at a name, at a heading, and behind a blank line where the m/z start again from below.
+
+    Examples
+    --------
+    >>> [record] = parse_table(["name: acetone", "m/z;intensity", "43,05;100", "58,1;23"], "a.csv", print)
+    >>> record.identity.name, record.mz.tolist()
+    ('acetone', [43.05, 58.1])
     """
     draft = _Draft()
     number = 0

@@ -52,6 +52,12 @@ def find_heading(text: str) -> RowReader | None:
     ----------
     text : str
         One line, such as ``m/z;intensity``. An absolute intensity is preferred over a relative one.
+
+    Examples
+    --------
+    >>> rows = find_heading("rel. int.;Intensity;m/z")
+    >>> rows.read("100;2500;43,05", "a.csv:2")
+    [(43.05, 2500.0)]
     """
     for separator in ("\t", ";", ",", None):
         names = [bare_name(name) for name in text.split(separator)]

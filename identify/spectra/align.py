@@ -32,6 +32,13 @@ def align(query: CleanSpectrum, entry: CleanSpectrum) -> AlignedPeaks:
     Notes
     -----
     O(n log n) in the number of peaks. Symmetric: swapping the arguments swaps the columns.
+
+    Examples
+    --------
+    >>> query = CleanSpectrum(Peaks([43, 58], [100, 30]), None, 40)
+    >>> entry = CleanSpectrum(Peaks([29, 43, 57], [20, 100, 5]), None, 29)
+    >>> align(query, entry).mz.tolist()  # from m/z 40: below it the query was not measured
+    [43.0, 57.0, 58.0]
     """
     return align_all(query, [entry])[0]
 

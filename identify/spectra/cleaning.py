@@ -85,6 +85,13 @@ def clean_spectrum(record: SpectrumRecord, settings: CleaningSettings) -> CleanS
     -----
     Peaks that round to the same nominal m/z are summed. `lowest_mz` is the stated scan limit where there is one and no
     peak lies below it, else the lowest peak before any gas, bleed or noise was dropped.
+
+    Examples
+    --------
+    >>> from identify.records import Source
+    >>> record = SpectrumRecord(Source("a.csv"), np.array([43.018, 43.055, 0.0]), np.array([60.0, 40.0, 5.0]))
+    >>> clean_spectrum(record, CleaningSettings()).nominal.intensity.tolist()
+    [100.0]
     """
     where = str(record.source)
     _refuse_unusable(record, where)
@@ -174,6 +181,22 @@ def drop_air_and_water(mz: FloatArray, intensity: FloatArray, settings: Cleaning
     Air is m/z 28 and 32 with 28:32 between 2 and 10 (about 4 in air, common practice) and no m/z 31 beside it (methanol,
     glycols); argon (40) and carbon dioxide (44) go with it when nothing stands beside them. Water is m/z 18 with 17 at
     10–40 % of it. A spectrum whose base peak would go is left alone: it may be the compound.
+
+    Parameters
+    ----------
+    mz, intensity : ndarray of shape (n_peaks,)
+        Nominal m/z, increasing, and intensity, positive.
+    settings : CleaningSettings
+
+    Returns
+    -------
+    StepResult
+
+    Examples
+    --------
+    >>> mz, intensity = np.array([17.0, 18.0, 28.0, 32.0, 43.0]), np.array([2.0, 9.0, 40.0, 10.0, 100.0])
+    >>> mz[drop_air_and_water(mz, intensity, CleaningSettings()).keep].tolist()
+    [43.0]
     """
     at = {int(m): float(i) for m, i in zip(mz, intensity, strict=True)}
     gas: set[int] = set()
@@ -201,6 +224,22 @@ def drop_bleed(mz: FloatArray, intensity: FloatArray, settings: CleaningSettings
 
     Needs m/z 207 *and* 281 (or 355), each with M+1 and M+2 of three or more silicon atoms. Left alone when m/z 147 is
     stronger than 207 (a silylated compound) or when siloxane ions are most of the spectrum (a siloxane).
+
+    Parameters
+    ----------
+    mz, intensity : ndarray of shape (n_peaks,)
+        Nominal m/z, increasing, and intensity, positive.
+    settings : CleaningSettings
+
+    Returns
+    -------
+    StepResult
+
+    Examples
+    --------
+    >>> mz, intensity = np.array([91.0, 207, 208, 209, 281, 282, 283]), np.array([500.0, 100, 21, 12, 60, 17, 11])
+    >>> mz[drop_bleed(mz, intensity, CleaningSettings()).keep].tolist()
+    [91.0]
     """
     at = {int(m): float(i) for m, i in zip(mz, intensity, strict=True)}
     present = [ion for ion, pattern in SILOXANE_PATTERNS.items() if _has_pattern(at, ion, pattern)]
@@ -230,6 +269,22 @@ def drop_noise(mz: FloatArray, intensity: FloatArray, settings: CleaningSettings
     10th to 90th percentile): fragments fall off over decades, noise does not. Intensities rounded to a coarse step (many
     records hold 1, 2, 3 … of 999) look alike for another reason and show no floor. The floor is then twice the median of
     those peaks, at most 1 % of the base peak, at least `noise_fraction` of it.
+
+    Parameters
+    ----------
+    mz, intensity : ndarray of shape (n_peaks,)
+        Nominal m/z, increasing, and intensity, positive.
+    settings : CleaningSettings
+
+    Returns
+    -------
+    StepResult
+
+    Examples
+    --------
+    >>> mz, intensity = np.array([43.0, 58.0, 71.0]), np.array([100.0, 30.0, 0.01])
+    >>> mz[drop_noise(mz, intensity, CleaningSettings()).keep].tolist()
+    [43.0, 58.0]
     """
     base = float(intensity.max())
     floor = settings.noise_fraction * base

@@ -25,6 +25,14 @@ def render_msp(record: SpectrumRecord) -> str:
     Notes
     -----
     Retention times carry their unit (`s`); fields without a customary name go under ours.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from identify.records import Source
+    >>> record = SpectrumRecord(Source("a"), np.array([43.0, 58.0]), np.array([100.0, 22.5]), title="acetone")
+    >>> render_msp(record).splitlines()
+    ['Name: acetone', 'Title: acetone', 'Num Peaks: 2', '43 100', '58 22.5', '']
     """
     pairs = named_values(record)
     if not record.identity.name:
