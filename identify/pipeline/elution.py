@@ -3,8 +3,9 @@
 On every column the most branched alkane is the least retained compound of its size, so that a compound of n carbon, nitrogen,
 oxygen, sulfur, chlorine and bromine atoms has a retention index of at least about ``85 n − 40`` (textbook knowledge; held against
 indices from memory, not verified: neopentane 413 ≥ 385, diethyl ether 494, 2,2-dimethylbutane 537 ≥ 470, diisopropyl ether 602 ≥
-555, 2,2,4-trimethylpentane 690 ≥ 640, 2,2,4,4-tetramethylpentane 773 ≥ 725, 2,2,4,4,6,8,8-heptamethylnonane 1320 ≥ 1320).
-Fluorine and silicon compounds boil lower and are not judged.
+555, 2,2,4-trimethylpentane 690 ≥ 640, 2,2,4,4-tetramethylpentane 773 ≥ 725, 2,2,4,4,6,8,8-heptamethylnonane 1320 ≥ 1320; none of
+the 47 underivatized open records of this size with an index lies below). Fluorine and silicon compounds boil lower and are not
+judged.
 """
 
 from __future__ import annotations
@@ -28,6 +29,7 @@ TOO_LARGE_ODDS = 50.0
 """How much less likely such a candidate becomes: the bound is a rule of thumb, no law."""
 SLACK, SLACK_BEFORE = 30.0, 60.0
 """Index units, between rungs and before the first one."""
+LAST_OF_EARLY = 8
 WORTH_A_NOTE = 0.02
 
 
@@ -96,16 +98,16 @@ def highest_index(minutes: float, scale: RetentionScale) -> float | None:
     Returns
     -------
     float or None
-        With slack for the scale. Before the first rung the first two are extrapolated as at constant temperature (Kovats 1958),
-        which gives too low an index where the oven already warms up: `SLACK_BEFORE` covers 50 units for the petrol run's
-        pentane. Without a hold-up time it is the first rung's.
+        With slack for the scale. Before a first rung of up to C8 the first two are extrapolated on a line: that early the
+        distances of the alkanes shrink towards the hold-up time, so that the line lies above the truth. Before a later first
+        rung, whose neighbours a warming oven has spread, the index is only known to be smaller.
 
     Examples
     --------
     >>> from identify.retention import Ladder
-    >>> scale = RetentionScale(Ladder((7, 8), (3.0, 5.0)), "by hand", 5.0, hold_up=1.0)
-    >>> [highest_index(minutes, scale) for minutes in (4.0, 2.0, 0.9, 5.1)]
-    [780.0, 660.0, 0.0, None]
+    >>> scale = RetentionScale(Ladder((7, 8), (3.0, 5.0)), "by hand", 5.0)
+    >>> [highest_index(minutes, scale) for minutes in (4.0, 2.0, 5.1)]
+    [780.0, 710.0, None]
     """
     ladder = scale.ladder
     index = linear_index(minutes, ladder)
@@ -114,13 +116,10 @@ def highest_index(minutes: float, scale: RetentionScale) -> float | None:
     if minutes > ladder.times[0]:
         return None
     first = 100.0 * ladder.carbons[0]
-    if scale.hold_up is None:
+    if ladder.carbons[0] > LAST_OF_EARLY:
         return first + SLACK
-    if minutes <= scale.hold_up:
-        return 0.0
-    here, early, late = (log(time - scale.hold_up) for time in (minutes, *ladder.times[:2]))
-    step = 100.0 * (ladder.carbons[1] - ladder.carbons[0]) / (late - early)
-    return min(first + SLACK, max(0.0, first + step * (here - early) + SLACK_BEFORE))
+    step = 100.0 * (ladder.carbons[1] - ladder.carbons[0]) / (ladder.times[1] - ladder.times[0])
+    return min(first + SLACK, first - step * (ladder.times[0] - minutes) + SLACK_BEFORE)
 
 
 def _without_impossible_mixture(found: Identification, highest: float, settings: Settings) -> Identification:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 
 from identify import __version__
@@ -171,8 +171,6 @@ class _Analysis:
     def run(self, run: Run, decomposition: Decomposition, number: int, first_query: int) -> RunFindings:
         """Findings of one run."""
         scale = self.given or self._own_scale(decomposition.components)
-        if scale is not None:
-            scale = replace(scale, hold_up=_hold_up(decomposition.components, scale.ladder))
         findings = []
         for component in decomposition.components:
             if self.progress:
@@ -202,12 +200,6 @@ class _Analysis:
             self.rejected.append(Rejection(source, None, "unusable spectrum", error.found, error.expected, error.hint))
             return Finding(component, None, "unusable spectrum")
         return Finding(component, identify_query(query, self.libraries, self.settings))
-
-
-def _hold_up(components: Sequence[Component], ladder: Ladder) -> float | None:
-    """Minutes of the first peak of residual gas, if it comes before the first rung: nothing passes a column faster."""
-    gas = min((c.time_s / 60.0 for c in components if c.kind is ComponentKind.AIR), default=None)
-    return gas if gas is not None and gas < ladder.times[0] else None
 
 
 def component_record(component: Component, run: Run, scale: RetentionScale | None) -> SpectrumRecord:

@@ -59,15 +59,12 @@ class RetentionScale:
         Standard uncertainty of an index on this scale, in index units.
     phase : str
         Phase class of the column; empty when not stated, and always for a self-calibrated scale, whose indices decide nothing.
-    hold_up : float or None
-        Minutes until an unretained gas arrives, where the run shows it before the first rung.
     """
 
     ladder: Ladder
     origin: str
     uncertainty: float
     phase: str = ""
-    hold_up: float | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -45,7 +45,7 @@ def test_a_candidate_of_twelve_heavy_atoms_before_heptane_falls_behind() -> None
     assert found.candidates[0].probability == pytest.approx(0.7843, abs=1e-4)
     assert [c.rank for c in found.candidates] == [1, 2]
     assert found.candidates[1].evidence[-1].verdict is Verdict.CONFLICTS
-    assert found.notes[-1].startswith("Too large to elute before index 730")
+    assert found.notes[-1].startswith("Too large to elute before index 710")
 
 
 def test_what_is_left_nearly_certain_is_claimed_tentatively() -> None:
@@ -89,13 +89,13 @@ def test_the_bound_lies_below_known_indices(formula: str, index: int) -> None:
     assert least_index(parse_formula(formula)) <= index
 
 
-def test_before_the_first_rung_the_scale_is_extrapolated_from_the_hold_up_time() -> None:
-    # ln of the adjusted times 0.5, 2 and 4 min: 200 units before C7 where C7 to C8 are 100, by hand.
-    scale = RetentionScale(Ladder((7, 8), (3.0, 5.0)), "by hand", 5.0, hold_up=1.0)
-    assert highest_index(1.5, scale) == pytest.approx(500.0 + 60.0)
-    assert highest_index(2.5, scale) < highest_index(3.0, scale) == 730.0
-    assert highest_index(1.5, replace(scale, hold_up=None)) == 730.0
-    assert judge(finding(1.5, ("C8H18", 0.5), ("C4H8O", 0.4)), scale).candidates[0].entry.identity.name == "compound 2"
+def test_before_an_early_first_rung_the_scale_goes_on_in_a_line_and_before_a_late_one_it_does_not() -> None:
+    # 50 units a minute from C7 at 3 min, and 60 of slack, by hand.
+    scale = RetentionScale(Ladder((7, 8), (3.0, 5.0)), "by hand", 5.0)
+    assert highest_index(1.0, scale) == pytest.approx(700.0 - 100.0 + 60.0)
+    assert highest_index(2.9, scale) == highest_index(3.0, scale) == 730.0
+    assert highest_index(1.0, replace(scale, ladder=Ladder((20, 21), (3.0, 5.0)))) == 2030.0
+    assert judge(finding(1.0, ("C9H20", 0.5), ("C4H8O", 0.4)), scale).candidates[0].entry.identity.name == "compound 2"
 
 
 def mixture(found: Finding, *formulas: str) -> Finding:
