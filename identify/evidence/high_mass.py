@@ -13,6 +13,7 @@ from identify.evidence.class_ions import SELDOM_WITH_M
 from identify.evidence.facts import FormulaFacts, QueryFacts
 from identify.evidence.finding import Finding, not_assessed
 from identify.evidence.fragments import BACKGROUND
+from identify.evidence.isotopes import CARBON_13
 from identify.records import Entry, Verdict
 
 MOLECULAR_ION = "molecular ion"
@@ -35,8 +36,6 @@ PRESENCE_SOURCE = (
 ABOVE_SOURCE = (
     "Nothing but isotope peaks and [M+H]+ lies above the molecular ion (definition); weighed on open EI records"
 )
-CARBON_13 = 0.010816
-"""13C/12C, 0.0107/0.9893 (Berglund & Wieser 2011)."""
 
 
 def level_of(relative: float) -> str:

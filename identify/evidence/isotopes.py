@@ -15,6 +15,7 @@ PATTERN = "isotope pattern"
 CARBONS = "carbon count"
 
 CARBON_13 = 0.010816
+"""13C/12C, 0.0107/0.9893 (Berglund & Wieser 2011)."""
 PATTERN_SOURCE = (
     "Isotope abundances of Berglund & Wieser 2011 convolved for the formula; [M−2], [M−1] and [M+H]+ taken into account; "
     "weighed on open EI records"

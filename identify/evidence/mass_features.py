@@ -15,6 +15,8 @@ from functools import cached_property
 
 import numpy as np
 
+from identify.evidence.facts import CARBON_13_PER_DA
+from identify.evidence.high_mass import IMPROBABLE_LOSSES
 from identify.evidence.shifted import HIGHEST, ShiftTable
 from identify.records import CleanSpectrum, FloatArray
 
@@ -32,18 +34,27 @@ TERMINAL_LOSSES = (
 LOSS_GROUPS = (
     (1,), (15,), (17, 18), (27, 28, 29), (31, 32, 33), (35, 36), (42, 43, 44), (45, 46), (55, 56, 57), (59, 60), (73,),
 )  # fmt: skip
-IMPROBABLE = (4, 5, 6, 7, 8, 9, 10, 11, 12, 13, 21, 22, 23, 24, 25, 37, 38)
 KEY_IONS = (31, 43, 45, 55, 57, 58, 73, 74, 77, 91, 147, 149)
 LOSS_RANGE = np.arange(-2, 160)
 """Neutral losses over which spectra are compared 'from M downwards'."""
+LOSSES = np.arange(-5, 171)
+"""Neutral losses whose intensities a network reads one by one; negative ones are ions above M."""
+FRAGMENTS = np.arange(25, 225)
+"""m/z whose intensities a network reads one by one: what kind of compound it is."""
+SERIES = 14
+"""Mass of CH2: a network is told which remainder a mass leaves."""
 FLOOR = 0.05
-CARBON_13_PER_DA = 0.00085 * 1.15
-"""13C of a peak per dalton of its mass: about one carbon per 13–14 Da, 15 % added for safety."""
+CARBON_13_AT_MOST = 1.15 * CARBON_13_PER_DA
+"""13C of a peak per dalton of its mass, 15 % added for safety."""
 NEIGHBOURS = 40
 SEEN = 0.05
 """Relative intensity (% of base) from which an ion counts as observed."""
 BELOW_TOP = 45
 """A molecular ion may lie this far below the highest peak (noise, bleed or a second compound above it)."""
+
+
+RATIOS_FROM = 0.3
+"""Relative intensity at M from which its neighbours are read as ratios to it."""
 
 
 def log_level(values: FloatArray) -> FloatArray:
@@ -80,6 +91,12 @@ class MassProblem:
     def pad(self) -> FloatArray:
         """`corrected` on the padded axis."""
         return padded(self.corrected)
+
+    @cached_property
+    def levels(self) -> FloatArray:
+        """Logarithmic intensity on the padded axis, 0 for nothing and 1 for the base peak."""
+        result: FloatArray = log_level(self.raw_pad) / log_level(np.array(100.0))
+        return result
 
     @cached_property
     def tops(self) -> IntArray:
@@ -128,7 +145,7 @@ def dense_of(spectrum: CleanSpectrum) -> FloatArray:
 def correct_for_carbon(relative: FloatArray) -> FloatArray:
     """Rows of dense intensities after the 13C of the peak one below is taken away, never below 0."""
     corrected = relative.copy()
-    corrected[:, 1:] -= relative[:, :-1] * (CARBON_13_PER_DA * np.arange(1, corrected.shape[1]))
+    corrected[:, 1:] -= relative[:, :-1] * (CARBON_13_AT_MOST * np.arange(1, corrected.shape[1]))
     return np.maximum(corrected, 0.0)
 
 
@@ -167,13 +184,19 @@ def peak_features(problem: MassProblem) -> dict[str, FloatArray]:
         "odd mass": parity,
         "even share": np.full(masses.size, even_share),
         "odd mass, even share": parity * even_share,
-        "improbable loss": log_level(pad[at[:, None] - np.array(IMPROBABLE)[None, :]].max(axis=1)),
+        "improbable loss": log_level(pad[at[:, None] - np.array(IMPROBABLE_LOSSES)[None, :]].max(axis=1)),
         "log mass": np.log(masses.astype(float)),
     }
     for level, highest in zip(TOP_LEVELS, problem.tops.tolist(), strict=True):
         found[f"above the highest ion of {level:g} %"] = np.clip(masses - highest, -30, 150).astype(float)
     for offset in (-3, -2, -1, 1, 2):
         found[f"at M{offset:+d}"] = log_level(raw[at + offset])
+    shown = raw[at] >= RATIOS_FROM
+    height = np.maximum(raw[at], FLOOR)
+    for offset in (-2, -1, 1, 2, 3):
+        ratio = np.log10(np.maximum(raw[at + offset], FLOOR) / height)
+        found[f"M{offset:+d} to M"] = np.clip(ratio, -2.0, 1.5) * shown
+    found["M+1 over 13C"] = np.clip(raw[at + 1] / height / (CARBON_13_AT_MOST * masses), 0.0, 4.0) * shown
     for group in LOSS_GROUPS:
         found[f"loss of {'/'.join(map(str, group))}"] = log_level(np.max([pad[at - loss] for loss in group], axis=0))
     for mz in KEY_IONS:
@@ -329,3 +352,27 @@ def all_features(problem: MassProblem) -> tuple[FloatArray, dict[str, list[str]]
     }
     matrix = np.stack([column for group in groups.values() for column in group.values()], axis=1)
     return matrix, {name: list(group) for name, group in groups.items()}
+
+
+def network_inputs(standardised: FloatArray, levels: FloatArray, masses: IntArray) -> FloatArray:
+    """What the networks read of each candidate mass: its features, the intensity at every loss from it, its place in a series.
+
+    Parameters
+    ----------
+    standardised : ndarray, shape (n, n_features)
+    levels : ndarray
+        `MassProblem.levels` of the query.
+    masses : ndarray of int, shape (n,)
+
+    Returns
+    -------
+    ndarray, shape (n, n_features + 176 + 14)
+    """
+    losses = levels[masses[:, None] + PAD - LOSSES]
+    return np.concatenate([standardised, losses, np.eye(SERIES)[masses % SERIES]], axis=1)
+
+
+def fragment_levels(levels: FloatArray) -> FloatArray:
+    """What the networks read of the query as a whole, shape (200,): the intensity at every m/z of `FRAGMENTS`."""
+    result: FloatArray = levels[FRAGMENTS + PAD]
+    return result

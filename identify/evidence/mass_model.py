@@ -1,14 +1,18 @@
-"""The fitted model that turns features of candidate masses into probabilities: linear estimators, and boosted trees over all.
+"""The fitted model that turns features of candidate masses into probabilities: linear estimators, two small neural
+networks and boosted trees.
 
-The file `molecular_ion_model.json` beside this module is written by `tests/benchmarks/fit_evidence.py molecular-ion`.
+`molecular_ion_model.json` and `molecular_ion_networks.npz` beside this module are written by
+`tests/benchmarks/fit_molecular_ion.py`.
 """
 
 from __future__ import annotations
 
+import io
 import json
 from dataclasses import dataclass
 from functools import cache
 from importlib.resources import files
+from typing import NamedTuple
 
 import numpy as np
 
@@ -23,11 +27,38 @@ class LinearEstimator:
 
     places: IntArray
     weights: FloatArray
-    temperature: float
 
     def logits(self, standardised: FloatArray) -> FloatArray:
-        """Logits of every candidate mass, shape (n_masses,), at the fitted temperature."""
-        result: FloatArray = standardised[:, self.places] @ self.weights / self.temperature
+        """Logits of every candidate mass, shape (n_masses,)."""
+        result: FloatArray = standardised[:, self.places] @ self.weights
+        return result
+
+
+class Network(NamedTuple):
+    """Two hidden layers of rectified sums, one output.
+
+    Attributes
+    ----------
+    inputs : ndarray, shape (n_inputs, n_hidden)
+        Weights of what is read of a candidate mass (`mass_features.network_inputs`).
+    fragments : ndarray, shape (n_fragments, n_hidden)
+        Weights of what is read of the query as a whole (`mass_features.fragment_levels`).
+    first_bias : ndarray, shape (n_hidden,)
+    second : ndarray, shape (n_hidden, n_second)
+    second_bias, last : ndarray, shape (n_second,)
+    """
+
+    inputs: FloatArray
+    fragments: FloatArray
+    first_bias: FloatArray
+    second: FloatArray
+    second_bias: FloatArray
+    last: FloatArray
+
+    def logits(self, inputs: FloatArray, fragments: FloatArray) -> FloatArray:
+        """Logits of candidate masses, shape (n_masses,), from their inputs and the fragments of their query."""
+        hidden = np.maximum(inputs @ self.inputs + (fragments @ self.fragments + self.first_bias), 0.0)
+        result: FloatArray = np.maximum(hidden @ self.second + self.second_bias, 0.0) @ self.last
         return result
 
 
@@ -67,25 +98,44 @@ class MassModel:
     mean, scale : ndarray
         For standardising; values are clipped at ± `CLIP`.
     estimators : dict of str to LinearEstimator
-        `query`, `neighbours`, `shifted`, and `first look` over all, which picks the masses the trees judge.
+        `neighbours`, `shifted`, and `first look` over all, which picks the masses that the others judge.
+    query, everything : Network
+        One sees nothing of the neighbours, the other all there is.
     trees : Trees
-    temperature : float
-        Logits of the trees are divided by it.
+        Over all features. They are surer than the networks where M is seen, the networks better where it is not.
+    shares : tuple of float
+        Weights of the logits of `query`, `everything` and `trees` where they judge together.
     kept : int
-        Candidate masses the trees judge.
+        Candidate masses that networks and trees judge.
     """
 
     names: tuple[str, ...]
     mean: FloatArray
     scale: FloatArray
     estimators: dict[str, LinearEstimator]
+    query: Network
+    everything: Network
     trees: Trees
-    temperature: float
+    shares: tuple[float, float, float]
     kept: int
 
     def standardise(self, matrix: FloatArray) -> FloatArray:
         """Features with mean 0 and spread 1 over the training data, clipped."""
         return np.clip((matrix - self.mean) / self.scale, -CLIP, CLIP)
+
+    def judge(self, matrix: FloatArray, inputs: FloatArray, fragments: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Logits of candidate masses by the query alone, and by everything together.
+
+        Parameters
+        ----------
+        matrix : ndarray, shape (n_masses, n_features)
+            Not standardised.
+        inputs, fragments : ndarray
+            See `Network.logits`.
+        """
+        alone = self.query.logits(inputs, fragments)
+        judges = (alone, self.everything.logits(inputs, fragments), self.trees.sum_over(matrix))
+        return alone, np.sum([share * logits for share, logits in zip(self.shares, judges, strict=True)], axis=0)
 
 
 CLIP = 6.0
@@ -99,16 +149,20 @@ def load_model() -> MassModel:
     -------
     MassModel
     """
-    text = files("identify.evidence").joinpath("molecular_ion_model.json").read_text(encoding="utf-8")
-    return parse_model(text)
+    room = files("identify.evidence")
+    text = room.joinpath("molecular_ion_model.json").read_text(encoding="utf-8")
+    return parse_model(text, room.joinpath("molecular_ion_networks.npz").read_bytes())
 
 
-def parse_model(text: str) -> MassModel:
-    """Model from the JSON text that the fit script writes.
+def parse_model(text: str, networks: bytes) -> MassModel:
+    """Model from what the fit script writes.
 
     Parameters
     ----------
     text : str
+        JSON: everything but the networks.
+    networks : bytes
+        Numpy archive: the arrays of each network, named ``network/name``.
 
     Returns
     -------
@@ -119,19 +173,24 @@ def parse_model(text: str) -> MassModel:
     places = {name: place for place, name in enumerate(names)}
     estimators = {
         name: LinearEstimator(
-            np.array([places[feature] for feature in item["weights"]], np.int64),
-            np.array(list(item["weights"].values())),
-            float(item["temperature"]),
+            np.array([places[feature] for feature in weights], np.int64), np.array(list(weights.values()))
         )
-        for name, item in table["estimators"].items()
+        for name, weights in table["estimators"].items()
     }
+    with np.load(io.BytesIO(networks), allow_pickle=False) as arrays:
+        query, everything = (
+            Network(*(arrays[f"{network}/{name}"].astype(float) for name in Network._fields))
+            for network in ("query", "everything")
+        )
     return MassModel(
         names=names,
         mean=np.array(table["mean"]),
         scale=np.array(table["scale"]),
         estimators=estimators,
+        query=query,
+        everything=everything,
         trees=_parse_trees(table["trees"]),
-        temperature=float(table["temperature"]),
+        shares=tuple(table["shares"]),
         kept=int(table["kept"]),
     )
 

@@ -11,7 +11,15 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from identify.evidence.mass_features import NEIGHBOURS, SEEN, MassProblem, all_features, dense_of
+from identify.evidence.mass_features import (
+    NEIGHBOURS,
+    SEEN,
+    MassProblem,
+    all_features,
+    dense_of,
+    fragment_levels,
+    network_inputs,
+)
 from identify.evidence.mass_model import load_model, softmax
 from identify.evidence.shifted import build_shift_table
 from identify.records import CleanSpectrum, Entry, MassEstimate, MolecularIonEstimate
@@ -57,14 +65,15 @@ def estimate_molecular_ion(spectrum: CleanSpectrum, neighbours: Sequence[tuple[E
     model = load_model()
     matrix, _ = all_features(problem)
     standardised = model.standardise(matrix)
-    alone = {
-        name: int(masses[int(np.argmax(model.estimators[name].logits(standardised)))])
-        for name in WORDS
-        if name == "query" or problem.table.entries
-    }
     first = model.estimators["first look"].logits(standardised)
     kept = np.argsort(-first, kind="stable")[: model.kept]
-    probability = softmax(model.trees.sum_over(matrix[kept]) / model.temperature)
+    inputs = network_inputs(standardised[kept], problem.levels, masses[kept])
+    by_query, together = model.judge(matrix[kept], inputs, fragment_levels(problem.levels))
+    alone = {"query": int(masses[kept[int(np.argmax(by_query))]])}
+    if problem.table.entries:
+        for name in ("neighbours", "shifted"):
+            alone[name] = int(masses[int(np.argmax(model.estimators[name].logits(standardised)))])
+    probability = softmax(together)
     order = np.argsort(-probability, kind="stable")
     present = np.array([mass < relative.size and relative[mass] >= SEEN for mass in masses[kept].tolist()])
     estimates = tuple(

@@ -44,18 +44,19 @@ def show_molecular_ion(records: OpenRecords) -> None:
     """Nominal mass right on top with the compound removed, by estimator and by agreement."""
     data = mass_data(records)
     naive = []
-    for place in data.places.tolist():
+    for place in data.places[data.is_first].tolist():
         peaks = records.entries[place].spectrum.nominal
         strong = peaks.mz[peaks.relative >= 1.0]
         formula = formula_facts(records.entries[place].formula_as_measured)
         naive.append(formula is not None and int(strong[-1]) == formula.nominal_mass)
     print(f"queries {len(naive):,}; highest ion of 1 % or more is M: {np.mean(naive):.3f}")
     crossed = cross_fit(data)
-    print_mass_quality(data, crossed)
+    print_mass_quality(data, crossed, data.is_first)
     print(
         "the same without records whose own spectrum contradicts the formula they state (ions of 2 % and more above M + 6)"
     )
-    print_mass_quality(data, crossed, np.array([is_consistent(records, place) for place in data.places.tolist()]))
+    consistent = np.array([is_consistent(records, place) for place in data.places.tolist()])
+    print_mass_quality(data, crossed, data.is_first & consistent)
 
 
 def show_carbons(records: OpenRecords) -> None:

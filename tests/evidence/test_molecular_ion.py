@@ -6,14 +6,18 @@ import numpy as np
 import pytest
 
 from identify.evidence.mass_features import (
+    LOSSES,
     MassProblem,
+    _neighbour_names,
     all_features,
     correct_for_carbon,
     dense_of,
+    fragment_levels,
     highest_ions,
     neighbour_features,
+    network_inputs,
 )
-from identify.evidence.mass_model import Trees, load_model, softmax
+from identify.evidence.mass_model import Network, Trees, load_model, softmax
 from identify.evidence.molecular_ion import estimate_molecular_ion
 from identify.evidence.shifted import SPAN, build_shift_table, match_shifted
 from tests.builders import PUBLISHED_ACETOPHENONE
@@ -111,6 +115,37 @@ def test_carbon_13_is_taken_away_before_the_top_is_read() -> None:
     relative = np.zeros((1, 140))
     relative[0, 128], relative[0, 129] = 100.0, 10.9
     assert highest_ions(correct_for_carbon(relative)).tolist() == [[128, 128, 128, 128]]
+
+
+def test_network_is_two_rectified_layers_and_a_sum() -> None:
+    """By hand: hidden = (max(2 − 1, 0), max(−2 + 3, 0)) = (1, 1) with the fragment; second = max(1 + 2·1 − 0.5, 0) = 2.5."""
+    network = Network(
+        inputs=np.array([[1.0, -1.0]]),
+        fragments=np.array([[-0.5, 1.5]]),
+        first_bias=np.array([0.0, 0.0]),
+        second=np.array([[1.0], [2.0]]),
+        second_bias=np.array([-0.5]),
+        last=np.array([4.0]),
+    )
+    assert network.logits(np.array([[2.0], [-9.0]]), np.array([2.0])).tolist() == [10.0, 4.0 * (2.0 * 12.0 - 0.5)]
+
+
+def test_networks_read_every_loss_from_a_mass_and_its_remainder(build) -> None:
+    problem = MassProblem(dense_of(build.spectrum(PALMITATE)), build_shift_table(build.spectrum(PALMITATE), [], 5))
+    row = network_inputs(np.zeros((1, 2)), problem.levels, np.array([270]))[0, 2:]
+    losses, remainder = row[: LOSSES.size], row[LOSSES.size :]
+    assert set(LOSSES[losses > 0].tolist()) == {-1, 0, 31, 43, 127}, "the ions from 271 down to 143"
+    assert losses[LOSSES.tolist().index(31)] == pytest.approx(np.log10(7.0 / 0.05) / np.log10(100.0 / 0.05))
+    assert remainder.tolist() == [float(n == 270 % 14) for n in range(14)]
+    assert fragment_levels(problem.levels).max() == pytest.approx(1.0), "the base peak, m/z 74"
+
+
+def test_query_estimator_sees_nothing_of_the_neighbours() -> None:
+    model = load_model()
+    neighbours = [place for place, name in enumerate(model.names) if name in _neighbour_names()]
+    assert neighbours
+    assert not model.query.inputs[neighbours].any()
+    assert model.everything.inputs[neighbours].any()
 
 
 def test_trees_walk_like_nested_ifs() -> None:
