@@ -120,7 +120,7 @@ def _merge(base: Any, asked: Mapping[str, Any], prefix: str, where: str) -> Any:
 def _coerce(label: str, value: Any, old: Any, where: str) -> Any:
     kind = type(old)
     number = isinstance(value, int | float) and not isinstance(value, bool)
-    if kind is float and number:
+    if kind is float and number and abs(value) < 1e300:
         return float(value)
     if type(value) is kind:
         return value
@@ -155,7 +155,7 @@ def resolve(text: str = "", *, where: str = "settings", **options: Any) -> Setti
     """
     try:
         asked = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
+    except (ValueError, RecursionError) as error:  # also a number of thousands of digits, brackets a thousand deep
         raise UsageError("settings", where=where, found=str(error), expected="valid TOML") from None
     settings: Settings = _merge(Settings(), asked, "", where)
     given = {name: value for name, value in options.items() if value is not None}

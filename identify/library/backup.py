@@ -14,6 +14,7 @@ from identify.errors import LibraryConflict, LibraryDamaged, LibraryError
 from identify.library.connection import (
     check_not_on_network,
     connect_any_version,
+    is_taken,
     read_version,
     transaction,
     translated,
@@ -80,7 +81,7 @@ def backup_library(path: Path | str, target: Path | str, *, progress: CopyProgre
 
 
 def _refuse_existing(target: Path) -> None:
-    if target.exists():
+    if is_taken(target):
         raise LibraryConflict("copy", where=str(target), found="a file that already exists", expected="a new name")
 
 
@@ -152,7 +153,7 @@ def restore_library(
     check_not_on_network(path.parent)
     if not replace:
         _refuse_existing(path)
-    if not path.exists():
+    if not is_taken(path):
         return _copy(backup, path, progress)
     fresh = path.with_name(f".{path.name}.building-{secrets.token_hex(8)}")
     try:

@@ -15,6 +15,7 @@ from identify.errors import (
     LibraryError,
     LibraryMissing,
     LibraryVersionError,
+    quote,
 )
 from identify.library.schema import APPLICATION_ID, SCHEMA_VERSION, find_schema_faults
 
@@ -44,6 +45,8 @@ def translated(path: Path) -> Iterator[None]:
         if translation is None:
             raise
         raise translation from error
+    except OverflowError as error:  # of Python, on the way to SQLite's 64 bits
+        raise LibraryError("library", where=str(path), found=str(error), expected="numbers of 64 bits") from error
     except UnicodeDecodeError as error:  # SQLite quotes the damaged text in its own message
         raise LibraryDamaged("library", where=str(path), found="text that is no text", expected="UTF-8") from error
 
@@ -218,9 +221,32 @@ def wrong_version(path: Path, version: int) -> LibraryVersionError:
     )
 
 
+def is_taken(path: Path) -> bool:
+    """Whether there is a file or folder of this name.
+
+    Parameters
+    ----------
+    path : Path
+
+    Returns
+    -------
+    bool
+
+    Raises
+    ------
+    LibraryError
+        For a name that no file can have (too long, a loop of links).
+    """
+    try:
+        return path.exists()
+    except OSError as error:
+        found = (error.strerror or str(error)).lower()
+        raise LibraryError("library", where=quote(str(path)), found=found, expected="the name of a file") from None
+
+
 def _check_file(path: Path) -> None:
     where = str(path)
-    if not path.exists():
+    if not is_taken(path):
         raise LibraryMissing(
             "library", where=where, found="no file", expected="a library",
             hint="Build one with `ionwitness library build`, or see it work with `ionwitness demo`.",

@@ -58,9 +58,9 @@ def _read(source: Path, on_reject: OnReject) -> Iterator[SpectrumRecord]:
 
 def _source_hash(source: Path) -> str:
     """SHA-256 of a file; empty for a folder or what cannot be read (reading it will say so)."""
-    if not source.is_file():
-        return ""
     try:
+        if not source.is_file():
+            return ""
         with source.open("rb") as stream:
             return hashlib.file_digest(stream, "sha256").hexdigest()
     except OSError:

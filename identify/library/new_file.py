@@ -15,7 +15,7 @@ from contextlib import contextmanager, nullcontext, suppress
 from pathlib import Path
 
 from identify.errors import LibraryBusy, LibraryConflict, LibraryError, LibraryMissing, LibraryVersionError, UsageError
-from identify.library.connection import check_not_on_network, connect_any_version, translated
+from identify.library.connection import check_not_on_network, connect_any_version, is_taken, translated
 from identify.library.schema import apply_migrations
 
 _SIDE_FILES = ("-journal", "-wal", "-shm")
@@ -126,7 +126,7 @@ def remove_with_side_files(path: Path) -> None:
 
 
 def _check_target(path: Path, replace: bool) -> None:
-    if not path.exists():
+    if not is_taken(path):
         return
     if not replace:
         raise LibraryConflict(

@@ -61,7 +61,7 @@ def read_recipe(recipe: Path | str) -> Recipe:
         else:
             raise UsageError("recipe", found=f"no file {quote(str(recipe))}", expected="a TOML file, or open-ei")
         return parse_recipe(tomllib.loads(text), str(recipe))
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError, OSError) as error:
+    except (ValueError, RecursionError, OSError) as error:
         raise UsageError("recipe", where=str(recipe), found=str(error), expected="a readable TOML file") from None
 
 

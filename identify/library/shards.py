@@ -149,7 +149,7 @@ def open_shards(folder: Path) -> tuple[Shard, ...]:
     try:
         with path.open("rb") as stream:
             version, shards = _parse_list(json.loads(stream.read(_MAX_LIST_BYTES)), folder)
-    except (OSError, ValueError, KeyError, TypeError, UsageError) as error:
+    except (OSError, ValueError, KeyError, TypeError, OverflowError, RecursionError, UsageError) as error:
         raise IndexDamaged("list of shards", where=str(path), found=str(error), expected="a whole list") from None
     if version != FORMAT:
         raise IndexDamaged("list of shards", where=str(path), found=f"format {version}", expected=f"format {FORMAT}")

@@ -7,7 +7,6 @@ statement is a small JSON file; what is signed is the canonical JSON of its `sta
 from __future__ import annotations
 
 import base64
-import binascii
 import json
 from dataclasses import dataclass
 from datetime import datetime
@@ -200,7 +199,7 @@ def _read_statement(path: Path) -> tuple[dict[str, Any], bytes, bytes]:
         if statement["format"] != FORMAT or type(statement["event"]) is not int:
             raise ValueError(f"format {statement['format']}")
         return statement, key, signature
-    except (OSError, ValueError, KeyError, TypeError, binascii.Error) as error:
+    except (OSError, ValueError, KeyError, TypeError, RecursionError) as error:
         raise UsageError("signed head", where=str(path), found=str(error), expected=f"a file of {FORMAT}") from None
 
 

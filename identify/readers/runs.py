@@ -63,7 +63,7 @@ def is_run(path: Path) -> bool:
     try:
         with path.open("rb") as stream:
             head = stream.read(HEAD_BYTES)
-    except OSError:
+    except (OSError, ValueError):
         return False
     return head.startswith(NETCDF) or _is_mzml(head)
 

@@ -110,6 +110,7 @@ def test_damaged_missing_and_foreign_shards_are_refused(tmp_path: Path) -> None:
         lambda listed: listed.update(shards=[["a"]]),
         lambda listed: listed.update(weighting=["x", 1]),
         lambda listed: listed.update(shards=7),
+        lambda listed: listed.update(weighting=[10**400, 1]),
     ],
 )
 def test_a_list_that_makes_no_sense_is_refused(tmp_path: Path, change: Any) -> None:

@@ -22,6 +22,7 @@ from identify.errors import (
     UsageError,
 )
 from identify.library import connection
+from identify.library.backup import backup_library
 from identify.library.calibration import read_calibration
 from identify.library.connection import connect, file_system_of
 from identify.library.events import append_event
@@ -166,6 +167,24 @@ def test_a_calibration_with_a_number_beyond_all_bounds_is_refused(library_path: 
             append_event(raw, kind="calibrated", who="tester", when=WHEN, reason="forged", content=content)
         with pytest.raises(LibraryError, match="calibration"):
             read_calibration(library)
+
+
+def test_a_name_that_no_file_can_have_is_an_error_and_no_bug(library_path: Path) -> None:
+    endless = library_path.with_name("a" * 300)
+    for use in (
+        lambda: open_library(endless),
+        lambda: build_test_library(endless),
+        lambda: backup_library(library_path, endless),
+    ):
+        with pytest.raises(LibraryError, match="file name too long, expected the name of a file"):
+            use()
+
+
+def test_a_number_beyond_64_bits_is_an_error_and_no_bug(library_path: Path) -> None:
+    with open_library(library_path) as library:
+        for use in (lambda: library.find_entries(nominal_mass=2**70), lambda: library.get_entries([2**70])):
+            with pytest.raises(LibraryError, match="expected numbers of 64 bits"):
+                use()
 
 
 def test_a_library_serves_several_threads(library_path: Path) -> None:
