@@ -15,7 +15,7 @@ from identify.readers import read_pasted
 from identify.records import Report, Verdict
 from identify.settings import Settings
 
-pytestmark = [pytest.mark.slow, pytest.mark.xdist_group("open library")]
+pytestmark = pytest.mark.slow
 
 ACETOPHENONE = """##TITLE= Acetophenone
 ##JCAMP-DX= 4.24

@@ -142,7 +142,6 @@ def open_library_file(shared_data: Path, tmp_path_factory: pytest.TempPathFactor
 
 
 @pytest.mark.slow
-@pytest.mark.xdist_group("open export")
 @pytest.mark.parametrize("file_format", FORMATS)
 def test_a_thousand_open_records_survive_a_round_trip(
     open_library_file: Path, tmp_path: Path, file_format: str

@@ -54,7 +54,7 @@ def bench(folder: Path) -> Iterator[Bench]:
         yield running
 
 
-@pytest.fixture(scope="module")
+@pytest.fixture(scope="session")
 def used_bench(starter: Path, tmp_path_factory: pytest.TempPathFactory) -> Iterator[Bench]:
     """A running workbench with the demo's unknowns identified; for tests that only read."""
     folder = tmp_path_factory.mktemp("used")

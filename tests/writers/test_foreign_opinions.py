@@ -91,7 +91,6 @@ def open_records(shared_data: Path, tmp_path_factory: pytest.TempPathFactory) ->
 
 
 @pytest.mark.slow
-@pytest.mark.xdist_group("open records")
 @pytest.mark.parametrize("file_format", SUFFIXES)
 def test_a_thousand_open_records_come_back(
     file_format: str, open_records: list[SpectrumRecord], tmp_path: Path
