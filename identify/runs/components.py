@@ -111,7 +111,7 @@ def decompose(run: Run, blank: Sequence[Component] = ()) -> Decomposition:
     stage = Stage(matrix, residual, level, noise, width, float(significant.sum()), _detector_ceiling(matrix))
     shapes, extracted = _extract_all(clusters, stage)
     large = [_from_overload(overload, stage) for overload in overloads]
-    extracted, unassigned = _with_flanks(extracted, shapes, stage)
+    extracted, unassigned = _with_flanks(extracted, shapes, overloads, stage)
     found = [c for c in extracted if c and not any(_is_drift(c, whole) for whole in large)] + large
     found.sort(key=lambda component: component.time_s)
     components = tuple(replace(c, number=n, **find_kind(c, found, blank)) for n, c in enumerate(found, start=1))
@@ -207,18 +207,26 @@ def _is_remnant(component: Component) -> bool:
 
 
 def _with_flanks(
-    extracted: Sequence[Component | None], shapes: Sequence[Shape], stage: Stage
+    extracted: Sequence[Component | None], shapes: Sequence[Shape], overloads: Sequence[Overload], stage: Stage
 ) -> tuple[list[Component | None], FloatArray]:
-    """Components whose areas follow their own traces at the flanks, and signal of each scan that none explains."""
+    """Components whose areas follow their own traces at the flanks, and signal of each scan that none explains.
+
+    Within an overloaded stretch what is left is its own drift, no flank of another peak.
+    """
     sigma = stage.noise.sigma(stage.level + stage.signal)
     rest = _rest(extracted, shapes, stage)
     misfit = _left(rest, stage.signal, sigma) - _left(-rest, stage.signal - rest, sigma)
+    drift = np.zeros(misfit.shape[0])
+    for overload in overloads:
+        rows = slice(overload.first, overload.last + 1)
+        drift[rows] = np.maximum(misfit[rows], 0.0).sum(axis=1)
+        misfit[rows] = 0.0
     gains, unassigned = assign_flanks(extracted, shapes, stage.matrix.mz, misfit, stage.width)
     grown = [
         component and _with_area(component, component.area + float(gain) * stage.matrix.scan_time_s, stage)
         for component, gain in zip(extracted, gains, strict=True)
     ]
-    return grown, np.asarray(unassigned.sum(axis=1))
+    return grown, np.asarray(unassigned.sum(axis=1) + drift)
 
 
 def _with_area(component: Component, area: float, stage: Stage) -> Component:
