@@ -18,7 +18,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import IO, BinaryIO, cast
 
-from identify.errors import FormatError, InputError
+from identify.errors import FormatError, InputError, quote
 from identify.readers.fault_reports import OnReject, rejection_of
 from identify.readers.limits import (
     MAX_ARCHIVE_BYTES,
@@ -190,7 +190,13 @@ def _read_zip(path: Path, stream: BinaryIO, on_reject: OnReject) -> Iterator[Ope
                 continue
             try:
                 member = archive.open(info)
-            except (zipfile.BadZipFile, NotImplementedError, RuntimeError, ValueError, zlib.error, OSError) as error:
+            except RuntimeError as error:  # encrypted, or packed in a way Python does not know
+                hint = "Unpack it and pack it anew, without a password."
+                on_reject(
+                    Rejection(name, None, "archive", quote(str(error), 200), "a member that can be unpacked", hint)
+                )
+                continue
+            except (zipfile.BadZipFile, ValueError, zlib.error, OSError) as error:
                 on_reject(rejection_of(_damaged(name, error), name))
                 continue
             with member:

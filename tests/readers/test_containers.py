@@ -191,3 +191,21 @@ def test_reading_closes_what_it_opened(tmp_path: Path) -> None:
     spectra = read_spectra(path, lambda _: None)
     next(spectra)
     spectra.close()  # type: ignore[attr-defined]
+
+
+@pytest.mark.parametrize(
+    ("offset", "value", "found"), [(6, 1, "is encrypted, password required"), (8, 97, "not supported")]
+)
+def test_an_encrypted_or_strangely_packed_member_is_no_damage(
+    offset: int, value: int, found: str, tmp_path: Path
+) -> None:
+    path = write_zip(tmp_path / "a.zip", {"a.msp": msp(PAIRS), "b.msp": msp(PAIRS)})
+    data = bytearray(path.read_bytes())
+    directory = data.index(b"PK\x01\x02")
+    data[offset] = data[directory + offset + 2] = value  # flags or method of the first member, in both places
+    path.write_bytes(data)
+    records, rejected = read(path)
+    assert len(records) == 1
+    (rejection,) = rejected
+    assert found in rejection.found
+    assert rejection.hint == "Unpack it and pack it anew, without a password."
