@@ -28,14 +28,14 @@ MAX_QUOTED = 80
 
 
 def quote(value: object, limit: int = MAX_QUOTED) -> str:
-    """Text of a found value, printable on one line and never longer than `limit` characters.
+    """Text of a found value, printable on one line and bounded.
 
     Parameters
     ----------
     value : object
         What was found; hostile files may hold control characters or megabytes of it.
     limit : int
-        Longest text returned.
+        Most characters between the quotation marks.
 
     Returns
     -------
@@ -44,12 +44,12 @@ def quote(value: object, limit: int = MAX_QUOTED) -> str:
 
     Examples
     --------
-    >>> quote("43 x\\n")
-    "'43 x\\\\n'"
+    >>> quote("43 x\\n"), quote("it's long", 6)
+    ("'43 x\\\\n'", '"it\\'s…"')
     """
     text = value if isinstance(value, str) else str(value)
     shown = repr(text[: limit + 1])
-    return shown if len(shown) <= limit + 2 else shown[: limit - 1] + "…'"
+    return shown if len(shown) <= limit + 2 else f"{shown[: limit - 1]}…{shown[0]}"
 
 
 class IonwitnessError(Exception):
