@@ -20,6 +20,7 @@ from identify.library.cache import load_index
 from identify.library.calibration import store_calibration
 from identify.library.events import Event
 from identify.library.store import open_library
+from identify.pipeline.query_nature import judge_parts
 from identify.pipeline.search import Progress, SearchableLibrary
 from identify.ranking.calibration import N_PARTS, SHIPPED, CalibrationResult, Played, fit_shift
 from identify.ranking.grouping import Match, compound_key, isomer_key
@@ -193,7 +194,12 @@ def play(entry: Entry, matches: Sequence[Match], settings: Settings, *, weight: 
     evidence = [gather_evidence(query, draft.entry, draft.aligned, settings, facts) for draft in drafts]
     told = explain_drafts(drafts, evidence, ion, model)
     order = sorted(range(len(drafts)), key=lambda place: -told[place].value)
-    answers = list_answers([drafts[place] for place in order], np.array([told[place].value for place in order]), model)
+    # A replicate is one compound: what its best entry leaves over is not searched for a second one.
+    purity = judge_parts(query.spectrum, drafts, matches, lambda left: ())
+    answers = list_answers(
+        query, [drafts[place] for place in order], [evidence[place] for place in order],
+        np.array([told[place].value for place in order]), model, purity,
+    )  # fmt: skip
     right, group = _right_answer(entry, [drafts[place].entry for place in order], answers)
     return Played(answers.listed, answers.unlisted, answers.elsewhere, right, group, weight, part)
 

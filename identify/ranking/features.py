@@ -57,6 +57,10 @@ NAMES: Final = (
 
 TILT_RANGE_DA: Final = 30.0
 """Ridge of the tilt: spread of m/z (square root of the weighted sum of squares) that halves the slope."""
+PRIOR_DEVIATION: Final = 0.7
+"""Deviation of a pair of ions not seen, that of unlike spectra: a single pair has none by construction, and says nothing."""
+PRIOR_WEIGHT: Final = 10.0
+"""Its weight: that of a base peak in both spectra."""
 TINY: Final = 1e-12
 
 
@@ -192,7 +196,8 @@ def compare_with_entries(
     Some 3.5 ms for 150 entries of 75 peaks. With one peak list per entry ``(m, e)`` and the query's ``q`` at the same m/z:
 
     - cosine ``Σ w(q) w(e) / sqrt(Σ w(q)² Σ w(e)²)`` with ``w`` = intensity**a · mz**b; *reverse* over the entry's peaks
-      only, *forward* over the query's peaks only.
+      only, times ``n / (n + 1)`` with ``n = (Σ w(e))² / Σ w(e)²``, since an entry of one peak is contained in any query that
+      has it; *forward* over the query's peaks only.
     - tilt: slope of ``ln(q/e)`` over m/z, weighted by the root of the smaller intensity, shrunk towards 0; instruments differ by
       such a slope. The deviations are weighted means of what is left of ``|ln(q/e)|``.
     """
@@ -242,7 +247,11 @@ def _cosines(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
         shared, theirs = pairs.total(own * other) * scale, pairs.total(squares)
         cosine.append(shared / np.sqrt(whole * theirs + TINY))
         if name in ONE_SIDED:
-            reverse.append(shared / np.sqrt(pairs.total(own * own) * scale**2 * theirs + TINY))
+            n_peaks = pairs.total(other) ** 2 / (
+                theirs + TINY
+            )  # as many peaks of equal weight have this cosine with a constant
+            alike = shared / np.sqrt(pairs.total(own * own) * scale**2 * theirs + TINY)
+            reverse.append(alike * n_peaks / (n_peaks + 1.0))
             forward.append(shared / np.sqrt(whole * pairs.total(squares * matched) + TINY))
     return [*cosine, *reverse, *forward]
 
@@ -282,10 +291,15 @@ def _ratios(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
     heavy = weight * mz
     return [
         pairs.total(own * other) / np.sqrt(whole * pairs.total(other * other) + TINY),
-        pairs.total(weight * np.abs(off)) / total,
-        pairs.total(weight * np.abs(left)) / total,
-        pairs.total(heavy * np.minimum(np.abs(left), 2.0)) / (pairs.total(heavy) + TINY),
+        _with_prior(pairs.total(weight * np.abs(off)) / total, total),
+        _with_prior(pairs.total(weight * np.abs(left)) / total, total),
+        _with_prior(pairs.total(heavy * np.minimum(np.abs(left), 2.0)) / (pairs.total(heavy) + TINY), total),
     ]
+
+
+def _with_prior(deviation: FloatArray, weight: FloatArray) -> FloatArray:
+    """Mean deviations as if one strong pair more had been seen that deviates as those of unlike spectra do."""
+    return (deviation * weight + PRIOR_DEVIATION * PRIOR_WEIGHT) / (weight + PRIOR_WEIGHT)
 
 
 def _missing(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:

@@ -124,6 +124,9 @@ class RankingModel:
         Weight of isomers without an entry, over `identify.ranking.alternatives.UNLISTED_NAMES`.
     elsewhere : Linear
         Log-odds of something else, over `identify.ranking.alternatives.ELSEWHERE_NAMES`.
+    steepness : mapping of str to float
+        Factor on the log-odds of all candidates ("any"), and what is added to it where the best candidate is of a kind
+        (`identify.ranking.alternatives.KINDS`): how much a lead is worth differs between kinds, the order of candidates stays.
     same_class : float
         Share of queries answered by something else whose compound is of the best candidate's class all the same.
     sharpness : float
@@ -137,6 +140,7 @@ class RankingModel:
     mass_weight: float
     unlisted: Linear
     elsewhere: Linear
+    steepness: Mapping[str, float]
     same_class: float
     sharpness: float = 1.0
 
@@ -166,7 +170,8 @@ def build_model(coefficients: Mapping[str, Any]) -> RankingModel:
 def as_coefficients(model: RankingModel) -> dict[str, Any]:
     """Plain table of a model: numbers, texts and mappings only; `build_model` reads it back."""
     values: dict[str, Any] = {field.name: getattr(model, field.name) for field in fields(model)}
-    values["evidence_weights"] = dict(model.evidence_weights)
+    for name in ("evidence_weights", "steepness"):
+        values[name] = dict(values[name])
     for name, features in LINEAR_PARTS.items():
         linear: Linear = values[name]
         rows = zip(features, linear.weights, linear.centres, strict=True)

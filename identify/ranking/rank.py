@@ -3,13 +3,21 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import NamedTuple
+from typing import Final, NamedTuple
 
 import numpy as np
 
 from identify.chem.constitution import is_only_isomer
 from identify.evidence.facts import formula_facts
-from identify.ranking.alternatives import Chances, Groups, group_isomers
+from identify.ranking.alternatives import (
+    ELSEWHERE_NAMES,
+    KINDS,
+    MIXTURE,
+    Chances,
+    Groups,
+    describe_query,
+    group_isomers,
+)
 from identify.ranking.claim import make_claim
 from identify.ranking.follow_up import propose_follow_up
 from identify.ranking.model import RankingModel, default_model, explain_candidate
@@ -24,8 +32,14 @@ from identify.records import (
     MolecularIonEstimate,
     Purity,
     Query,
+    Terms,
 )
 from identify.settings import Settings
+
+OTHER_ANSWERS: Final = ("other compounds listed", "isomers without an entry", "something else")
+"""What a candidate stands against, in the explanation of its odds."""
+N_REASONS: Final = 3
+"""Reasons given for something else, beside the purity of the query."""
 
 
 class Ranking(NamedTuple):
@@ -56,49 +70,62 @@ class Answers(NamedTuple):
     groups: Groups
 
 
-def list_answers(drafts: Sequence[Draft], log_odds: FloatArray, model: RankingModel) -> Answers:
+def list_answers(
+    query: Query,
+    drafts: Sequence[Draft],
+    evidence: Sequence[Sequence[EvidenceItem]],
+    log_odds: FloatArray,
+    model: RankingModel,
+    purity: Purity | None,
+) -> Answers:
     """Log-odds of each listed compound, of unlisted isomers of each group, and of something else.
 
     Parameters
     ----------
+    query : Query
     drafts : sequence of Draft
         At least one.
+    evidence : sequence of sequences of EvidenceItem
+        Of the drafts, in their order.
     log_odds : array of shape (n_drafts,)
         For each compound, before its rivals are looked at.
     model : RankingModel
+    purity : Purity or None
+        None where it was not looked at.
 
     Returns
     -------
     Answers
     """
     features = np.array([draft.features for draft in drafts])
-    groups = group_isomers([draft.entry for draft in drafts], features, log_odds)
-    unlisted = model.unlisted.value(groups.unlisted) + _log_sums(log_odds, groups)
+    about = describe_query(query.spectrum, purity)
+    groups = group_isomers([draft.entry for draft in drafts], features, log_odds, evidence, about)
+    steepness = model.steepness["any"] + sum(
+        model.steepness[kind] * float(is_kind) for kind, is_kind in zip(KINDS, groups.kinds, strict=True)
+    )
+    listed = steepness * log_odds
+    unlisted = model.unlisted.value(groups.unlisted) + _log_sums(listed, groups)
     can_exist = np.array([bool(key) and not is_only_isomer(key) for key in groups.keys])
     unlisted = np.where(can_exist, unlisted, -np.inf)
-    return Answers(log_odds, unlisted, float(model.elsewhere.value(groups.elsewhere)), groups)
+    return Answers(listed, unlisted, float(model.elsewhere.value(groups.elsewhere)), groups)
 
 
-def weigh_answers(drafts: Sequence[Draft], log_odds: FloatArray, model: RankingModel) -> Chances:
+def weigh_answers(answers: Answers, model: RankingModel) -> Chances:
     """Probabilities of each listed compound, of unlisted isomers, and of something else.
 
     Parameters
     ----------
-    drafts : sequence of Draft
-        At least one.
-    log_odds : array of shape (n_drafts,)
-        For each compound, before its rivals are looked at.
+    answers : Answers
     model : RankingModel
 
     Returns
     -------
     Chances
     """
-    answers = list_answers(drafts, log_odds, model)
-    everything = np.concatenate([log_odds, answers.unlisted, [answers.elsewhere]])
+    everything = np.concatenate([answers.listed, answers.unlisted, [answers.elsewhere]])
     chance = np.exp(model.sharpness * (everything - everything.max()))
     chance /= chance.sum()
-    n = len(drafts)
+    n = answers.listed.size
     return Chances(chance[:n], chance[n:-1], float(chance[-1]), answers.groups)
 
 
@@ -152,7 +179,7 @@ def rank(
     model : RankingModel, optional
         The shipped one by default.
     purity : Purity, optional
-        A query that is no single compound gets no claim on one.
+        A query that is no single compound gets no claim on one, and something else becomes likelier.
 
     Returns
     -------
@@ -168,7 +195,7 @@ def rank(
     log_odds = np.array([explained.value for explained in told])
     order = np.argsort(-log_odds, kind="stable")
     drafts, items, told = [drafts[n] for n in order], [items[n] for n in order], [told[n] for n in order]
-    chances = weigh_answers(drafts, log_odds[order], model)
+    chances = weigh_answers(list_answers(query, drafts, items, log_odds[order], model, purity), model)
     candidates = tuple(
         Candidate(
             rank=place + 1,
@@ -182,7 +209,7 @@ def rank(
             explanation=explained,
             n_entries=draft.n_entries,
         )
-        for place, (draft, explained) in enumerate(zip(drafts, _explain_odds(told, chances), strict=True))
+        for place, (draft, explained) in enumerate(zip(drafts, _explain_odds(told, chances, model), strict=True))
     )
     claim = make_claim(candidates, chances, model, settings, purity)
     follow_up = propose_follow_up(query, candidates, chances)
@@ -202,15 +229,37 @@ def _log_sums(log_odds: FloatArray, groups: Groups) -> FloatArray:
     return logs
 
 
-def _explain_odds(told: Sequence[Explanation], chances: Chances) -> list[Explanation]:
-    """Natural log of each candidate's odds against all other answers: what speaks for it, less what speaks for the rest."""
+def _explain_odds(told: Sequence[Explanation], chances: Chances, model: RankingModel) -> list[Explanation]:
+    """Natural log of each candidate's odds against all other answers: what speaks for it, less what speaks for the rest.
+
+    What speaks for the rest is divided among the other answers by their probabilities.
+    """
     listed, unlisted = float(chances.listed.sum()), float(chances.unlisted.sum())
     chance = np.clip(chances.listed, 1e-12, 1 - 1e-12)
     odds = np.log(chance / (1.0 - chance))
-    beside = f"isomers without an entry {unlisted:.3g}, something else {chances.elsewhere:.3g}"
+    why = _say_elsewhere(chances.groups, model)
     explained = []
-    for one, own, others in zip(told, odds.tolist(), (listed - chance).tolist(), strict=True):
-        detail = f"other compounds listed {others:.3g}, {beside}"
-        against = Explanation("against all other answers", own - one.value, detail)
+    for one, own, others in zip(told, odds.tolist(), np.maximum(listed - chance, 0.0).tolist(), strict=True):
+        shares = (others, unlisted, chances.elsewhere)
+        whole, rest = max(sum(shares), 1e-300), own - one.value
+        details = (
+            f"probability {others:.3g}",
+            f"probability {unlisted:.3g}",
+            f"probability {chances.elsewhere:.3g}; {why}",
+        )
+        parts = Terms(OTHER_ANSWERS, tuple(rest * share / whole for share in shares), details)
+        against = Explanation("against all other answers", float(sum(parts.values)), parts=parts)
         explained.append(Explanation("log-odds", one.value + against.value, parts=(one, against)))
     return explained
+
+
+def _say_elsewhere(groups: Groups, model: RankingModel) -> str:
+    """What weighs most in the log-odds of something else, and what the purity of the query adds."""
+    parts: dict[str, float] = {}
+    for name, value in zip(ELSEWHERE_NAMES, model.elsewhere.parts(groups.elsewhere).tolist(), strict=True):
+        subject = name.partition("; ")[0]
+        parts[subject] = parts.get(subject, 0.0) + value
+    mixture = sum(parts.pop(name) for name in MIXTURE)
+    most = sorted(parts.items(), key=lambda part: -abs(part[1]))[:N_REASONS]
+    said = ", ".join(f"{name} {value:+.2f}" for name, value in [("purity of the query", mixture), *most])
+    return f"its log-odds {float(model.elsewhere.value(groups.elsewhere)):+.2f}, in it {said}"

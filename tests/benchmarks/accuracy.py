@@ -7,8 +7,8 @@
     python tests/benchmarks/accuracy.py --quick             the shipped parameters on one fold (which took part in their fit)
 
 Five folds, nested: parameters from four folds of compounds, measured on the fifth. Protocol: see `ranking_data`. Every query
-goes through the product's own path: index → shortlist → evidence → rank. Baselines rank the same compounds by one score from an
-exact search of the same library. What the fit needs is kept in a scratch folder (`fit_ranking`) for the next run.
+goes through the product's own path: index → shortlist → evidence, purity → rank. Baselines rank the same compounds by one score
+from an exact search of the same library. What the fit needs is kept in a scratch folder (`fit_ranking`) for the next run.
 """
 
 from __future__ import annotations
@@ -16,26 +16,27 @@ from __future__ import annotations
 import argparse
 import time
 from collections import Counter
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Collection, Sequence
 from dataclasses import dataclass, replace
 from functools import partial
 from pathlib import Path
 
 import numpy as np
-from fit_ranking import KINDS, fit_folds, is_isomer
+from fit_ranking import fit_folds, is_isomer, judge_alone
 from numpy.typing import NDArray
-from ranking_data import N_FOLDS, SEED, Benchmark, load_benchmark
-from ranking_spoiled import ways_to_spoil
+from ranking_data import ABSENT_SHARE, N_FOLDS, SEED, Benchmark, load_benchmark
+from ranking_spoiled import Spoiled, ways_to_spoil
 
 from identify.evidence.facts import build_query_facts
 from identify.evidence.gather import gather_evidence
 from identify.evidence.molecular_ion import estimate_molecular_ion
 from identify.index import SearchIndex, search_index
+from identify.ranking.alternatives import EVIDENCE_KINDS
 from identify.ranking.features import NAMES
 from identify.ranking.model import RankingModel, default_model
 from identify.ranking.rank import Ranking, rank
 from identify.ranking.shortlist import Draft, shortlist
-from identify.records import CleanSpectrum, Entry, EvidenceItem, MolecularIonEstimate, Query
+from identify.records import CleanSpectrum, Entry, EvidenceItem, MolecularIonEstimate, Purity, Query
 from identify.settings import Settings, Weighting
 from identify.similarity.scores import composite_score
 from identify.spectra.align import align
@@ -47,6 +48,11 @@ BASELINES = {
     "cosine m/z^3 I^0.6": Weighting(mz_power=3.0, intensity_power=0.6),
 }
 FALSE_ALARMS = 0.012
+EVERY = 2
+"""Of the degraded queries every second one is played."""
+N_DRAWS = 20
+MOST_CERTAIN = 0.3
+"""Share of the answers, the most certain ones, whose errors are looked at one by one."""
 LEAST_LIKENESS = 0.6
 """A reference less like the query than this is taken for a wrong record or one of other conditions."""
 Floats = NDArray[np.float64]
@@ -81,27 +87,39 @@ class Prepared:
     drafts: tuple[Draft, ...]
     evidence: list[tuple[EvidenceItem, ...]]
     ion: MolecularIonEstimate
+    purity: Purity
 
 
-def prepare(bench: Benchmark, index: SearchIndex, query: Query, settings: Settings, model: RankingModel) -> Prepared:
-    """The product's path up to the ranking."""
-    drafts = shortlist(query.spectrum, bench.find(index, query, settings), settings, model)
+def prepare(
+    bench: Benchmark,
+    index: SearchIndex,
+    query: Query,
+    settings: Settings,
+    model: RankingModel,
+    gone: Collection[str] = (),
+) -> Prepared:
+    """The product's path up to the ranking, without some compounds that are in the index."""
+    matches = [match for match in bench.find(index, query, settings) if bench.key_of[match.entry.id] not in gone]
+    drafts = shortlist(query.spectrum, matches, settings, model)
     ion = estimate_molecular_ion(query.spectrum, [(draft.entry, draft.cosine) for draft in drafts])
     facts = build_query_facts(query)
-    return Prepared(query, drafts, [gather_evidence(query, d.entry, d.aligned, settings, facts) for d in drafts], ion)
+    evidence = [gather_evidence(query, draft.entry, draft.aligned, settings, facts) for draft in drafts]
+    purity = judge_alone(bench, index, gone, query.spectrum, drafts, matches)
+    return Prepared(query, drafts, evidence, ion, purity)
 
 
-def judge(bench: Benchmark, place: int, present: bool, ranking: Ranking) -> Answer:
-    """Compare a ranking with the truth."""
+def judge(bench: Benchmark, place: int, present: bool, ranking: Ranking, partner: int | None = None) -> Answer:
+    """Compare a ranking with the truth; of two compounds that both make much of the query either is right."""
     keys = [bench.key_of[candidate.entry.id] for candidate in ranking.candidates]
-    truth, key = bench.entries[place], bench.keys[place]
+    truths = [place] if partner is None else [place, partner]
+    ranks = [keys.index(bench.keys[truth]) + 1 for truth in truths if bench.keys[truth] in keys]
     best = ranking.candidates[0] if ranking.candidates else None
     return Answer(
         place,
         present,
-        keys.index(key) + 1 if key in keys else 999,
-        bool(keys) and keys[0] == key,
-        best is not None and (keys[0] == key or is_isomer(best.entry, truth)),
+        min(ranks, default=999),
+        1 in ranks,
+        best is not None and (1 in ranks or any(is_isomer(best.entry, bench.entries[truth]) for truth in truths)),
         best.probability if best else 0.0,
         ranking.claim.group_probability,
         ranking.in_library_probability,
@@ -112,15 +130,16 @@ def judge(bench: Benchmark, place: int, present: bool, ranking: Ranking) -> Answ
 
 def run_product(
     bench: Benchmark, index: SearchIndex, places: Sequence[int], models: dict[int, RankingModel], gone: set[str],
-    change: Callable[[Query], Query] = lambda query: query,
+    change: Callable[[Query], Spoiled] = Spoiled, *, alone: bool = False,
 ) -> tuple[list[Answer], list[Prepared]]:  # fmt: skip
-    """Answers of the product for some queries."""
+    """Answers of the product for some queries; `alone`: each against the library without its own compound."""
     settings, answers, kept = Settings(), [], []
     for place in places:
-        model = models[bench.fold[bench.keys[place]]]
-        ready = prepare(bench, index, change(bench.query(place)), settings, model)
-        ranking = rank(ready.query, ready.drafts, ready.evidence, ready.ion, settings, model)
-        answers.append(judge(bench, place, bench.keys[place] not in gone, ranking))
+        key = bench.keys[place]
+        model, asked = models[bench.fold[key]], change(bench.query(place))
+        ready = prepare(bench, index, asked.query, settings, model, {key} if alone else ())
+        ranking = rank(ready.query, ready.drafts, ready.evidence, ready.ion, settings, model, purity=ready.purity)
+        answers.append(judge(bench, place, key not in gone and not alone, ranking, asked.partner))
         kept.append(ready)
     return answers, kept
 
@@ -177,6 +196,12 @@ def calibration_error(confidence: Floats, right: Mask) -> float:
     return float(
         sum(abs(confidence[bins == b].sum() - right[bins == b].sum()) for b in range(10)) / max(confidence.size, 1)
     )
+
+
+def error_by_chance(confidence: Floats, n: int = 200) -> float:
+    """The calibration error that probabilities without any fault would show on as few answers as these, mean of draws."""
+    rng = np.random.default_rng(SEED)
+    return float(np.mean([calibration_error(confidence, rng.random(confidence.size) < confidence) for _ in range(n)]))
 
 
 def flagged_absent(inside: Floats, present: Mask) -> float:
@@ -238,11 +263,11 @@ def spread_line(name: str, answers: Sequence[Answer], bench: Benchmark) -> str:
     return f"{name:<34} rank-1 by fold {np.mean(by_fold):.3f} ± {np.std(by_fold):.3f}"
 
 
-def open_line(name: str, answers: Sequence[Answer], *, calibrated: bool) -> str:
-    """Measures of the open set."""
+def open_numbers(answers: Sequence[Answer], *, calibrated: bool) -> list[float]:
+    """Measures of the open set, in the order of `OPEN_HEAD`; not a number where one does not apply."""
     c = columns(answers)
     right, group_right = c["right"].astype(bool), c["group_right"].astype(bool)
-    numbers = [
+    return [
         roc_area(c["compound"], right),
         accepted_at(c["compound"], right, 0.95),
         accepted_at(c["group"], group_right, 0.95),
@@ -251,6 +276,11 @@ def open_line(name: str, answers: Sequence[Answer], *, calibrated: bool) -> str:
         calibration_error(c["compound"], right) if calibrated else float("nan"),
         calibration_error(c["group"], group_right) if calibrated else float("nan"),
     ]
+
+
+def open_line(name: str, answers: Sequence[Answer], *, calibrated: bool) -> str:
+    """Measures of the open set."""
+    numbers = open_numbers(answers, calibrated=calibrated)
     return f"{name:<34}" + "".join(f"{number:>9.3f}" if number == number else f"{'–':>9}" for number in numbers)
 
 
@@ -276,9 +306,9 @@ def print_degraded(
     bench: Benchmark, places: Sequence[int], models: dict[int, RankingModel], index: SearchIndex
 ) -> None:
     """Accuracy and calibration when queries or library get worse; the open-set library."""
-    some = places[::4]
+    some = places[::EVERY]
     print(f"\nDegraded queries, open set ({len(some)} queries)\n{DEGRADED_HEAD}")
-    for name, change in {"as measured": lambda query, rng: query, **ways_to_spoil(bench)}.items():
+    for name, change in {"as measured": lambda query, rng: Spoiled(query), **ways_to_spoil(bench)}.items():
         rng = np.random.default_rng(SEED + 1)
         answers, _ = run_product(bench, index, some, models, bench.absent, partial(change, rng=rng))
         print(degraded_line(name, answers), flush=True)
@@ -290,7 +320,7 @@ def print_degraded(
 
 DEGRADED_HEAD = (
     f"{'':<28}{'rank-1 of those present':>24}{'mean p':>8}{'right':>8}{'ECE cmpd':>10}"
-    f"{'mean p':>9}{'right':>8}{'ECE grp':>9}"
+    f"{'mean p':>9}{'right':>8}{'ECE grp':>9}   both by chance"
 )
 
 
@@ -302,6 +332,7 @@ def degraded_line(name: str, answers: Sequence[Answer]) -> str:
         f"{name:<28}{right[present].mean():>24.3f}{c['compound'].mean():>8.3f}{right.mean():>8.3f}"
         f"{calibration_error(c['compound'], right):>10.3f}{c['group'].mean():>9.3f}{group_right.mean():>8.3f}"
         f"{calibration_error(c['group'], group_right):>9.3f}"
+        f"{error_by_chance(c['compound']):>9.3f}{error_by_chance(c['group']):>7.3f}"
     )
 
 
@@ -318,7 +349,7 @@ def print_ablation(
             if not mass:
                 model = replace(model, mass_weight=0.0)
             evidence = [tuple(item for item in items if item.kind not in without) for items in ready.evidence]
-            ranking = rank(ready.query, ready.drafts, evidence, ready.ion, settings, model)
+            ranking = rank(ready.query, ready.drafts, evidence, ready.ion, settings, model, purity=ready.purity)
             judged = judge(bench, answer.place, True, ranking)
             ranks.append(judged.rank)
             right.append(judged.right)
@@ -328,10 +359,10 @@ def print_ablation(
 
     print("\nEvidence left out (closed set)                  n   rank-1  rank-3  rank-10")
     measure("nothing", ())
-    for kind in KINDS:
+    for kind in EVIDENCE_KINDS:
         measure(f"without {kind}", (kind,))
     measure("without nominal mass estimate", (), mass=False)
-    measure("without any evidence", KINDS, mass=False)
+    measure("without any evidence", EVIDENCE_KINDS, mass=False)
 
 
 BETTER = "matches better than every reference of the right compound"
@@ -367,14 +398,8 @@ def print_errors(bench: Benchmark, answers: list[Answer]) -> None:
     """What the wrong answers of the closed set are, and what follows for the ceiling."""
     held = set(bench.queries)
     wrong = [(kind_of_error(bench, answer, held), answer) for answer in answers if not answer.right]
-    counts = Counter(kind for kind, _ in wrong)
     print(f"\nWrong first candidates of the closed set: {len(wrong)} of {len(answers)}")
-    for kind, n in counts.most_common():
-        print(f"  {n:>4}  {kind}")
-        named = [
-            (bench.entries[a.place].identity.name, bench.by_id[a.first].identity.name) for k, a in wrong if k == kind
-        ]
-        print("        " + "; ".join(f"{asked} → {told}" for asked, told in named[:4]))
+    counts = print_kinds(bench, wrong)
     ours = sum(n for kind, n in counts.items() if "ours to mend" in kind)
     print(f"  rank-1 if none of ours were wrong {1 - (len(wrong) - ours) / len(answers):.3f}")
     conflicts = counts["same name and formula, another structure or none in the source"]
@@ -491,13 +516,51 @@ def print_open(bench: Benchmark, answers: list[Answer], tables: dict[str, tuple[
     for name, (_, lacking) in tables.items():
         print(open_line(name, lacking, calibrated=False))
     print(open_line("product", answers, calibrated=True))
-    print_reliability(answers)
     c = columns(answers)
+    print(f"  calibration error by chance: {error_by_chance(c['compound']):.3f} {error_by_chance(c['group']):.3f}")
+    print_reliability(answers)
     usable = ~c["present"].astype(bool) | np.array([has_usable_reference(bench, answer.place) for answer in answers])
     flagged = flagged_absent(c["inside"][usable], c["present"][usable].astype(bool))
     print(f"  absent flagged, present ones with a reference of at least {LEAST_LIKENESS} only: {flagged:.3f}")
     rated = absent_by_isomers(answers)
     print(f"  absent ones answered by an isomer that matches: {rated:.3f} of the absent")
+
+
+def print_open_errors(bench: Benchmark, answers: list[Answer]) -> None:
+    """What the most certain wrong answers of the open set are, and what could be accepted if some of them were right."""
+    held = set(bench.queries)
+    order = sorted(answers, key=lambda answer: -answer.compound)[: round(MOST_CERTAIN * len(answers))]
+    wrong = [(kind_of_error(bench, answer, held), answer) for answer in order if not answer.right]
+    print(f"\nWrong among the {len(order)} most certain answers of the open set: {len(wrong)}")
+    print_kinds(bench, wrong)
+    c = columns(answers)
+    alike = {answer.place for kind, answer in wrong if not kind.endswith(WORSE)}
+    kept = ~np.isin(c["place"], list(alike))
+    share = accepted_at(c["compound"][kept].astype(float), c["right"][kept].astype(bool), 0.95)
+    print(f"  compounds accepted at 95 % precision if only those that match less well were wrong {share:.3f}")
+
+
+def print_kinds(bench: Benchmark, wrong: Sequence[tuple[str, Answer]]) -> Counter[str]:
+    """Numbers and examples of each kind of error."""
+    counts = Counter(kind for kind, _ in wrong)
+    for kind, n in counts.most_common():
+        print(f"  {n:>4}  {kind}")
+        named = [
+            (bench.entries[a.place].identity.name, bench.by_id[a.first].identity.name) for k, a in wrong if k == kind
+        ]
+        print("        " + "; ".join(f"{asked} → {told}" for asked, told in named[:4]))
+    return counts
+
+
+def print_draws(present: Sequence[Answer], absent: Sequence[Answer]) -> None:
+    """Measures of the open set over draws of the absent compounds, each removed alone: mean and spread."""
+    rng, rows = np.random.default_rng(SEED), []
+    for _ in range(N_DRAWS):
+        gone = set(rng.permutation(len(present))[: round(ABSENT_SHARE * len(present))].tolist())
+        rows.append(open_numbers([absent[n] if n in gone else one for n, one in enumerate(present)], calibrated=True))
+    print(f"\nOpen set, each absent compound removed alone, {N_DRAWS} draws\n{OPEN_HEAD}")
+    for name, values in (("mean", np.mean(rows, axis=0)), ("spread", np.std(rows, axis=0))):
+        print(f"{name:<34}" + "".join(f"{value:>9.3f}" for value in values))
 
 
 def has_usable_reference(bench: Benchmark, place: int) -> bool:
@@ -545,8 +608,11 @@ def main() -> None:
         print_closed(bench, places, answers, tables)
         print_errors(bench, answers)
         print_ceiling(bench, answers, kept)
+        alone, _ = run_product(bench, closed, places, models, set(), alone=True)
+        print_draws(answers, alone)
         answers, _ = run_product(bench, lacking, places, models, bench.absent)
         print_open(bench, answers, tables)
+        print_open_errors(bench, answers)
         if options.plot:
             write_reliability(answers, options.plot)
     print(f"\n{time.perf_counter() - began:.0f} s")

@@ -20,7 +20,7 @@ Ints = NDArray[np.int64]
 Mask = NDArray[np.bool_]
 LOW = -1e30
 """Log-odds of what cannot be."""
-SEEN_FROM = 1e-5
+SEEN_FROM = 1e-3
 """Answers less likely than this are left out of the curvature, never out of the likelihood."""
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import replace
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,19 +13,40 @@ from ranking_data import Benchmark
 from identify.records import CleanSpectrum, Peaks, Query
 
 Floats = NDArray[np.float64]
-Change = Callable[[Query, np.random.Generator], Query]
 
 
-def _changed(query: Query, mz: Floats, intensity: Floats, lowest: int | None = None) -> Query:
+NOTABLE_SHARE = 0.3
+"""From this share on a neighbour counts as a right answer too: it is in the sample, and not by traces. By base peaks; by ion
+current or at high m/z the smaller part is often the larger one."""
+
+
+class Spoiled(NamedTuple):
+    """A query made worse.
+
+    Attributes
+    ----------
+    query : Query
+    partner : int or None
+        Place of a second record that makes at least `NOTABLE_SHARE` of the query: either compound is a right answer.
+    """
+
+    query: Query
+    partner: int | None = None
+
+
+Change = Callable[[Query, np.random.Generator], Spoiled]
+
+
+def _changed(query: Query, mz: Floats, intensity: Floats, lowest: int | None = None) -> Spoiled:
     kept = intensity > 1e-3 * intensity.max()
     spectrum = CleanSpectrum(Peaks(mz[kept], intensity[kept]), None, lowest or query.spectrum.lowest_mz)
-    return replace(query, spectrum=spectrum)
+    return Spoiled(replace(query, spectrum=spectrum))
 
 
 def with_noise(share: float) -> Change:
     """Intensities times log-normal noise, and a floor of random height added."""
 
-    def spoil(query: Query, rng: np.random.Generator) -> Query:
+    def spoil(query: Query, rng: np.random.Generator) -> Spoiled:
         peaks = query.spectrum.nominal
         factor = np.exp(rng.normal(0, share, len(peaks)))
         floor = np.abs(rng.normal(0, 0.02 * share, len(peaks))) * peaks.intensity.max()
@@ -36,11 +58,11 @@ def with_noise(share: float) -> Change:
 def without_low_masses(lowest: int) -> Change:
     """Nothing below an m/z; queries that would lose all but two peaks stay as they are."""
 
-    def spoil(query: Query, rng: np.random.Generator) -> Query:
+    def spoil(query: Query, rng: np.random.Generator) -> Spoiled:
         peaks = query.spectrum.nominal
         kept = peaks.mz >= lowest
         if kept.sum() < 3:
-            return query
+            return Spoiled(query)
         return _changed(query, peaks.mz[kept], peaks.intensity[kept], max(lowest, query.spectrum.lowest_mz))
 
     return spoil
@@ -49,7 +71,7 @@ def without_low_masses(lowest: int) -> Change:
 def with_tilt(share: float) -> Change:
     """Intensities changed by −share at the lowest m/z to +share at the highest."""
 
-    def spoil(query: Query, rng: np.random.Generator) -> Query:
+    def spoil(query: Query, rng: np.random.Generator) -> Spoiled:
         peaks = query.spectrum.nominal
         place = (peaks.mz - peaks.mz[0]) / max(peaks.mz[-1] - peaks.mz[0], 1.0)
         return _changed(query, peaks.mz, peaks.intensity * (1 + share * (2 * place - 1)))
@@ -58,17 +80,24 @@ def with_tilt(share: float) -> Change:
 
 
 def with_neighbour(bench: Benchmark, share: float) -> Change:
-    """Another record added: `share` of the sum of both, each with its base peak at 100."""
+    """Another held-out record added: `share` of the sum of both, each with its base peak at 100.
 
-    def spoil(query: Query, rng: np.random.Generator) -> Query:
-        other = bench.entries[int(rng.choice(bench.extra))].spectrum.nominal
-        own = query.spectrum.nominal
+    The neighbour is held out too: a compound that elutes with another has no copy of itself in the library either.
+    """
+
+    def spoil(query: Query, rng: np.random.Generator) -> Spoiled:
+        places = [
+            place
+            for place in rng.choice(bench.queries, 2, replace=False).tolist()
+            if f"e{bench.entries[place].id}" != query.id
+        ]
+        other, own = bench.entries[places[0]].spectrum.nominal, query.spectrum.nominal
         axis = np.union1d(own.mz, other.mz)
         total = np.zeros(axis.size)
         total[np.searchsorted(axis, own.mz)] += (1 - share) * own.relative
         total[np.searchsorted(axis, other.mz)] += share * other.relative
         kept = axis >= query.spectrum.lowest_mz
-        return _changed(query, axis[kept], total[kept])
+        return _changed(query, axis[kept], total[kept])._replace(partner=places[0] if share >= NOTABLE_SHARE else None)
 
     return spoil
 

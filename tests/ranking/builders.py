@@ -6,6 +6,8 @@ from collections.abc import Mapping, Sequence
 
 import numpy as np
 
+from identify.ranking.alternatives import EXTENT, MIXTURE, Groups, group_isomers
+from identify.ranking.features import NAMES
 from identify.ranking.grouping import Match
 from identify.ranking.model import RankingModel, default_model
 from identify.ranking.rank import Ranking, rank
@@ -86,6 +88,13 @@ def build_ranking(
     by_entry = dict(zip([entry.id for entry in entries], evidence, strict=False))
     told = [by_entry.get(draft.entry.id, ()) for draft in drafts]
     return rank(query, drafts, told, NO_ION, settings, model)
+
+
+def build_groups(entries: Sequence[Entry], log_odds: Sequence[float]) -> Groups:
+    """Isomer groups of candidates that nothing else is known of."""
+    nothing = np.zeros((len(entries), len(NAMES)))
+    about = np.zeros(len(EXTENT) + len(MIXTURE))
+    return group_isomers(entries, nothing, np.array(log_odds), [()] * len(entries), about)
 
 
 XYLENE = {51: 12.0, 65: 8.0, 77: 13.0, 91: 100.0, 105: 25.0, 106: 60.0, 107: 5.0}

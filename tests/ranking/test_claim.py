@@ -1,18 +1,18 @@
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 
 import numpy as np
 import pytest
 
-from identify.ranking.alternatives import Chances, group_isomers
+from identify.ranking.alternatives import Chances
 from identify.ranking.claim import make_claim, percent
-from identify.ranking.features import NAMES
 from identify.ranking.model import default_model
 from identify.records import Candidate, Claim, ClaimLevel, Entry, EvidenceItem, Explanation, Part, Purity, Verdict
 from identify.settings import Settings
 from identify.spectra.align import align
-from tests.ranking.builders import XYLENE, build_entry, build_item, build_query
+from tests.ranking.builders import XYLENE, build_entry, build_groups, build_item, build_query
 
 ORTHO, META = "Cc1ccccc1C", "Cc1cccc(C)c1"
 
@@ -30,7 +30,7 @@ def claim_of(
     """Claim for given probabilities; the first group holds all unlisted isomers."""
     entries = entries or [build_entry(n, XYLENE, smiles=ORTHO if n == 0 else META) for n in range(len(listed))]
     query = build_query(XYLENE)
-    groups = group_isomers(entries, np.zeros((len(entries), len(NAMES))), np.log(np.array(listed) + 1e-9))
+    groups = build_groups(entries, [math.log(chance + 1e-9) for chance in listed])
     rest = np.zeros(len(groups.keys))
     rest[0] = unlisted
     chances = Chances(np.array(listed), rest, elsewhere, groups)

@@ -1,11 +1,20 @@
 from __future__ import annotations
 
+import math
+
 import numpy as np
 import pytest
 
-from identify.ranking.features import COSINES, NAMES, ONE_SIDED, compare_with_entries
+from identify.ranking.features import (
+    COSINES,
+    NAMES,
+    ONE_SIDED,
+    PRIOR_DEVIATION,
+    PRIOR_WEIGHT,
+    compare_with_entries,
+)
 from identify.records import CleanSpectrum, Peaks
-from identify.similarity.scores import cosine_score, reverse_score
+from identify.similarity.scores import cosine_score, peak_weights, reverse_score
 from identify.spectra.align import align
 from tests.ranking.builders import ALCOHOL, XYLENE, build_spectrum
 
@@ -30,9 +39,12 @@ def test_cosines_are_those_of_the_plain_definition() -> None:
                 assert column(features, f"cosine, {name}")[place] == pytest.approx(
                     cosine_score(aligned, weighting), abs=1e-6
                 )
+            kept = entry.nominal.mz >= max(query.lowest_mz, entry.lowest_mz)
             for name in ONE_SIDED:
+                weights = peak_weights(entry.nominal.mz[kept], entry.nominal.intensity[kept], COSINES[name])
+                n_peaks = weights.sum() ** 2 / (weights**2).sum() if kept.any() else 0.0
                 assert column(features, f"reverse, {name}")[place] == pytest.approx(
-                    reverse_score(aligned, COSINES[name]), abs=1e-6
+                    reverse_score(aligned, COSINES[name]) * n_peaks / (n_peaks + 1.0), abs=1e-6
                 )
 
 
@@ -49,8 +61,11 @@ def test_a_spectrum_compared_with_itself_shows_no_difference() -> None:
     features = compare_with_entries(build_spectrum(XYLENE), [build_spectrum(XYLENE)], [70.0])
     for name in (*(f"cosine, {name}" for name in COSINES), "cosine without tilt"):
         assert column(features, name)[0] == pytest.approx(1.0)
-    for name in ("deviation of ratios", "deviation without tilt", "entry peaks missing", "query peaks missing"):
+    for name in ("entry peaks missing", "query peaks missing"):
         assert column(features, name)[0] == pytest.approx(0.0, abs=1e-9)
+    seen = sum(math.sqrt(value) for value in XYLENE.values())
+    for name in ("deviation of ratios", "deviation without tilt"):
+        assert column(features, name)[0] == pytest.approx(PRIOR_DEVIATION * PRIOR_WEIGHT / (seen + PRIOR_WEIGHT))
     assert column(features, "same highest ion 5 %")[0] == 1.0
 
 
@@ -83,8 +98,20 @@ def test_a_tilt_over_m_over_z_is_taken_out() -> None:
     query = build_spectrum(peaks)
     tilted = build_spectrum({mz: value * np.exp(0.005 * (mz - 120)) for mz, value in peaks.items()})
     features = compare_with_entries(query, [tilted], [None])
-    assert column(features, "deviation without tilt")[0] < 0.4 * column(features, "deviation of ratios")[0]
+    itself = column(compare_with_entries(query, [query], [None]), "deviation of ratios")[0]
+    without, as_seen = (column(features, name)[0] for name in ("deviation without tilt", "deviation of ratios"))
+    assert without - itself < 0.4 * (as_seen - itself)
     assert column(features, "cosine without tilt")[0] > column(features, "cosine, root")[0]
+
+
+def test_a_single_peak_in_common_is_neither_a_full_reverse_match_nor_a_ratio_without_deviation() -> None:
+    query = build_spectrum({57: 100.0, 71: 70.0, 85: 50.0}, 50)
+    features = compare_with_entries(query, [build_spectrum({43: 100.0, 57: 10.0}), query], [None, None])
+    for name in ONE_SIDED:
+        single, whole = column(features, f"reverse, {name}")
+        assert single == pytest.approx(0.5) and whole > 0.7
+    single, whole = column(features, "deviation of ratios")
+    assert single == pytest.approx(PRIOR_DEVIATION / 2) and whole < 0.7 * single
 
 
 def test_low_energy_is_told_only_where_it_is_stated() -> None:

@@ -6,8 +6,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from identify.ranking.alternatives import Chances, group_isomers
-from identify.ranking.features import NAMES
+from identify.ranking.alternatives import Chances
 from identify.ranking.follow_up import EFFORT, build_work_list, propose_follow_up
 from identify.records import (
     Candidate,
@@ -22,7 +21,7 @@ from identify.records import (
     Retention,
 )
 from identify.spectra.align import align
-from tests.ranking.builders import NO_ION, XYLENE, build_entry, build_item, build_query
+from tests.ranking.builders import NO_ION, XYLENE, build_entry, build_groups, build_item, build_query
 
 
 def plans_for(
@@ -32,7 +31,7 @@ def plans_for(
     query = build_query(XYLENE)
     if index is not None:
         query = replace(query, record=replace(query.record, retention=Retention(index=index, phase="non-polar")))
-    groups = group_isomers(entries, np.zeros((len(entries), len(NAMES))), np.log(np.array(listed) + 1e-9))
+    groups = build_groups(entries, [math.log(chance + 1e-9) for chance in listed])
     chances = Chances(np.array(listed), np.zeros(len(groups.keys)), elsewhere, groups)
     candidates = [
         Candidate(

@@ -6,14 +6,23 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from identify.ranking.alternatives import MOST_LEAD, UNLISTED_NAMES, group_isomers
-from identify.ranking.features import NAMES
+from identify.ranking.alternatives import ELSEWHERE_NAMES, MOST_LEAD, UNLISTED_NAMES
+from identify.ranking.grouping import Match
 from identify.ranking.model import default_model
-from identify.ranking.rank import rank, weigh_answers
+from identify.ranking.rank import list_answers, rank, weigh_answers
 from identify.ranking.shortlist import N_DRAFTS, shortlist
-from identify.records import ClaimLevel, Explanation
+from identify.records import ClaimLevel, Explanation, Hit, Purity, Verdict
 from identify.settings import Settings
-from tests.ranking.builders import ALCOHOL, NO_ION, XYLENE, build_entry, build_item, build_query, build_ranking
+from tests.ranking.builders import (
+    ALCOHOL,
+    NO_ION,
+    XYLENE,
+    build_entry,
+    build_groups,
+    build_item,
+    build_query,
+    build_ranking,
+)
 
 LIKE = {**XYLENE, 105: 35.0, 77: 20.0}
 UNLIKE = {**XYLENE, 105: 5.0, 106: 20.0, 92: 60.0, 120: 20.0}
@@ -123,7 +132,7 @@ def test_groups_are_formed_by_formula_and_a_compound_without_formula_stands_alon
         build_entry(3, XYLENE),
         build_entry(4, XYLENE, formula=""),
     ]
-    groups = group_isomers(entries, np.zeros((4, len(NAMES))), np.array([1.0, 0.5, 0.25, 0.0]))
+    groups = build_groups(entries, [1.0, 0.5, 0.25, 0.0])
     assert groups.of_candidate.tolist() == [0, 1, 0, 2]
     assert groups.keys == ("C8H10", "", "")
     lead = UNLISTED_NAMES.index("lead over the next isomer")
@@ -138,16 +147,56 @@ def test_a_compound_without_formula_has_no_unlisted_isomers() -> None:
     assert model.provenance
 
 
-def test_weigh_answers_gives_a_distribution() -> None:
-    from identify.ranking.grouping import Match
-    from identify.records import Hit
-
+def test_all_answers_are_a_distribution_and_a_lead_counts_as_steeply_as_the_model_says() -> None:
     entries = [build_entry(1, LIKE), build_entry(2, XYLENE), build_entry(3, ALCOHOL, formula="C5H12O")]
     query = build_query(XYLENE)
     drafts = shortlist(query.spectrum, [Match(Hit(e.id, 0.9, 0.9), e) for e in entries], Settings())
-    chances = weigh_answers(drafts, np.array([2.0, 1.0, -3.0]), default_model())
+    model = replace(default_model(), steepness={"any": 2.0, "derivative": 0.0, "unsaturated": -0.5})
+    chances = weigh_answers(list_answers(query, drafts, [()] * 3, np.array([2.0, 1.0, -3.0]), model, None), model)
     assert chances.listed.sum() + chances.unlisted.sum() + chances.elsewhere == pytest.approx(1.0)
-    assert chances.listed[0] / chances.listed[1] == pytest.approx(math.e)
+    assert chances.listed[0] / chances.listed[1] == pytest.approx(math.exp(1.5))  # C8H10: four rings and double bonds
+
+
+def test_a_second_entry_needed_changes_the_probability_and_is_named_under_something_else() -> None:
+    entries = [build_entry(1, XYLENE), build_entry(2, ALCOHOL, formula="C5H12O")]
+    query, settings = build_query(XYLENE), Settings()
+    drafts = shortlist(query.spectrum, [Match(Hit(e.id, 0.9, 0.9), e) for e in entries], settings)
+    single = Purity(Verdict.AGREES, "one entry explains it", misfit=(0.1, 0.1))
+    mixed = Purity(Verdict.CONFLICTS, "two entries are needed", misfit=(0.1, 0.02))
+    of_one, of_two = (rank(query, drafts, [(), ()], NO_ION, settings, purity=purity) for purity in (single, mixed))
+    assert of_two.candidates[0].probability != pytest.approx(of_one.candidates[0].probability)
+    names = dict(zip(ELSEWHERE_NAMES, default_model().elsewhere.weights, strict=True))
+    added = sum(
+        names[name] * value for name, value in (("second entry needed", 1.0), ("gain by a second entry", math.log(5.0)))
+    )
+    added += sum(
+        names[f"{name}; unsaturated"] * value
+        for name, value in (("second entry needed", 1.0), ("gain by a second entry", math.log(5.0)))
+    )  # C8H10: four rings and double bonds
+    told = [found.candidates[0].explanation.parts[1].parts[2] for found in (of_one, of_two)]
+    assert {part.label for part in told} == {"something else"}
+    purity = [float(part.detail.partition("purity of the query ")[2].partition(",")[0]) for part in told]
+    assert purity[1] - purity[0] == pytest.approx(added, abs=0.011)  # both are written with two decimals
+
+
+def test_corrections_by_kind_count_only_for_that_kind() -> None:
+    aromatic, saturated = build_entry(1, XYLENE), build_entry(2, ALCOHOL, formula="C5H12O")
+    derivative = build_entry(3, XYLENE, measured_as="1 TMS")
+    column = ELSEWHERE_NAMES.index("log-odds of the best candidate; unsaturated")
+    seen = [build_groups([entry], [1.5]).elsewhere[column] for entry in (aromatic, saturated, derivative)]
+    assert seen == [1.5, 0.0, 0.0]
+    assert build_groups([derivative], [1.5]).kinds.tolist() == [1.0, 0.0]
+
+
+def test_an_entry_of_one_peak_does_not_stand_before_one_that_shares_most_of_the_spectrum() -> None:
+    """Alone it is contained in any query that has its peak, and its ratios cannot be wrong."""
+    query = build_query({57: 100.0, 71: 70.0, 85: 50.0, 99: 20.0, 113: 15.0, 127: 12.0, 310: 4.0}, lowest_mz=50)
+    homologue = build_entry(
+        1, {57: 100.0, 71: 65.0, 85: 45.0, 99: 18.0, 113: 13.0, 127: 10.0, 282: 4.0}, formula="C20H42"
+    )
+    butane = build_entry(2, {27: 30.0, 29: 35.0, 41: 30.0, 43: 100.0, 57: 3.0, 58: 12.0}, formula="C4H10")
+    ranking = build_ranking(query, [butane, homologue])
+    assert [candidate.entry.id for candidate in ranking.candidates] == [1, 2]
 
 
 def test_a_formula_with_one_constitution_leaves_no_unlisted_isomer() -> None:
