@@ -104,6 +104,7 @@ def map_identifications(
         return
     paths = [Path(searchable.state.path) for searchable in libraries]
     opened = (paths, settings, as_of, len(first) >= WORTH_MACHINE_CODE)
+    # Not forked: a lock that a thread of this process holds just then (progress, workbench) would stay shut in the worker.
     with ProcessPoolExecutor(workers, get_context("spawn"), _open_in_worker, opened) as pool:
         under_way: deque[Future[tuple[list[Shape], list[Rejection]]]] = deque()
         done = 0
