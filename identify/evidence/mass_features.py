@@ -6,6 +6,9 @@ Three groups of features, kept apart so that the agreement of estimators made of
 - *pairs*: fragments that add up to M (an ester's acid and alkene parts), and typical terminal losses of the highest ions;
 - *neighbours*: the library entries most like the query: their masses and gaps above the highest ions, and how well their
   fragments fit when they are shifted by the mass difference.
+
+Networks read the same numbers and, one by one, the intensity at every loss and of every fragment (`network_inputs`,
+`fragment_levels`).
 """
 
 from __future__ import annotations

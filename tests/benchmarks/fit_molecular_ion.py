@@ -237,8 +237,11 @@ def cross_fit(data: MassData) -> dict[str, NDArray[np.float64]]:
 
 
 def weigh_together(logits: dict[str, NDArray[np.float64]], shares: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Weighted sum of the logits of `JUDGES`."""
-    return np.sum([share * logits[name] for name, share in zip(JUDGES, shares, strict=True)], axis=0)
+    """Weighted sum of the logits of `JUDGES`; −inf for masses that they did not judge."""
+    judged = np.isfinite(logits[JUDGES[0]])
+    together = np.full(judged.size, -np.inf)
+    together[judged] = sum(share * logits[name][judged] for name, share in zip(JUDGES, shares, strict=True))
+    return together
 
 
 def fit_shares(data: MassData, logits: dict[str, NDArray[np.float64]]) -> NDArray[np.float64]:
