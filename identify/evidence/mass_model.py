@@ -7,12 +7,11 @@ networks and boosted trees.
 
 from __future__ import annotations
 
-import io
 import json
 from dataclasses import dataclass
 from functools import cache
 from importlib.resources import files
-from typing import NamedTuple
+from typing import IO, NamedTuple
 
 import numpy as np
 
@@ -151,17 +150,18 @@ def load_model() -> MassModel:
     """
     room = files("identify.evidence")
     text = room.joinpath("molecular_ion_model.json").read_text(encoding="utf-8")
-    return parse_model(text, room.joinpath("molecular_ion_networks.npz").read_bytes())
+    with room.joinpath("molecular_ion_networks.npz").open("rb") as networks:
+        return parse_model(text, networks)
 
 
-def parse_model(text: str, networks: bytes) -> MassModel:
+def parse_model(text: str, networks: IO[bytes]) -> MassModel:
     """Model from what the fit script writes.
 
     Parameters
     ----------
     text : str
         JSON: everything but the networks.
-    networks : bytes
+    networks : binary file
         Numpy archive: the arrays of each network, named ``network/name``.
 
     Returns
@@ -177,7 +177,7 @@ def parse_model(text: str, networks: bytes) -> MassModel:
         )
         for name, weights in table["estimators"].items()
     }
-    with np.load(io.BytesIO(networks), allow_pickle=False) as arrays:
+    with np.load(networks, allow_pickle=False) as arrays:
         query, everything = (
             Network(*(arrays[f"{network}/{name}"].astype(float) for name in Network._fields))
             for network in ("query", "everything")
