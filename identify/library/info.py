@@ -56,8 +56,8 @@ def describe_library(library: Library) -> LibraryInfo:
     )
     status, licence, instrument, energy, derivative = (Counter[str]() for _ in range(5))
     labelled = accurate = indexed = without_structure = 0
-    standings = library.standings()
     with library.reading() as connection:
+        standings, state, events = library.standings(), library.state(), tuple(library.events())
         rows = connection.execute(f"SELECT {columns} FROM entry WHERE event_seq <= ?", (library.last_event,))  # noqa: S608
         for entry_id, initial, held, kind, energy_ev, measured_as, *marks in rows:
             standing = standings.get(entry_id, initial)
@@ -72,8 +72,8 @@ def describe_library(library: Library) -> LibraryInfo:
             labelled, accurate = labelled + marks[0], accurate + marks[1]
             indexed, without_structure = indexed + marks[2], without_structure + marks[3]
     return LibraryInfo(
-        library.state(), SCHEMA_VERSION, _sorted(status), _sorted(licence), _sorted(instrument), _sorted(energy),
-        _sorted(derivative), labelled, accurate, indexed, without_structure, tuple(library.events()),
+        state, SCHEMA_VERSION, _sorted(status), _sorted(licence), _sorted(instrument), _sorted(energy),
+        _sorted(derivative), labelled, accurate, indexed, without_structure, events,
     )  # fmt: skip
 
 

@@ -51,19 +51,29 @@ class LibraryFile:
 
     @contextmanager
     def reading(self) -> Iterator[sqlite3.Connection]:
-        """The connection, locked to this thread, with what is cached brought up to date.
+        """The connection, locked to this thread: one state of the library for the whole block, whatever others commit meanwhile.
 
         Raises
         ------
         LibraryError
             Translated from sqlite3.
         """
+        connection = self._connection
         with self._lock, translated(self.path):
-            (version,) = self._connection.execute("PRAGMA data_version").fetchone()
-            if version != self._data_version:
-                self._forget()
-                self._data_version = version
-            yield self._connection
+            is_outermost, n_changes = not connection.in_transaction, connection.total_changes
+            if is_outermost:
+                connection.execute("BEGIN")
+            try:
+                (version,) = connection.execute("PRAGMA data_version").fetchone()
+                if version != self._data_version:
+                    self._forget()
+                    self._data_version = version
+                yield connection
+            finally:
+                if is_outermost and connection.in_transaction:
+                    connection.execute("ROLLBACK")
+            if is_outermost and connection.total_changes != n_changes:
+                raise RuntimeError("a change inside `reading`: only `writing` opens a transaction that keeps it")
 
     @contextmanager
     def writing(self) -> Iterator[sqlite3.Connection]:

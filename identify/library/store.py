@@ -113,7 +113,7 @@ class Library(LibraryFile):
             before, after = self._moved_compounds(connection)
             n_entries += len(after) - len(before)
             n_compounds += len(set(after)) - len(set(before))
-        return LibraryState(str(self.path), self.fingerprint, n_entries, n_compounds)
+            return LibraryState(str(self.path), self.fingerprint, n_entries, n_compounds)
 
     def _moved_compounds(self, connection: sqlite3.Connection) -> tuple[list[int], list[int]]:
         """Compound of every searchable entry, as the entries came and as they stand, for the compounds that changed."""

@@ -11,6 +11,7 @@ import pytest
 from library_builders import WHEN, WHO
 
 from identify.errors import UsageError
+from identify.library.connection import connect
 from identify.library.events import GENESIS, append_event, canonical_json, event_hash, find_chain_fault
 from identify.library.store import open_library
 
@@ -68,12 +69,18 @@ def test_a_removed_event_and_a_rewritten_one_are_named(chain) -> None:
 
 
 def test_an_event_outside_a_transaction_is_a_bug(library_path: Path) -> None:
-    with (
-        open_library(library_path, writable=True) as library,
-        library.reading() as raw,
-        pytest.raises(RuntimeError, match="transaction"),
-    ):
-        append_event(raw, kind="x", who=WHO, when=WHEN, reason="", content={})
+    connection = connect(library_path, writable=True)
+    with pytest.raises(RuntimeError, match="transaction"):
+        append_event(connection, kind="x", who=WHO, when=WHEN, reason="", content={})
+    connection.close()
+
+
+def test_a_change_while_reading_is_a_bug_and_not_kept(library_path: Path) -> None:
+    with open_library(library_path, writable=True) as library:
+        before = library.fingerprint
+        with pytest.raises(RuntimeError, match="only `writing` opens"), library.reading() as raw:
+            append_event(raw, kind="x", who=WHO, when=WHEN, reason="", content={})
+        assert library.fingerprint == before
 
 
 @pytest.mark.parametrize("who", ["", "   ", "a\nb", "x" * 201])

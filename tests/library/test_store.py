@@ -187,6 +187,19 @@ def test_a_number_beyond_64_bits_is_an_error_and_no_bug(library_path: Path) -> N
                 use()
 
 
+def test_what_others_commit_does_not_show_within_a_read(library_path: Path) -> None:
+    with open_library(library_path) as library:
+        before = library.state()
+        with library.reading():
+            move(library_path, 2, EntryStatus.WITHDRAWN)
+            assert library.state() == before
+            assert library.entry_ids() == [1, 2, 3, 4, 5]
+            assert library.get_entries([2])[0].status is EntryStatus.REFERENCE
+        assert library.state().entries == 4
+        assert library.fingerprint != before.fingerprint
+        assert library.get_entries([2])[0].status is EntryStatus.WITHDRAWN
+
+
 def test_a_library_serves_several_threads(library_path: Path) -> None:
     failures: list[BaseException] = []
 
