@@ -66,6 +66,7 @@ def build_app(bench: Workbench, hosts: Iterable[str]) -> App:
     """
     app = FastAPI(
         title="ionwitness workbench", version=__version__, docs_url=None, redoc_url=None, openapi_url=None,
+        redirect_slashes=False,
         description="JSON twins of the pages. Every request needs the session cookie; changes need our own Origin header.",
     )  # fmt: skip
     app.state.workbench = bench

@@ -136,6 +136,7 @@ def test_an_ion_search_finds_entries_in_which_the_ion_dominates(used_bench: Benc
         ("/queries/99999", 404), ("/queries/0", 422), ("/queries/x", 422), ("/queries/99999999999999999999", 422),
         ("/runs/9", 404), ("/jobs/9999", 404), ("/library/7/entries/1", 404), ("/library/1/entries/999999", 404),
         ("/queries/1?result=9999", 404), ("/nowhere", 404), ("/static/desk.py", 404),
+        ("/jobs/", 404),
     ],
 )  # fmt: skip
 def test_an_address_that_does_not_exist_is_told_in_words(used_bench: Bench, path: str, status: int) -> None:
