@@ -42,8 +42,18 @@ class Stream(NamedTuple):
 
 def stream_of(source: Path) -> Stream:
     """Records of a file, folder or archive."""
-    folder = str(source.parent / "x").removesuffix("x")
-    return Stream(source.name, _source_hash(source), folder, lambda on_reject: _read(source, on_reject))
+    return Stream(source.name, _source_hash(source), folder_of(source), lambda on_reject: _read(source, on_reject))
+
+
+def folder_of(path: Path) -> str:
+    """What to take off the front of a path to leave its name, as its text has it.
+
+    Examples
+    --------
+    >>> folder_of(Path("data/a.msp")), folder_of(Path("a.msp"))
+    ('data/', '')
+    """
+    return str(path.parent / "x").removesuffix("x")
 
 
 def _read(source: Path, on_reject: OnReject) -> Iterator[SpectrumRecord]:

@@ -57,6 +57,8 @@ class LibraryFile:
         ------
         LibraryError
             Translated from sqlite3.
+        RuntimeError
+            If the block changed anything: a bug; the change is not kept.
         """
         connection = self._connection
         with self._lock, translated(self.path):

@@ -20,6 +20,7 @@ from identify.library.conflicts import Conflict, find_conflicts
 from identify.library.drafts import Policy, judge_record, tidy
 from identify.library.events import Event, read_events
 from identify.library.insertion import Insertion
+from identify.library.intake import folder_of
 from identify.library.rows import Draft
 from identify.library.standing import get_entry, move_entries
 from identify.library.store import Library
@@ -145,8 +146,8 @@ def _check_date(text: str) -> None:
 
 def _named(draft: Draft, accession: str, record: SpectrumRecord) -> Draft:
     source = str(draft.columns["source"])
-    folder = str(Path(record.source.path).parent / "x").removesuffix("x")
-    columns = {**draft.columns, "accession": accession, "source": source.removeprefix(folder)}
+    source = source.removeprefix(folder_of(Path(record.source.path)))
+    columns = {**draft.columns, "accession": accession, "source": source}
     return replace(draft, columns=columns)
 
 
