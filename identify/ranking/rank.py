@@ -57,6 +57,7 @@ class Answers(NamedTuple):
     Attributes
     ----------
     listed : array of shape (n_candidates,)
+        As steep as `RankingModel.steepness` says.
     unlisted : array of shape (n_groups,)
         Isomers without an entry; ``-inf`` where there can be none (CH2Cl2), and where the formula is not known.
     elsewhere : float
