@@ -12,6 +12,7 @@ from identify.chem.structures import active_hydrogens
 from identify.errors import StructureError
 from identify.evidence.facts import formula_facts
 from identify.ranking.alternatives import Chances
+from identify.ranking.claim import percent
 from identify.records import Candidate, EntryStatus, FollowUp, Identification, Query, Verdict
 from identify.retention import phase_class
 
@@ -169,7 +170,7 @@ def _standards(answers: Sequence[Candidate]) -> list[FollowUp]:
         plans += _plan(
             "own standard" if own else "authentic standard",
             action,
-            f"{name} has probability {p:.2f}; the standard settles whether it is right",
+            f"{name} has probability {percent(p)}; the standard settles whether it is right",
             [name],
             "the same retention time and spectrum confirm it, a difference rules it out",
             entropy([p, 1.0 - p]),

@@ -29,7 +29,7 @@ FORMATS = "MassBank record, JCAMP-DX, name/value text (.msp), mzSpecLib text, mz
 
 
 _HINTS = {
-    "a netCDF file": "Read a run with the command for runs.",
+    "a netCDF file": "Read a run with `ionwitness run`.",
     "an archive of a kind that is not read": "Unpack it, or pack it as zip or tar.gz.",
 }
 
