@@ -23,6 +23,7 @@ __all__ = [
     "connectivity_block",
     "draw_svg",
     "formula_of",
+    "has_diastereomers",
     "inchikey_of",
     "smiles_of_inchi",
     "structure_similarity",
@@ -121,6 +122,46 @@ def inchikey_of(smiles: str) -> str:
     if not key:
         raise StructureError("structure", found=quote(smiles), expected="a structure that has an InChI")
     return key
+
+
+@lru_cache(maxsize=4096)
+def has_diastereomers(smiles: str) -> bool:
+    """Whether compounds of the same connectivity exist that are no mirror images: a column parts them, their spectra rarely do.
+
+    Parameters
+    ----------
+    smiles : str
+        Stereochemistry in it is not looked at.
+
+    Returns
+    -------
+    bool
+        True with a double bond that has two forms, or with two stereogenic atoms or more; the bridgeheads of a cage force
+        each other and count as one.
+
+    Raises
+    ------
+    StructureError
+        See `canonical_smiles`.
+
+    Examples
+    --------
+    2-Butene has two forms; 2-butanol only mirror images; camphor, whose stereogenic atoms are its bridgeheads, too.
+
+    >>> has_diastereomers("CC=CC"), has_diastereomers("CCC(C)O"), has_diastereomers("CC1(C)C2CCC1(C)C(=O)C2")
+    (True, False, False)
+    """
+    from rdkit import Chem
+    from rdkit.Chem.rdMolDescriptors import CalcNumBridgeheadAtoms
+
+    mol = Chem.Mol(read_mol(smiles))
+    Chem.RemoveStereochemistry(mol)
+    found = Chem.FindPotentialStereo(mol)
+    atoms = {item.centeredOn for item in found if item.type == Chem.StereoType.Atom_Tetrahedral}
+    bridgeheads: list[int] = []
+    CalcNumBridgeheadAtoms(mol, bridgeheads)
+    n_forced = max(len(atoms & set(bridgeheads)) - 1, 0)
+    return any(item.type == Chem.StereoType.Bond_Double for item in found) or len(atoms) - n_forced > 1
 
 
 def connectivity_block(inchikey: str) -> str:

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from typing import Final
 
 from identify.chem.isomers import count_isomers
-from identify.chem.structures import compound_classes
+from identify.chem.structures import compound_classes, has_diastereomers
 from identify.errors import StructureError
 from identify.ranking.alternatives import Chances
 from identify.ranking.model import RankingModel
@@ -134,17 +134,26 @@ def _hold_back(purity: Purity, levels: tuple[float, float, float]) -> Claim:
 
 def _claim_compound(best: Candidate, levels: tuple[float, float, float]) -> Claim:
     name, chance = best.entry.identity.name, percent(levels[0])
+    meant = f"{name} or a stereoisomer of it" if _may_be_a_stereoisomer(best.entry.identity.smiles) else name
     spoken = [item for item in best.evidence if item.kind in INDEPENDENT]
     agree = [item.kind for item in spoken if item.verdict is Verdict.AGREES and item.log_odds > 0]
     conflict = [item.kind for item in best.evidence if item.verdict is Verdict.CONFLICTS]
     if agree and not conflict:
-        text = f"{name}: the library match agrees with {', '.join(agree)}, and nothing conflicts ({chance})."
+        text = f"{meant}: the library match agrees with {', '.join(agree)}, and nothing conflicts ({chance})."
         claim = _claim(ClaimLevel.SUPPORTED, text, levels[0], (name,), levels, indexed="retention index" in agree)
     else:
         why = f"but {', '.join(conflict)} conflicts" if conflict else "no independent evidence speaks for it"
-        text = f"{name}: the library match alone ({chance}); {why}."
+        text = f"{meant}: the library match alone ({chance}); {why}."
         claim = _claim(ClaimLevel.TENTATIVE, text, levels[0], (name,), levels)
     return claim
+
+
+def _may_be_a_stereoisomer(smiles: str) -> bool:
+    """Whether another compound, told apart by a column, may give this spectrum; False where the entry has no structure."""
+    try:
+        return bool(smiles) and has_diastereomers(smiles)
+    except StructureError:
+        return False
 
 
 def _claim_group(

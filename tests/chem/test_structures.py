@@ -18,6 +18,7 @@ from identify.chem.structures import (
     connectivity_block,
     draw_svg,
     formula_of,
+    has_diastereomers,
     inchikey_of,
     smiles_of_inchi,
     structure_similarity,
@@ -258,3 +259,21 @@ def test_similarity_is_one_for_the_same_and_less_for_others() -> None:
     assert structure_similarity("[2H]C([2H])C", "CC") == 1.0
     near, far = structure_similarity("Cc1ccccc1", "CCc1ccccc1"), structure_similarity("Cc1ccccc1", "CCCCO")
     assert 0 <= far < near < 1
+
+
+@pytest.mark.parametrize(
+    ("smiles", "expected"),
+    [
+        ("ClC1C(Cl)C(Cl)C(Cl)C(Cl)C1Cl", True),  # the hexachlorocyclohexanes
+        ("CC(C)C1CCC(C)CC1O", True),  # menthol, neomenthol, isomenthol …
+        ("CC1(C)C2CCC1(C)C(O)C2", True),  # borneol, isoborneol
+        ("CCCCCCCCC=CCCCCCCCC(=O)O", True),  # oleic, elaidic acid
+        ("CC1=CCC2CC1C2(C)C", False),  # α-pinene: mirror images only
+        ("CC1=CCC(CC1)C(C)=C", False),  # limonene: mirror images only
+        ("C1C2CC3CC1CC(C2)C3", False),  # adamantane
+        ("ClC(Cl)=C(c1ccc(Cl)cc1)c1ccc(Cl)cc1", False),
+    ],
+)
+def test_diastereomers_of_textbook_compounds_are_known(smiles: str, expected: bool) -> None:
+    """Common practice: organic chemistry as taught."""
+    assert has_diastereomers(smiles) is expected

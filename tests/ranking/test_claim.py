@@ -53,6 +53,16 @@ def test_a_compound_with_independent_evidence_is_supported() -> None:
     assert (claim.msi_2007, claim.schymanski_2014) == ("2", "3")
 
 
+@pytest.mark.parametrize(
+    ("smiles", "said"),
+    [("C[C@@H](O)[C@H](C)O", True), ("CCC(C)O", False), (ORTHO, False), ("", False), ("no structure", False)],
+)
+def test_a_compound_claim_says_where_stereoisomers_are_not_told_apart(smiles: str, said: bool) -> None:
+    claim = claim_of([0.97], 0.02, 0.01, entries=[build_entry(0, XYLENE, smiles=smiles)])
+    assert claim.level is ClaimLevel.TENTATIVE
+    assert ("or a stereoisomer of it:" in claim.statement) is said
+
+
 def test_an_agreeing_retention_index_is_level_2a_of_the_second_scheme() -> None:
     claim = claim_of([0.97], 0.02, 0.01, evidence=(build_item("retention index", 2.0),))
     assert (claim.level, claim.schymanski_2014) == (ClaimLevel.SUPPORTED, "2a")
