@@ -6,6 +6,7 @@ import unicodedata
 from collections.abc import Iterable, Sequence
 from pathlib import PurePath
 
+from identify.ranking.claim import percent
 from identify.records import Claim, ClaimLevel, EvidenceItem, Query, Rejection, Verdict
 
 MAX_TEXT, LONG_TEXT = 300, 2000
@@ -66,11 +67,7 @@ def probability_text(probability: float) -> str:
     >>> [probability_text(value).replace(NO_BREAK, " ") for value in (0.874, 0.9999, 0.0)]
     ['87 %', '> 99 %', '< 1 %']
     """
-    if probability > 0.99:
-        return f">{NO_BREAK}99{NO_BREAK}%"
-    if probability < 0.01:
-        return f"<{NO_BREAK}1{NO_BREAK}%"
-    return f"{100.0 * probability:.0f}{NO_BREAK}%"
+    return percent(probability).replace(" ", NO_BREAK)
 
 
 def claim_probability_text(claim: Claim) -> str:
