@@ -142,7 +142,7 @@ def _claim_compound(best: Candidate, levels: tuple[float, float, float]) -> Clai
         text = f"{meant}: the library match agrees with {', '.join(agree)}, and nothing conflicts ({chance})."
         claim = _claim(ClaimLevel.SUPPORTED, text, levels[0], (name,), levels, indexed="retention index" in agree)
     else:
-        why = f"but {', '.join(conflict)} conflicts" if conflict else "no independent evidence speaks for it"
+        why = f"in conflict: {', '.join(conflict)}" if conflict else "no independent evidence speaks for it"
         text = f"{meant}: the library match alone ({chance}); {why}."
         claim = _claim(ClaimLevel.TENTATIVE, text, levels[0], (name,), levels)
     return claim
