@@ -67,7 +67,7 @@ def checked(mol: Any, text: str) -> Mol:
     StructureError
         If there is no molecule, it is empty or has more than `MAX_ATOMS` atoms, or an atom is a placeholder.
     """
-    if mol is None:
+    if mol is None or "\0" in text:  # rdkit 2024.3 reads no further than such a character
         raise StructureError("structure", found=quote(text), expected="a valid SMILES or InChI")
     if not mol.GetNumAtoms() or mol.GetNumHeavyAtoms() > MAX_ATOMS:
         raise StructureError(
