@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 from identify.chem.constitution import is_only_isomer
-from identify.ranking.claim import PUBLISHED_LEVELS, percent
+from identify.ranking.claim import PUBLISHED_LEVELS, percent, what_is_meant
 from identify.records import Claim, ClaimLevel, Identification
 
 COMPOUND_LEVELS = (ClaimLevel.SUPPORTED, ClaimLevel.TENTATIVE)
@@ -50,7 +50,7 @@ def claim_compound(found: Identification) -> Identification:
     msi, schymanski = PUBLISHED_LEVELS[ClaimLevel.TENTATIVE]
     shown = percent(best.probability)
     claim = Claim(
-        ClaimLevel.TENTATIVE, f"{best.entry.identity.name}: library match and the run as a whole ({shown}).", best.probability,
+        ClaimLevel.TENTATIVE, f"{what_is_meant(best)}: library match and the run as a whole ({shown}).", best.probability,
         (best.entry.identity.name,), best.probability, max(best.probability, found.claim.group_probability),
         max(best.probability, found.claim.class_probability), msi_2007=msi, schymanski_2014=schymanski,
     )  # fmt: skip

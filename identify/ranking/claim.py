@@ -134,7 +134,7 @@ def _hold_back(purity: Purity, levels: tuple[float, float, float]) -> Claim:
 
 def _claim_compound(best: Candidate, levels: tuple[float, float, float]) -> Claim:
     name, chance = best.entry.identity.name, percent(levels[0])
-    meant = f"{name} or a stereoisomer of it" if _may_be_a_stereoisomer(best.entry.identity.smiles) else name
+    meant = what_is_meant(best)
     spoken = [item for item in best.evidence if item.kind in INDEPENDENT]
     agree = [item.kind for item in spoken if item.verdict is Verdict.AGREES and item.log_odds > 0]
     conflict = [item.kind for item in best.evidence if item.verdict is Verdict.CONFLICTS]
@@ -148,12 +148,24 @@ def _claim_compound(best: Candidate, levels: tuple[float, float, float]) -> Clai
     return claim
 
 
-def _may_be_a_stereoisomer(smiles: str) -> bool:
-    """Whether another compound, told apart by a column, may give this spectrum; False where the entry has no structure."""
+def what_is_meant(candidate: Candidate) -> str:
+    """The compound of a claim in words: its name, and that stereoisomers a column may part are not told from it.
+
+    Parameters
+    ----------
+    candidate : Candidate
+
+    Returns
+    -------
+    str
+        The name alone where the entry has no structure.
+    """
+    name, smiles = candidate.entry.identity.name, candidate.entry.identity.smiles
     try:
-        return bool(smiles) and has_diastereomers(smiles)
+        is_one_of_several = bool(smiles) and has_diastereomers(smiles)
     except StructureError:
-        return False
+        is_one_of_several = False
+    return f"{name} or a stereoisomer of it" if is_one_of_several else name
 
 
 def _claim_group(

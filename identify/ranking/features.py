@@ -247,9 +247,8 @@ def _cosines(query: CleanSpectrum, pairs: FlatPairs) -> list[FloatArray]:
         shared, theirs = pairs.total(own * other) * scale, pairs.total(squares)
         cosine.append(shared / np.sqrt(whole * theirs + TINY))
         if name in ONE_SIDED:
-            n_peaks = pairs.total(other) ** 2 / (
-                theirs + TINY
-            )  # as many peaks of equal weight have this cosine with a constant
+            # As many peaks as would, of equal weight, have the same ratio of these sums.
+            n_peaks = pairs.total(other) ** 2 / (theirs + TINY)
             alike = shared / np.sqrt(pairs.total(own * own) * scale**2 * theirs + TINY)
             reverse.append(alike * n_peaks / (n_peaks + 1.0))
             forward.append(shared / np.sqrt(whole * pairs.total(squares * matched) + TINY))

@@ -180,7 +180,7 @@ def rank(
     model : RankingModel, optional
         The shipped one by default.
     purity : Purity, optional
-        A query that is no single compound gets no claim on one, and something else becomes likelier.
+        A query that is no single compound gets no claim on one; part of what something else is judged by.
 
     Returns
     -------
