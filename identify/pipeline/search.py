@@ -17,7 +17,7 @@ from dataclasses import dataclass, replace
 from functools import lru_cache
 from pathlib import Path
 
-from identify.errors import SpectrumError, UsageError
+from identify.errors import SpectrumError, UsageError, quote
 from identify.evidence.facts import build_query_facts
 from identify.evidence.gather import gather_evidence
 from identify.evidence.molecular_ion import estimate_molecular_ion
@@ -172,6 +172,17 @@ def identify_query(query: Query, libraries: Sequence[SearchableLibrary], setting
         purity=purity,
         classes=classes,
         analogues=analogues,
+        notes=_note_ionization(query),
+    )
+
+
+def _note_ionization(query: Query) -> tuple[str, ...]:
+    """A warning where the record itself says that its spectrum is of another kind; what says nothing is taken for EI."""
+    told = query.record.acquisition.ionization
+    if told in ("", "EI"):
+        return ()
+    return (
+        f"The record states the ionization {quote(told)}: scores and probabilities hold for electron ionization only.",
     )
 
 

@@ -63,6 +63,17 @@ def test_a_mixed_pair_says_that_nominal_masses_were_compared(library: Path) -> N
     assert notes == ("Compared at nominal m/z: the query has no accurate masses.",)
 
 
+@pytest.mark.parametrize(("stated", "warned"), [("EI", False), ("", False), ("CI", True)])
+def test_a_query_that_is_no_ei_spectrum_by_its_own_record_is_answered_with_a_warning(
+    library: Path, stated: str, warned: bool
+) -> None:
+    query = record(BENZOTHIAZOLE, "Q")
+    query = replace(query, acquisition=replace(query.acquisition, ionization=stated))
+    with open_libraries([library], Settings()) as libraries:
+        (found,) = identify_records([query], libraries, Settings(), [])
+    assert [f"ionization '{stated}'" in note for note in found.notes] == [True] * warned
+
+
 def named(name: str, smiles: str, peaks: dict[float, float], accession: str) -> SpectrumRecord:
     made = record(peaks, accession)
     return replace(made, identity=Identity(name=name, formula="C7H5NS", smiles=smiles))
